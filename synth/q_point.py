@@ -1,0 +1,300 @@
+"""The Q-point of a network and a transistor: exact, vectorised, in every region.
+
+Active: with IB = (IC − (h+1)·ICBO)/h the base loop is one equation in IC,
+
+    VBE_ref + δ + VT·ln(IC/IC0) = E − Z·IC,   E = e_b + z_bb·(h+1)·ICBO/h,   Z = z_bb/h + z_bc,
+
+and w = Z·IC/VT obeys w + ln w = (E − VBE_ref − δ)/VT + ln(Z·IC0/VT): the Wright omega function of the right-hand side.
+
+Saturated: VCE = VCE(sat) in both two-port equations; IB = (e_b − VBE − z_bc·IC)/z_bb leaves
+
+    D·IC − k·VT·ln(IC/IC0) = C,   k = z_cb/z_bb,   D = z_cc − k·z_bc,   C = e_c − VCE(sat) − k·(e_b − VBE_ref − δ),
+
+whose larger root is the physical one: w − ln w = C/(k·VT) − ln(D·IC0/(k·VT)) with w = D·IC/(k·VT), or IC = C/D where
+k = 0. The transistor saturates only if this is less than the active law gives.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import wrightomega
+
+from synth.networks import NETWORKS
+from synth.networks.form import Network, QPoint, Rails, Resistances, TwoPort
+from synth.quantities import RestpointError, Spread
+from synth.transistor import CUT_OFF_CURRENT, T0, Material, Transistor, thermal_voltage
+
+Array = NDArray[np.float64]
+
+ACTIVE, SATURATED, CUT_OFF = 0, 1, 2
+REGIONS = ("active", "saturated", "cut off")
+"""Names of the region codes, in order."""
+
+
+class UnknownNetwork(RestpointError):
+    """A network was asked for that no file describes."""
+
+
+def active_current(
+    two_port: TwoPort, transistor: Transistor, hfe: Array, icbo: Array, delta: Array, temperature: Array
+) -> Array:
+    """Collector current by the active-region law, whatever VCE comes out.
+
+    Parameters
+    ----------
+    two_port : TwoPort
+        The network as the transistor sees it [V, ohm], broadcast.
+    transistor : Transistor
+        Its base-emitter law.
+    hfe, icbo, delta, temperature : ndarray
+        Gain at this temperature [-], leakage at this temperature [A], distance from the nominal VBE [V] and junction
+        temperature [K], broadcast.
+
+    Returns
+    -------
+    ndarray
+        IC [A], the broadcast shape; never negative.
+
+    Notes
+    -----
+    Exact to rounding for any positive resistances: the logarithm of the argument is formed, so nothing overflows unless
+    IC itself would. With no resistance at all in the base loop IC = IC0·exp((e_b − VBE_ref − δ)/VT).
+    """
+    slope = two_port.z_bb / hfe + two_port.z_bc
+    drive = two_port.e_b + two_port.z_bb * (icbo + icbo / hfe) - transistor.vbe_at_reference(temperature) - delta
+    if transistor.vbe_model == "fixed":
+        # A fixed drop blocks below its voltage; with no resistance behind it nothing bounds the current.
+        with np.errstate(divide="ignore", invalid="ignore"):
+            return np.asarray(np.where(drive > 0.0, drive / slope, 0.0))
+    vt = thermal_voltage(temperature)
+    # log(0) is -inf where the loop has no resistance; that branch is taken from its own closed form below.
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore", under="ignore"):
+        omega = wrightomega(drive / vt + np.log(slope * (transistor.vbe_ic / vt)))
+        current = omega * vt / slope
+        bare = np.asarray(slope) == 0.0
+        if bare.any():
+            current = np.where(bare, transistor.vbe_ic * np.exp(drive / vt), current)
+    return np.asarray(current)
+
+
+def _active(
+    port: TwoPort, transistor: Transistor, h: Array, i0: Array, d: Array, t: Array
+) -> tuple[Array, Array, Array, Array]:
+    ic = active_current(port, transistor, h, i0, d, t)
+    ib = ic / h - i0 - i0 / h
+    # The base loop itself gives VBE: it stays exact where IC underflows to zero.
+    vbe = np.asarray(port.e_b - port.z_bb * ib - port.z_bc * ic)
+    return ic, ib, vbe, np.asarray(port.e_c - port.z_cb * ib - port.z_cc * ic)
+
+
+def solve_active(
+    network: Network,
+    transistor: Transistor,
+    rails: Rails,
+    r: Resistances,
+    *,
+    hfe: Array | float,
+    icbo: Array | float,
+    delta: Array | float,
+    temperature: Array | float,
+) -> QPoint:
+    """Q-point by the active-region law alone: below VCE(sat) it is the analytic continuation, no real Q-point.
+
+    The search needs it: a smooth law that agrees with `solve` wherever the transistor is active.
+
+    Parameters
+    ----------
+    network, transistor, rails, r
+        As in `solve`.
+    hfe, icbo, delta, temperature : array_like
+        As in `solve`: gain [-], leakage [A], distance from the nominal VBE [V], temperature [K], broadcast.
+
+    Returns
+    -------
+    QPoint
+        Of the broadcast shape, every region code "active".
+    """
+    h, i0, d, t = (np.asarray(x, dtype=float) for x in (hfe, icbo, delta, temperature))
+    ic, ib, vbe, vce = np.broadcast_arrays(*_active(network.two_port(rails, r, t), transistor, h, i0, d, t))
+    return QPoint(ic, ib, vbe, vce, np.zeros(ic.shape, dtype=np.int8))
+
+
+def saturated_current(two_port: TwoPort, transistor: Transistor, delta: Array, temperature: Array) -> Array:
+    """Collector current with VCE held at VCE(sat): what the load line and the base drive together allow.
+
+    Parameters
+    ----------
+    two_port : TwoPort
+        The network as the transistor sees it [V, ohm], broadcast; z_bb above 0.
+    transistor : Transistor
+        Its base-emitter law and VCE(sat).
+    delta, temperature : ndarray
+        Distance from the nominal VBE [V] and junction temperature [K], broadcast.
+
+    Returns
+    -------
+    ndarray
+        IC [A]; NaN where no current satisfies both equations.
+    """
+    k = two_port.z_cb / two_port.z_bb
+    d = two_port.z_cc - k * two_port.z_bc
+    reference = transistor.vbe_at_reference(temperature) + delta
+    c = two_port.e_c - transistor.vce_sat - k * (two_port.e_b - reference)
+    # k = 0 divides by zero in the coupled branch and is taken from the plain one; a < 1 has no root and becomes NaN.
+    with np.errstate(divide="ignore", invalid="ignore"):
+        plain = c / d
+        if transistor.vbe_model == "fixed":
+            return np.asarray(np.where(plain > 0.0, plain, np.nan))
+        scale = k * thermal_voltage(temperature)
+        a = c / scale - np.log(d * transistor.vbe_ic / scale)
+        w = _upper_root(np.asarray(a, dtype=float))
+        current = np.where(np.asarray(scale) > 0.0, w * scale / d, plain)
+        return np.asarray(np.where(current > 0.0, current, np.nan))
+
+
+def _upper_root(a: Array) -> Array:
+    """Root w ≥ 1 of w − ln w = a, by Newton from above on a convex function; NaN where a < 1."""
+    a = np.where(a >= 1.0, a, np.nan)
+    w = a + np.log(a) + np.sqrt(2.0 * (a - 1.0)) + 1.0
+    for _ in range(60):
+        step = (w - np.log(w) - a) * w / (w - 1.0)
+        w = w - step
+        if not np.any(np.abs(step) > 1e-15 * w):
+            break
+    return w
+
+
+def solve(
+    network: Network,
+    transistor: Transistor,
+    rails: Rails,
+    r: Resistances,
+    *,
+    hfe: Array | float,
+    icbo: Array | float,
+    delta: Array | float,
+    temperature: Array | float,
+) -> QPoint:
+    """Q-point and region of every element.
+
+    Parameters
+    ----------
+    network : Network
+        The bias network.
+    transistor : Transistor
+        The transistor's laws.
+    rails : mapping of str to array_like
+        Rail voltages, magnitudes [V], broadcast.
+    r : mapping of str to array_like
+        Resistance of every role used [ohm], broadcast.
+    hfe : array_like
+        Gain at `temperature` [-], broadcast.
+    icbo : array_like
+        Leakage at `temperature` [A], broadcast.
+    delta : array_like
+        Distance of this unit from the nominal VBE [V], broadcast.
+    temperature : array_like
+        Junction temperature [K], broadcast.
+
+    Returns
+    -------
+    QPoint
+        Of the broadcast shape. In saturation hFE no longer governs and IC lies on the load line; where even the
+        saturated equations have no solution every figure is NaN.
+    """
+    h, i0, d, t = (np.asarray(x, dtype=float) for x in (hfe, icbo, delta, temperature))
+    port = network.two_port(rails, r, t)
+    ic, ib, vbe, vce = _active(port, transistor, h, i0, d, t)
+    region = np.where(ic < CUT_OFF_CURRENT + (h + 1.0) * i0, CUT_OFF, ACTIVE).astype(np.int8)
+    saturated = vce < transistor.vce_sat
+    if np.any(saturated):
+        on_line = saturated_current(port, transistor, d, t)
+        # Less VCE than VCE(sat) for want of voltage, not of gain: the transistor is off, and the active law stays.
+        saturated = saturated & ~(on_line > ic)
+        vbe_sat = transistor.vbe_at(on_line, t, d)
+        ib_sat = (port.e_b - vbe_sat - port.z_bc * on_line) / port.z_bb
+        ic = np.where(saturated, on_line, ic)
+        ib = np.where(saturated, ib_sat, ib)
+        vbe = np.where(saturated, vbe_sat, vbe)
+        vce = np.where(saturated, np.where(np.isnan(on_line), np.nan, transistor.vce_sat), vce)
+        region = np.where(saturated, np.int8(SATURATED), region)
+    ic, ib, vbe, vce, region = np.broadcast_arrays(ic, ib, vbe, vce, region)
+    return QPoint(ic, ib, vbe, vce, region)
+
+
+def operating_point(
+    *,
+    network: str,
+    rails: Mapping[str, Array | float],
+    resistors: Mapping[str, Array | float],
+    hfe: Array | float,
+    temperature: Array | float = T0,
+    vbe: float = 0.65,
+    vbe_ic: float = 2e-3,
+    vbe_model: Literal["junction", "fixed"] = "junction",
+    icbo: Array | float = 0.0,
+    vce_sat: float = 0.2,
+    material: Material = "silicon",
+) -> QPoint:
+    """Q-point of a network by name, for use from Python; everything broadcasts.
+
+    Parameters
+    ----------
+    network : str
+        Name of a registered network.
+    rails : mapping of str to array_like
+        Rail voltages, magnitudes [V].
+    resistors : mapping of str to array_like
+        Resistance of every role used [ohm].
+    hfe : array_like
+        Gain at `temperature` [-].
+    temperature : array_like
+        Junction temperature [K].
+    vbe, vbe_ic : float
+        Base-emitter voltage at 25 °C [V] and the collector current at which it holds [A].
+    vbe_model : {"junction", "fixed"}
+        Whether VBE follows IC and temperature.
+    icbo : array_like
+        Leakage at `temperature` [A].
+    vce_sat : float
+        VCE of the saturated transistor [V].
+    material : {"silicon", "germanium"}
+        Of the transistor.
+
+    Returns
+    -------
+    QPoint
+        Currents [A], voltages [V] and region codes of the broadcast shape.
+
+    Raises
+    ------
+    UnknownNetwork
+        If no network has this name.
+
+    Examples
+    --------
+    >>> q = operating_point(network="divider", rails={"vcc": 12.0}, hfe=220.0,
+    ...                     resistors={"r1": 43e3, "r2": 24e3, "rc": 1.8e3, "re": 1.8e3})
+    >>> round(float(q.ic) * 1e3, 2)
+    1.94
+    """
+    if network not in NETWORKS:
+        raise UnknownNetwork(f"network: read {network!r}, accepted is one of {', '.join(NETWORKS)}")
+    exact = Spread.exact
+    device = Transistor(
+        hfe=exact(1.0), vbe=exact(vbe), vbe_ic=vbe_ic, vbe_model=vbe_model, vce_sat=vce_sat, material=material
+    )
+    return solve(
+        NETWORKS[network],
+        device,
+        {name: np.asarray(v, dtype=float) for name, v in rails.items()},
+        {name: np.asarray(v, dtype=float) for name, v in resistors.items()},
+        hfe=hfe,
+        icbo=icbo,
+        delta=0.0,
+        temperature=temperature,
+    )
