@@ -98,7 +98,8 @@ class Network:
         ``branches(rails, r, q)``: a solved Q-point to `Branches`; holds in every region, since the network is linear.
     signs : mapping
         Proved signs of ``ic``, ``vce`` and of role currents ``i_<role>`` against each rail and role, and against
-        ``delta hfe icbo``, while current flows into the base (IB ≥ 0), IC exceeds ICBO and VBE is above 0. What is not named is None.
+        ``delta hfe icbo``, while current flows into the base (IB ≥ 0), IC exceeds ICBO and VBE is above 0. What is not
+        named is None.
     signs_while : mapping
         Signs proved under a condition: ``{(quantity, parameter): (sign, role)}`` holds while the resistance of that role
         times IC is at least VT.

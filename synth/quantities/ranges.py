@@ -53,6 +53,10 @@ def _parts(text: str, kind: Kind) -> list[Decimal]:
     units = [_unit_of(part) for part in parts]
     lent = units[-1] or next(filter(None, units), kind.typed)
     full = [f"{part} {lent}" if unit == "" else part for part, unit in zip(parts, units, strict=True)]
+    # "10 : 100k" may mean 10 ohm or 10 kohm: a prefix alone is not lent.
+    if "" in units and lent in kind.letters:
+        asis = [f"{part} {kind.typed}" if unit == "" else part for part, unit in zip(parts, units, strict=True)]
+        raise Unreadable("has a part without a unit beside one with only a prefix", " : ".join(asis), " : ".join(full))
     # For a ratio, a bare end after parts in per cent would be read as a hundred times what was meant.
     if units[-1] == "" and any(unit != "" for unit in units):
         raise Unreadable("has a unit, but not on its last part", " : ".join(full))

@@ -1,0 +1,137 @@
+"""What binds when nothing qualifies, and which single change would do; every statement is backed by a search."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+
+import numpy as np
+
+from synth.answer import Infeasible, Relaxation
+from synth.box import Meter
+from synth.limits import Requirement, judge
+from synth.quantities import Interval, Target, format_exact, format_limit, format_target
+from synth.search import Outcome, search
+from synth.spaces import Exact, Found, Space, goal_of, spaces_of
+from synth.stage import Stage
+
+ACTIVE = "vce"
+"""The limit that keeps the transistor active."""
+FIGURES = 3
+"""Significant figures of a relaxed limit."""
+WIDE = 0.95
+"""Half-width from which a window is written by its ends [-]."""
+GAP = 0.005
+"""Relative gap left in the drifts that advice quotes [-]; they are drifts of real candidates all the same."""
+STEPS = 7
+"""Bisections of a relaxation: below one per cent of the way."""
+
+
+def why_nothing_qualifies(stage: Stage) -> Infeasible:
+    """Find the limits that conflict and the single relaxations that would do.
+
+    Parameters
+    ----------
+    stage : Stage
+        A request for which no network qualifies.
+
+    Returns
+    -------
+    Infeasible
+        `binding` is a smallest conflicting set: dropping any one of it, the others kept, lets a candidate qualify, unless
+        `best_without` says otherwise.
+
+    Notes
+    -----
+    Deletion filter: each limit in turn is dropped for good if the rest still conflict. Every step is an exact search.
+    """
+    needs = {need.name: need for space in spaces_of(stage) for need in space.requirements}
+    given = {name for name in needs if name.startswith("target.") or name in stage.limits_given}
+    # Staying active is physics, not a request; and what the user did not ask for is named, and given up, first.
+    names = sorted((n for n in needs if n != ACTIVE or n in given), key=lambda n: n in given)
+    dropped: set[str] = set()
+    for name in sorted(names, key=lambda n: (n in given, n == "collector_share")):
+        if not search(spaces_of(stage, dropped | {name}), goal_of(stage), top=1, first=True).found:
+            dropped.add(name)
+    binding = tuple(name for name in names if name not in dropped) or (ACTIVE,)
+    best_without: dict[str, float | None] = {}
+    ranked: list[tuple[bool, float, Relaxation]] = []
+    for name in binding:
+        outcome = _search(stage, {name})
+        best_without[name] = outcome.found[0].drift if outcome.found else None
+        relaxed = _relax(stage, name, outcome.found[0]) if outcome.found else None
+        if relaxed is not None:
+            ranked.append((name in given, *relaxed))
+    ranked.sort(key=lambda entry: entry[:2])
+    return Infeasible(binding=binding, best_without=best_without, relaxations=tuple(r for _, _, r in ranked))
+
+
+def _search(stage: Stage, without: set[str]) -> Outcome:
+    return search(spaces_of(stage, without), goal_of(stage), top=1, gap=GAP)
+
+
+def _requirement(stage: Stage, name: str, like: Space) -> Requirement:
+    """A requirement as it reads for one network: what a limit measures differs between them."""
+    space = next(s for s in spaces_of(stage) if s.network is like.network and s.roles == like.roles)
+    return next(need for need in space.requirements if need.name == name)
+
+
+def _relax(stage: Stage, name: str, found: Found) -> tuple[float, Relaxation] | None:
+    """Least relaxation of one limit that lets a candidate qualify, with how far it moves the limit."""
+    need = _requirement(stage, name, found.space)
+    exact = Exact(found.space.box(np.array([found.index], dtype=np.int32), Meter()), goal_of(stage))
+    reached = float(judge(exact.box, need, exact.worst).worst[0])
+    if need.name == ACTIVE and reached < found.space.transistor.vce_sat:
+        return None
+    start = need.interval.low if reached < need.interval.low else need.interval.high
+    good, bad, best = 1.0, 0.0, None
+    for step in range(STEPS + 1):
+        share = good if step == 0 else 0.5 * (good + bad)
+        change = _change(need, start + share * (reached - start), outward=1 if reached > start else -1)
+        drift = _drift_with(stage, change)
+        if drift is None and step == 0:
+            return None
+        if drift is None:
+            bad = share
+        else:
+            good, best = share, Relaxation(change=change, drift=drift)
+    if best is None:
+        return None
+    return good * abs(reached / start - 1.0 if start else 1.0), best
+
+
+def _change(need: Requirement, limit: float, outward: int) -> dict[str, str]:
+    """A relaxed limit as a stage-file key and text, rounded outward to three figures."""
+    low, high = need.interval.low, need.interval.high
+    if need.target is not None and math.isclose(high - need.target, need.target - low, rel_tol=1e-9):
+        return {need.name: _window(need, need.target, _round(abs(limit / need.target - 1.0), 1))}
+    relaxed = Interval(low, _round(limit, 1)) if outward > 0 else Interval(_round(limit, -1), high)
+    if need.target is not None:
+        return {need.name: format_target(Target(need.target, relaxed.low, relaxed.high), need.kind)}
+    if need.name.startswith("target."):
+        return {need.name: format_limit(relaxed, need.kind)}
+    return {f"limits.{need.name}": format_limit(relaxed, need.kind)}
+
+
+def _window(need: Requirement, goal: float, half: float) -> str:
+    """A window of at least `half` around its target; a wide one is written by its ends, which stay above zero."""
+    if half < WIDE:
+        return f"{format_exact(goal, need.kind)} ± {half * 100:g} %"
+    low = min(need.interval.low, _round(goal * max(1.0 - half, 1e-3), -1))
+    high = max(need.interval.high, _round(goal * (1.0 + half), 1))
+    return format_target(Target(goal, low, high), need.kind)
+
+
+def _round(value: float, direction: int) -> float:
+    """Round to three figures, up for +1 and down for −1."""
+    if value == 0.0:
+        return 0.0
+    scale = 10.0 ** (FIGURES - 1 - math.floor(math.log10(abs(value))))
+    steps = value * scale
+    rounded = math.ceil(steps - 1e-9) if direction > 0 else math.floor(steps + 1e-9)
+    return float(f"{rounded / scale:.{FIGURES}g}")
+
+
+def _drift_with(stage: Stage, change: Mapping[str, str]) -> float | None:
+    outcome = _search(Stage.from_keys({**stage.given, **change}, stage.folder), set())
+    return outcome.found[0].drift if outcome.found else None

@@ -1,0 +1,346 @@
+"""The answer as frozen values: candidates, verdicts, budgets; no printing, no computing."""
+
+from __future__ import annotations
+
+import json
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any, Literal
+
+from synth.stage import Assumption
+
+if TYPE_CHECKING:
+    import pandas
+
+SCHEMA_VERSION = 1
+Pass = Literal["pass", "fail"]
+
+
+class NoCandidate(LookupError):
+    """A rank was asked for that the answer does not have."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Caution:
+    """A named warning with its physical reason."""
+
+    name: str
+    text: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class Nominal:
+    """Nominal Q-point: currents [A], voltages [V] as magnitudes; node voltages against 0 V with their sign."""
+
+    ic: float
+    vce: float
+    ib: float
+    vbe: float
+    region: str
+    nodes: Mapping[str, float]
+    rails: Mapping[str, float]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Drift:
+    """Largest relative excursion from target of IC, of VCE (None without a VCE target) and of the Q-point [-]."""
+
+    ic: float
+    vce: float | None
+    q_point: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class Share:
+    """Part of a drift that one cause brings [-]; the shares of a budget add up to the drift."""
+
+    cause: str
+    share: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class Neighbour:
+    """One preferred step up or down in one role: its value [ohm], drift [-] (None once it saturates) and verdict."""
+
+    role: str
+    step: int
+    value: float
+    drift: float | None
+    verdict: Pass
+    fails: tuple[str, ...]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Duty:
+    """What a resistor does at the nominal Q-point: drop [V], current [A]."""
+
+    drop: float
+    current: float
+    meaning: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class Verdict:
+    """Pass or fail of a window or limit, with margin [-] and the point of the box that decides (SI)."""
+
+    name: str
+    kind: str
+    sense: str
+    limit: float | tuple[float, float]
+    worst: float
+    margin: float
+    at: Mapping[str, float]
+    verdict: Pass
+
+
+@dataclass(frozen=True, kw_only=True)
+class Candidate:
+    """A network with a value in every role, judged and explained.
+
+    Resistances of `resistors` and `base_feed` [ohm]; `worst` holds the extremes of IC [A] and VCE [V]; `centring` [-];
+    `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points.
+    """
+
+    rank: int
+    network: str
+    resistors: Mapping[str, float]
+    nominal: Nominal
+    worst: Mapping[str, tuple[float, float]]
+    regions: tuple[str, ...]
+    drift: Drift
+    centring: float
+    supply_current: float
+    base_feed: float
+    budget: Mapping[str, tuple[Share, ...]]
+    neighbours: tuple[Neighbour, ...]
+    roles: Mapping[str, Duty]
+    limits: tuple[Verdict, ...]
+    verdict: Pass
+    explanation: tuple[str, ...]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Search:
+    """What was searched and what is proved; `bound` is the least drift of anything not listed [-], None if none is left."""
+
+    status: str
+    bound: float | None
+    combinations: int
+    evaluated: int
+    complete: bool
+    seconds: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class NetworkResult:
+    """Best drift of one network [-] (None if none qualifies) and why it stands where it does."""
+
+    network: str
+    best: float | None
+    why: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class Relaxation:
+    """One change of the request, in stage-file keys and texts, under which a candidate qualifies, and its drift [-]."""
+
+    change: Mapping[str, str]
+    drift: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class Infeasible:
+    """Why nothing qualifies: the limits that bind together, the best drift without each [-], single changes that would do."""
+
+    binding: tuple[str, ...]
+    best_without: Mapping[str, float | None]
+    relaxations: tuple[Relaxation, ...]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Alternative:
+    """A listed candidate worth a look for another reason than drift."""
+
+    reason: str
+    rank: int
+    text: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class Answer:
+    """Everything that a command found out.
+
+    Parameters
+    ----------
+    kind : {"find", "check"}
+        Which command answered.
+    version, command : str
+        Version of the program; the command that repeats the answer.
+    stage : mapping
+        The request, SI numbers.
+    assumed, warnings : tuple
+        What was not given; what deserves caution.
+    search : Search or None
+        None where nothing was searched.
+    networks, candidates, alternatives : tuple
+        Results, best first.
+    infeasible : Infeasible or None
+        Why nothing qualifies.
+    """
+
+    kind: str
+    version: str
+    command: str
+    stage: Mapping[str, Any]
+    assumed: tuple[Assumption, ...] = ()
+    warnings: tuple[Caution, ...] = ()
+    search: Search | None = None
+    networks: tuple[NetworkResult, ...] = ()
+    candidates: tuple[Candidate, ...] = ()
+    alternatives: tuple[Alternative, ...] = ()
+    infeasible: Infeasible | None = None
+
+    @property
+    def best(self) -> Candidate | None:
+        """The first candidate, or None when nothing qualifies."""
+        return self.candidates[0] if self.candidates else None
+
+    @property
+    def passed(self) -> bool:
+        """Whether there is a candidate and it passes every verdict."""
+        return self.best is not None and self.best.verdict == "pass"
+
+    @property
+    def frame(self) -> pandas.DataFrame:
+        """The candidates as a pandas table, one row each: rank, network, resistors [ohm], Q-point, drift."""
+        import pandas
+
+        rows = []
+        for c in self.candidates:
+            rows.append(
+                {
+                    "rank": c.rank,
+                    "network": c.network,
+                    **{f"{role}_ohm": value for role, value in c.resistors.items()},
+                    "ic_a": c.nominal.ic,
+                    "vce_v": c.nominal.vce,
+                    **{f"{q}_{end}": c.worst[q][i] for q in c.worst for i, end in enumerate(("min", "max"))},
+                    "drift_ic": c.drift.ic,
+                    "drift_vce": c.drift.vce,
+                    "drift": c.drift.q_point,
+                    "centring": c.centring,
+                    "supply_current_a": c.supply_current,
+                    "verdict": c.verdict,
+                }
+            )
+        return pandas.DataFrame(rows)
+
+    def candidate(self, rank: int) -> Candidate:
+        """Candidate of a rank.
+
+        Parameters
+        ----------
+        rank : int
+            1 is the best [-].
+
+        Returns
+        -------
+        Candidate
+            That one.
+
+        Raises
+        ------
+        NoCandidate
+            If no candidate has this rank.
+        """
+        for c in self.candidates:
+            if c.rank == rank:
+                return c
+        raise NoCandidate(f"rank: read {rank}, accepted is 1 to {len(self.candidates)}")
+
+    def explain(self, rank: int = 1) -> str:
+        """Explanation of a candidate, a sentence a line.
+
+        Parameters
+        ----------
+        rank : int
+            1 is the best [-].
+
+        Returns
+        -------
+        str
+            The sentences.
+        """
+        return "\n".join(self.candidate(rank).explanation)
+
+    def as_dict(self) -> dict[str, Any]:
+        """The answer as plain data in the layout of the JSON contract.
+
+        Returns
+        -------
+        dict
+            SI numbers; numbers that are not finite become None.
+        """
+        body: dict[str, Any] = {
+            "schema": f"restpoint/{self.kind}/{SCHEMA_VERSION}",
+            "version": self.version,
+            "command": self.command,
+            "stage": _plain(self.stage),
+            "assumed": [_plain(vars(note)) for note in self.assumed],
+            "warnings": [_plain(vars(w)) for w in self.warnings],
+            "search": None if self.search is None else _plain(vars(self.search)),
+            "networks": [_plain(vars(n)) for n in self.networks],
+            "candidates": [_candidate(c) for c in self.candidates],
+            "alternatives": [_plain(vars(a)) for a in self.alternatives],
+            "infeasible": None,
+        }
+        if self.infeasible is not None:
+            body["infeasible"] = {
+                "binding": list(self.infeasible.binding),
+                "best_without": _plain(self.infeasible.best_without),
+                "relaxations": [_plain(vars(r)) for r in self.infeasible.relaxations],
+            }
+        return body
+
+    def to_json(self) -> str:
+        """The answer as JSON text.
+
+        Returns
+        -------
+        str
+            Indented, one trailing newline; numbers with the digits that reproduce them.
+        """
+        return json.dumps(self.as_dict(), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def _candidate(c: Candidate) -> dict[str, Any]:
+    return {
+        "rank": c.rank,
+        "network": c.network,
+        "resistors": _plain(c.resistors),
+        "nominal": _plain(vars(c.nominal)),
+        "worst": _plain(c.worst),
+        "regions": list(c.regions),
+        "drift": _plain(vars(c.drift)),
+        "centring": _plain(c.centring),
+        "supply_current": _plain(c.supply_current),
+        "base_feed": _plain(c.base_feed),
+        "budget": {q: [_plain(vars(s)) for s in shares] for q, shares in c.budget.items()},
+        "neighbours": [_plain(vars(n)) for n in c.neighbours],
+        "roles": {role: _plain(vars(duty)) for role, duty in c.roles.items()},
+        "limits": [_plain(vars(v)) for v in c.limits],
+        "verdict": c.verdict,
+        "explanation": list(c.explanation),
+    }
+
+
+def _plain(value: Any) -> Any:
+    if isinstance(value, Mapping):
+        return {str(k): _plain(v) for k, v in value.items()}
+    if isinstance(value, list | tuple):
+        return [_plain(v) for v in value]
+    if isinstance(value, bool | int | str) or value is None:
+        return value
+    number = float(value)
+    return number if math.isfinite(number) else None

@@ -1,0 +1,728 @@
+"""The box of a stage: the product of all its spreads, and the true extremes over the whole of it.
+
+At a fixed temperature every quantity is monotone along most axes of the box, and the network file says along which ones
+that is proved: there the extreme sits at the known end. Along the others both ends are tried, and wherever a quantity
+rises inward from both ends of an edge the stationary point between them is found. Temperature is scanned on both sides
+of 25 °C, where the resistor band and the gain law have their kinks, and polished around the best point.
+
+The proofs assume current into the base (IB ≥ 0), IC above ICBO and VBE above 0. Where a point of the box breaks that, no
+sign is trusted and every vertex is tried: each quantity is still monotone along each single axis, only the direction is
+open.
+"""
+
+from __future__ import annotations
+
+import itertools
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from functools import cached_property, partial
+
+import numpy as np
+from numpy.typing import NDArray
+
+from synth.networks.form import Array, Branches, Network, QPoint, Sign, TwoPort
+from synth.q_point import solve, solve_active
+from synth.quantities import Spread
+from synth.transistor import T0, Transistor
+
+Values = dict[str, Array]
+"""A value of every parameter of the box at some points: rails [V], delta [V], hfe [-] and icbo [A] at 25 °C,
+temperature [K], and the resistance of each role [ohm]."""
+
+DEVICE_AXES = ("delta", "hfe", "icbo")
+SCAN_POINTS = 8
+"""Interior temperatures of the scan on each side of 25 °C."""
+INWARD = 1e-5
+"""Step that tells whether a quantity rises inward from the end of an edge, in edge lengths; an interior maximum nearer
+to the end than this gains at most about INWARD² of the quantity's curvature."""
+GOLDEN = (5.0**0.5 - 1.0) / 2.0
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Parts:
+    """The resistors of one role, one element for each candidate.
+
+    Parameters
+    ----------
+    nominal : ndarray, shape (n,)
+        Nominal resistance [ohm].
+    band : ndarray, shape (n,)
+        Tolerance plus change over life [-].
+    tcr_low, tcr_high : ndarray, shape (n,)
+        Ends of the temperature coefficient [1/K].
+    """
+
+    nominal: Array
+    band: Array
+    tcr_low: Array
+    tcr_high: Array
+
+    def ends(self, temperature: Array | float) -> tuple[Array, Array]:
+        """Least and greatest resistance at a temperature.
+
+        Parameters
+        ----------
+        temperature : array_like
+            Ambient temperature [K], broadcast against (n,).
+
+        Returns
+        -------
+        low, high : ndarray
+            R·(1 ∓ band + TCR·(T − 25 °C)) with the TCR at its worse end [ohm].
+        """
+        rise = np.asarray(temperature) - T0
+        one, two = self.tcr_low * rise, self.tcr_high * rise
+        return (
+            np.asarray(self.nominal * (1.0 - self.band + np.minimum(one, two))),
+            np.asarray(self.nominal * (1.0 + self.band + np.maximum(one, two))),
+        )
+
+    def take(self, index: NDArray[np.integer] | Sequence[int]) -> Parts:
+        """The parts of some candidates.
+
+        Parameters
+        ----------
+        index : array_like of int
+            Which candidates.
+
+        Returns
+        -------
+        Parts
+            Theirs, in that order.
+        """
+        i = np.asarray(index)
+        return Parts(
+            nominal=self.nominal[i], band=self.band[i], tcr_low=self.tcr_low[i], tcr_high=self.tcr_high[i]
+        )
+
+
+@dataclass
+class Meter:
+    """Counts scalar Q-point solves."""
+
+    solves: int = 0
+
+
+@dataclass(frozen=True, eq=False)
+class Extreme:
+    """An extreme over the box.
+
+    `value` is the extreme of each candidate [A or V], shape (n,); `at` the parameters at the point that decides, likewise;
+    `where` the position of that point along each axis, NaN on an axis that stays nominal.
+    """
+
+    value: Array
+    at: Values
+    where: Mapping[str, Array]
+
+    def anchor(self, k: int) -> dict[str, float]:
+        """Deciding point of one candidate, as coordinates that `Box.values` takes.
+
+        Parameters
+        ----------
+        k : int
+            Which candidate.
+
+        Returns
+        -------
+        dict of str to float
+            Position along each axis that left its nominal value; temperature [K].
+        """
+        return {axis: float(x[k]) for axis, x in self.where.items() if not np.isnan(x[k])}
+
+    def take(self, k: int) -> Extreme:
+        """The extreme of one candidate.
+
+        Parameters
+        ----------
+        k : int
+            Which candidate.
+
+        Returns
+        -------
+        Extreme
+            With arrays of shape (1,).
+        """
+        pick = slice(k, k + 1)
+        return Extreme(
+            self.value[pick],
+            {name: v[pick] for name, v in self.at.items()},
+            {name: v[pick] for name, v in self.where.items()},
+        )
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Box:
+    """Network, transistor and surroundings of n candidates, with every spread.
+
+    Parameters
+    ----------
+    network : Network
+        How the resistors are connected.
+    transistor : Transistor
+        Laws and spreads of the transistor.
+    rails : mapping of str to Spread
+        Rail voltages, magnitudes [V].
+    temperature : Spread
+        Ambient [K].
+    parts : mapping of str to Parts
+        The resistors of each role used.
+    meter : Meter, optional
+        Where solves are counted.
+    """
+
+    network: Network
+    transistor: Transistor
+    rails: Mapping[str, Spread]
+    temperature: Spread
+    parts: Mapping[str, Parts]
+    meter: Meter = field(default_factory=Meter)
+
+    @cached_property
+    def size(self) -> int:
+        """Number of candidates n."""
+        return int(next(iter(self.parts.values())).nominal.size)
+
+    @cached_property
+    def spreads(self) -> dict[str, Spread]:
+        """Spread of each axis that is not a role: rails, delta, hfe, icbo."""
+        device = self.transistor
+        vbe = device.vbe
+        return {
+            **self.rails,
+            "delta": Spread(vbe.low - vbe.nominal, 0.0, vbe.high - vbe.nominal),
+            "hfe": device.hfe,
+            "icbo": device.icbo,
+        }
+
+    @cached_property
+    def axes(self) -> tuple[str, ...]:
+        """Axes of the box that have a width, temperature apart."""
+        wide = [name for name, spread in self.spreads.items() if spread.high > spread.low]
+        return (*wide, *self.parts)
+
+    def take(self, index: NDArray[np.integer] | Sequence[int]) -> Box:
+        """The same box around some of the candidates.
+
+        Parameters
+        ----------
+        index : array_like of int
+            Which candidates.
+
+        Returns
+        -------
+        Box
+            With the same meter.
+        """
+        return Box(
+            network=self.network,
+            transistor=self.transistor,
+            rails=self.rails,
+            temperature=self.temperature,
+            parts={role: part.take(index) for role, part in self.parts.items()},
+            meter=self.meter,
+        )
+
+    def values(self, coordinates: Mapping[str, Array | float]) -> Values:
+        """Parameters at points of the box.
+
+        Parameters
+        ----------
+        coordinates : mapping of str to array_like
+            Position along each axis, 0 at the low end and 1 at the high end [-], broadcast against (n,);
+            ``temperature`` in kelvin [K]. An axis that is not named stays nominal.
+
+        Returns
+        -------
+        dict
+            See `Values`.
+        """
+        t = np.asarray(coordinates.get("temperature", self.temperature.nominal), dtype=float)
+        found: Values = {"temperature": t}
+        for name, spread in self.spreads.items():
+            x = coordinates.get(name)
+            found[name] = np.asarray(spread.nominal if x is None else (1.0 - x) * spread.low + x * spread.high)
+        for role, part in self.parts.items():
+            x = coordinates.get(role)
+            low, high = part.ends(t)
+            # A one-sided temperature coefficient may leave the nominal value outside the band.
+            found[role] = np.clip(part.nominal, low, high) if x is None else np.asarray((1.0 - x) * low + x * high)
+        return found
+
+    def nominal(self) -> Values:
+        """Every parameter at its nominal value.
+
+        Returns
+        -------
+        dict
+            See `Values`.
+        """
+        return self.values({}) | {role: part.nominal for role, part in self.parts.items()}
+
+    def solve(self, values: Values, active_law: bool = False) -> QPoint:
+        """Q-point at given parameters.
+
+        Parameters
+        ----------
+        values : dict
+            See `Values`; broadcast.
+        active_law : bool
+            Whether to stay with the active-region law below VCE(sat).
+
+        Returns
+        -------
+        QPoint
+            Of the broadcast shape.
+        """
+        t = values["temperature"]
+        law = solve_active if active_law else solve
+        q = law(
+            self.network,
+            self.transistor,
+            {rail: values[rail] for rail in self.rails},
+            {role: values[role] for role in self.parts},
+            hfe=values["hfe"] * self.transistor.gain_factor(t),
+            icbo=values["icbo"] * self.transistor.leakage_factor(t),
+            delta=values["delta"],
+            temperature=t,
+        )
+        self.meter.solves += q.ic.size
+        return q
+
+    def branches(self, values: Values, q: QPoint) -> Branches:
+        """Voltages and currents of every resistor and rail.
+
+        Parameters
+        ----------
+        values : dict
+            See `Values`.
+        q : QPoint
+            The Q-point at these values.
+
+        Returns
+        -------
+        Branches
+            Of the broadcast shape.
+        """
+        rails = {rail: values[rail] for rail in self.rails}
+        return self.network.branches(rails, {role: values[role] for role in self.parts}, q)
+
+    def measure(self, names: Sequence[str], values: Values, q: QPoint) -> Array:
+        """Sum of quantities at solved points.
+
+        Parameters
+        ----------
+        names : sequence of str
+            ``ic ib vce vbe``, a role current ``i_<role>`` or a rail current ``rail_<rail>``; their sum is taken.
+        values : dict
+            See `Values`.
+        q : QPoint
+            The Q-point at these values.
+
+        Returns
+        -------
+        ndarray
+            The sum, of the broadcast shape [A or V].
+        """
+        branches: Branches | None = None
+        total: Array | None = None
+        for name in names:
+            if name in QPoint._fields:
+                part = getattr(q, name)
+            else:
+                branches = branches or self.branches(values, q)
+                part = branches.rail[name[5:]] if name.startswith("rail_") else branches.current[name[2:]]
+            total = part if total is None else total + part
+        return np.asarray(total)
+
+    def sign(self, names: Sequence[str], axis: str) -> Sign:
+        """Proved sign of a sum of quantities along an axis.
+
+        Parameters
+        ----------
+        names : sequence of str
+            As in `measure`.
+        axis : str
+            An axis of the box.
+
+        Returns
+        -------
+        int or None
+            The common sign of all that are not 0; None where one is unknown or two disagree.
+        """
+        signs = {self.network.sign(name, axis) for name in names} - {0}
+        if not signs:
+            return 0
+        return signs.pop() if len(signs) == 1 else None
+
+    @cached_property
+    def scan(self) -> Array:
+        """Temperatures of the scan [K]: the stops, a point just inside of each, and interior points in between."""
+        share = np.concatenate([[0.0, INWARD], np.arange(1, SCAN_POINTS + 1) / (SCAN_POINTS + 1.0), [1.0 - INWARD]])
+        grid = [a + (b - a) * share for a, b in itertools.pairwise(self.stops)]
+        return np.concatenate([*grid, self.stops[-1:]])
+
+    @cached_property
+    def stops(self) -> Array:
+        """Ends and kink of the ambient range [K]."""
+        low, high = self.temperature.low, self.temperature.high
+        return np.unique([low, high, *([T0] if low < T0 < high else [])])
+
+    def extreme(self, names: Sequence[str], direction: int, *, thorough: bool = True) -> Extreme:
+        """True extreme of a quantity over the whole box, by the active-region law.
+
+        Parameters
+        ----------
+        names : sequence of str
+            As in `measure`.
+        direction : {+1, -1}
+            +1 for the maximum, −1 for the minimum.
+        thorough : bool
+            False looks at the vertices at the ends and the kink of the ambient range only: a value that the true
+            extreme reaches or exceeds, for a first sorting.
+
+        Returns
+        -------
+        Extreme
+            Value and deciding point, shape (n,).
+        """
+        known = {axis: self.sign(names, axis) for axis in self.axes}
+        fixed = {axis: 0.5 + 0.5 * direction * s for axis, s in known.items() if s}
+        free = tuple(axis for axis, s in known.items() if s is None)
+        search = _Climb(self, tuple(names), direction, fixed, free, thorough)
+        found = search.run()
+        if search.doubtful.any():
+            index = np.flatnonzero(search.doubtful)
+            again = _Climb(self.take(index), tuple(names), direction, {}, self.axes, thorough, premise=False)
+            _overwrite(found, index, again.run())
+        return found
+
+    def extreme_in_any_region(self, names: Sequence[str], direction: int) -> Extreme:
+        """Extreme over a box that reaches into saturation.
+
+        Parameters
+        ----------
+        names : sequence of str
+            As in `measure`.
+        direction : {+1, -1}
+            +1 for the maximum, −1 for the minimum.
+
+        Returns
+        -------
+        Extreme
+            Value and deciding point, shape (n,).
+
+        Notes
+        -----
+        Where the transistor saturates, hFE no longer governs: IC is the smaller of the active and the saturated law. More
+        base drive raises the first and lowers the second, so the maximum of IC lies on the edge of saturation. Tried are
+        the extreme of the active law, every vertex over temperature, and every point where VCE reaches VCE(sat) along
+        one axis from a vertex of the others, or along all that only drives the base together. NaN without any solution.
+        """
+        return _Straddle(self, tuple(names), direction).run()
+
+
+def _overwrite(found: Extreme, index: NDArray[np.integer], part: Extreme) -> None:
+    found.value[index] = part.value
+    for name, value in part.at.items():
+        found.at[name][index] = value
+    for axis, x in part.where.items():
+        found.where[axis][index] = x
+
+
+@dataclass
+class _Climb:
+    """Search for one extreme along the free axes and temperature; maximises direction·quantity."""
+
+    box: Box
+    names: tuple[str, ...]
+    direction: int
+    fixed: Mapping[str, float]
+    free: tuple[str, ...]
+    thorough: bool
+    premise: bool = True
+
+    def __post_init__(self) -> None:
+        self.doubtful = np.zeros(self.box.size, dtype=bool)
+
+    def height(self, coordinates: Mapping[str, Array | float]) -> Array:
+        """direction·quantity at points; notes candidates that break the premise of the proved signs."""
+        box = self.box
+        values = box.values({**self.fixed, **coordinates})
+        q = box.solve(values, active_law=True)
+        if self.premise:
+            leakage = values["icbo"] * box.transistor.leakage_factor(values["temperature"])
+            broken = (q.ib < 0.0) | (q.ic < leakage) | (q.vbe < 0.0)
+            if broken.any():
+                broken = np.broadcast_to(broken, np.broadcast_shapes(broken.shape, (box.size,)))
+                self.doubtful |= broken.reshape(-1, box.size).any(axis=0)
+        return self.direction * box.measure(self.names, values, q)
+
+    def run(self) -> Extreme:
+        box, n = self.box, self.box.size
+        temperatures = box.scan if self.thorough else box.stops
+        corners = np.array(list(itertools.product((0.0, 1.0), repeat=len(self.free))))
+        coordinates: dict[str, Array | float] = {
+            axis: corners[:, j, None, None] for j, axis in enumerate(self.free)
+        }
+        coordinates["temperature"] = temperatures[None, :, None]
+        heights = np.broadcast_to(self.height(coordinates), (len(corners), len(temperatures), n))
+        flat = heights.reshape(-1, n)
+        winner = flat.argmax(axis=0)
+        corner, moment = np.unravel_index(winner, heights.shape[:2])
+        best = flat[winner, np.arange(n)]
+        place: dict[str, Array] = {axis: corners[corner, j] for j, axis in enumerate(self.free)}
+        place["temperature"] = temperatures[moment]
+        if self.thorough:
+            self._peaks(corners, heights, place, best)
+            if np.any(self._edges(corners, place, best)):
+                self._cycle(place, best)
+        spot: dict[str, Array | float] = {**self.fixed, **place}
+        at = {k: np.broadcast_to(v, (n,)).copy() for k, v in box.values(spot).items()}
+        where = {a: np.broadcast_to(spot.get(a, np.nan), (n,)).copy() for a in (*box.axes, "temperature")}
+        return Extreme(self.direction * best, at, where)
+
+    def _edges(self, corners: Array, place: dict[str, Array], best: Array) -> NDArray[np.bool_]:
+        """Stationary points inside the edges of the vertices; updates place and best, returns who gained."""
+        n = self.box.size
+        gained = np.zeros(n, dtype=bool)
+        if not self.free:
+            return gained
+        stops = np.concatenate([np.repeat(self.box.stops[:, None], n, axis=1), place["temperature"][None, :]])
+        for j, axis in enumerate(self.free):
+            starts = corners[corners[:, j] == 0.0]
+            base: dict[str, Array | float] = {a: starts[:, i, None, None] for i, a in enumerate(self.free)}
+            base["temperature"] = stops[None, :, :]
+            ends = [self.height({**base, axis: x}) for x in (0.0, INWARD, 1.0 - INWARD, 1.0)]
+            shape = (len(starts), len(stops), n)
+            rises = np.broadcast_to((ends[1] > ends[0]) & (ends[2] > ends[3]), shape)
+            if not rises.any():
+                continue
+            which, when, who = np.nonzero(rises)
+            part = _Climb(self.box.take(who), self.names, self.direction, self.fixed, self.free, True, self.premise)
+            spot = {a: starts[which, i] for i, a in enumerate(self.free)}
+            spot["temperature"] = stops[when, who]
+            line = partial(_along, part, spot, axis)
+            x, height = _golden(line, np.zeros(who.size), np.ones(who.size))
+            self.doubtful[who[part.doubtful]] = True
+            gained |= self._keep(who, height, {**spot, axis: x}, place, best)
+        return gained
+
+    def _peaks(self, corners: Array, heights: Array, place: dict[str, Array], best: Array) -> None:
+        """Polish every peak over temperature that may top the best point of the scan; updates place and best."""
+        scan = self.box.scan
+        if scan.size < 3:
+            return
+        left, middle, right = heights[:, :-2], heights[:, 1:-1], heights[:, 2:]
+        # A parabola through three neighbours overshoots the middle one by at most its distance from the lower of the others.
+        reach = middle + np.maximum(middle - np.minimum(left, right), 0.0)
+        which, when, who = np.nonzero((middle >= left) & (middle >= right) & (reach > best))
+        if not which.size:
+            return
+        part = _Climb(self.box.take(who), self.names, self.direction, self.fixed, self.free, True, self.premise)
+        spot = {axis: corners[which, j] for j, axis in enumerate(self.free)}
+        for low, high in ((scan[when], scan[when + 1]), (scan[when + 1], scan[when + 2])):
+            x, height = _golden(partial(_along, part, spot, "temperature"), low, high)
+            self._keep(who, height, {**spot, "temperature": x}, place, best)
+        self.doubtful[who[part.doubtful]] = True
+
+    def _keep(
+        self, who: NDArray[np.integer], height: Array, spot: Mapping[str, Array], place: dict[str, Array], best: Array
+    ) -> NDArray[np.bool_]:
+        """Take over points that are higher than the best of their candidate; returns who gained."""
+        gained = np.zeros(self.box.size, dtype=bool)
+        for k in np.argsort(height):
+            if height[k] > best[who[k]]:
+                best[who[k]] = height[k]
+                gained[who[k]] = True
+                for axis, x in spot.items():
+                    place[axis][who[k]] = x[k]
+        return gained
+
+    def _temperature(self, place: dict[str, Array], best: Array) -> None:
+        """Polish temperature around the best point, on both sides of it."""
+        scan = self.box.scan
+        if scan.size == 1:
+            return
+        here = place["temperature"]
+        below = scan[np.maximum(np.searchsorted(scan, here, side="left") - 1, 0)]
+        above = scan[np.minimum(np.searchsorted(scan, here, side="right"), scan.size - 1)]
+        self._line("temperature", place, best, below, here.copy())
+        self._line("temperature", place, best, place["temperature"].copy(), above)
+
+    def _line(self, axis: str, place: dict[str, Array], best: Array, low: Array, high: Array) -> NDArray[np.bool_]:
+        x, height = _golden(partial(_along, self, place, axis), low, high)
+        better = height > best
+        place[axis] = np.where(better, x, place[axis])
+        best[better] = height[better]
+        return better
+
+    def _cycle(self, place: dict[str, Array], best: Array) -> None:
+        """Repeat line searches along every free axis and temperature until nothing moves."""
+        n = self.box.size
+        for _ in range(12):
+            before = best.copy()
+            for axis in self.free:
+                self._line(axis, place, best, np.zeros(n), np.ones(n))
+            self._temperature(place, best)
+            if not np.any(best - before > 1e-14 * np.abs(before)):
+                return
+
+
+def _along(climb: _Climb, spot: Mapping[str, Array], axis: str, x: Array) -> Array:
+    return climb.height({**spot, axis: x})
+
+
+def _golden(f: Callable[[Array], Array], low: Array, high: Array, steps: int = 64) -> tuple[Array, Array]:
+    """Maximum of a unimodal function on [low, high], elementwise.
+
+    64 golden sections leave 4e-14 of the interval: a maximum may be a kink.
+    """
+    a, b = low.copy(), high.copy()
+    c, d = b - GOLDEN * (b - a), a + GOLDEN * (b - a)
+    fc, fd = f(c), f(d)
+    for _ in range(steps):
+        left = fc > fd
+        b = np.where(left, d, b)
+        a = np.where(left, a, c)
+        new = np.where(left, b - GOLDEN * (b - a), a + GOLDEN * (b - a))
+        value = f(new)
+        c, d, fc, fd = (
+            np.where(left, new, d),
+            np.where(left, c, new),
+            np.where(left, value, fd),
+            np.where(left, fc, value),
+        )
+    return np.where(fc > fd, c, d), np.maximum(fc, fd)
+
+
+@dataclass
+class _Straddle:
+    """Extreme over a box in which some points saturate."""
+
+    box: Box
+    names: tuple[str, ...]
+    direction: int
+
+    def run(self) -> Extreme:
+        box, n = self.box, self.box.size
+        # The active law is the true one wherever its own extreme is active: every maximum of VCE, and most minima of IC.
+        active = box.extreme(self.names, self.direction)
+        self.best = np.full(n, -np.inf)
+        self.at = {name: v.copy() for name, v in active.at.items()}
+        self._keep(np.arange(n), active.at)
+        scan = box.scan
+        corners = np.array(list(itertools.product((0.0, 1.0), repeat=len(box.axes)))).reshape(-1, len(box.axes))
+        grid: dict[str, Array] = {a: corners[:, j, None, None] for j, a in enumerate(box.axes)}
+        grid["temperature"] = scan[None, :, None]
+        self._vertices(grid, (len(corners), scan.size, n))
+        for axis in (*box.axes, "temperature", "drive"):
+            self._edges(axis)
+        return Extreme(self.direction * np.where(np.isfinite(self.best), self.best, np.nan), self.at, {})
+
+    def height(self, values: Values) -> Array:
+        """direction·quantity; a point without a solution counts for nothing."""
+        height = self.direction * self.box.measure(self.names, values, self.box.solve(values))
+        return np.where(np.isnan(height), -np.inf, height)
+
+    def over_temperature(self, spot: Mapping[str, Array], t: Array) -> Array:
+        """Height of points that differ in temperature only."""
+        return self.height(self.box.values({**spot, "temperature": t}))
+
+    def _keep(self, who: NDArray[np.integer], values: Values) -> None:
+        height = self.height(values)
+        for k in np.argsort(height):
+            if height[k] > self.best[who[k]]:
+                self.best[who[k]] = height[k]
+                for name, v in values.items():
+                    self.at[name][who[k]] = v[k]
+
+    def _vertices(self, grid: Mapping[str, Array], shape: tuple[int, ...]) -> None:
+        """Every vertex at every temperature of the scan, and the peaks over temperature between them."""
+        box, scan = self.box, self.box.scan
+        heights = np.broadcast_to(self.height(box.values(grid)), shape)
+        flat = heights.reshape(-1, shape[-1])
+        index = np.array(np.unravel_index(flat.argmax(axis=0), shape[:2]))
+        spots = {a: np.broadcast_to(x, shape) for a, x in grid.items()}
+        who = np.arange(shape[-1])
+        self._keep(who, self._whole({a: x[index[0], index[1], who] for a, x in spots.items()}))
+        if scan.size < 3:
+            return
+        left, middle, right = heights[:, :-2], heights[:, 1:-1], heights[:, 2:]
+        with np.errstate(invalid="ignore"):
+            reach = middle + np.maximum(middle - np.minimum(left, right), 0.0)
+            which, when, who = np.nonzero((middle >= left) & (middle >= right) & (reach > self.best))
+        if who.size:
+            spot = {a: x[which, 0, who] for a, x in spots.items()}
+            part = replace(self, box=box.take(who))
+            for low, high in ((scan[when], scan[when + 1]), (scan[when + 1], scan[when + 2])):
+                t, _ = _golden(partial(part.over_temperature, spot), low, high)
+                self._keep(who, part._whole({**spot, "temperature": t}))
+
+    def _whole(self, spot: Mapping[str, Array]) -> Values:
+        n = self.box.size
+        return {k: np.broadcast_to(v, (n,)).copy() for k, v in self.box.values(spot).items()}
+
+    @cached_property
+    def drive(self) -> dict[str, float]:
+        """Axes that move the base drive alone, with the end of most drive."""
+        box = self.box
+        values = box.nominal()
+        t = values["temperature"]
+
+        def port(moved: Mapping[str, Array]) -> TwoPort:
+            now = {**values, **moved}
+            return box.network.two_port({k: now[k] for k in box.rails}, {k: now[k] for k in box.parts}, t)
+
+        plain = port({})
+        found = {"delta": 0.0} if "delta" in box.axes else {}
+        for axis in (a for a in box.axes if a not in DEVICE_AXES):
+            other = port({axis: values[axis] * 1.01})
+            load = ((plain.e_c, other.e_c), (plain.z_cb, other.z_cb), (plain.z_cc, other.z_cc))
+            sign = box.network.sign("ic", axis)
+            if sign and all(np.array_equal(np.asarray(a), np.asarray(b)) for a, b in load):
+                found[axis] = 0.5 + 0.5 * sign
+        return found
+
+    def _edges(self, axis: str) -> None:
+        """Points where VCE reaches VCE(sat) along one axis, from every vertex of the others.
+
+        The axis "drive" moves everything that only drives the base together, from least to most.
+        """
+        box, n, scan = self.box, self.box.size, self.box.scan
+        moving = self.drive if axis == "drive" else {axis: 1.0}
+        others = tuple(a for a in box.axes if a not in moving)
+        corners = np.array(list(itertools.product((0.0, 1.0), repeat=len(others)))).reshape(-1, len(others))
+        if axis == "temperature":
+            starts, ends = scan[:-1], scan[1:]
+        else:
+            starts, ends = np.zeros(scan.size), np.ones(scan.size)
+        if not moving or not starts.size:
+            return
+        shape = (len(corners), starts.size, n)
+        base = {a: np.broadcast_to(corners[:, j, None, None], shape) for j, a in enumerate(others)}
+        if axis != "temperature":
+            base["temperature"] = np.broadcast_to(scan[None, :, None], shape)
+        low, high = (np.broadcast_to(x[None, :, None], shape) for x in (starts, ends))
+
+        def along(spot: Mapping[str, Array], x: Array) -> dict[str, Array]:
+            return {**spot, **{a: x if most else 1.0 - x for a, most in moving.items()}}
+
+        def room(b: Box, spot: Mapping[str, Array], x: Array) -> Array:
+            return b.solve(b.values(along(spot, x)), active_law=True).vce - b.transistor.vce_sat
+
+        begin, end = (np.broadcast_to(room(box, base, x), shape) for x in (low, high))
+        crossing = np.nonzero((begin >= 0.0) != (end >= 0.0))
+        who = crossing[-1]
+        if not who.size:
+            return
+        part = box.take(who)
+        spot = {a: x[crossing] for a, x in base.items()}
+        one, two = low[crossing].copy(), high[crossing].copy()
+        rising = begin[crossing] < 0.0
+        for _ in range(60):
+            middle = 0.5 * (one + two)
+            before = (room(part, spot, middle) >= 0.0) != rising
+            one, two = np.where(before, middle, one), np.where(before, two, middle)
+        # Of the last two points, the one that is still active: there both laws give the same.
+        self._keep(who, replace(self, box=part)._whole(along(spot, np.where(rising, two, one))))

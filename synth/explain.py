@@ -1,0 +1,423 @@
+"""Facts behind an answer: what each resistor does, what drives the drift, what the next value would do, and why to be careful.
+
+The budget of a drift is the Shapley value of each cause: its mean effect over every order of moving the parameters from
+nominal to the deciding point. It treats the causes alike, needs no order of moving and adds up exactly, interactions
+included, which one-at-a-time sensitivities do not.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from math import factorial
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from synth.answer import Caution, Duty, Neighbour, Nominal, Share
+from synth.box import Box, Meter, Values
+from synth.networks.form import Array, Network
+from synth.q_point import REGIONS
+from synth.quantities import format_quantity, format_resistance
+from synth.spaces import Goal, Index, Space, assess_all
+
+if TYPE_CHECKING:
+    from synth.answer import Candidate
+
+CAUSES = {"delta": "vbe", "hfe": "hfe", "icbo": "leakage", "temperature": "temperature"}
+"""Names of the device axes as causes; rails and roles keep their own."""
+
+NEGLIGIBLE = 0.005
+"""Below this many per cent a share prints as 0 %."""
+
+CAUSE_WORDS = {
+    "vbe": "VBE spread",
+    "hfe": "hFE spread",
+    "leakage": "leakage",
+    "temperature": "temperature",
+    "centring": "centring",
+    "vcc": "supply",
+    "vee": "negative supply",
+    "vbb": "base supply",
+}
+
+
+def nominal_points(box: Box, ground: str = "negative") -> list[Nominal]:
+    """Nominal Q-point of every candidate.
+
+    Parameters
+    ----------
+    box : Box
+        n candidates.
+    ground : {"negative", "positive", "middle", "common"}
+        What is 0 V: a rail, half-way between two rails, or the common point of two supplies; node voltages are given
+        against it, as a meter would read them.
+
+    Returns
+    -------
+    list of Nominal
+        One each.
+    """
+    values = box.nominal()
+    q = box.solve(values)
+    branches = box.branches(values, q)
+    low = -float(values["vee"]) if "vee" in box.rails else 0.0
+    rail_ends = {"negative": low, "positive": float(values["vcc"])}
+    # A PNP stage is the mirror image: its emitter side hangs on the positive rail.
+    mirror = -1.0 if box.transistor.polarity == "pnp" else 1.0
+    if mirror < 0.0:
+        rail_ends = {"negative": rail_ends["positive"], "positive": rail_ends["negative"]}
+    zero = {**rail_ends, "middle": 0.5 * sum(rail_ends.values()), "common": 0.0}[ground]
+
+    def pick(x: object, k: int) -> float:
+        return float(np.broadcast_to(np.asarray(x, dtype=float), (box.size,))[k])
+
+    return [
+        Nominal(
+            ic=pick(q.ic, k),
+            vce=pick(q.vce, k),
+            ib=pick(q.ib, k),
+            vbe=pick(q.vbe, k),
+            region=REGIONS[int(np.broadcast_to(q.region, (box.size,))[k])],
+            nodes={node: mirror * (pick(v, k) - zero) for node, v in branches.nodes.items()},
+            rails={rail: pick(i, k) for rail, i in branches.rail.items()},
+        )
+        for k in range(box.size)
+    ]
+
+
+def duties(box: Box) -> list[dict[str, Duty]]:
+    """Drop and current of every resistor at the nominal Q-point.
+
+    Parameters
+    ----------
+    box : Box
+        n candidates.
+
+    Returns
+    -------
+    list of dict
+        Role to duty, one mapping each.
+    """
+    values = box.nominal()
+    branches = box.branches(values, box.solve(values))
+    found: list[dict[str, Duty]] = []
+    for k in range(box.size):
+        row = {}
+        for role in box.parts:
+            drop = np.broadcast_to(np.asarray(branches.voltage[role]), (box.size,))[k]
+            current = np.broadcast_to(np.asarray(branches.current[role]), (box.size,))[k]
+            row[role] = Duty(drop=float(drop), current=float(current), meaning=box.network.role(role).meaning)
+        found.append(row)
+    return found
+
+
+def budgets(
+    box: Box, at: Values, quantity: str, direction: int, goal: float, active_law: bool = True
+) -> list[tuple[Share, ...]]:
+    """Split the excursion of a quantity at its deciding point among its causes.
+
+    Parameters
+    ----------
+    box : Box
+        n candidates.
+    at : dict
+        The deciding point of each, arrays of shape (n,).
+    quantity : {"ic", "vce"}
+        What drifts.
+    direction : {+1, -1}
+        Side of the excursion.
+    goal : float
+        Target [A or V].
+    active_law : bool
+        False where the box reaches into saturation.
+
+    Returns
+    -------
+    list of tuple of Share
+        Descending; the shares of one candidate add up to direction·(worst/goal − 1) [-]. Empty where a mixture of
+        nominal and deciding values has no Q-point.
+
+    Notes
+    -----
+    2**k solves for k causes. Zero shares are left out.
+
+    References
+    ----------
+    A value for n-person games, Contributions to the Theory of Games II, 1953, pp. 307-317.
+    """
+    n = box.size
+    start = box.nominal()
+    causes = [c for c in start if np.any(np.broadcast_to(start[c], (n,)) != np.broadcast_to(at[c], (n,)))]
+    k = len(causes)
+    masks = (np.arange(2**k)[:, None] >> np.arange(k)) & 1
+    values = dict(start)
+    for j, cause in enumerate(causes):
+        values[cause] = np.where(masks[:, j, None] == 1, at[cause], start[cause])
+    q = box.solve(values, active_law=active_law)
+    reached = np.broadcast_to(box.measure((quantity,), values, q), (2**k, n)) * (direction / goal)
+    size = masks.sum(axis=1)
+    weight = np.array([factorial(s) * factorial(k - s - 1) / factorial(k) if s < k else 0.0 for s in range(k + 1)])
+    shares: dict[str, Array] = {"centring": reached[0] - direction}
+    for j, cause in enumerate(causes):
+        without = np.flatnonzero(masks[:, j] == 0)
+        gain = reached[without | (1 << j)] - reached[without]
+        shares[CAUSES.get(cause, cause)] = weight[size[without]] @ gain
+    found = []
+    for i in range(n):
+        row = [Share(cause=c, share=float(x[i])) for c, x in shares.items() if x[i] != 0.0]
+        sound = all(np.isfinite(s.share) for s in row)
+        found.append(tuple(sorted(row, key=lambda s: -s.share)) if sound else ())
+    return found
+
+
+def neighbours(space: Space, index: Index, goal: Goal) -> list[tuple[Neighbour, ...]]:
+    """What one preferred value up or down in each role would do.
+
+    Parameters
+    ----------
+    space : Space
+        Where the candidates come from.
+    index : ndarray of int, shape (n, roles)
+        Their list positions.
+    goal : Goal
+        What drift is measured from.
+
+    Returns
+    -------
+    list of tuple of Neighbour
+        By role, down before up; each judged over its whole box.
+    """
+    rows: list[Index] = []
+    owner: list[tuple[int, int, int]] = []
+    for k, row in enumerate(index):
+        for j, role in enumerate(space.roles):
+            for step in (-1, 1):
+                moved = row.copy()
+                moved[j] += step
+                if 0 <= moved[j] < space.lists[role].nominal.size:
+                    rows.append(moved)
+                    owner.append((k, j, step))
+    found: list[list[Neighbour]] = [[] for _ in index]
+    if not rows:
+        return [tuple(f) for f in found]
+    judged = assess_all(space, np.stack(rows), goal, Meter())
+    for (k, j, step), row, result in zip(owner, rows, judged, strict=True):
+        role = space.roles[j]
+        found[k].append(
+            Neighbour(
+                role=role,
+                step=step,
+                value=float(space.lists[role].nominal[row[j]]),
+                drift=result.drift,
+                verdict="fail" if result.fails else "pass",
+                fails=result.fails,
+            )
+        )
+    return [tuple(f) for f in found]
+
+
+def percent(fraction: float) -> str:
+    """A fraction in per cent, three figures.
+
+    Parameters
+    ----------
+    fraction : float
+        Any [-].
+
+    Returns
+    -------
+    str
+        ``14.9 %``.
+    """
+    value = 100.0 * fraction
+    if abs(value) < NEGLIGIBLE:
+        return "0 %"
+    return f"{value:.0f} %" if abs(value) >= 99.95 else f"{value:.{1 if abs(value) >= 0.995 else 2}f} %"
+
+
+def cause_words(cause: str) -> str:
+    """A cause of drift in words.
+
+    Parameters
+    ----------
+    cause : str
+        As in a budget.
+
+    Returns
+    -------
+    str
+        ``hFE spread``, ``supply``, ``R1``...
+    """
+    return CAUSE_WORDS.get(cause, cause.upper())
+
+
+def point_words(at: Mapping[str, float], skip: Sequence[str] = ()) -> str:
+    """A point of the box in words.
+
+    Parameters
+    ----------
+    at : mapping of str to float
+        Parameters (see `synth.box.Values`) [V, A, K, ohm].
+    skip : sequence of str
+        Parameters to leave out.
+
+    Returns
+    -------
+    str
+        ``VCC 12 V, hFE 110, ...``.
+    """
+    words = []
+    for name, value in at.items():
+        if name in skip:
+            continue
+        if name == "temperature":
+            words.append(format_quantity(value, "temperature"))
+        elif name == "delta":
+            if value:
+                words.append(f"VBE {'+' if value > 0 else '-'}{format_quantity(abs(value), 'voltage')}")
+        elif name == "hfe":
+            words.append(f"hFE {value:.4g}")
+        elif name == "icbo":
+            if value:
+                words.append(f"ICBO {format_quantity(value, 'current')} at 25 °C")
+        elif name.startswith("v"):
+            words.append(f"{name.upper()} {format_quantity(value, 'voltage')}")
+        else:
+            words.append(f"{name.upper()} {format_quantity(value, 'resistance')}")
+    return ", ".join(words)
+
+
+def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
+    """Explanation of a candidate; every number in it stands in the candidate.
+
+    Parameters
+    ----------
+    candidate : Candidate
+        Complete but for its explanation.
+    network : Network
+        Its network.
+
+    Returns
+    -------
+    tuple of str
+        One fact each.
+    """
+    c = candidate
+    ic, vce = c.worst["ic"], c.worst["vce"]
+    lines = [
+        f"{network.title.capitalize()}: {network.summary}",
+        f"Q-point: IC {format_quantity(c.nominal.ic, 'current')} nominal, {format_quantity(ic[0], 'current')} to "
+        f"{format_quantity(ic[1], 'current')} over the whole box; VCE {format_quantity(c.nominal.vce, 'voltage')} nominal, "
+        f"{format_quantity(vce[0], 'voltage')} to {format_quantity(vce[1], 'voltage')}.",
+    ]
+    for role, duty in c.roles.items():
+        lines.append(
+            f"{role.upper()} {format_resistance(c.resistors[role])}: {duty.meaning}; drops "
+            f"{format_quantity(duty.drop, 'voltage')} at {format_quantity(duty.current, 'current')}."
+        )
+    larger = "vce" if c.drift.vce is not None and c.drift.vce > c.drift.ic else "ic"
+    if c.drift.vce is not None:
+        lines.append(
+            f"{larger.upper()} decides the rank: it drifts {percent(c.drift.q_point)} at worst"
+            f" ({'IC' if larger == 'vce' else 'VCE'} {percent(c.drift.ic if larger == 'vce' else c.drift.vce)});"
+            f" the nominal Q-point itself is off target by {percent(c.centring)}."
+        )
+    else:
+        lines.append(f"IC decides the rank: it drifts {percent(c.drift.ic)} at worst; centring {percent(c.centring)}.")
+    for quantity, shares in c.budget.items():
+        parts = ", ".join(f"{cause_words(s.cause)} {percent(s.share)}" for s in shares)
+        if parts:
+            total = c.drift.ic if quantity == "ic" else c.drift.vce
+            lines.append(f"Budget of {quantity.upper()} ({percent(total or 0.0)}): {parts}.")
+    steps = []
+    for n in c.neighbours:
+        effect = "the transistor saturates" if n.drift is None else f"drift {percent(n.drift)}"
+        if n.fails and n.drift is not None:
+            effect += f", fails {' and '.join(n.fails)}"
+        steps.append(f"{n.role.upper()} {format_resistance(n.value)}: {effect}")
+    if steps:
+        lines.append(f"One value up or down: {'; '.join(steps)}.")
+    judged = [v for v in c.limits if np.isfinite(v.margin)]
+    if judged:
+        tight = min(judged, key=lambda v: v.margin)
+        limit = tight.limit if isinstance(tight.limit, float) else None
+        bound = "its window" if limit is None else f"{tight.sense} {format_quantity(limit, tight.kind)}"
+        lines.append(
+            f"Least margin: {tight.name}, {format_quantity(tight.worst, tight.kind)} at worst against {bound}, "
+            f"margin {percent(tight.margin)}."
+        )
+    return tuple(lines)
+
+
+def cautions(candidate: Candidate, box: Box) -> tuple[Caution, ...]:
+    """Named warnings that a candidate deserves, with the physical reason.
+
+    Parameters
+    ----------
+    candidate : Candidate
+        Any candidate.
+    box : Box
+        Its box, of one candidate.
+
+    Returns
+    -------
+    tuple of Caution
+        In a fixed order.
+
+    Notes
+    -----
+    Thresholds are common practice: a gain spread above 1.5 with the emitter grounded; a VBE spread above a fifth of VE;
+    a bleeder below five base currents; total dissipation above 100 mW without a thermal resistance; rails above 50 V.
+    """
+    found = []
+    device = box.transistor
+    ve = candidate.roles["re"].drop if "re" in candidate.roles else 0.0
+    ratio = device.hfe.high / device.hfe.low
+    if candidate.network == "fixed_base" and "re" not in candidate.roles and ratio > 1.5:
+        found.append(
+            Caution(
+                name="fixed_base_gain",
+                text=f"IB is fixed and the emitter grounded, so IC follows hFE from unit to unit: {ratio:.3g} to 1 over its "
+                "range; a network with re holds IC.",
+            )
+        )
+    half = max(device.vbe.high - device.vbe.nominal, device.vbe.nominal - device.vbe.low)
+    if ve > 0.0 and half > 0.2 * ve:
+        found.append(
+            Caution(
+                name="emitter_voltage_small",
+                text=f"VE is only {format_quantity(ve, 'voltage')}: the VBE spread of {format_quantity(half, 'voltage')} "
+                f"moves IC by about {percent(half / ve)} (ΔIC/IC ≈ ΔVBE/VE).",
+            )
+        )
+    bleeder = candidate.roles.get(box.network.bleeder or "")
+    if bleeder is not None:
+        current = bleeder.current
+        worst = candidate.nominal.ic / device.hfe.low
+        if current < 5.0 * worst:
+            found.append(
+                Caution(
+                    name="bleeder_feeble",
+                    text=f"The bleeder carries {format_quantity(current, 'current')}, less than five base currents of "
+                    f"{format_quantity(worst, 'current')} at the least hFE: the base voltage sags with gain.",
+                )
+            )
+    rail = max(spread.high for spread in box.rails.values())
+    if rail > 50.0:
+        found.append(
+            Caution(
+                name="high_voltage",
+                text=f"A rail of {format_quantity(rail, 'voltage')} can injure: follow the local electrical code, have it "
+                "checked by a licensed person, and discharge capacitors before touching.",
+            )
+        )
+    power = candidate.worst["ic"][1] * candidate.worst["vce"][1]
+    if power > 0.1:
+        found.append(
+            Caution(
+                name="dissipation",
+                text=f"The transistor may dissipate up to {format_quantity(power, 'power')}: check its rating at the hot "
+                "ambient in the data sheet; hot parts burn.",
+            )
+        )
+    return tuple(found)

@@ -1,0 +1,364 @@
+"""One registry of limits: what each is, which way it binds, where it is judged and what it measures.
+
+Stage keys, options, verdicts and search all read `RULES`; a limit that is not here does not exist.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Collection, Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from synth.box import Box, Values
+from synth.networks.form import Array, Network, Value
+from synth.quantities import Interval
+
+Sense = Literal[">=", "<="]
+Judged = Literal["nominal", "box"]
+
+SLACK = 1e-12
+"""Relative slack of a comparison: equality passes, whatever the last bit of the arithmetic says."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class LimitRule:
+    """One limit.
+
+    Parameters
+    ----------
+    name, meaning : str
+        Key in ``[limits]`` and option; one sentence.
+    kind : str
+        Kind of quantity, as `synth.quantities` names it.
+    sense : {">=", "<="}
+        What a bare value means.
+    judged : {"nominal", "box"}
+        A shape rule holds at nominal values, any other limit over the whole box.
+    sums : callable, optional
+        ``sums(network, rails, roles)``: the measured value is the worst of these sums of quantities (see `Box.measure`);
+        empty where the limit does not apply.
+    static : callable, optional
+        ``static(network, r)`` for a limit on the resistances alone, with its signs in `static_signs`; None where it does
+        not apply.
+    static_signs : callable, optional
+        ``static_signs(network)``: the sign of the measured value along each role that matters.
+    """
+
+    name: str
+    meaning: str
+    kind: str
+    sense: Sense
+    judged: Judged
+    sums: Callable[[Network, Collection[str], Collection[str]], tuple[tuple[str, ...], ...]] | None = None
+    static: Callable[[Network, Mapping[str, Value]], Value] | None = None
+    static_signs: Callable[[Network], dict[str, int]] | None = None
+
+
+def _bleeder(network: Network, rails: Collection[str], roles: Collection[str]) -> tuple[tuple[str, ...], ...]:
+    return ((f"i_{network.bleeder}",),) if network.bleeder in roles else ()
+
+
+def _supply(network: Network, rails: Collection[str], roles: Collection[str]) -> tuple[tuple[str, ...], ...]:
+    return tuple(network.rail_parts(rails).values())
+
+
+def _base_resistance(network: Network, r: Mapping[str, Value]) -> Value:
+    conductance: Value = 0.0
+    for role in network.base_side:
+        conductance = conductance + 1.0 / r[role]
+    return 1.0 / conductance
+
+
+def _share(network: Network, r: Mapping[str, Value]) -> Value:
+    return r["rc"] / (r["rc"] + r["re"])
+
+
+RULES: Mapping[str, LimitRule] = {
+    rule.name: rule
+    for rule in (
+        LimitRule(
+            name="bleeder_current",
+            meaning="current in the lower divider resistor; more of it stiffens the base voltage and loads supply and signal",
+            kind="current",
+            sense="<=",
+            judged="nominal",
+            sums=_bleeder,
+        ),
+        LimitRule(
+            name="collector_share",
+            meaning="share of rc in rc + re, so that the emitter resistor does not take the voltage that the load needs",
+            kind="ratio",
+            sense=">=",
+            judged="nominal",
+            static=_share,
+            static_signs=lambda network: {"rc": 1, "re": -1},
+        ),
+        LimitRule(
+            name="base_resistance",
+            meaning="resistance of the base feed, so that it loads the signal no more than the transistor does",
+            kind="resistance",
+            sense=">=",
+            judged="nominal",
+            static=_base_resistance,
+            static_signs=lambda network: dict.fromkeys(network.base_side, 1),
+        ),
+        LimitRule(
+            name="supply_current",
+            meaning="largest current drawn from any one rail, bleeder included",
+            kind="current",
+            sense="<=",
+            judged="box",
+            sums=_supply,
+        ),
+        LimitRule(
+            name="vce",
+            meaning="collector-emitter voltage; the transistor stays active, above VCE(sat), at every point of the box",
+            kind="voltage",
+            sense=">=",
+            judged="box",
+            sums=lambda network, rails, roles: (("vce",),),
+        ),
+    )
+}
+"""Every limit by name, in the order of output."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Requirement:
+    """A limit or window with its range, for one network.
+
+    Parameters
+    ----------
+    name : str
+        ``target.ic``, ``target.vce`` or the name of a rule.
+    kind : str
+        Kind of quantity.
+    interval : Interval
+        Allowed range [A, V, ohm or -]; open sides are infinite.
+    judged : {"nominal", "box"}
+        Where it is judged.
+    sums : tuple of tuple of str
+        Sums of quantities of which the worst counts; empty for a limit on resistances alone.
+    rule : LimitRule, optional
+        The rule behind it; None for a window.
+    target : float, optional
+        What the margin of a window is relative to [A or V].
+    """
+
+    name: str
+    kind: str
+    interval: Interval
+    judged: Judged
+    sums: tuple[tuple[str, ...], ...] = ()
+    rule: LimitRule | None = None
+    target: float | None = None
+
+    @property
+    def sides(self) -> tuple[int, ...]:
+        """Directions that can fail: +1 for an upper end, −1 for a lower end."""
+        upper = (1,) if self.interval.high < np.inf else ()
+        return upper + ((-1,) if self.interval.low > -np.inf else ())
+
+    def side(self, direction: int) -> Requirement:
+        """The same requirement with one end only.
+
+        Parameters
+        ----------
+        direction : {+1, -1}
+            +1 keeps the upper end, −1 the lower.
+
+        Returns
+        -------
+        Requirement
+            Open on the other side.
+        """
+        low, high = self.interval.low, self.interval.high
+        return replace(self, interval=Interval(-np.inf, high) if direction > 0 else Interval(low, np.inf))
+
+    def passes(self, value: Array | float) -> NDArray[np.bool_]:
+        """Whether measured values are allowed.
+
+        Parameters
+        ----------
+        value : array_like
+            Measured [A, V, ohm or -].
+
+        Returns
+        -------
+        ndarray of bool
+            Of the same shape; NaN fails.
+        """
+        low, high = self.interval.low, self.interval.high
+        v = np.asarray(value)
+        return np.asarray((v >= low - SLACK * abs(low)) & (v <= high + SLACK * abs(high)))
+
+    def margin(self, value: Array | float) -> Array:
+        """Margin of measured values, negative where they fail.
+
+        Parameters
+        ----------
+        value : array_like
+            Measured [A, V, ohm or -].
+
+        Returns
+        -------
+        ndarray
+            Relative to the limit, or to the target for a window [-]; infinite against a limit of zero that passes.
+        """
+        v = np.asarray(value, dtype=float)
+        margin = np.full(v.shape, np.inf)
+        for side, end in ((1, self.interval.high), (-1, self.interval.low)):
+            if np.isinf(end):
+                continue
+            scale = abs(end if self.target is None else self.target)
+            room = side * (end - v)
+            # What passes as equal has no margin, not one of the sign of the last bit.
+            room = np.where(np.abs(room) <= SLACK * abs(end), 0.0, room)
+            relative = room / scale if scale > 0.0 else np.where(room < 0.0, -np.inf, np.inf)
+            margin = np.minimum(margin, relative)
+        return margin
+
+
+@dataclass(frozen=True)
+class Judgement:
+    """A requirement judged for n candidates.
+
+    `worst` is the measured value [A, V, ohm or -], `at` the point that decides (empty for resistances alone), `margin` [-].
+    """
+
+    requirement: Requirement
+    worst: Array
+    at: Values
+    margin: Array
+    passed: NDArray[np.bool_]
+
+
+def requirements(
+    network: Network,
+    rails: Collection[str],
+    roles: Collection[str],
+    limits: Mapping[str, Interval],
+    given: Collection[str],
+    windows: Mapping[str, tuple[Interval, float | None]],
+    vce_sat: float,
+) -> tuple[Requirement, ...]:
+    """What a candidate of one network has to satisfy.
+
+    Parameters
+    ----------
+    network : Network
+        Its network.
+    rails, roles : collection of str
+        Rails given and roles used.
+    limits : mapping of str to Interval
+        Limits by name, SI.
+    given : collection of str
+        Names of the limits that the user gave; a default collector share binds only where rc and re share their rails.
+    windows : mapping of str to (Interval, float or None)
+        Windows of ``ic`` and ``vce`` with their targets [A, V].
+    vce_sat : float
+        VCE(sat) [V].
+
+    Returns
+    -------
+    tuple of Requirement
+        Only those that apply.
+    """
+    found = [
+        Requirement(
+            name=f"target.{quantity}",
+            kind={"ic": "current"}.get(quantity, "voltage"),
+            interval=interval,
+            judged="box",
+            sums=((quantity,),),
+            target=target,
+        )
+        for quantity, (interval, target) in windows.items()
+        if interval.low > -np.inf or interval.high < np.inf
+    ]
+    wanted = {**limits}
+    least = wanted.get("vce", Interval(-np.inf, np.inf))
+    wanted["vce"] = Interval(max(least.low, vce_sat), least.high)
+    for name, rule in RULES.items():
+        interval = wanted.get(name)
+        if interval is None or not applies(rule, network, rails, roles, name in given):
+            continue
+        sums = rule.sums(network, rails, roles) if rule.sums else ()
+        found.append(
+            Requirement(name=name, kind=rule.kind, interval=interval, judged=rule.judged, sums=sums, rule=rule)
+        )
+    return tuple(found)
+
+
+def applies(
+    rule: LimitRule, network: Network, rails: Collection[str], roles: Collection[str], given: bool
+) -> bool:
+    """Whether a limit means anything for a network.
+
+    Parameters
+    ----------
+    rule : LimitRule
+        The limit.
+    network : Network
+        The network.
+    rails, roles : collection of str
+        Rails given and roles used.
+    given : bool
+        Whether the user gave the limit, rather than the default.
+
+    Returns
+    -------
+    bool
+        False means "not applicable", which is never an error.
+    """
+    if rule.sums is not None:
+        return bool(rule.sums(network, rails, roles))
+    if rule.name == "collector_share":
+        return "rc" in roles and "re" in roles and (given or network.shared_rails)
+    return bool(network.base_side) and set(network.base_side) <= set(roles)
+
+
+def judge(box: Box, requirement: Requirement, worst: Callable[[Sequence[str], int], tuple[Array, Values]]) -> Judgement:
+    """Judge one requirement for every candidate of a box.
+
+    Parameters
+    ----------
+    box : Box
+        The candidates.
+    requirement : Requirement
+        What is asked.
+    worst : callable
+        ``worst(names, direction)``: extreme of a sum of quantities over the box and its point; the caller chooses the law
+        and shares results between requirements.
+
+    Returns
+    -------
+    Judgement
+        Shape (n,) throughout.
+    """
+    rule = requirement.rule
+    if rule is not None and rule.static is not None:
+        r = {role: part.nominal for role, part in box.parts.items()}
+        value = np.broadcast_to(np.asarray(rule.static(box.network, r), dtype=float), (box.size,))
+        return Judgement(requirement, value, {}, requirement.margin(value), requirement.passes(value))
+    options: list[tuple[Array, Values]] = []
+    if requirement.judged == "nominal":
+        values = box.nominal()
+        q = box.solve(values)
+        for names in requirement.sums:
+            options.append((np.broadcast_to(box.measure(names, values, q), (box.size,)), values))
+    else:
+        options = [worst(names, side) for names in requirement.sums for side in requirement.sides]
+    value, at = options[0]
+    value = np.array(value, dtype=float)
+    at = {k: np.broadcast_to(v, (box.size,)).copy() for k, v in at.items()}
+    margin = requirement.margin(value)
+    for other, where in options[1:]:
+        smaller = requirement.margin(other) < margin
+        value = np.where(smaller, other, value)
+        margin = requirement.margin(value)
+        at = {k: np.where(smaller, where[k], v) for k, v in at.items()}
+    return Judgement(requirement, value, at, margin, requirement.passes(value))

@@ -1,0 +1,339 @@
+"""The answer as a table of at most 100 columns."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from math import inf
+
+from synth.answer import Answer, Candidate, Verdict
+from synth.explain import cause_words, percent, point_words
+from synth.quantities import format_quantity, format_resistance, parse_limit
+from synth.stage_keys import KEYS
+
+WIDTH = 100
+FIGURES = 3
+LONG = 14
+"""Characters from which an assumed limit is rounded for reading."""
+LEGEND = """Words
+  over the box  worst case over every spread at once: gain, VBE, temperature, supply, resistors
+  drift         largest excursion from target over the box, relative to the target
+  centring      how far the nominal Q-point is off target
+  margin        distance to the limit, relative to it"""
+NO_BREAK = "\u00a0"
+
+
+def render(answer: Answer) -> str:
+    """The whole answer as text.
+
+    Parameters
+    ----------
+    answer : Answer
+        Of `find` or `check`.
+
+    Returns
+    -------
+    str
+        Lines of at most 100 columns, a trailing newline.
+    """
+    blocks = [_headline(answer)]
+    if answer.infeasible is not None:
+        blocks.append(_infeasible(answer))
+    best = answer.best
+    if best is not None:
+        if answer.kind == "find":
+            blocks.append(_ranking(answer.candidates))
+        blocks += [_first(answer, best), _causes(best), _limits(best)]
+    if answer.alternatives:
+        blocks.append(
+            _section("Worth a look", [[f"rank {a.rank}", a.reason, a.text] for a in answer.alternatives])
+        )
+    if len(answer.networks) > 1:
+        rows = [[n.network, "–" if n.best is None else percent(n.best), n.why] for n in answer.networks]
+        blocks.append(_section("Networks", rows))
+    if answer.warnings:
+        blocks.append("\n".join(["Cautions", *(_wrapped(f"  {w.name}: {w.text}", "    ") for w in answer.warnings)]))
+    if answer.assumed:
+        rows = [[n.key, _short(n.key, n.value), n.why] for n in answer.assumed]
+        blocks.append(_section("Assumed, since not given", rows))
+    if best is not None:
+        blocks.append(LEGEND)
+    blocks.append(_next(answer))
+    text = "\n\n".join(block for block in blocks if block)
+    return "\n".join(_wrapped(line, "    ") for line in text.split("\n")) + "\n"
+
+
+def explanation(answer: Answer, rank: int) -> str:
+    """Explanation of one candidate, wrapped.
+
+    Parameters
+    ----------
+    answer : Answer
+        Any answer.
+    rank : int
+        1 is the best [-].
+
+    Returns
+    -------
+    str
+        A paragraph a fact, a trailing newline.
+    """
+    c = answer.candidate(rank)
+    head = f"Candidate {rank}: {c.network}, {resistors(c)}"
+    return "\n".join([head, *(_wrapped(f"  {line}", "    ") for line in c.explanation)]) + "\n"
+
+
+def resistors(candidate: Candidate) -> str:
+    """Resistors of a candidate in a row.
+
+    Parameters
+    ----------
+    candidate : Candidate
+        Any candidate.
+
+    Returns
+    -------
+    str
+        ``R1 38K3, R2 21K, ...``.
+    """
+    return ", ".join(f"{role.upper()} {format_resistance(value)}" for role, value in candidate.resistors.items())
+
+
+def table(rows: Sequence[Sequence[str]], right: Sequence[int] = (), indent: str = "  ") -> str:
+    """Rows in aligned columns; the last column wraps.
+
+    Parameters
+    ----------
+    rows : sequence of sequence of str
+        Cells.
+    right : sequence of int
+        Columns to align to the right.
+    indent : str
+        In front of every line.
+
+    Returns
+    -------
+    str
+        Lines of at most 100 columns.
+    """
+    widths = [max(len(row[j]) for row in rows) for j in range(len(rows[0]))]
+    lines = []
+    for row in rows:
+        cells = [c.rjust(widths[j]) if j in right else c.ljust(widths[j]) for j, c in enumerate(row[:-1])]
+        lead = indent + "".join(cell + "  " for cell in cells)
+        last = row[-1].rjust(widths[-1]) if len(row) - 1 in right else row[-1]
+        lines.append(_wrapped(lead + last, " " * len(lead)))
+    return "\n".join(lines)
+
+
+def _wrapped(text: str, hang: str) -> str:
+    """Break a long line at spaces; continuation lines start with `hang`."""
+    lines, line = [], text
+    while len(line) > WIDTH:
+        cut = line.rfind(" ", len(hang) + 1, WIDTH + 1)
+        # A word longer than a line is cut rather than let through.
+        end, rest = (cut, cut + 1) if cut > 0 else (WIDTH, WIDTH)
+        lines.append(line[:end].rstrip())
+        line = hang + line[rest:]
+    return "\n".join([*lines, line.rstrip()])
+
+
+def _section(title: str, rows: Sequence[Sequence[str]], right: Sequence[int] = ()) -> str:
+    return f"{title}\n{table(rows, right)}"
+
+
+def _short(key: str, text: str) -> str:
+    """An assumed text with a long limit rounded for reading; the exact one stands in JSON and in the saved stage."""
+    entry = KEYS.get(key)
+    if entry is None or entry.form != "limit" or len(text) < LONG:
+        return text
+    limit = parse_limit(text, entry.kind, key, entry.rule)
+    if limit.low == -inf:
+        return f"<= {format_quantity(limit.high, entry.kind)}"
+    return f">= {format_quantity(limit.low, entry.kind)}" if limit.high == inf else text
+
+
+def _count(number: int) -> str:
+    return f"{number:,}".replace(",", NO_BREAK) if number < 10**7 else f"{number:.3g}"
+
+
+def _headline(answer: Answer) -> str:
+    name = answer.stage.get("name") or "stage"
+    search = answer.search
+    if search is None:
+        best = answer.best
+        verdict = "no network" if best is None else best.verdict.upper()
+        return f"{verdict}  {name}"
+    effort = f"{_count(search.evaluated)} Q-points solved in {search.seconds:.2f} s"
+    space = f"{_count(search.combinations)} combinations"
+    if search.status == "optimal":
+        count = len(answer.candidates)
+        listed = "the only candidate" if count == 1 else f"the best {count}"
+        beyond = "" if search.bound is None else f"; every other drifts {percent(search.bound)} or more"
+        return _wrapped(f"PASS  {name}: {listed} of {space}, proved{beyond} ({effort})", "      ")
+    if search.status == "infeasible":
+        return _wrapped(f"FAIL  {name}: none of {space} meets every limit, proved ({effort})", "      ")
+    bound = f"; nothing can drift less than {percent(search.bound)}" if search.bound else ""
+    state = "PASS" if answer.candidates else "OPEN"
+    return _wrapped(f"{state}  {name}: stopped early among {space}{bound} ({effort})", "      ")
+
+
+def figure(value: float, kind: str) -> str:
+    """A measured value with its three figures shown, trailing zeros included, so that columns line up.
+
+    Parameters
+    ----------
+    value : float
+        Measured, SI [-].
+    kind : str
+        Kind of quantity.
+
+    Returns
+    -------
+    str
+        ``2.20 mA``.
+    """
+    number, _, unit = format_quantity(value, kind).rpartition(" ")
+    figures = sum(c.isdigit() for c in number.lstrip("-0."))
+    if number[-1:].isdigit() and 0 < figures < FIGURES:
+        number += ("" if "." in number else ".") + "0" * (FIGURES - figures)
+    return f"{number} {unit}".strip()
+
+
+def span(low: float, high: float, kind: str) -> str:
+    """A range with the unit once where both ends share it.
+
+    Parameters
+    ----------
+    low, high : float
+        Ends, SI [-].
+    kind : str
+        Kind of quantity.
+
+    Returns
+    -------
+    str
+        ``1.78 to 2.19 mA``.
+    """
+    a, b = figure(low, kind), figure(high, kind)
+    if a.split(" ")[-1] == b.split(" ")[-1]:
+        return f"{a.split(' ')[0]} to {b}"
+    return f"{a} to {b}"
+
+
+def _ranking(candidates: Sequence[Candidate]) -> str:
+    groups: list[list[Candidate]] = []
+    for c in candidates:
+        if groups and tuple(groups[-1][0].resistors) == tuple(c.resistors) and groups[-1][0].network == c.network:
+            groups[-1].append(c)
+        else:
+            groups.append([c])
+    same = len({(c.network, tuple(c.resistors)) for c in candidates}) == 1
+    roles = list(candidates[0].resistors) if same else []
+    head = ["rank", *(["network"] if not same else []), *([r.upper() for r in roles] if same else ["resistors"])]
+    head += ["IC over the box", "VCE over the box", "drift", "supply"]
+    rows = [head]
+    for c in candidates:
+        values = [format_resistance(c.resistors[r]) for r in roles] if same else [
+            " ".join(f"{r.upper()} {format_resistance(v)}" for r, v in c.resistors.items())
+        ]
+        rows.append(
+            [
+                str(c.rank),
+                *([c.network] if not same else []),
+                *values,
+                span(*c.worst["ic"], "current"),
+                span(*c.worst["vce"], "voltage"),
+                percent(c.drift.q_point),
+                figure(c.supply_current, "current"),
+            ]
+        )
+    return table(rows, right=(0, len(head) - 2, len(head) - 1))
+
+
+def _first(answer: Answer, c: Candidate) -> str:
+    title = f"{'Best' if answer.kind == 'find' else 'Fitted'}: {c.network}, {resistors(c)}"
+    if c.nominal.region != "active" or len(c.regions) > 1:
+        title += f" ({', '.join(c.regions)} over the box)"
+    target = answer.stage.get("target", {})
+    rows = [["", "nominal", "over the box", "target", "drift"]]
+    for quantity, kind, drift in (("ic", "current", c.drift.ic), ("vce", "voltage", c.drift.vce)):
+        aim = (target.get(quantity) or [None, None, None])[1]
+        rows.append(
+            [
+                quantity.upper(),
+                figure(getattr(c.nominal, quantity), kind),
+                span(*c.worst[quantity], kind),
+                "–" if aim is None else format_quantity(aim, kind),
+                "–" if drift is None else percent(drift),
+            ]
+        )
+    nodes = ", ".join(f"V{n.upper()} {figure(v, 'voltage')}" for n, v in c.nominal.nodes.items())
+    return f"{title}\n{table(rows, right=(4,))}\n  nominal node voltages against 0 V: {nodes}"
+
+
+def _causes(c: Candidate) -> str:
+    rows = []
+    for quantity, shares in c.budget.items():
+        total = c.drift.ic if quantity == "ic" else c.drift.vce
+        top = [f"{cause_words(s.cause)} {percent(s.share)}" for s in shares[:3] if s.share > 0.0]
+        if top and total is not None:
+            rows.append([f"{quantity.upper()} {percent(total)}", ", ".join(top)])
+    return _section("Three largest causes of drift", rows) if rows else ""
+
+
+def limit_words(v: Verdict) -> str:
+    """What a verdict's limit allows.
+
+    Parameters
+    ----------
+    v : Verdict
+        Any verdict.
+
+    Returns
+    -------
+    str
+        ``<= 200 µA``.
+    """
+    if isinstance(v.limit, tuple):
+        return f"{format_quantity(v.limit[0], v.kind)} to {format_quantity(v.limit[1], v.kind)}"
+    return f"{v.sense} {format_quantity(v.limit, v.kind)}"
+
+
+def _limits(c: Candidate) -> str:
+    rows = [["limit", "allowed", "worst", "margin", "", "decided at"]]
+    for v in c.limits:
+        decides = point_words(v.at, skip=tuple(c.resistors)) if v.at and v.name not in ("bleeder_current",) else "nominal"
+        saturates = v.name == "vce" and v.verdict == "fail" and v.worst == v.limit
+        margin = "saturates" if saturates else percent(v.margin) if abs(v.margin) < inf else "–"
+        rows.append([v.name, limit_words(v), figure(v.worst, v.kind), margin, v.verdict, decides])
+    return _section("Limits and windows", rows, right=(3,)) if len(rows) > 1 else ""
+
+
+def _infeasible(answer: Answer) -> str:
+    why = answer.infeasible
+    assert why is not None
+    one = len(why.binding) == 1
+    lines = [f"{'This limit cannot be met' if one else 'These limits cannot be met together'}: {', '.join(why.binding)}"]
+    for name, drift in why.best_without.items():
+        effect = "other limits still conflict" if drift is None else f"the best candidate drifts {percent(drift)}"
+        lines.append(f"  without {name}: {effect}")
+    if why.relaxations:
+        lines.append("Any one of these changes would do (each verified by a search of its own):")
+        for r in why.relaxations:
+            change = ", ".join(f"{key} = \"{text}\"" for key, text in r.change.items())
+            lines.append(f"  {change}: best drift {percent(r.drift)}")
+    else:
+        lines.append("No change of one limit alone would do.")
+    return "\n".join(_wrapped(line, "    ") for line in lines)
+
+
+def _next(answer: Answer) -> str:
+    if answer.kind == "find" and answer.candidates:
+        return "Next: --explain 1 shows the reasons; --save stage.toml keeps the request with every assumed value."
+    if answer.infeasible is not None and answer.infeasible.relaxations:
+        change = answer.infeasible.relaxations[0].change
+        options = " ".join(f"{KEYS[key].options[0]} '{text}'" for key, text in change.items())
+        return f"Next: repeat the command with {options}"
+    if answer.kind == "check":
+        return "Next: restpoint find with the same request shows the best values for it."
+    return "Next: add --network any to try every network, or widen a window or limit named above."

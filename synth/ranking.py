@@ -1,0 +1,75 @@
+"""The order of candidates, and which of them are worth a look for another reason."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from synth.answer import Alternative, Candidate
+from synth.quantities import format_quantity
+
+DIGITS = 12
+"""Significant digits of drift that order candidates; beyond them arithmetic noise would."""
+
+
+def order_key(candidate: Candidate, roles: Sequence[str]) -> tuple[object, ...]:
+    """Key that sorts candidates from best to worst.
+
+    Parameters
+    ----------
+    candidate : Candidate
+        Any rank.
+    roles : sequence of str
+        Role order of its network.
+
+    Returns
+    -------
+    tuple
+        Drift rounded to 12 significant digits, centring, supply current, number of resistors, number of distinct values,
+        network name, resistor values in role order.
+    """
+    values = [candidate.resistors[role] for role in roles if role in candidate.resistors]
+    return (
+        float(f"{candidate.drift.q_point:.{DIGITS - 1}e}"),
+        candidate.centring,
+        candidate.supply_current,
+        len(values),
+        len(set(values)),
+        candidate.network,
+        tuple(values),
+    )
+
+
+def alternatives(candidates: Sequence[Candidate]) -> tuple[Alternative, ...]:
+    """Listed candidates that beat the first one in something else.
+
+    Parameters
+    ----------
+    candidates : sequence of Candidate
+        Ranked, best first.
+
+    Returns
+    -------
+    tuple of Alternative
+        Least supply current, stiffest-fed signal path (highest resistance of the base feed), fewest distinct values; only
+        where another candidate than the first is better in it.
+    """
+    if len(candidates) < 2:
+        return ()
+    best = candidates[0]
+    found = []
+    thrifty = min(candidates, key=lambda c: (c.supply_current, c.rank))
+    if thrifty.supply_current < best.supply_current * (1.0 - 1e-9):
+        text = f"{format_quantity(thrifty.supply_current, 'current')} from the supply at nominal, instead of "
+        text += format_quantity(best.supply_current, "current")
+        found.append(Alternative(reason="least current", rank=thrifty.rank, text=text))
+    light = max(candidates, key=lambda c: (c.base_feed, -c.rank))
+    if light.base_feed > best.base_feed * (1.0 + 1e-9):
+        text = f"base feed of {format_quantity(light.base_feed, 'resistance')} loads the signal less than "
+        text += format_quantity(best.base_feed, "resistance")
+        found.append(Alternative(reason="highest base-feed resistance", rank=light.rank, text=text))
+    plain = min(candidates, key=lambda c: (len(set(c.resistors.values())), c.rank))
+    count, first = len(set(plain.resistors.values())), len(set(best.resistors.values()))
+    if count < first:
+        text = f"{count} different value{'s' if count > 1 else ''} to stock instead of {first}"
+        found.append(Alternative(reason="fewest distinct values", rank=plain.rank, text=text))
+    return tuple(found)

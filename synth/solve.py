@@ -1,0 +1,326 @@
+"""Targets to ranked candidates, and the verdict on a network that is already there."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from synth import __version__
+from synth.advice import why_nothing_qualifies
+from synth.answer import Answer, Candidate, Caution, Drift, Neighbour, NetworkResult, Search, Verdict
+from synth.box import Box, Extreme, Meter, Values
+from synth.explain import (
+    budgets,
+    cause_words,
+    cautions,
+    duties,
+    neighbours,
+    nominal_points,
+    percent,
+    sentences,
+)
+from synth.limits import Judgement, Requirement, judge
+from synth.networks.form import Array
+from synth.q_point import REGIONS
+from synth.ranking import alternatives, order_key
+from synth.search import Outcome, search
+from synth.spaces import Exact, Goal, Index, Space, fitted, goal_of, spaces_of
+from synth.stage import Stage
+
+Progress = Callable[[float, float, int], bool]
+
+
+def find(
+    stage: Stage, *, top: int = 10, progress: Progress | None = None, command: str = ""
+) -> Answer:
+    """Find the networks whose Q-point drifts least, proved, ranked and explained.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request.
+    top : int
+        How many candidates to list and prove [-].
+    progress : callable, optional
+        See `synth.search.search`.
+    command : str
+        The command that asked, for the record.
+
+    Returns
+    -------
+    Answer
+        With `infeasible` filled when nothing qualifies.
+    """
+    goal = goal_of(stage)
+    spaces = spaces_of(stage)
+    outcome = search(spaces, goal, top=top, progress=progress)
+    candidates = _candidates(outcome, goal, top)
+    best_of = _best_of_each(spaces, goal, candidates, outcome, progress)
+    infeasible = why_nothing_qualifies(stage) if outcome.status == "infeasible" else None
+    warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
+    if candidates:
+        first = candidates[0]
+        space = next(s for s in spaces if _is_of(first, s))
+        warnings += cautions(first, space.box(_index(space, first), Meter()))
+    return Answer(
+        kind="find",
+        version=__version__,
+        command=command,
+        stage=stage.as_dict(),
+        assumed=stage.assumed,
+        warnings=warnings,
+        search=_record(outcome),
+        networks=best_of,
+        candidates=candidates,
+        alternatives=alternatives(candidates),
+        infeasible=infeasible,
+    )
+
+
+def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answer:
+    """Judge the resistors that are fitted.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request; its ``[values]`` are the resistors fitted.
+    command : str
+        The command that asked, for the record.
+    **resistors : str or float
+        Values by role, in place of those of the stage [ohm].
+
+    Returns
+    -------
+    Answer
+        With one candidate; it passes only if every verdict does.
+
+    Raises
+    ------
+    StageError
+        If the values do not make up exactly one of the stage's networks.
+    """
+    if resistors:
+        stage = stage.replace(**resistors)
+    goal = goal_of(stage)
+    space = fitted(stage)
+    index = np.zeros((1, len(space.roles)), dtype=np.int32)
+    (candidate,) = _build(space, index, goal, any_region=True)
+    network = space.network
+    candidate = replace(candidate, rank=1, explanation=sentences(candidate, network))
+    warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
+    warnings += cautions(candidate, space.box(index, Meter()))
+    failed = [v.name for v in candidate.limits if v.verdict == "fail"]
+    why = f"fails {', '.join(failed)}" if failed else "passes every verdict"
+    return Answer(
+        kind="check",
+        version=__version__,
+        command=command,
+        stage=stage.as_dict(),
+        assumed=stage.assumed,
+        warnings=warnings,
+        networks=(NetworkResult(network=network.name, best=candidate.drift.q_point, why=why),),
+        candidates=(candidate,),
+    )
+
+
+def _record(outcome: Outcome) -> Search:
+    return Search(
+        status=outcome.status,
+        bound=float(outcome.bound) if np.isfinite(outcome.bound) else None,
+        combinations=outcome.combinations,
+        evaluated=outcome.evaluated,
+        complete=outcome.complete,
+        seconds=outcome.seconds,
+    )
+
+
+def _is_of(candidate: Candidate, space: Space) -> bool:
+    return candidate.network == space.network.name and set(candidate.resistors) == set(space.roles)
+
+
+def _index(space: Space, candidate: Candidate) -> Index:
+    position = [int(np.argmin(np.abs(space.lists[r].nominal - candidate.resistors[r]))) for r in space.roles]
+    return np.array([position], dtype=np.int32)
+
+
+def _candidates(outcome: Outcome, goal: Goal, top: int) -> tuple[Candidate, ...]:
+    built: list[tuple[Candidate, Space]] = []
+    for space in dict.fromkeys(f.space for f in outcome.found):
+        index = np.array([f.index for f in outcome.found if f.space is space], dtype=np.int32)
+        built += [(c, space) for c in _build(space, index, goal, any_region=False)]
+    built.sort(key=lambda pair: order_key(pair[0], pair[1].roles))
+    listed = built[:top]
+    around: dict[int, tuple[Neighbour, ...]] = {}
+    for space in dict.fromkeys(s for _, s in listed):
+        ranks = [k for k, (_, s) in enumerate(listed) if s is space]
+        index = np.concatenate([_index(space, listed[k][0]) for k in ranks])
+        around.update(zip(ranks, neighbours(space, index, goal), strict=True))
+    final = []
+    for k, (candidate, space) in enumerate(listed):
+        full = replace(candidate, rank=k + 1, neighbours=around[k])
+        final.append(replace(full, explanation=sentences(full, space.network)))
+    return tuple(final)
+
+
+def _best_of_each(
+    spaces: Sequence[Space],
+    goal: Goal,
+    candidates: Sequence[Candidate],
+    outcome: Outcome,
+    progress: Progress | None,
+) -> tuple[NetworkResult, ...]:
+    """Best drift of each network, by a search of its own where the list does not show it."""
+    results = []
+    for name in dict.fromkeys(space.network.name for space in spaces):
+        own = [c for c in candidates if c.network == name]
+        if own:
+            first = own[0]
+            why = _strength(first) if first.rank == 1 else f"{_drifts(first)}; rank {first.rank}"
+            results.append(NetworkResult(network=name, best=first.drift.q_point, why=why))
+            continue
+        if not outcome.complete:
+            results.append(NetworkResult(network=name, best=None, why="not settled: the search was stopped"))
+            continue
+        alone = outcome
+        if candidates:
+            alone = search([s for s in spaces if s.network.name == name], goal, top=1, progress=progress)
+        if not alone.complete and not alone.found:
+            results.append(NetworkResult(network=name, best=None, why="not settled: the search was stopped"))
+            continue
+        if alone.found:
+            space = alone.found[0].space
+            index = np.array([alone.found[0].index], dtype=np.int32)
+            (best,) = _build(space, index, goal, any_region=False)
+            results.append(NetworkResult(network=name, best=best.drift.q_point, why=_drifts(best)))
+        else:
+            results.append(NetworkResult(network=name, best=None, why="no combination meets every limit"))
+    order = sorted(results, key=lambda r: np.inf if r.best is None else r.best)
+    return tuple(order)
+
+
+def _larger(candidate: Candidate) -> str:
+    drift = candidate.drift
+    return "vce" if drift.vce is not None and drift.vce > drift.ic else "ic"
+
+
+def _strength(candidate: Candidate) -> str:
+    return f"least drift: {_drifts(candidate)}"
+
+
+def _drifts(candidate: Candidate) -> str:
+    """What drifts most, and its largest cause."""
+    quantity = _larger(candidate)
+    shares = candidate.budget[quantity]
+    cause = f", largest cause {cause_words(shares[0].cause)} with {percent(shares[0].share)}" if shares else ""
+    return f"{quantity.upper()} drifts {percent(candidate.drift.q_point)}{cause}"
+
+
+def _build(
+    space: Space, index: Index, goal: Goal, *, any_region: bool
+) -> list[Candidate]:
+    """Candidates with everything but rank, neighbours and explanation."""
+    box = space.box(index, Meter())
+    exact = Exact(box, goal)
+    saturates = any_region and bool(np.any(exact.extremes["vce", -1].value < space.transistor.vce_sat))
+    law = box.extreme_in_any_region if saturates else box.extreme
+    extremes: dict[tuple[tuple[str, ...], int], Extreme] = {}
+
+    def worst(names: Sequence[str], side: int) -> Extreme:
+        key = (tuple(names), side)
+        if key not in extremes:
+            known = exact.extremes.get((key[0][0], side)) if len(key[0]) == 1 and not saturates else None
+            extremes[key] = known if known is not None else law(names, side)
+        return extremes[key]
+
+    ends = {(q, side): worst((q,), side) for q in ("ic", "vce") for side in (1, -1)}
+    goals = {"ic": goal.ic, **({"vce": goal.vce} if goal.vce is not None else {})}
+    drifts, shares = {}, {}
+    for quantity, aim in goals.items():
+        up = ends[quantity, 1].value / aim - 1.0
+        down = 1.0 - ends[quantity, -1].value / aim
+        drifts[quantity] = np.maximum(up, down)
+        both = {
+            1: budgets(box, ends[quantity, 1].at, quantity, 1, aim, active_law=not saturates),
+            -1: budgets(box, ends[quantity, -1].at, quantity, -1, aim, active_law=not saturates),
+        }
+        shares[quantity] = [both[1][k] if up[k] >= down[k] else both[-1][k] for k in range(box.size)]
+    points, work = nominal_points(box, space.ground), duties(box)
+    judged = [
+        # Staying active is judged by the active law: it alone tells how far a saturated transistor is from it.
+        judge(box, need, exact.worst if need.name == "vce" else lambda names, side: _pair(worst(names, side)))
+        for need in space.requirements
+    ]
+    feed, names = space.base_feed(box), space.fitted(index)
+    found = []
+    for k in range(box.size):
+        point = points[k]
+        verdicts = tuple(_verdict(j, k, space.transistor.vce_sat) for j in judged)
+        centring = max(
+            abs(getattr(point, quantity) / aim - 1.0) for quantity, aim in goals.items()
+        )
+        drift = Drift(
+            ic=float(drifts["ic"][k]),
+            vce=float(drifts["vce"][k]) if "vce" in drifts else None,
+            q_point=float(max(d[k] for d in drifts.values())),
+        )
+        found.append(
+            Candidate(
+                rank=0,
+                network=space.network.name,
+                resistors=names[k],
+                nominal=point,
+                worst={q: (float(ends[q, -1].value[k]), float(ends[q, 1].value[k])) for q in ("ic", "vce")},
+                regions=_regions(box, [e.at for e in ends.values()], k),
+                drift=drift,
+                centring=centring,
+                supply_current=max(point.rails.values()),
+                base_feed=float(feed[k]),
+                budget={quantity: rows[k] for quantity, rows in shares.items()},
+                neighbours=(),
+                roles=work[k],
+                limits=verdicts,
+                verdict="pass" if all(v.verdict == "pass" for v in verdicts) else "fail",
+                explanation=(),
+            )
+        )
+    return found
+
+
+def _pair(extreme: Extreme) -> tuple[Array, Values]:
+    return extreme.value, extreme.at
+
+
+def _regions(box: Box, points: Sequence[Mapping[str, Array]], k: int) -> tuple[str, ...]:
+    """Regions met at the deciding points of one candidate."""
+    seen = set()
+    one = box.take([k])
+    for at in points:
+        q = one.solve({name: v[[k]] for name, v in at.items()})
+        seen.add(int(q.region[0]))
+    return tuple(REGIONS[code] for code in sorted(seen))
+
+
+def _verdict(judged: Judgement, k: int, vce_sat: float) -> Verdict:
+    need: Requirement = judged.requirement
+    low, high = need.interval.low, need.interval.high
+    limit: float | tuple[float, float] = (low, high)
+    sense = "within"
+    if np.isinf(low):
+        sense, limit = "<=", high
+    elif np.isinf(high):
+        sense, limit = ">=", low
+    # A saturated transistor holds VCE(sat); the margin keeps saying how much VCE is missing to be active.
+    worst = max(float(judged.worst[k]), vce_sat) if need.name == "vce" else float(judged.worst[k])
+    return Verdict(
+        name=need.name,
+        kind=need.kind,
+        sense=sense,
+        limit=limit,
+        worst=worst,
+        margin=float(judged.margin[k]),
+        at={name: float(v[k]) for name, v in judged.at.items()},
+        verdict="pass" if judged.passed[k] else "fail",
+    )
+

@@ -1,0 +1,429 @@
+"""What a search runs over: the networks with their value lists, and the exact assessment of single candidates."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Collection, Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from synth.box import Box, Extreme, Meter, Parts, Values
+from synth.limits import Requirement, judge, requirements
+from synth.networks import NETWORKS
+from synth.networks.form import Array, Network
+from synth.quantities import Interval, Spread
+from synth.stage import Stage, StageError
+from synth.transistor import Transistor
+
+Index = NDArray[np.int32]
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Space:
+    """Everything that one network may be built from.
+
+    Parameters
+    ----------
+    network : Network
+        The network.
+    lists : mapping of str to Parts
+        Every value that a role may have, ascending.
+    transistor : Transistor
+        The transistor.
+    rails : mapping of str to Spread
+        Rails [V].
+    temperature : Spread
+        Ambient [K].
+    requirements : tuple of Requirement
+        What every candidate has to satisfy.
+    ground : {"negative", "positive", "middle", "common"}
+        What is 0 V, see `synth.explain.nominal_points`.
+    """
+
+    network: Network
+    lists: Mapping[str, Parts]
+    transistor: Transistor
+    rails: Mapping[str, Spread]
+    temperature: Spread
+    requirements: tuple[Requirement, ...]
+    ground: str = "negative"
+
+    @property
+    def roles(self) -> tuple[str, ...]:
+        """Roles used, in the network's order."""
+        return tuple(role for role in self.network.role_names if role in self.lists)
+
+    @property
+    def combinations(self) -> int:
+        """Number of candidates."""
+        return math.prod(self.lists[role].nominal.size for role in self.roles)
+
+    def base_feed(self, box: Box) -> Array:
+        """Resistance of the base feed: the parallel connection of the base-side roles.
+
+        Parameters
+        ----------
+        box : Box
+            n candidates of this space.
+
+        Returns
+        -------
+        ndarray, shape (n,)
+            At nominal values [ohm].
+        """
+        return 1.0 / sum((1.0 / box.parts[role].nominal for role in self.network.base_side), np.zeros(box.size))
+
+    def fitted(self, index: Index) -> list[dict[str, float]]:
+        """Resistors of candidates.
+
+        Parameters
+        ----------
+        index : ndarray of int, shape (n, roles)
+            List positions.
+
+        Returns
+        -------
+        list of dict
+            Role to nominal resistance [ohm].
+        """
+        return [
+            {role: float(self.lists[role].nominal[i]) for role, i in zip(self.roles, row, strict=True)} for row in index
+        ]
+
+    def box(self, index: Index, meter: Meter) -> Box:
+        """The box of some candidates.
+
+        Parameters
+        ----------
+        index : ndarray of int, shape (n, roles)
+            List positions.
+        meter : Meter
+            Where solves are counted.
+
+        Returns
+        -------
+        Box
+            Of n candidates.
+        """
+        return Box(
+            network=self.network,
+            transistor=self.transistor,
+            rails=self.rails,
+            temperature=self.temperature,
+            parts={role: self.lists[role].take(index[:, j]) for j, role in enumerate(self.roles)},
+            meter=meter,
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class Goal:
+    """What drift is measured from: IC [A], and VCE [V] or None when VCE has only a window."""
+
+    ic: float
+    vce: float | None
+
+
+@dataclass(frozen=True, kw_only=True)
+class Found:
+    """One qualifying candidate with its worst case.
+
+    `index` are the list positions, `drift_ic` and `drift_vce` the drifts of IC and VCE [-], `extremes` the deciding points.
+    """
+
+    space: Space
+    index: tuple[int, ...]
+    drift_ic: float
+    drift_vce: float | None
+    extremes: Mapping[str, Extreme]
+
+    @property
+    def drift(self) -> float:
+        """Q-point drift [-]."""
+        return self.drift_ic if self.drift_vce is None else max(self.drift_ic, self.drift_vce)
+
+
+class Exact:
+    """True extremes of the candidates of a box, each computed once, and their drift."""
+
+    def __init__(self, box: Box, goal: Goal) -> None:
+        self.box = box
+        self.extremes = {key: box.extreme((key[0],), key[1]) for key in wanted(goal)}
+        self.ic, self.vce, self.drift = drift_of({key: e.value for key, e in self.extremes.items()}, goal)
+        self._cache: dict[tuple[tuple[str, ...], int], Extreme] = {
+            ((quantity,), side): e for (quantity, side), e in self.extremes.items()
+        }
+
+    def worst(self, names: Sequence[str], side: int) -> tuple[Array, Values]:
+        """Extreme of a sum of quantities and its point, as `synth.limits.judge` asks for it.
+
+        Parameters
+        ----------
+        names : sequence of str
+            Quantities, see `Box.measure`.
+        side : {+1, -1}
+            Maximum or minimum.
+
+        Returns
+        -------
+        value : ndarray, shape (n,)
+            The extreme [A or V].
+        at : dict
+            The point that decides.
+        """
+        key = (tuple(names), side)
+        if key not in self._cache:
+            self._cache[key] = self.box.extreme(names, side)
+        return self._cache[key].value, self._cache[key].at
+
+
+def goal_of(stage: Stage) -> Goal:
+    """What the drift of a stage is measured from.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request.
+
+    Returns
+    -------
+    Goal
+        Its targets.
+    """
+    assert stage.ic.nominal is not None
+    return Goal(ic=stage.ic.nominal, vce=stage.vce.nominal)
+
+
+def spaces_of(stage: Stage, without: Collection[str] = ()) -> list[Space]:
+    """Every network of a stage with every set of roles, ready to search.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request.
+    without : collection of str
+        Names of requirements to leave out.
+
+    Returns
+    -------
+    list of Space
+        In the order of the stage's networks.
+    """
+    return [
+        _space(stage, network, roles, {role: _parts(stage, role) for role in roles}, without)
+        for network in stage.networks
+        for roles in stage.roles_used(network)
+    ]
+
+
+def fitted(stage: Stage) -> Space:
+    """The resistors fitted in a stage, as a space of one candidate.
+
+    Parameters
+    ----------
+    stage : Stage
+        With ``[values]``.
+
+    Returns
+    -------
+    Space
+        Of the network whose roles the values make up.
+
+    Raises
+    ------
+    StageError
+        If the values make up none of the stage's networks, or more than one.
+    """
+    names = set(stage.values)
+    matching = []
+    for network in stage.networks:
+        optional = {role.name for role in NETWORKS[network].roles if role.optional}
+        every = set(NETWORKS[network].role_names)
+        if every - optional <= names <= every:
+            matching.append(network)
+    if len(matching) != 1:
+        wanted_roles = "; or ".join(
+            f"{network}: {' '.join(NETWORKS[network].role_names)}" for network in (matching or stage.networks)
+        )
+        raise StageError(
+            "values",
+            " ".join(sorted(names)) or None,
+            "which fits several networks, so name one" if matching else "which is not the resistors of one network",
+            f"a value for each role of {wanted_roles}",
+        )
+    roles = tuple(role for role in NETWORKS[matching[0]].role_names if role in names)
+    return _space(stage, matching[0], roles, {role: _parts(stage, role, (stage.values[role],)) for role in roles}, ())
+
+
+def _space(
+    stage: Stage, name: str, roles: tuple[str, ...], lists: Mapping[str, Parts], without: Collection[str]
+) -> Space:
+    network = NETWORKS[name]
+    rails = {rail: s for rail, s in stage.rails.items() if rail in (*network.rails, *network.optional_rails)}
+    windows = {q: (Interval(t.low, t.high), t.nominal) for q, t in (("ic", stage.ic), ("vce", stage.vce))}
+    needs = requirements(
+        network, rails, roles, stage.limits, stage.limits_given, windows, stage.transistor.vce_sat
+    )
+    return Space(
+        network=network,
+        lists=lists,
+        transistor=stage.transistor,
+        rails=rails,
+        temperature=stage.temperature,
+        requirements=tuple(need for need in needs if need.name not in without),
+        ground="common" if "vee" in stage.rails and stage.ground == "middle" else stage.ground,
+    )
+
+
+def _parts(stage: Stage, role: str, values: Sequence[float] = ()) -> Parts:
+    setting, found = stage.role(role), stage.value_list(role, values)
+    # A stock list states a symmetric coefficient for each row; a setting may be one-sided.
+    own = setting.stock is not None
+    return Parts(
+        nominal=found.values,
+        band=np.maximum(found.tolerance_low, found.tolerance_high) + found.life,
+        tcr_low=-found.tcr if own else np.full(len(found), setting.tcr.low),
+        tcr_high=found.tcr if own else np.full(len(found), setting.tcr.high),
+    )
+
+
+def assess(
+    space: Space, index: Index, goal: Goal, meter: Meter, limit: float = np.inf
+) -> tuple[list[Found], float]:
+    """Worst case of some candidates, and which of them qualify.
+
+    Parameters
+    ----------
+    space : Space
+        Where they come from.
+    index : ndarray of int, shape (n, roles)
+        List positions.
+    goal : Goal
+        What drift is measured from.
+    meter : Meter
+        Where solves are counted.
+    limit : float
+        Drift above which a candidate is of no interest [-].
+
+    Returns
+    -------
+    found : list of Found
+        Those that satisfy every requirement and stay within `limit`.
+    beyond : float
+        Least drift, or lower bound of it, among those dropped for `limit` [-]; infinite if none.
+    """
+    found: list[Found] = []
+    beyond = np.inf
+    box = space.box(index, meter)
+    rough = {key: box.extreme((key[0],), key[1], thorough=False).value for key in wanted(goal)}
+    drift = drift_of(rough, goal)[2]
+    over = drift > limit
+    if over.any():
+        beyond = float(drift[over].min())
+    alive: NDArray[np.bool_] = ~over
+    for need in space.requirements:
+        for names in need.sums:
+            for side in need.sides:
+                if need.judged == "box" and len(names) == 1 and (names[0], side) in rough:
+                    alive &= need.side(side).passes(rough[names[0], side])
+    keep = np.flatnonzero(alive)
+    if not keep.size:
+        return found, beyond
+    box = box.take(keep)
+    exact = Exact(box, goal)
+    ic, vce, drift = exact.ic, exact.vce, exact.drift
+
+    passed = np.ones(box.size, dtype=bool)
+    for need in space.requirements:
+        passed &= judge(box, need, exact.worst).passed
+    far = passed & (drift > limit)
+    if far.any():
+        beyond = min(beyond, float(drift[far].min()))
+    for k in np.flatnonzero(passed & ~far):
+        found.append(
+            Found(
+                space=space,
+                index=tuple(int(i) for i in index[keep[k]]),
+                drift_ic=float(ic[k]),
+                drift_vce=None if vce is None else float(vce[k]),
+                extremes={f"{q} {'max' if side > 0 else 'min'}": e.take(int(k)) for (q, side), e in exact.extremes.items()},
+            )
+        )
+    return found, beyond
+
+
+def wanted(goal: Goal) -> tuple[tuple[str, int], ...]:
+    """Extremes that a candidate is judged by.
+
+    Parameters
+    ----------
+    goal : Goal
+        What drift is measured from.
+
+    Returns
+    -------
+    tuple of (str, int)
+        Quantity and direction; the least VCE always counts, since it tells whether the transistor stays active.
+    """
+    return (("ic", 1), ("ic", -1), *((("vce", 1),) if goal.vce is not None else ()), ("vce", -1))
+
+
+def drift_of(worst: Mapping[tuple[str, int], Array], goal: Goal) -> tuple[Array, Array | None, Array]:
+    """Drift from the worst values of IC and VCE.
+
+    Parameters
+    ----------
+    worst : mapping of (str, int) to ndarray
+        Extremes as `wanted` names them [A, V].
+    goal : Goal
+        What drift is measured from.
+
+    Returns
+    -------
+    ic, vce, q_point : ndarray
+        Largest relative excursions [-]; None for VCE without a target.
+    """
+    ic = np.maximum(worst["ic", 1] / goal.ic - 1.0, 1.0 - worst["ic", -1] / goal.ic)
+    if goal.vce is None:
+        return ic, None, ic
+    vce = np.maximum(worst["vce", 1] / goal.vce - 1.0, 1.0 - worst["vce", -1] / goal.vce)
+    return ic, vce, np.maximum(ic, vce)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Assessed:
+    """Drift of a candidate over its box [-], None where it leaves the active region, and the requirements it fails."""
+
+    drift: float | None
+    fails: tuple[str, ...]
+
+
+def assess_all(space: Space, index: Index, goal: Goal, meter: Meter) -> list[Assessed]:
+    """Drift and verdict of candidates, whether they qualify or not.
+
+    Parameters
+    ----------
+    space : Space
+        Where they come from.
+    index : ndarray of int, shape (n, roles)
+        List positions.
+    goal : Goal
+        What drift is measured from.
+    meter : Meter
+        Where solves are counted.
+
+    Returns
+    -------
+    list of Assessed
+        In the same order.
+    """
+    exact = Exact(space.box(index, meter), goal)
+    failed: list[list[str]] = [[] for _ in index]
+    for need in space.requirements:
+        for k in np.flatnonzero(~judge(exact.box, need, exact.worst).passed):
+            failed[k].append(need.name)
+    active = exact.extremes["vce", -1].value >= space.transistor.vce_sat
+    return [
+        Assessed(drift=float(exact.drift[k]) if active[k] else None, fails=tuple(failed[k])) for k in range(len(index))
+    ]
