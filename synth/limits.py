@@ -67,7 +67,7 @@ def _supply(network: Network, rails: Collection[str], roles: Collection[str]) ->
 
 def _base_resistance(network: Network, r: Mapping[str, Value]) -> Value:
     conductance: Value = 0.0
-    for role in network.base_side:
+    for role in (role for role in network.base_side if role in r):
         conductance = conductance + 1.0 / r[role]
     return 1.0 / conductance
 
@@ -318,7 +318,7 @@ def applies(
         return bool(rule.sums(network, rails, roles))
     if rule.name == "collector_share":
         return "rc" in roles and "re" in roles and (given or network.shared_rails)
-    return bool(network.base_side) and set(network.base_side) <= set(roles)
+    return any(role in roles for role in network.base_side)
 
 
 def judge(box: Box, requirement: Requirement, worst: Callable[[Sequence[str], int], tuple[Array, Values]]) -> Judgement:

@@ -212,7 +212,8 @@ class _Corners:
                 return np.full(len(self.lo), -np.inf)
             sign, role = condition
             least = self.at(self.ends("ic", 1)[0])[1].ic * self.low[role][self.lo[:, self.roles.index(role)]]
-            held &= (least >= self.vt) & (least > 0.0)
+            # A role without width in a block needs no sign.
+            held &= ((least >= self.vt) & (least > 0.0)) | (self.lo[:, j] == self.hi[:, j])
             ends = _swap(ends, j, 0 if sign * direction > 0 else 1)
             open_roles = [k for k in open_roles if k != j]
         bound = self._vce_corner(ends, open_roles, direction)

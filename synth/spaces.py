@@ -73,7 +73,8 @@ class Space:
         ndarray, shape (n,)
             At nominal values [ohm].
         """
-        return 1.0 / sum((1.0 / box.parts[role].nominal for role in self.network.base_side), np.zeros(box.size))
+        feeds = (box.parts[role].nominal for role in self.network.base_side if role in box.parts)
+        return 1.0 / sum((1.0 / r for r in feeds), np.zeros(box.size))
 
     def fitted(self, index: Index) -> list[dict[str, float]]:
         """Resistors of candidates.

@@ -294,7 +294,7 @@ class _Resolver:
             if not any(rail in (*NETWORKS[name].rails, *NETWORKS[name].optional_rails) for name in found):
                 text = f"supply.{rail} is given, but {' or '.join(found)} does not use it"
                 self.warnings.append(StageWarning(name="unused_rail", text=text))
-        self.check_roles(found)
+        self.check_roles(tuple(NETWORKS) if "any" in named else found)
         return found, "any" in named
 
     def check_roles(self, networks: Sequence[str]) -> None:

@@ -249,7 +249,8 @@ def _limits(
         most = vcc / sum(r.get(role, 0.0) for role in ("r1", "r2", "rc")) * 10.0 ** rng.uniform(-0.2, 0.5)
         found["bleeder_current"] = Interval(float(rng.choice([-INF, 0.1 * most])), most)
     if rng.random() < 0.4:
-        share = r["rc"] / (r["rc"] + r["re"])
+        load = r.get("rc", r["re"])
+        share = load / (load + r["re"])
         found["collector_share"] = Interval(share * rng.uniform(0.7, 0.99), float(rng.choice([INF, 0.5 * (1.0 + share)])))
     if rng.random() < 0.4:
         found["base_resistance"] = Interval(device.hfe.low * 0.0257 / goal.ic * 10.0 ** rng.uniform(-1.0, 0.3), INF)

@@ -68,10 +68,10 @@ class Circuit:
         self.rails = {name: np.atleast_1d(value) for name, value in rails.items()}
         self.r = {name: np.atleast_1d(value) for name, value in r.items()}
         self.n = max(v.size for v in (*self.rails.values(), *self.r.values()))
-        merged = given_rails(network, rails)
+        merged = {**given_rails(network, rails), **network.tied}
         for role in network.roles:
-            if role.name not in r:
-                # An absent optional resistor is a short: its transistor node becomes its other node.
+            if role.name not in r and role.absent == "short":
+                # Its transistor node becomes its other node.
                 one, two = role.nodes
                 inner, outer = (one, two) if one in ("b", "c", "e") else (two, one)
                 merged[inner] = outer

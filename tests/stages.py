@@ -22,6 +22,11 @@ from synth.transistor import Transistor
 
 Numbers = NDArray[Any]
 
+SOLVED = ("collector_divider", "collector_feedback", "divider", "fixed_base", "follower", "two_supply")
+"""Networks whose node equations are written out here."""
+SATURATING = ("divider", "fixed_base", "two_supply")
+"""Those of them that can saturate: the collector neither feeds the base nor sits on the rail."""
+
 K_OVER_Q = 1.380649e-23 / 1.602176634e-19
 """Both constants are exact in the SI of 2019 [V/K]."""
 ROOM = 298.15
@@ -81,14 +86,15 @@ def _feed(network: str, p: Mapping[str, Numbers]) -> tuple[Numbers, Numbers, Num
     Voltages count from the far end of re: 0 V, or the negative rail of a stage with two supplies.
     """
     none = np.zeros(())
-    if network == "divider":
-        return p["vcc"], 1.0 / p["r1"], 1.0 / p["r2"], False
+    if network in ("divider", "follower"):
+        return p["vcc"], 1.0 / p["r1"], 1.0 / p["r2"] if "r2" in p else none, False
     if network == "fixed_base":
         return p.get("vbb", p["vcc"]), 1.0 / p["rb"], none, False
     if network == "two_supply":
         return p["vee"], 1.0 / p["rb"], none, False
     if network == "collector_feedback":
         return p["vcc"], 1.0 / p["rb"], none, True
+    assert network == "collector_divider", network
     return p["vcc"], 1.0 / p["r1"], 1.0 / p["r2"], True
 
 
@@ -97,13 +103,11 @@ def _report(network: str, p: Mapping[str, Numbers], ic: Numbers, ib: Numbers, vb
     source, g1, g2, from_collector = _feed(network, p)
     ve = p.get("re", 0.0) * (ic + ib)
     feed = ib + vb * g2
-    vc = p["vcc"] + p.get("vee", 0.0) - p["rc"] * (ic + feed if from_collector else ic)
+    vc = p["vcc"] + p.get("vee", 0.0) - p.get("rc", 0.0) * (ic + feed if from_collector else ic)
     found = {"ic": ic, "ib": ib, "vbe": vb - ve, "vce": vc - ve}
-    if "r1" in p:
-        found["i_r1"] = ((vc if from_collector else source) - vb) * g1
+    found["i_r1" if "r1" in p else "i_rb"] = ((vc if from_collector else source) - vb) * g1
+    if "r2" in p:
         found["i_r2"] = vb * g2
-    else:
-        found["i_rb"] = ((vc if from_collector else source) - vb) * g1
     return found
 
 
@@ -154,8 +158,8 @@ def saturated(network: str, device: Transistor, p: Mapping[str, Numbers]) -> dic
     method ends that starts on the right.
     """
     vt, vbe0, _, _ = _device(device, p)
-    source, g1, g2, from_collector = _feed(network, p)
-    assert not from_collector
+    assert network in SATURATING, network
+    source, g1, g2, _ = _feed(network, p)
     rc, re = p["rc"], p.get("re", 0.0)
     log_slope = vt if device.vbe_model == "junction" else 0.0 * vt
     top = p["vcc"] + p.get("vee", 0.0) - device.vce_sat
@@ -186,7 +190,7 @@ def any_region(network: str, device: Transistor, p: Mapping[str, Numbers]) -> di
     holds IC back, else active."""
     found = active(network, device, p)
     below = found["vce"] < device.vce_sat
-    if not np.any(below):
+    if network not in SATURATING or not np.any(below):
         return found
     held = saturated(network, device, p)
     below = below & ~(held["ic"] > found["ic"])
@@ -298,7 +302,7 @@ def random_box(rng: np.random.Generator, size: int, *, network: str | None = Non
     The resistors are laid out for a random Q-point by the rules of thumb of the trade and then scattered by up to 30 %,
     so that nominal stages are active but corners may be anywhere. `fixed` pins rails, temperature or transistor.
     """
-    name = network or str(rng.choice(sorted(NETWORKS)))
+    name = network or str(rng.choice(SOLVED))
     device: Transistor = fixed.get("transistor") or random_transistor(rng)
     vcc = 10.0 ** rng.uniform(0.6, 1.6)
     rails = {"vcc": random_spread(rng, vcc, (0.0, 0.01, 0.05, 0.1, 0.3))}
@@ -323,10 +327,17 @@ def random_box(rng: np.random.Generator, size: int, *, network: str | None = Non
     vb = np.minimum(ve + vbe, 0.9 * vcc)
     bleed = ic / h * 10.0 ** rng.uniform(0.0, 1.7, size)
     r: dict[str, Numbers] = {"rc": (vcc - ve - vce) / ic, "re": ve / (ic * (1.0 + 1.0 / h))}
-    if name != "divider" and name != "two_supply" and rng.random() < 0.4:
+    if name not in ("divider", "two_supply", "follower") and rng.random() < 0.4:
         del r["re"]
         ve, vb = 0.0 * ve, vbe
-    if name == "divider":
+    if name == "follower":
+        # The base stands anywhere between the rails, fed by a divider or through r1 alone.
+        vb = vcc * rng.uniform(0.3, 0.8, size) + 0.5 * vbe
+        r = {"r1": (vcc - vb) / (bleed + ic / h), "r2": vb / bleed, "re": np.maximum(vb - vbe, 0.1 * vcc) / ic}
+        if rng.random() < 0.4:
+            r["r1"] = (vcc - vb) * h / ic
+            del r["r2"]
+    elif name == "divider":
         r["r1"], r["r2"] = (vcc - vb) / (bleed + ic / h), vb / bleed
     elif name == "fixed_base":
         r["rb"] = np.maximum(vbb - vb, 0.2 * vbb) * h / ic
@@ -395,7 +406,7 @@ def level_box(rng: np.random.Generator, size: int) -> Box:
 
 def edge_box(rng: np.random.Generator, size: int) -> Box:
     """A random box around stages that a little more drive saturates; never fed from the collector, which cannot."""
-    box = random_box(rng, size, network=str(rng.choice(["divider", "fixed_base", "two_supply"])))
+    box = random_box(rng, size, network=str(rng.choice(SATURATING)))
     nominal = active(box.network.name, box.transistor, box.nominal())
     wanted = box.transistor.vce_sat + box.rails["vcc"].nominal * rng.uniform(0.0, 0.15, size)
     rc = box.parts["rc"]

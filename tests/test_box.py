@@ -483,6 +483,27 @@ def test_the_deeper_of_two_valleys_of_temperature(depth: float) -> None:
     assert_allclose(build(cold).extreme(("ic",), -1).value, ic, rtol=TRUE, atol=0)
 
 
+@pytest.mark.parametrize("hot", [60.0, 80.0, 90.0, 95.0, 100.0, 105.0, 110.0, 115.0, 120.0, 125.0])
+@pytest.mark.parametrize(("tcr", "icbo"), [(1.03e-3, 1e-7), (1.299e-3, 5e-7)])
+def test_a_valley_close_to_25_degrees_behind_a_cold_end_almost_as_low(hot: float, tcr: float, icbo: float) -> None:
+    # The valley lies near 29.5 °C; the hot end of the ambient range shifts the points of any scan across it. The cold end
+    # lies above the valley by a third of its depth, so it wins wherever the valley is not looked into.
+    def build(cold: float) -> Box:
+        return stage(celsius=(cold, 25.0, hot), tolerance=0.01, parts={"re": {"tcr_low": -tcr, "tcr_high": tcr}}, hfe=(150.0,),
+                     icbo=(icbo,), r1=62e3, r2=43e3, rc=1e3, re=2e3)
+
+    def along(box: Box) -> Callable[[float], float]:
+        return rest(box, {**dict.fromkeys(position(box), 0.0), "r1": 1.0, "re": 1.0}, "temperature", ("ic",))
+
+    f = along(build(25.0))
+    x, ic = inside(f, -1, 0.0, 9.0 / (hot - 25.0))
+    depth = f(0.0) / ic - 1.0
+    assert 29.0 < 25.0 + (hot - 25.0) * x < 30.0
+    assert depth > 5e-6
+    cold = brentq(lambda c: along(build(c))(0.0) - ic * (1.0 + 0.3 * depth), 15.0, 24.99999, xtol=1e-13)
+    assert_allclose(build(cold).extreme(("ic",), -1).value, ic, rtol=TRUE, atol=0)
+
+
 def test_the_higher_of_two_peaks_of_temperature_of_a_rail_current() -> None:
     def build(hot: float) -> Box:
         parts = {"r1": {"band": 0.0, "tcr_low": -1e-3, "tcr_high": 1e-3}, "r2": {"band": 0.001, "tcr_low": 1e-4, "tcr_high": 3e-4},

@@ -192,14 +192,17 @@ def test_several_networks_compete_in_one_list_and_each_is_accounted_for() -> Non
 
 
 def test_any_network_finds_the_best_of_all() -> None:
-    pins = {"resistors_rc_range": "1k : 3k3", "resistors_re_range": "470 ohm : 2k2"}
-    given = stage(network="any", series="E6", tolerance="5 %", resistors_range="1k : 1M", **pins)
-    answer = synth.find(given, top=5)
+    pins = {"rc": "1k : 3k3", "re": "470 ohm : 2k2"}
+    given = {"series": "E6", "tolerance": "5 %", "resistors_range": "1k : 1M"}
+    answer = synth.find(stage(network="any", **given, **{f"resistors_{r}_range": text for r, text in pins.items()}), top=5)
     singles = []
-    for name in dict.fromkeys(s.network.name for s in spaces_of(given)):
-        for use in ("yes", "no") if any(role.optional for role in NETWORKS[name].roles) else (None,):
-            found = synth.find(given.replace(network=name, resistors_re_use=use), top=1).best
-            singles += [found.drift.q_point] if found else []
+    for name, network in NETWORKS.items():
+        if "vee" in network.rails:
+            continue
+        own = {f"resistors_{role}_range": text for role, text in pins.items() if role in network.role_names}
+        either = {f"resistors_{role.name}_use": "either" for role in network.roles if role.optional}
+        found = synth.find(stage(network=name, **given, **own, **either), top=1).best
+        singles += [found.drift.q_point] if found else []
     assert_allclose(best_of(answer).drift.q_point, min(singles), rtol=SAME, atol=0.0)
 
 

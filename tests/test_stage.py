@@ -585,7 +585,11 @@ def test_mandatory_role_that_must_not_be_used_is_refused(networks):
 
 def test_role_that_every_network_needs_must_be_used():
     with pytest.raises(StageError, match=r"resistors\.rc\.use: read 'no', without which .*divider.* cannot do"):
-        stage(network="any", resistors_rc_use="no")
+        stage(network="divider, two_supply", vee="12 V", resistors_rc_use="no")
+
+
+def test_any_network_keeps_those_that_do_without_a_load():
+    assert stage(network="any", resistors_rc_use="no").networks == ("follower",)
 
 
 def test_fitted_values_are_read():

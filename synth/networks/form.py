@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Collection, Mapping
 from dataclasses import dataclass, field
-from typing import NamedTuple
+from typing import Literal, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -66,13 +66,16 @@ class Role:
     nodes : tuple of str
         The two nodes it hangs between: rails by name, ``0`` for 0 V, ``b c e`` for the transistor.
     optional : bool
-        Whether the network also works without it; its second node then merges with its first.
+        Whether the network also works without it.
+    absent : {"short", "open"}
+        What stands in the place of an absent optional resistor: its two nodes in one, or nothing.
     """
 
     name: str
     meaning: str
     nodes: tuple[str, str]
     optional: bool = False
+    absent: Literal["short", "open"] = "short"
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -108,6 +111,8 @@ class Network:
         to ``vcc``.
     bleeder : str, optional
         The role that carries the bleeder current.
+    tied : mapping
+        Nodes of the transistor that are wired to a rail without a resistor, such as the collector of a follower.
     shared_rails : bool
         Whether rc and re hang between the same two rails, so that they divide one supply voltage between them.
     base_side : tuple of str
@@ -126,6 +131,7 @@ class Network:
     draws: Mapping[str, tuple[str, ...]]
     signs_while: Mapping[tuple[str, str], tuple[int, str]] = field(default_factory=dict)
     bleeder: str | None = None
+    tied: Mapping[str, str] = field(default_factory=dict)
     shared_rails: bool = True
     base_side: tuple[str, ...] = ()
 
