@@ -15,6 +15,8 @@ from numpy.testing import assert_allclose
 import synth.present
 from synth.catalogue import transistors
 from synth.cli import main
+from synth.networks import NETWORKS
+from synth.stage import Stage
 
 EXAMPLES = Path(__file__).resolve().parents[1] / "examples"
 FILES = sorted(EXAMPLES.glob("*.toml"))
@@ -44,21 +46,26 @@ def windows(file: Path) -> dict[str, tuple[float, float]]:
         "hydrophone_preamp": {"ic": (400e-6, 600e-6), "vce": (3.2, 6.8)},
         "battery_monitor": {"ic": (0.8e-3, 1.2e-3), "vce": (0.5, float("inf"))},
         "high_side": {"ic": (4e-3, 6e-3), "vce": (2.5, 7.5)},
+        "cable_driver": {"ic": (2.4e-3, 3.6e-3), "vce": (3.825, 5.175)},
+        "wave_staff_amplifier": {"ic": (0.8e-3, 1.2e-3), "vce": (0.9, float("inf"))},
+        "pressure_line_stage": {"ic": (1.7e-3, 2.3e-3), "vce": (4.25, 5.75)},
+        "conductivity_bridge": {"ic": (0.9e-3, 1.1e-3), "vce": (4.92, 7.08)},
     }
     return written[file.stem]
 
 
+def test_every_network_has_an_example() -> None:
+    shown = {name for file in FILES for name in Stage.read(file).networks}
+    assert shown == set(NETWORKS)
+
+
 @every_example
-def test_example_is_found_and_proved_within_a_second(file: Path, capsys: pytest.CaptureFixture[str]) -> None:
-    seconds = []
-    # The machine may be busy: the quickest of three runs counts.
-    while len(seconds) < 3 and min(seconds, default=1.0) >= 1.0:
-        code, answer = run(capsys, "find", str(file))
-        assert code == 0
-        assert (answer["search"]["status"], answer["search"]["complete"]) == ("optimal", True)
-        seconds.append(answer["search"]["seconds"])
-    assert min(seconds) < 1.0
-    assert answer["stage"]["name"].startswith("tide-gauge")
+def test_example_is_found_and_proved(file: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    code, answer = run(capsys, "find", str(file))
+    assert code == 0
+    assert (answer["search"]["status"], answer["search"]["complete"]) == ("optimal", True)
+    # About a second on one core; counted, since clocks are for benchmarks.
+    assert answer["search"]["evaluated"] < 2_000_000
 
 
 @every_example
@@ -86,14 +93,17 @@ def test_winner_of_example_passes_a_check_of_its_own(file: Path, capsys: pytest.
 
 @every_example
 def test_nominal_point_of_example_obeys_kirchhoff(file: Path, capsys: pytest.CaptureFixture[str]) -> None:
-    """Sums of drops around the loops, from the JSON alone: rail = rc + VCE + re, and IE = IC + IB through re."""
+    """Sums of drops around the loops, from the JSON alone: rails = rc + VCE + re, and IE = IC + IB through re."""
     _, answer = run(capsys, "find", str(file))
     for candidate in answer["candidates"]:
         roles, nominal = candidate["roles"], candidate["nominal"]
-        vcc = answer["stage"]["supply"]["vcc"][1]
-        # Rounding of a few additions of voltages below 20 V.
-        assert_allclose(roles["rc"]["drop"] + nominal["vce"] + roles["re"]["drop"], vcc, rtol=1e-12, atol=0)
-        assert_allclose(roles["re"]["current"], nominal["ic"] + nominal["ib"], rtol=1e-12, atol=0)
+        supply = answer["stage"]["supply"]
+        rails = supply["vcc"][1] + (supply["vee"][1] if "vee" in supply else 0.0)
+        drops = sum(roles[role]["drop"] for role in ("rc", "re") if role in roles)
+        # Rounding of a few additions of voltages below 30 V.
+        assert_allclose(drops + nominal["vce"], rails, rtol=1e-12, atol=0)
+        if "re" in roles:
+            assert_allclose(roles["re"]["current"], nominal["ic"] + nominal["ib"], rtol=1e-12, atol=0)
         for role, duty in roles.items():
             assert_allclose(duty["drop"], candidate["resistors"][role] * duty["current"], rtol=1e-12, atol=0)
 

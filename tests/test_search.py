@@ -427,6 +427,20 @@ def test_search_finds_what_a_fixed_vbe_blocks() -> None:
     assert_allclose(outcome.found[0].extremes["vce max"].value[0], 9.0 * 101.0 / 111.0, rtol=ROUNDING, atol=0.0)
 
 
+def test_bound_of_a_single_value_holds_where_bands_overlap() -> None:
+    """1.2 times 6 kohm lies above 6.06 kohm: at this point of the box the two values have swapped their order.
+
+    With r1·IC below VT, VCE rises with r2, so the larger of the two is no lower bound for the smaller.
+    """
+    device = Transistor(hfe=Spread.exact(100.0), vbe=Spread.exact(0.65), vbe_ic=2e-3)
+    space = feedback_space(device, 9.0, 298.15, r1=[1e3], r2=[6000.0, 6060.0], rc=[1e5])
+    zero = np.zeros(2)
+    r2 = Parts(nominal=space.lists["r2"].nominal, band=np.array([0.2, 0.0]), tcr_low=zero, tcr_high=zero)
+    space = replace(space, lists={**space.lists, "r2": r2})
+    each = np.array([[0, 0, 0], [0, 1, 0]], dtype=np.int32)
+    check_corners(space, {"r2": 1.0}, each, each)
+
+
 def bounds(
     space: Space,
     goal: Goal,

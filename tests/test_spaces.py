@@ -5,6 +5,7 @@ which tries vertices by brute force.
 """
 
 import itertools
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -213,6 +214,25 @@ def test_assessment_at_a_limit_keeps_what_is_within_and_bounds_the_rest(network:
         # A lower bound of every qualifying candidate that was dropped.
         assert limit < beyond <= min(f.drift for f in every if f.drift > limit)
     assert tried >= 3
+
+
+def test_a_candidate_beyond_the_limit_only_by_an_interior_extreme_is_still_bounded() -> None:
+    """On a rail of 9 to 16 V VCE is greatest inside (section 4): every vertex lies within the limit, the box does not."""
+    values = {"r1": ["33k", "39k", "47k"], "r2": ["1k8", "2k2", "2k7"], "rc": ["4k7", "10k"], "re": ["100 ohm", "220 ohm"]}
+    given = stage(supply="9 : 12 : 16 V", **{f"resistors_{role}_values": ohms for role, ohms in values.items()})
+    (space,) = spaces_of(given)
+    goal, index = Goal(ic=2e-3, vce=1.5), every_index(space)
+    box = space.box(index, Meter())
+    rough = drift_of({key: box.extreme((key[0],), key[1], thorough=False).value for key in wanted(goal)}, goal)[2]
+    true = Exact(box, goal).drift
+    (inside,) = np.nonzero(true > rough * 1.001)
+    assert inside.size >= 5
+    free = replace(space, requirements=())
+    for k in inside[:5]:
+        limit = 0.5 * (rough[k] + true[k])
+        found, beyond = assess(free, index[[k]], goal, Meter(), limit)
+        assert found == []
+        assert_allclose(beyond, true[k], rtol=1e-12, atol=0.0)
 
 
 @pytest.mark.parametrize("network", NETWORKS)
