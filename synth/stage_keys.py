@@ -551,7 +551,7 @@ def _resistors(role: str) -> Iterable[Key]:
     )  # fmt: skip
     yield key(
         "style", form="text", example="0805", meaning=f"Resistor style{of}, a row of the table of resistor styles.",
-        otherwise="no style, and no verdict on its ratings",
+        otherwise="no style",
     )  # fmt: skip
     yield key(
         "range", form="limit", kind="resistance", rule=">=", example="10 ohm : 10 Mohm", default="10 ohm : 10 Mohm",

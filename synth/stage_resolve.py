@@ -219,6 +219,9 @@ class _Resolver:
         transistor = self.transistor(current)
         self.check_junction(transistor, current, temperature.high)
         roles = self.roles(networks, any_network, temperature)
+        if any(setting.style for setting in roles.values()):
+            text = "a style is recorded only: its power and voltage ratings get no verdict, so compare the drops and currents"
+            self.warnings.append(StageWarning(name="style_not_judged", text=f"{text} listed with restpoint tables styles"))
         return {
             "name": self.value("name") or "stage",
             "networks": networks,

@@ -542,6 +542,8 @@ def test_network_without_its_rail_is_refused():
 
 
 def test_rail_that_no_network_uses_is_warned_about():
+    assert [w.name for w in stage(style="0805").warnings] == ["style_not_judged"]
+    assert not stage().warnings
     assert [w.text for w in stage(vee="12 V").warnings] == ["supply.vee is given, but divider does not use it"]
 
 
