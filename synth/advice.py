@@ -19,6 +19,8 @@ ACTIVE = "vce"
 """The limit that keeps the transistor active."""
 FIGURES = 3
 """Significant figures of a relaxed limit."""
+EFFORT = 5e6
+"""Q-point solves that one search for advice may take, about a second; what it leaves open is not claimed."""
 WIDE = 0.95
 """Half-width from which a window is written by its ends [-]."""
 GAP = 0.005
@@ -51,7 +53,8 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
     names = sorted((n for n in needs if n != ACTIVE or n in given), key=lambda n: n in given)
     dropped: set[str] = set()
     for name in sorted(names, key=lambda n: (n in given, n == "collector_share")):
-        if not search(spaces_of(stage, dropped | {name}), goal_of(stage), top=1, first=True).found:
+        # Only what is proved infeasible without a limit makes it superfluous.
+        if search(spaces_of(stage, dropped | {name}), goal_of(stage), top=1, first=True, most=EFFORT).status == "infeasible":
             dropped.add(name)
     binding = tuple(name for name in names if name not in dropped) or (ACTIVE,)
     best_without: dict[str, float | None] = {}
@@ -67,7 +70,7 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
 
 
 def _search(stage: Stage, without: set[str]) -> Outcome:
-    return search(spaces_of(stage, without), goal_of(stage), top=1, gap=GAP)
+    return search(spaces_of(stage, without), goal_of(stage), top=1, gap=GAP, most=EFFORT)
 
 
 def _requirement(stage: Stage, name: str, like: Space) -> Requirement:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import math
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, Literal
 
@@ -31,7 +31,10 @@ class Caution:
 
 @dataclass(frozen=True, kw_only=True)
 class Nominal:
-    """Nominal Q-point: currents [A], voltages [V] as magnitudes; node voltages against 0 V with their sign."""
+    """Nominal Q-point: currents [A], voltages [V] as magnitudes; node voltages against 0 V with their sign.
+
+    `forced_gain` is IC/IB of a saturated transistor [-], None of any other.
+    """
 
     ic: float
     vce: float
@@ -40,6 +43,7 @@ class Nominal:
     region: str
     nodes: Mapping[str, float]
     rails: Mapping[str, float]
+    forced_gain: float | None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -73,11 +77,12 @@ class Neighbour:
 
 @dataclass(frozen=True, kw_only=True)
 class Duty:
-    """What a resistor does at the nominal Q-point: drop [V], current [A]."""
+    """What a resistor does at the nominal Q-point: drop [V], current [A], and the two places it hangs between."""
 
     drop: float
     current: float
     meaning: str
+    between: tuple[str, str]
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -95,6 +100,23 @@ class Verdict:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Worst(Mapping[str, tuple[float, float]]):
+    """Extremes over the box: of IC [A] and of VCE [V], each as (least, greatest)."""
+
+    ic: tuple[float, float]
+    vce: tuple[float, float]
+
+    def __getitem__(self, name: str) -> tuple[float, float]:
+        return {"ic": self.ic, "vce": self.vce}[name]
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(("ic", "vce"))
+
+    def __len__(self) -> int:
+        return 2
+
+
+@dataclass(frozen=True, kw_only=True)
 class Candidate:
     """A network with a value in every role, judged and explained.
 
@@ -106,7 +128,7 @@ class Candidate:
     network: str
     resistors: Mapping[str, float]
     nominal: Nominal
-    worst: Mapping[str, tuple[float, float]]
+    worst: Worst
     regions: tuple[str, ...]
     drift: Drift
     centring: float
@@ -205,6 +227,11 @@ class Answer:
     def best(self) -> Candidate | None:
         """The first candidate, or None when nothing qualifies."""
         return self.candidates[0] if self.candidates else None
+
+    @property
+    def worst(self) -> Worst:
+        """Extremes over the box of the first candidate: of the network judged, after `check`."""
+        return self.candidate(1).worst
 
     @property
     def passed(self) -> bool:

@@ -35,6 +35,8 @@ SCAN_POINTS = 8
 INWARD = 1e-5
 """Step that tells whether a quantity rises inward from the end of an edge, in edge lengths; an interior maximum nearer
 to the end than this gains at most about INWARD² of the quantity's curvature."""
+NEAR = 0.02
+"""How far below the best point a peak beside a stop of the scan is still polished, relative."""
 GOLDEN = (5.0**0.5 - 1.0) / 2.0
 
 
@@ -513,10 +515,7 @@ class _Climb:
         scan = self.box.scan
         if scan.size < 3:
             return
-        left, middle, right = heights[:, :-2], heights[:, 1:-1], heights[:, 2:]
-        # A parabola through three neighbours overshoots the middle one by at most its distance from the lower of the others.
-        reach = middle + np.maximum(middle - np.minimum(left, right), 0.0)
-        which, when, who = np.nonzero((middle >= left) & (middle >= right) & (reach > best))
+        which, when, who = _peaks_that_matter(heights, scan, best)
         if not which.size:
             return
         part = _Climb(self.box.take(who), self.names, self.direction, self.fixed, self.free, True, self.premise)
@@ -567,6 +566,19 @@ class _Climb:
             self._temperature(place, best)
             if not np.any(best - before > 1e-14 * np.abs(before)):
                 return
+
+
+def _peaks_that_matter(heights: Array, scan: Array, best: Array) -> tuple[NDArray[np.intp], ...]:
+    """Points of a scan over temperature (axis 1) that no neighbour tops and whose peak may top the best point."""
+    left, middle, right = heights[:, :-2], heights[:, 1:-1], heights[:, 2:]
+    # A point without a solution has no height; a parabola through three even neighbours overshoots the middle one by at
+    # most its distance from the lower of the others.
+    with np.errstate(invalid="ignore"):
+        reach = middle + np.maximum(middle - np.minimum(left, right), 0.0)
+        # Beside a stop the neighbours stand unevenly, and a parabola says little: anything near the best is polished.
+        even = np.isclose(np.diff(scan, 2), 0.0, rtol=0.0, atol=1e-6 * (scan[-1] - scan[0]))[None, :, None]
+        reach = np.where(even, reach, np.maximum(reach, middle + NEAR * np.abs(middle)))
+        return np.nonzero((middle >= left) & (middle >= right) & (reach > best))
 
 
 def _along(climb: _Climb, spot: Mapping[str, Array], axis: str, x: Array) -> Array:
@@ -648,10 +660,7 @@ class _Straddle:
         self._keep(who, self._whole({a: x[index[0], index[1], who] for a, x in spots.items()}))
         if scan.size < 3:
             return
-        left, middle, right = heights[:, :-2], heights[:, 1:-1], heights[:, 2:]
-        with np.errstate(invalid="ignore"):
-            reach = middle + np.maximum(middle - np.minimum(left, right), 0.0)
-            which, when, who = np.nonzero((middle >= left) & (middle >= right) & (reach > self.best))
+        which, when, who = _peaks_that_matter(heights, scan, self.best)
         if who.size:
             spot = {a: x[which, 0, who] for a, x in spots.items()}
             part = replace(self, box=box.take(who))

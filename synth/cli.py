@@ -238,13 +238,13 @@ def _find_command() -> click.Command:
 
 
 def _check_command() -> click.Command:
-    def run(stage_file: Path | None, explain: bool, **options: Any) -> int:
+    def run(stage_file: Path | None, explain: int | None, **options: Any) -> int:
         from synth.solve import check
 
         _files(options)
         stage = _stage(stage_file, options)
         answer = check(stage, command=_command_line())
-        return _deliver(answer, stage, [1] if explain else [], options)
+        return _deliver(answer, stage, [explain] if explain else [], options)
 
     return click.Command(
         "check",
@@ -253,7 +253,8 @@ def _check_command() -> click.Command:
         params=[
             click.Argument(["stage_file"], required=False, type=click.Path(path_type=Path), metavar="[STAGE.toml]"),
             *_key_options(),
-            click.Option(["--explain"], is_flag=True, help="Explain the verdict."),
+            click.Option(["--explain"], type=_Count(1), is_flag=False, flag_value=1, metavar="[1]",
+                         help="Explain the verdict."),
             *_output_options(FORMATS),
         ],
     )

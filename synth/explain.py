@@ -15,8 +15,9 @@ import numpy as np
 
 from synth.answer import Caution, Duty, Neighbour, Nominal, Share
 from synth.box import Box, Meter, Values
+from synth.catalogue import transistor
 from synth.networks.form import Array, Network
-from synth.q_point import REGIONS
+from synth.q_point import REGIONS, SATURATED
 from synth.quantities import format_quantity, format_resistance
 from synth.spaces import Goal, Index, Space, assess_all
 
@@ -26,6 +27,10 @@ if TYPE_CHECKING:
 CAUSES = {"delta": "vbe", "hfe": "hfe", "icbo": "leakage", "temperature": "temperature"}
 """Names of the device axes as causes; rails and roles keep their own."""
 
+OFF_TARGET = 0.3
+"""Centring above which a candidate that no window forbids gets a caution [-]: as wide as the widest usual window."""
+VCEO_SHARE = 0.8
+"""Share of VCEO from which the rail gets a caution [-]: common practice leaves a fifth."""
 NEGLIGIBLE = 0.005
 """Below this many per cent a share prints as 0 %."""
 
@@ -80,18 +85,53 @@ def nominal_points(box: Box, ground: str = "negative") -> list[Nominal]:
             region=REGIONS[int(np.broadcast_to(q.region, (box.size,))[k])],
             nodes={node: mirror * (pick(v, k) - zero) for node, v in branches.nodes.items()},
             rails={rail: pick(i, k) for rail, i in branches.rail.items()},
+            forced_gain=pick(q.ic / q.ib, k) if np.broadcast_to(q.region, (box.size,))[k] == SATURATED else None,
         )
         for k in range(box.size)
     ]
 
 
-def duties(box: Box) -> list[dict[str, Duty]]:
-    """Drop and current of every resistor at the nominal Q-point.
+def place(node: str, polarity: str, ground: str) -> str:
+    """Where a node of a network is, in the words of a meter's user.
+
+    Parameters
+    ----------
+    node : str
+        A node of `synth.networks.form.Role`: a rail, ``0`` for the emitter's rail, or ``b c e``.
+    polarity : {"npn", "pnp"}
+        A PNP stage is the mirror image, so that its emitter's rail is the positive one.
+    ground : str
+        See `nominal_points`.
+
+    Returns
+    -------
+    str
+        ``base``, ``VCC``, ``0 V``...
+    """
+    if node in ("b", "c", "e"):
+        return {"b": "base", "c": "collector", "e": "emitter"}[node]
+    pnp = polarity == "pnp"
+    if node == "vbb":
+        return "VBB"
+    if ground == "common":
+        return {"vcc": "-VCC" if pnp else "VCC", "0": "0 V", "vee": "VEE" if pnp else "-VEE"}[node]
+    upper = (node == "vcc") != pnp
+    if ground == "middle":
+        return "VCC/2" if upper else "-VCC/2"
+    if node == "vee":
+        return "VEE"
+    return ("VCC" if upper else "0 V") if ground == "negative" else ("0 V" if upper else "-VCC")
+
+
+def duties(box: Box, ground: str = "negative") -> list[dict[str, Duty]]:
+    """Drop and current of every resistor at the nominal Q-point, and where it hangs.
 
     Parameters
     ----------
     box : Box
         n candidates.
+    ground : str
+        See `nominal_points`.
 
     Returns
     -------
@@ -106,7 +146,15 @@ def duties(box: Box) -> list[dict[str, Duty]]:
         for role in box.parts:
             drop = np.broadcast_to(np.asarray(branches.voltage[role]), (box.size,))[k]
             current = np.broadcast_to(np.asarray(branches.current[role]), (box.size,))[k]
-            row[role] = Duty(drop=float(drop), current=float(current), meaning=box.network.role(role).meaning)
+            one, two = box.network.role(role).nodes
+            nodes = ("vcc" if node == "vbb" and "vbb" not in box.rails else node for node in (one, two))
+            first, second = (place(node, box.transistor.polarity, ground) for node in nodes)
+            row[role] = Duty(
+                drop=float(drop),
+                current=float(current),
+                meaning=box.network.role(role).meaning,
+                between=(first, second),
+            )
         found.append(row)
     return found
 
@@ -310,9 +358,15 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
         f"{format_quantity(ic[1], 'current')} over the whole box; VCE {format_quantity(c.nominal.vce, 'voltage')} nominal, "
         f"{format_quantity(vce[0], 'voltage')} to {format_quantity(vce[1], 'voltage')}.",
     ]
+    if c.nominal.forced_gain is not None:
+        lines.append(
+            f"The transistor is saturated at the nominal point: hFE no longer governs IC, the load line does; forced gain "
+            f"{c.nominal.forced_gain:.3g}."
+        )
     for role, duty in c.roles.items():
         lines.append(
-            f"{role.upper()} {format_resistance(c.resistors[role])}: {duty.meaning}; drops "
+            f"{role.upper()} {format_resistance(c.resistors[role])}, {duty.between[0]} to {duty.between[1]}: "
+            f"{duty.meaning}; drops "
             f"{format_quantity(duty.drop, 'voltage')} at {format_quantity(duty.current, 'current')}."
         )
     larger = "vce" if c.drift.vce is not None and c.drift.vce > c.drift.ic else "ic"
@@ -325,7 +379,7 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
     else:
         lines.append(f"IC decides the rank: it drifts {percent(c.drift.ic)} at worst; centring {percent(c.centring)}.")
     for quantity, shares in c.budget.items():
-        parts = ", ".join(f"{cause_words(s.cause)} {percent(s.share)}" for s in shares)
+        parts = ", ".join(f"{cause_words(s.cause)} {percent(s.share)}" for s in shares if percent(s.share) != "0 %")
         if parts:
             total = c.drift.ic if quantity == "ic" else c.drift.vce
             lines.append(f"Budget of {quantity.upper()} ({percent(total or 0.0)}): {parts}.")
@@ -338,7 +392,9 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
     if steps:
         lines.append(f"One value up or down: {'; '.join(steps)}.")
     judged = [v for v in c.limits if np.isfinite(v.margin)]
-    if judged:
+    if "saturated" in c.regions:
+        lines.append("The transistor saturates within the box: VCE falls to VCE(sat), and the verdict on vce fails.")
+    elif judged:
         tight = min(judged, key=lambda v: v.margin)
         limit = tight.limit if isinstance(tight.limit, float) else None
         bound = "its window" if limit is None else f"{tight.sense} {format_quantity(limit, tight.kind)}"
@@ -382,12 +438,12 @@ def cautions(candidate: Candidate, box: Box) -> tuple[Caution, ...]:
             )
         )
     half = max(device.vbe.high - device.vbe.nominal, device.vbe.nominal - device.vbe.low)
-    if ve > 0.0 and half > 0.2 * ve:
+    if ve > 0.0 and half > 0.2 * ve and candidate.nominal.region == "active":
         found.append(
             Caution(
                 name="emitter_voltage_small",
                 text=f"VE is only {format_quantity(ve, 'voltage')}: the VBE spread of {format_quantity(half, 'voltage')} "
-                f"moves IC by about {percent(half / ve)} (ΔIC/IC ≈ ΔVBE/VE).",
+                f"is {percent(half / ve)} of it, and IC moves by about as much while that is small (ΔIC/IC ≈ ΔVBE/VE).",
             )
         )
     bleeder = candidate.roles.get(box.network.bleeder or "")
@@ -402,6 +458,15 @@ def cautions(candidate: Candidate, box: Box) -> tuple[Caution, ...]:
                     f"{format_quantity(worst, 'current')} at the least hFE: the base voltage sags with gain.",
                 )
             )
+    found += _ratings(candidate, box)
+    if candidate.centring > OFF_TARGET:
+        found.append(
+            Caution(
+                name="off_target",
+                text=f"The nominal Q-point is {percent(candidate.centring)} off target, and no window forbids it: finer "
+                "series, other limits or another network may come nearer; a window on ic or vce would refuse this.",
+            )
+        )
     rail = max(spread.high for spread in box.rails.values())
     if rail > 50.0:
         found.append(
@@ -421,3 +486,39 @@ def cautions(candidate: Candidate, box: Box) -> tuple[Caution, ...]:
             )
         )
     return tuple(found)
+
+
+def _ratings(candidate: Candidate, box: Box) -> list[Caution]:
+    """What the table of transistors says against the stage: VCEO against the whole rail, IC max, dissipation."""
+    if not box.transistor.type:
+        return []
+    row = transistor(box.transistor.type)
+    span = box.rails["vcc"].high + (box.rails["vee"].high if "vee" in box.rails else 0.0)
+    found = []
+    if row.vceo_v is not None and span > VCEO_SHARE * row.vceo_v:
+        found.append(
+            Caution(
+                name="vceo",
+                text=f"At cut-off the whole rail of {format_quantity(span, 'voltage')} stands across {row.type}, whose VCEO "
+                f"is {format_quantity(row.vceo_v, 'voltage')}: more than {percent(VCEO_SHARE)} of it; choose a type with more.",
+            )
+        )
+    most = candidate.worst.ic[1]
+    if row.ic_max_a is not None and most > row.ic_max_a:
+        found.append(
+            Caution(
+                name="ic_max",
+                text=f"IC reaches {format_quantity(most, 'current')}, above the {format_quantity(row.ic_max_a, 'current')} "
+                f"that {row.type} may carry.",
+            )
+        )
+    power = most * candidate.worst.vce[1]
+    if row.ptot_w is not None and power > 0.5 * row.ptot_w:
+        found.append(
+            Caution(
+                name="ptot",
+                text=f"The transistor may dissipate up to {format_quantity(power, 'power')}, more than half of the "
+                f"{format_quantity(row.ptot_w, 'power')} that {row.type} is rated for at 25 °C ({row.ptot_ref}).",
+            )
+        )
+    return found

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from synth.box import Box, Values
 from synth.networks.form import Array, Network, Value
 from synth.quantities import Interval
+from synth.transistor import CUT_OFF_CURRENT
 
 Sense = Literal[">=", "<="]
 Judged = Literal["nominal", "box"]
@@ -209,7 +210,8 @@ class Requirement:
             Relative to the limit, or to the target for a window [-]; infinite against a limit of zero that passes.
         """
         v = np.asarray(value, dtype=float)
-        margin = np.full(v.shape, np.inf)
+        # What was not found has no margin.
+        margin = np.where(np.isnan(v), np.nan, np.inf)
         for side, end in ((1, self.interval.high), (-1, self.interval.low)):
             if np.isinf(end):
                 continue
@@ -217,7 +219,7 @@ class Requirement:
             room = side * (end - v)
             # What passes as equal has no margin, not one of the sign of the last bit.
             room = np.where(np.abs(room) <= SLACK * abs(end), 0.0, room)
-            relative = room / scale if scale > 0.0 else np.where(room < 0.0, -np.inf, np.inf)
+            relative = room / scale if scale > 0.0 else np.where(room < 0.0, -np.inf, np.where(np.isnan(v), np.nan, np.inf))
             margin = np.minimum(margin, relative)
         return margin
 
@@ -357,8 +359,12 @@ def judge(box: Box, requirement: Requirement, worst: Callable[[Sequence[str], in
     at = {k: np.broadcast_to(v, (box.size,)).copy() for k, v in at.items()}
     margin = requirement.margin(value)
     for other, where in options[1:]:
-        smaller = requirement.margin(other) < margin
+        smaller = (requirement.margin(other) < margin) | np.isnan(other)
         value = np.where(smaller, other, value)
         margin = requirement.margin(value)
         at = {k: np.where(smaller, where[k], v) for k, v in at.items()}
-    return Judgement(requirement, value, at, margin, requirement.passes(value))
+    passed = requirement.passes(value)
+    if requirement.name == "vce":
+        # Active means more than not saturated: a cut-off transistor has all the VCE there is.
+        passed = passed & (worst(("ic",), -1)[0] > CUT_OFF_CURRENT)
+    return Judgement(requirement, value, at, margin, passed)

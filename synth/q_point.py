@@ -16,7 +16,7 @@ k = 0. The transistor saturates only if this is less than the active law gives.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Iterable, Mapping
 from typing import Literal
 
 import numpy as np
@@ -37,6 +37,10 @@ REGIONS = ("active", "saturated", "cut off")
 
 class UnknownNetwork(RestpointError):
     """A network was asked for that no file describes."""
+
+
+class WrongCircuit(RestpointError):
+    """Rails or resistors that do not make up the network."""
 
 
 def active_current(
@@ -226,6 +230,17 @@ def solve(
     return QPoint(ic, ib, vbe, vce, region)
 
 
+def _require(field: str, given: Mapping[str, Array | float], needed: Iterable[str], known: Collection[str]) -> None:
+    for name in needed:
+        if name not in given:
+            raise WrongCircuit(f"{field}: {name} is not given, accepted are {', '.join(known)}")
+    for name, value in given.items():
+        if name not in known:
+            raise WrongCircuit(f"{field}: read {name!r}, accepted are {', '.join(known)}")
+        if not np.all(np.asarray(value, dtype=float) > 0.0):
+            raise WrongCircuit(f"{field}: read {name} = {value}, accepted is more than 0")
+
+
 def operating_point(
     *,
     network: str,
@@ -274,6 +289,8 @@ def operating_point(
     ------
     UnknownNetwork
         If no network has this name.
+    WrongCircuit
+        If a rail or resistor is missing, unknown, or not above zero.
 
     Examples
     --------
@@ -284,6 +301,10 @@ def operating_point(
     """
     if network not in NETWORKS:
         raise UnknownNetwork(f"network: read {network!r}, accepted is one of {', '.join(NETWORKS)}")
+    form = NETWORKS[network]
+    needed = [role.name for role in form.roles if not role.optional]
+    _require("rails", rails, form.rails, (*form.rails, *form.optional_rails))
+    _require("resistors", resistors, needed, form.role_names)
     exact = Spread.exact
     device = Transistor(
         hfe=exact(1.0), vbe=exact(vbe), vbe_ic=vbe_ic, vbe_model=vbe_model, vce_sat=vce_sat, material=material

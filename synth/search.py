@@ -212,8 +212,10 @@ class _Corners:
                 return np.full(len(self.lo), -np.inf)
             sign, role = condition
             least = self.at(self.ends("ic", 1)[0])[1].ic * self.low[role][self.lo[:, self.roles.index(role)]]
-            # A role without width in a block needs no sign.
-            held &= ((least >= self.vt) & (least > 0.0)) | (self.lo[:, j] == self.hi[:, j])
+            # A role without width in a block needs no sign; where bands overlap even one value has an envelope of its own.
+            own = self.roles[j]
+            fixed = self.low[own][self.lo[:, j]] == self.high[own][self.hi[:, j]]
+            held &= ((least >= self.vt) & (least > 0.0)) | fixed
             ends = _swap(ends, j, 0 if sign * direction > 0 else 1)
             open_roles = [k for k in open_roles if k != j]
         bound = self._vce_corner(ends, open_roles, direction)
@@ -542,6 +544,7 @@ def search(
     top: int = 10,
     gap: float = 0.0,
     first: bool = False,
+    most: float = np.inf,
     progress: Callable[[float, float, int], bool] | None = None,
 ) -> Outcome:
     """Find the candidates of least Q-point drift, and prove that there are none better.
@@ -558,6 +561,8 @@ def search(
         Relative gap that is left unproved [-].
     first : bool
         Whether to stop as soon as anything qualifies.
+    most : float
+        Q-point solves after which to stop [-].
     progress : callable, optional
         ``progress(bound, best, open_blocks)`` after every batch; False stops the search.
 
@@ -578,7 +583,7 @@ def search(
             best = min(seeds, key=lambda f: f.drift)
             pilot = np.array([best.index], dtype=np.int32)
         rooms.append(_Room(space, goal, meter, *_bearings(space, pilot, goal, meter)))
-    complete = _run(rooms, pool, progress, first)
+    complete = _run(rooms, pool, progress, first, most)
     left = min((float(r.blocks.bound.min()) for r in rooms if r.blocks.bound.size), default=np.inf)
     found = sorted(pool.found.values(), key=lambda f: f.drift)
     spare = found[top].drift if len(found) > top else np.inf
@@ -617,12 +622,13 @@ def _run(
     pool: _Pool,
     progress: Callable[[float, float, int], bool] | None,
     first: bool = False,
+    most: float = np.inf,
 ) -> bool:
     """Work through open blocks until what is left cannot be listed; True when that is proved."""
     for room in rooms:
         room.put(room.best(), pool)
     while True:
-        if first and pool.found:
+        if (first and pool.found) or rooms[0].meter.solves > most:
             return False
         limit = pool.threshold()
         open_rooms = [room for room in rooms if room.prune(limit, pool)]

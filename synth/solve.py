@@ -9,7 +9,7 @@ import numpy as np
 
 from synth import __version__
 from synth.advice import why_nothing_qualifies
-from synth.answer import Answer, Candidate, Caution, Drift, Neighbour, NetworkResult, Search, Verdict
+from synth.answer import Answer, Candidate, Caution, Drift, Neighbour, NetworkResult, Search, Verdict, Worst
 from synth.box import Box, Extreme, Meter, Values
 from synth.explain import (
     budgets,
@@ -26,8 +26,8 @@ from synth.networks.form import Array
 from synth.q_point import REGIONS
 from synth.ranking import alternatives, order_key
 from synth.search import Outcome, search
-from synth.spaces import Exact, Goal, Index, Space, fitted, goal_of, spaces_of
-from synth.stage import Stage
+from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_of, spaces_of
+from synth.stage import Assumption, Stage, StageError
 
 Progress = Callable[[float, float, int], bool]
 
@@ -52,7 +52,14 @@ def find(
     -------
     Answer
         With `infeasible` filled when nothing qualifies.
+
+    Raises
+    ------
+    StageError
+        If `top` is no whole number above 0.
     """
+    if isinstance(top, bool) or not isinstance(top, int) or top < 1:
+        raise StageError("top", top, "which is no number of candidates", "a whole number of 1 or more", ("10",))
     goal = goal_of(stage)
     spaces = spaces_of(stage)
     outcome = search(spaces, goal, top=top, progress=progress)
@@ -69,8 +76,8 @@ def find(
         version=__version__,
         command=command,
         stage=stage.as_dict(),
-        assumed=stage.assumed,
-        warnings=warnings,
+        assumed=_assumed(stage, spaces),
+        warnings=warnings + _not_applicable(stage, spaces),
         search=_record(outcome),
         networks=best_of,
         candidates=candidates,
@@ -108,7 +115,9 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
     index = np.zeros((1, len(space.roles)), dtype=np.int32)
     (candidate,) = _build(space, index, goal, any_region=True)
     network = space.network
-    candidate = replace(candidate, rank=1, explanation=sentences(candidate, network))
+    (around,) = neighbours(*among_values(stage, space), goal)
+    candidate = replace(candidate, rank=1, neighbours=around)
+    candidate = replace(candidate, explanation=sentences(candidate, network))
     warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
     warnings += cautions(candidate, space.box(index, Meter()))
     failed = [v.name for v in candidate.limits if v.verdict == "fail"]
@@ -118,10 +127,26 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
         version=__version__,
         command=command,
         stage=stage.as_dict(),
-        assumed=stage.assumed,
-        warnings=warnings,
+        assumed=_assumed(stage, [space]),
+        warnings=warnings + _not_applicable(stage, [space]),
         networks=(NetworkResult(network=network.name, best=candidate.drift.q_point, why=why),),
         candidates=(candidate,),
+    )
+
+
+def _assumed(stage: Stage, spaces: Sequence[Space]) -> tuple[Assumption, ...]:
+    """What was assumed, without the limits that mean nothing for these networks."""
+    used = {f"limits.{need.name}" for space in spaces for need in space.requirements}
+    return tuple(a for a in stage.assumed if not a.key.startswith("limits.") or a.key in used)
+
+
+def _not_applicable(stage: Stage, spaces: Sequence[Space]) -> tuple[Caution, ...]:
+    used = {need.name for space in spaces for need in space.requirements}
+    networks = " or ".join(dict.fromkeys(space.network.name for space in spaces))
+    return tuple(
+        Caution(name="limit_not_applicable", text=f"limits.{name} means nothing for {networks} and was not judged.")
+        for name in stage.limits
+        if name in stage.limits_given and name not in used
     )
 
 
@@ -246,7 +271,7 @@ def _build(
             -1: budgets(box, ends[quantity, -1].at, quantity, -1, aim, active_law=not saturates),
         }
         shares[quantity] = [both[1][k] if up[k] >= down[k] else both[-1][k] for k in range(box.size)]
-    points, work = nominal_points(box, space.ground), duties(box)
+    points, work = nominal_points(box, space.ground), duties(box, space.ground)
     judged = [
         # Staying active is judged by the active law: it alone tells how far a saturated transistor is from it.
         judge(box, need, exact.worst if need.name == "vce" else lambda names, side: _pair(worst(names, side)))
@@ -271,7 +296,10 @@ def _build(
                 network=space.network.name,
                 resistors=names[k],
                 nominal=point,
-                worst={q: (float(ends[q, -1].value[k]), float(ends[q, 1].value[k])) for q in ("ic", "vce")},
+                worst=Worst(
+                    ic=(float(ends["ic", -1].value[k]), float(ends["ic", 1].value[k])),
+                    vce=(float(ends["vce", -1].value[k]), float(ends["vce", 1].value[k])),
+                ),
                 regions=_regions(box, [e.at for e in ends.values()], k),
                 drift=drift,
                 centring=centring,

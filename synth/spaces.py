@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Collection, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -255,6 +255,34 @@ def fitted(stage: Stage) -> Space:
         )
     roles = tuple(role for role in NETWORKS[matching[0]].role_names if role in names)
     return _space(stage, matching[0], roles, {role: _parts(stage, role, (stage.values[role],)) for role in roles}, ())
+
+
+def among_values(stage: Stage, space: Space) -> tuple[Space, Index]:
+    """The resistors fitted, placed among the values that the stage allows, so that they have neighbours.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request.
+    space : Space
+        Of `fitted`.
+
+    Returns
+    -------
+    space : Space
+        With every value of each role, the fitted one among them.
+    index : ndarray of int, shape (1, roles)
+        Where the fitted values are.
+    """
+    lists, index = {}, []
+    for role in space.roles:
+        own, other = space.lists[role], _parts(stage, role)
+        both = [np.concatenate([getattr(p, f.name) for p in (own, other)]) for f in fields(Parts)]
+        # Of equal values the fitted one comes first and stays.
+        _, first = np.unique(both[0], return_index=True)
+        lists[role] = Parts(**{f.name: column[first] for f, column in zip(fields(Parts), both, strict=True)})
+        index.append(int(np.flatnonzero(first == 0)[0]))
+    return replace(space, lists=lists), np.array([index], dtype=np.int32)
 
 
 def _space(

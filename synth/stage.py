@@ -44,8 +44,6 @@ from synth.transistor import Transistor
 
 __all__ = ["Assumption", "RoleSetting", "Stage", "StageError", "StageWarning", "template"]
 
-LARGEST_FILE = 1_000_000
-"""Size of a stage file above which it is refused unread [byte]."""
 
 @dataclass(frozen=True, kw_only=True, init=False, repr=False)
 class Stage:

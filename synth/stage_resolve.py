@@ -218,6 +218,10 @@ class _Resolver:
         temperature = self.temperature()
         transistor = self.transistor(current)
         self.check_junction(transistor, current, temperature.high)
+        if vce.nominal is not None and vce.nominal <= transistor.vce_sat:
+            least = format_quantity(transistor.vce_sat, "voltage")
+            reason = f"which is no more than VCE(sat) = {least}: a saturated switch is set by forced gain, not by a Q-point"
+            raise self.refusal("target.vce", reason, f"more than {least}")
         roles = self.roles(networks, any_network, temperature)
         if any(setting.style for setting in roles.values()):
             text = "a style is recorded only: its power and voltage ratings get no verdict, so compare the drops and currents"

@@ -189,7 +189,13 @@ def saturation_current(device: Transistor, t: float) -> float:
 
 
 def _laid_out(
-    rng: np.random.Generator, network: Network, device: Transistor, rails: Mapping[str, Spread], ic: float, vce: float
+    rng: np.random.Generator,
+    network: Network,
+    roles: Sequence[str],
+    device: Transistor,
+    rails: Mapping[str, Spread],
+    ic: float,
+    vce: float,
 ) -> dict[str, float]:
     """Resistances near which the Q-point is met, by hand calculation; any resistance for an unknown network."""
     h, vcc = device.hfe.nominal, rails["vcc"].nominal
@@ -214,6 +220,10 @@ def _laid_out(
         vee, sag = rails["vee"].nominal, rng.uniform(0.02, 0.6)
         rest = vcc + sag + vbe - vce
         return {"rb": sag / ib, "rc": rest / ic, "re": max(vee - sag - vbe, 0.1) / (ic + ib)}
+    if network.name == "follower":
+        vb = min(vcc - vce + vbe, 0.95 * vcc)
+        bleed = bleed if "r2" in roles else 0.0
+        return {"r1": (vcc - vb) / (bleed + ib), "r2": vb / (bleed or ib), "re": (vcc - vce) / (ic + ib)}
     return {role: vcc / ic * 10.0 ** rng.uniform(-1.0, 1.5) for role in network.role_names}
 
 
@@ -295,7 +305,7 @@ def random_spaces(
         variants = list(nodal.variants(network))
         used, roles = variants[rng.integers(len(variants))]
         own = {rail: rails[rail] for rail in used}
-        r = _laid_out(rng, network, device, own, ic, vce)
+        r = _laid_out(rng, network, roles, device, own, ic, vce)
         if limits is None:
             limits = _limits(rng, device, goal, r, vcc)
         lengths = _lengths(rng, len(roles), most)

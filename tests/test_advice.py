@@ -111,7 +111,15 @@ def check_without(given: Stage, found: Infeasible) -> None:
             assert least * (1.0 - 1e-12) <= drift <= least / (1.0 - GAP) * (1.0 + 1e-12)
 
 
-@pytest.mark.parametrize("request_name", REQUESTS)
+LATER = {"both windows", "ceiling of VCE", "window of IC", "lopsided window", "bleeder", "window of VCE"}
+"""Requests whose whole check waits for the long run."""
+
+
+def marks(request_name: str) -> list[pytest.MarkDecorator]:
+    return [pytest.mark.long] if request_name in LATER else []
+
+
+@pytest.mark.parametrize("request_name", [pytest.param(name, marks=marks(name)) for name in REQUESTS])
 def test_advice_is_borne_out_by_searches_of_its_own(request_name: str) -> None:
     given, found = stage(**REQUESTS[request_name]), known(request_name)
     check_minimal(given, found)
@@ -157,8 +165,8 @@ def test_a_conflict_has_no_smaller_conflict_inside() -> None:
     [
         ("window of IC", "target.ic"),
         ("supply current", "limits.supply_current"),
-        ("bleeder", "limits.bleeder_current"),
-        ("share", "limits.collector_share"),
+        pytest.param("bleeder", "limits.bleeder_current", marks=pytest.mark.long),
+        pytest.param("share", "limits.collector_share", marks=pytest.mark.long),
     ],
 )
 def test_a_relaxation_is_the_least_to_three_figures(request_name: str, key: str) -> None:
@@ -220,7 +228,7 @@ def test_a_lopsided_window_keeps_its_other_end() -> None:
 @pytest.mark.parametrize("networks", [["divider", "fixed_base"], ["fixed_base", "divider"]], ids="+".join)
 def test_a_limit_means_its_own_current_in_each_network(networks: list[str]) -> None:
     """The supply current of a divider has a bleeder in it, that of fixed base bias a base current."""
-    given = stage(network=networks, series="E12", tolerance="5 %", ic="2 mA ± 40 %", supply_current="1.2 mA")
+    given = stage(network=networks, series="E6", tolerance="5 %", ic="2 mA ± 40 %", supply_current="1.2 mA")
     found = advice(given)
     assert "supply_current" in found.binding
     check_minimal(given, found)

@@ -14,7 +14,7 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose, assert_array_equal
 from scipy.constants import Boltzmann, elementary_charge
-from scipy.optimize import brentq, minimize, minimize_scalar
+from scipy.optimize import brentq, minimize_scalar
 from stages import (
     ROOM,
     Numbers,
@@ -22,6 +22,7 @@ from stages import (
     any_region,
     edge_box,
     grain,
+    law,
     leaky_box,
     level_box,
     point,
@@ -29,9 +30,9 @@ from stages import (
     quantities,
     random_box,
     random_transistor,
-    room_temperature,
     samples,
     saturated,
+    scan_and_polish,
     total,
     vertices,
 )
@@ -48,9 +49,6 @@ TRUE = 1e-9
 SAME = 1e-12
 """The same formula at the same numbers, from a batch of another shape: some tens of ulps."""
 BOTH = (1, -1)
-
-LARGEST: dict[str, float] = {}
-"""Largest relative difference met by a sweep; written to the junit report of the test that made it."""
 
 
 def stage(network: str = "divider", *, rails: dict[str, tuple[float, ...]] | None = None, celsius: tuple[float, ...] = (25.0,),
@@ -73,10 +71,6 @@ def stage(network: str = "divider", *, rails: dict[str, tuple[float, ...]] | Non
         temperature=spread(celsius, 273.15),
         parts={role: part(role, value) for role, value in ohms.items()},
     )
-
-
-def law(box: Box, u: dict[str, Numbers]) -> dict[str, Numbers]:
-    return active(box.network.name, box.transistor, point(box, u))
 
 
 def extreme_of(values: Numbers, direction: int) -> Numbers:
@@ -261,51 +255,6 @@ def test_equal_to_full_enumeration_where_all_signs_are_proved() -> None:
                 assert np.all(np.abs(worst - best)[proved] <= np.broadcast_to(room, worst.shape)[proved]), (number, names, direction)
                 counted += int(proved.sum())
     assert counted > 1000
-
-
-class Landscape:
-    """One quantity of one stage over its box, with gradients by complex step, for a polish from outside the package."""
-
-    STEP = 1e-30
-
-    def __init__(self, box: Box, names: Sequence[str], direction: int, scale: float) -> None:
-        self.box, self.names, self.factor = box, names, -direction / scale
-        self.axes = position(box)
-
-    def __call__(self, x: Numbers) -> tuple[float, Numbers]:
-        n = len(self.axes)
-        steps = np.vstack([np.zeros(n), np.eye(n)]) * (1j * self.STEP) + x
-        value = self.factor * total(self.names, law(self.box, {axis: steps[:, j] for j, axis in enumerate(self.axes)}))
-        return float(value[0].real), np.asarray(value[1:].imag / self.STEP)
-
-    def polish(self, start: dict[str, float], ends: tuple[float, float]) -> float:
-        x0 = np.array([start[axis] for axis in self.axes])
-        bounds = [ends if axis == "temperature" else (0.0, 1.0) for axis in self.axes]
-        x0[-1] = min(max(x0[-1], ends[0]), ends[1])
-        options = {"maxiter": 80, "ftol": 1e-16, "gtol": 1e-12}
-        result = minimize(self, x0, jac=True, method="L-BFGS-B", bounds=bounds, options=options)
-        return float(result.fun) / self.factor
-
-
-def scan_and_polish(box: Box, rng: np.random.Generator, names: Sequence[str], direction: int, starts: int = 3) -> float:
-    """Best of a dense scan (vertices at eleven temperatures and random points), climbed from its best points on each side
-    of 25 °C, where the laws are smooth."""
-    room = room_temperature(box)
-    sides = [(0.0, 1.0)] if room is None else [(0.0, room), (room, 1.0)]
-    moments = np.unique(np.concatenate([np.linspace(low, high, 6) for low, high in sides]))
-    corners, points = vertices(box, moments), samples(rng, box, 1500, at_ends=0.7)
-    u = {axis: np.vstack([corners[axis], points[axis]])[:, 0] for axis in corners}
-    height = direction * total(names, law(box, u))
-    best = float(height.max())
-    ground = Landscape(box, names, direction, abs(best) or 1.0)
-    for low, high in sides:
-        inside = np.flatnonzero((u["temperature"] >= low) & (u["temperature"] <= high))
-        order = inside[np.argsort(-height[inside])]
-        # The best point, and the best of the random ones: they start from other faces of the box.
-        chosen = [*order[: starts - 1], *order[order >= len(corners["temperature"])][:1]]
-        for k in chosen:
-            best = max(best, direction * ground.polish({axis: float(x[k]) for axis, x in u.items()}, (low, high)))
-    return direction * best
 
 
 def compare_with_scan(numbers: Sequence[int], build: Callable[[np.random.Generator], Box], starts: int = 3,

@@ -656,7 +656,7 @@ def test_target_outside_its_window_is_refused():
         ("supply", "5.01 : 12 : 13 V", "0 : 12 : 13 V", r"supply\.vcc: .* goes down to 0 V"),
         ("vce", "11.99 V", "12 V", r"target\.vce: read '12 V', which is not below the 12 V between the rails"),
         ("vce", ">= 11.99 V", ">= 12 V", r"target\.vce: read '>= 12 V', which is not below the 12 V"),
-        ("vce", "0.1 V", "0 V", r"target\.vce: read '0 V', which goes down to 0 V"),
+        ("vce", "0.3 V", "0 V", r"target\.vce: read '0 V', which goes down to 0 V"),
         ("vce", "1 V ± 100 %", "1 V ± 101 %", r"target\.vce: .* goes down to -10 mV"),
         ("ic", "1 uA", "0 A", r"target\.ic: read '0 A', which goes down to 0 A"),
         ("ic", "2 mA ± 100 %", "2 mA ± 101 %", r"target\.ic: .* goes down to -20 µA"),

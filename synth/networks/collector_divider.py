@@ -39,7 +39,7 @@ NETWORK = Network(
     summary="Collector feedback that fixes VCE at a multiple of VBE and depends less on hFE, at the cost of a bleeder current.",
     roles=(
         Role(name="r1", meaning="feedback resistor, collector to base", nodes=("c", "b")),
-        Role(name="r2", meaning="lower divider resistor, base to 0 V", nodes=("b", "0")),
+        Role(name="r2", meaning="divider resistor from the base to the emitter's rail", nodes=("b", "0")),
         Role(name="rc", meaning="collector load, also senses IC", nodes=("vcc", "c")),
         Role(name="re", meaning="emitter resistor, feeds IC back", nodes=("e", "0"), optional=True),
     ),

@@ -33,8 +33,8 @@ NETWORK = Network(
     title="base divider with emitter resistor",
     summary="IC is set by the divider and re and hardly by hFE; the divider draws its own current.",
     roles=(
-        Role(name="r1", meaning="upper divider resistor, supply to base", nodes=("vcc", "b")),
-        Role(name="r2", meaning="lower divider resistor, base to 0 V", nodes=("b", "0")),
+        Role(name="r1", meaning="divider resistor that feeds the base from the collector's rail", nodes=("vcc", "b")),
+        Role(name="r2", meaning="divider resistor from the base to the emitter's rail", nodes=("b", "0")),
         Role(name="rc", meaning="collector load", nodes=("vcc", "c")),
         Role(name="re", meaning="emitter resistor, feeds IC back", nodes=("e", "0")),
     ),

@@ -33,7 +33,7 @@ NETWORK = Network(
     summary="Two resistors suffice and the supply current is least, but without re IC follows hFE one to one.",
     optional_rails=("vbb",),
     roles=(
-        Role(name="rb", meaning="base resistor, sets IB", nodes=("vbb", "b")),
+        Role(name="rb", meaning="base resistor", nodes=("vbb", "b")),
         Role(name="rc", meaning="collector load", nodes=("vcc", "c")),
         Role(name="re", meaning="emitter resistor, feeds IC back", nodes=("e", "0"), optional=True),
     ),

@@ -31,8 +31,14 @@ NETWORK = Network(
     title="emitter follower",
     summary="Low output resistance and a gain just below one; re sets IC, and VCE is what the emitter leaves of the rail.",
     roles=(
-        Role(name="r1", meaning="base feed, supply to base", nodes=("vcc", "b")),
-        Role(name="r2", meaning="lower divider resistor, base to 0 V", nodes=("b", "0"), optional=True, absent="open"),
+        Role(name="r1", meaning="feeds the base from the collector's rail", nodes=("vcc", "b")),
+        Role(
+            name="r2",
+            meaning="divider resistor from the base to the emitter's rail",
+            nodes=("b", "0"),
+            optional=True,
+            absent="open",
+        ),
         Role(name="re", meaning="emitter resistor, sets IC and carries the output", nodes=("e", "0")),
     ),
     two_port=_two_port,

@@ -29,9 +29,9 @@ NETWORK = Network(
     summary="IC is set by VEE and re and hardly by hFE, with the base near 0 V and no divider; it takes a second rail.",
     rails=("vcc", "vee"),
     roles=(
-        Role(name="rb", meaning="base resistor, 0 V to base", nodes=("0", "b")),
+        Role(name="rb", meaning="base resistor", nodes=("0", "b")),
         Role(name="rc", meaning="collector load", nodes=("vcc", "c")),
-        Role(name="re", meaning="emitter resistor to the negative rail, sets IC", nodes=("e", "vee")),
+        Role(name="re", meaning="emitter resistor to the second rail, sets IC", nodes=("e", "vee")),
     ),
     two_port=_two_port,
     branches=_branches,

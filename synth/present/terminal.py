@@ -127,6 +127,8 @@ def table(rows: Sequence[Sequence[str]], right: Sequence[int] = (), indent: str 
 
 def _wrapped(text: str, hang: str) -> str:
     """Break a long line at spaces; continuation lines start with `hang`."""
+    if len(hang) > WIDTH // 2:
+        hang = "    "
     lines, line = [], text
     while len(line) > WIDTH:
         cut = line.rfind(" ", len(hang) + 1, WIDTH + 1)
@@ -167,7 +169,8 @@ def _headline(answer: Answer) -> str:
     space = f"{_count(search.combinations)} combinations"
     if search.status == "optimal":
         count = len(answer.candidates)
-        listed = "the only candidate" if count == 1 else f"the best {count}"
+        only = "the only candidate" if search.bound is None else "the best"
+        listed = only if count == 1 else f"the best {count}"
         beyond = "" if search.bound is None else f"; every other drifts {percent(search.bound)} or more"
         return _wrapped(f"PASS  {name}: {listed} of {space}, proved{beyond} ({effort})", "      ")
     if search.status == "infeasible":
@@ -230,7 +233,8 @@ def _ranking(candidates: Sequence[Candidate]) -> str:
     same = len({(c.network, tuple(c.resistors)) for c in candidates}) == 1
     roles = list(candidates[0].resistors) if same else []
     head = ["rank", *(["network"] if not same else []), *([r.upper() for r in roles] if same else ["resistors"])]
-    head += ["IC over the box", "VCE over the box", "drift", "supply"]
+    # Beside the names of networks and roles there is no room for the supply current.
+    head += ["IC over the box", "VCE over the box", "drift", *(["supply"] if same else [])]
     rows = [head]
     for c in candidates:
         values = [format_resistance(c.resistors[r]) for r in roles] if same else [
@@ -244,10 +248,10 @@ def _ranking(candidates: Sequence[Candidate]) -> str:
                 span(*c.worst["ic"], "current"),
                 span(*c.worst["vce"], "voltage"),
                 percent(c.drift.q_point),
-                figure(c.supply_current, "current"),
+                *([figure(c.supply_current, "current")] if same else []),
             ]
         )
-    return table(rows, right=(0, len(head) - 2, len(head) - 1))
+    return table(rows, right=(0, *(j for j, name in enumerate(head) if name in ("drift", "supply"))))
 
 
 def _first(answer: Answer, c: Candidate) -> str:
