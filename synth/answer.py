@@ -54,6 +54,11 @@ class Drift:
     vce: float | None
     q_point: float
 
+    @property
+    def decides(self) -> str:
+        """The quantity that drifts more, ``ic`` or ``vce``, and so decides the rank."""
+        return "vce" if self.vce is not None and self.vce > self.ic else "ic"
+
 
 @dataclass(frozen=True, kw_only=True)
 class Share:

@@ -369,7 +369,7 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
             f"{duty.meaning}; drops "
             f"{format_quantity(duty.drop, 'voltage')} at {format_quantity(duty.current, 'current')}."
         )
-    larger = "vce" if c.drift.vce is not None and c.drift.vce > c.drift.ic else "ic"
+    larger = c.drift.decides
     if c.drift.vce is not None:
         lines.append(
             f"{larger.upper()} decides the rank: it drifts {percent(c.drift.q_point)} at worst"

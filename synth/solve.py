@@ -225,18 +225,13 @@ def _best_of_each(
     return tuple(order)
 
 
-def _larger(candidate: Candidate) -> str:
-    drift = candidate.drift
-    return "vce" if drift.vce is not None and drift.vce > drift.ic else "ic"
-
-
 def _strength(candidate: Candidate) -> str:
     return f"least drift: {_drifts(candidate)}"
 
 
 def _drifts(candidate: Candidate) -> str:
     """What drifts most, and its largest cause."""
-    quantity = _larger(candidate)
+    quantity = candidate.drift.decides
     shares = candidate.budget[quantity]
     cause = f", largest cause {cause_words(shares[0].cause)} with {percent(shares[0].share)}" if shares else ""
     return f"{quantity.upper()} drifts {percent(candidate.drift.q_point)}{cause}"

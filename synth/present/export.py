@@ -5,7 +5,7 @@ from __future__ import annotations
 import csv
 import io
 
-from synth.answer import Answer, Candidate
+from synth.answer import Answer
 from synth.explain import percent
 from synth.present.terminal import figure, limit_words, span
 from synth.quantities import format_resistance
@@ -63,13 +63,8 @@ def to_csv(answer: Answer) -> str:
         row: list[object] = [c.rank, inert(c.network), c.verdict, *(c.resistors.get(role, "") for role in roles)]
         row += [c.nominal.ic, *c.worst["ic"], c.nominal.vce, *c.worst["vce"]]
         row += [c.drift.ic, "" if c.drift.vce is None else c.drift.vce, c.drift.q_point, c.centring, c.supply_current]
-        writer.writerow([*row, _decides(c)])
+        writer.writerow([*row, c.drift.decides])
     return out.getvalue()
-
-
-def _decides(c: Candidate) -> str:
-    """The quantity whose drift ranks the candidate."""
-    return "vce" if c.drift.vce is not None and c.drift.vce > c.drift.ic else "ic"
 
 
 def escaped(text: str) -> str:

@@ -7,13 +7,11 @@ from math import inf
 
 from synth.answer import Answer, Candidate, Verdict
 from synth.explain import cause_words, percent, point_words
-from synth.quantities import format_quantity, format_resistance, parse_limit
+from synth.quantities import format_quantity, format_resistance
 from synth.stage_keys import KEYS
 
 WIDTH = 100
 FIGURES = 3
-LONG = 14
-"""Characters from which an assumed limit is rounded for reading."""
 LEGEND = """Words
   over the box  worst case over every spread at once: gain, VBE, temperature, supply, resistors
   drift         largest excursion from target over the box, relative to the target
@@ -53,7 +51,7 @@ def render(answer: Answer) -> str:
     if answer.warnings:
         blocks.append("\n".join(["Cautions", *(_wrapped(f"  {w.name}: {w.text}", "    ") for w in answer.warnings)]))
     if answer.assumed:
-        rows = [[n.key, _short(n.key, n.value), n.why] for n in answer.assumed]
+        rows = [[n.key, n.value, n.why] for n in answer.assumed]
         blocks.append(_section("Assumed, since not given", rows))
     if best is not None:
         blocks.append(LEGEND)
@@ -143,17 +141,6 @@ def _section(title: str, rows: Sequence[Sequence[str]], right: Sequence[int] = (
     return f"{title}\n{table(rows, right)}"
 
 
-def _short(key: str, text: str) -> str:
-    """An assumed text with a long limit rounded for reading; the exact one stands in JSON and in the saved stage."""
-    entry = KEYS.get(key)
-    if entry is None or entry.form != "limit" or len(text) < LONG:
-        return text
-    limit = parse_limit(text, entry.kind, key, entry.rule)
-    if limit.low == -inf:
-        return f"<= {format_quantity(limit.high, entry.kind)}"
-    return f">= {format_quantity(limit.low, entry.kind)}" if limit.high == inf else text
-
-
 def _count(number: int) -> str:
     return f"{number:,}".replace(",", NO_BREAK) if number < 10**7 else f"{number:.3g}"
 
@@ -224,12 +211,6 @@ def span(low: float, high: float, kind: str) -> str:
 
 
 def _ranking(candidates: Sequence[Candidate]) -> str:
-    groups: list[list[Candidate]] = []
-    for c in candidates:
-        if groups and tuple(groups[-1][0].resistors) == tuple(c.resistors) and groups[-1][0].network == c.network:
-            groups[-1].append(c)
-        else:
-            groups.append([c])
     same = len({(c.network, tuple(c.resistors)) for c in candidates}) == 1
     roles = list(candidates[0].resistors) if same else []
     head = ["rank", *(["network"] if not same else []), *([r.upper() for r in roles] if same else ["resistors"])]
