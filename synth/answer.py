@@ -33,6 +33,7 @@ class Caution:
 class Nominal:
     """Nominal Q-point: currents [A], voltages [V] as magnitudes; node voltages against 0 V with their sign.
 
+    `vc` is the collector voltage from the end of re, or from 0 V of two supplies, and `ve` the drop of re, magnitudes;
     `forced_gain` is IC/IB of a saturated transistor [-], None of any other.
     """
 
@@ -40,6 +41,8 @@ class Nominal:
     vce: float
     ib: float
     vbe: float
+    vc: float
+    ve: float
     region: str
     nodes: Mapping[str, float]
     rails: Mapping[str, float]
@@ -48,16 +51,30 @@ class Nominal:
 
 @dataclass(frozen=True, kw_only=True)
 class Drift:
-    """Largest relative excursion from target of IC, of VCE (None without a VCE target) and of the Q-point [-]."""
+    """Largest relative excursion from target of IC, of VCE, VC or VE (None without a target) and of the Q-point [-]."""
 
     ic: float
-    vce: float | None
+    vce: float | None = None
+    vc: float | None = None
+    ve: float | None = None
     q_point: float
+
+    def of(self) -> dict[str, float]:
+        """Drift of every quantity that has a target.
+
+        Returns
+        -------
+        dict of str to float
+            Quantity to drift [-], IC first.
+        """
+        every = {"ic": self.ic, "vce": self.vce, "vc": self.vc, "ve": self.ve}
+        return {quantity: drift for quantity, drift in every.items() if drift is not None}
 
     @property
     def decides(self) -> str:
-        """The quantity that drifts more, ``ic`` or ``vce``, and so decides the rank."""
-        return "vce" if self.vce is not None and self.vce > self.ic else "ic"
+        """The quantity that drifts most and so decides the rank; IC where two are equal."""
+        drifts = self.of()
+        return max(drifts, key=drifts.__getitem__)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -106,19 +123,26 @@ class Verdict:
 
 @dataclass(frozen=True, kw_only=True)
 class Worst(Mapping[str, tuple[float, float]]):
-    """Extremes over the box: of IC [A] and of VCE [V], each as (least, greatest)."""
+    """Extremes over the box: of IC [A], of VCE and, where it has the target, VC or VE [V], each as (least, greatest)."""
 
     ic: tuple[float, float]
     vce: tuple[float, float]
+    vc: tuple[float, float] | None = None
+    ve: tuple[float, float] | None = None
+
+    @property
+    def _known(self) -> dict[str, tuple[float, float]]:
+        every = {"ic": self.ic, "vce": self.vce, "vc": self.vc, "ve": self.ve}
+        return {name: ends for name, ends in every.items() if ends is not None}
 
     def __getitem__(self, name: str) -> tuple[float, float]:
-        return {"ic": self.ic, "vce": self.vce}[name]
+        return self._known[name]
 
     def __iter__(self) -> Iterator[str]:
-        return iter(("ic", "vce"))
+        return iter(self._known)
 
     def __len__(self) -> int:
-        return 2
+        return len(self._known)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -126,7 +150,8 @@ class Candidate:
     """A network with a value in every role, judged and explained.
 
     Resistances of `resistors` and `base_feed` [ohm]; `worst` holds the extremes of IC [A] and VCE [V]; `centring` [-];
-    `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points.
+    `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
+    the next best network, for the winner among several.
     """
 
     rank: int
@@ -145,6 +170,7 @@ class Candidate:
     limits: tuple[Verdict, ...]
     verdict: Pass
     explanation: tuple[str, ...]
+    rival: NetworkResult | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -160,12 +186,22 @@ class Search:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Compared:
+    """The cause that costs a network most more drift than the winner: its share there and here [-]."""
+
+    cause: str
+    there: float
+    here: float
+
+
+@dataclass(frozen=True, kw_only=True)
 class NetworkResult:
-    """Best drift of one network [-] (None if none qualifies) and why it stands where it does."""
+    """Best drift of one network [-] (None if none qualifies), why it stands where it does, and what costs it the rank."""
 
     network: str
     best: float | None
     why: str
+    against: Compared | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -260,6 +296,7 @@ class Answer:
                     **{f"{q}_{end}": c.worst[q][i] for q in c.worst for i, end in enumerate(("min", "max"))},
                     "drift_ic": c.drift.ic,
                     "drift_vce": c.drift.vce,
+                    **{f"drift_{q}": x for q, x in c.drift.of().items() if q in ("vc", "ve")},
                     "drift": c.drift.q_point,
                     "centring": c.centring,
                     "supply_current_a": c.supply_current,
@@ -322,7 +359,7 @@ class Answer:
             "assumed": [_plain(vars(note)) for note in self.assumed],
             "warnings": [_plain(vars(w)) for w in self.warnings],
             "search": None if self.search is None else _plain(vars(self.search)),
-            "networks": [_plain(vars(n)) for n in self.networks],
+            "networks": [_network(n) for n in self.networks],
             "candidates": [_candidate(c) for c in self.candidates],
             "alternatives": [_plain(vars(a)) for a in self.alternatives],
             "infeasible": None,
@@ -346,6 +383,10 @@ class Answer:
         return json.dumps(self.as_dict(), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
 
 
+def _network(n: NetworkResult) -> dict[str, Any]:
+    return {**vars(n), "best": _plain(n.best), "against": None if n.against is None else _plain(vars(n.against))}
+
+
 def _candidate(c: Candidate) -> dict[str, Any]:
     return {
         "rank": c.rank,
@@ -354,7 +395,7 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         "nominal": _plain(vars(c.nominal)),
         "worst": _plain(c.worst),
         "regions": list(c.regions),
-        "drift": _plain(vars(c.drift)),
+        "drift": {k: x for k, x in _plain(vars(c.drift)).items() if x is not None or k == "vce"},
         "centring": _plain(c.centring),
         "supply_current": _plain(c.supply_current),
         "base_feed": _plain(c.base_feed),
@@ -364,6 +405,7 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         "limits": [_plain(vars(v)) for v in c.limits],
         "verdict": c.verdict,
         "explanation": list(c.explanation),
+        **({} if c.rival is None else {"rival": _network(c.rival)}),
     }
 
 

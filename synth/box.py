@@ -5,9 +5,9 @@ that is proved: there the extreme sits at the known end. Along the others both e
 rises inward from both ends of an edge the stationary point between them is found. Temperature is scanned on both sides
 of 25 °C, where the resistor band and the gain law have their kinks, and polished around the best point.
 
-The proofs assume current into the base (IB ≥ 0), IC above ICBO and VBE above 0. Where a point of the box breaks that, no
-sign is trusted and every vertex is tried: each quantity is still monotone along each single axis, only the direction is
-open.
+The proofs assume current into the base (IB ≥ 0), IC above ICBO, VBE above 0 and a reference element that conducts. Where a
+point of the box breaks that, no sign is trusted and every vertex is tried: each quantity is still monotone along each single
+axis, only the direction is open.
 """
 
 from __future__ import annotations
@@ -23,13 +23,14 @@ from numpy.typing import NDArray
 from synth.networks.form import Array, Branches, Network, QPoint, Sign, TwoPort
 from synth.q_point import solve, solve_active
 from synth.quantities import Spread
+from synth.reference import Reference
 from synth.transistor import T0, Transistor
 
 Values = dict[str, Array]
 """A value of every parameter of the box at some points: rails [V], delta [V], hfe [-] and icbo [A] at 25 °C,
-temperature [K], and the resistance of each role [ohm]."""
+temperature [K], and the resistance of each role [ohm]; of a reference element delta_ref [V] and r_ref [ohm]."""
 
-DEVICE_AXES = ("delta", "hfe", "icbo")
+DEVICE_AXES = ("delta", "hfe", "icbo", "delta_ref", "r_ref")
 SCAN_POINTS = 8
 """Interior temperatures of the scan on each side of 25 °C."""
 INWARD = 1e-5
@@ -169,6 +170,8 @@ class Box:
         Ambient [K].
     parts : mapping of str to Parts
         The resistors of each role used.
+    reference : Reference, optional
+        The reference element of the base voltage, where the network has one.
     meter : Meter, optional
         Where solves are counted.
     """
@@ -178,6 +181,7 @@ class Box:
     rails: Mapping[str, Spread]
     temperature: Spread
     parts: Mapping[str, Parts]
+    reference: Reference | None = None
     meter: Meter = field(default_factory=Meter)
 
     @cached_property
@@ -187,15 +191,20 @@ class Box:
 
     @cached_property
     def spreads(self) -> dict[str, Spread]:
-        """Spread of each axis that is not a role: rails, delta, hfe, icbo."""
+        """Spread of each axis that is not a role: rails, delta, hfe, icbo, and those of the reference where it is widest."""
         device = self.transistor
         vbe = device.vbe
-        return {
+        found = {
             **self.rails,
             "delta": Spread(vbe.low - vbe.nominal, 0.0, vbe.high - vbe.nominal),
             "hfe": device.hfe,
             "icbo": device.icbo,
         }
+        if self.reference is not None:
+            ends = [self.reference.deviation(t) for t in (self.temperature.low, self.temperature.high)]
+            found["delta_ref"] = Spread(float(min(low for low, _ in ends)), 0.0, float(max(high for _, high in ends)))
+            found["r_ref"] = self.reference.slope
+        return found
 
     @cached_property
     def axes(self) -> tuple[str, ...]:
@@ -222,6 +231,7 @@ class Box:
             rails=self.rails,
             temperature=self.temperature,
             parts={role: part.take(index) for role, part in self.parts.items()},
+            reference=self.reference,
             meter=self.meter,
         )
 
@@ -243,7 +253,10 @@ class Box:
         found: Values = {"temperature": t}
         for name, spread in self.spreads.items():
             x = coordinates.get(name)
-            found[name] = np.asarray(spread.nominal if x is None else (1.0 - x) * spread.low + x * spread.high)
+            low, high = np.asarray(spread.low), np.asarray(spread.high)
+            if name == "delta_ref" and self.reference is not None:
+                low, high = self.reference.deviation(t)
+            found[name] = np.asarray(spread.nominal if x is None else (1.0 - x) * low + x * high)
         for role, part in self.parts.items():
             x = coordinates.get(role)
             low, high = part.ends(t)
@@ -260,6 +273,24 @@ class Box:
             See `Values`.
         """
         return self.values({}) | {role: part.nominal for role, part in self.parts.items()}
+
+    def sources(self, values: Values) -> dict[str, Array]:
+        """What drives the network: the rails and the line of the reference element.
+
+        Parameters
+        ----------
+        values : dict
+            See `Values`; broadcast.
+
+        Returns
+        -------
+        dict
+            As `synth.networks.form.Rails` has it [V, ohm].
+        """
+        found = {rail: values[rail] for rail in self.rails}
+        if self.reference is not None:
+            found |= self.reference.line(values["delta_ref"], values["r_ref"], values["temperature"])
+        return found
 
     def solve(self, values: Values, active_law: bool = False) -> QPoint:
         """Q-point at given parameters.
@@ -281,7 +312,7 @@ class Box:
         q = law(
             self.network,
             self.transistor,
-            {rail: values[rail] for rail in self.rails},
+            self.sources(values),
             {role: values[role] for role in self.parts},
             hfe=values["hfe"] * self.transistor.gain_factor(t),
             icbo=values["icbo"] * self.transistor.leakage_factor(t),
@@ -306,8 +337,7 @@ class Box:
         Branches
             Of the broadcast shape.
         """
-        rails = {rail: values[rail] for rail in self.rails}
-        return self.network.branches(rails, {role: values[role] for role in self.parts}, q)
+        return self.network.branches(self.sources(values), {role: values[role] for role in self.parts}, q)
 
     def measure(self, names: Sequence[str], values: Values, q: QPoint) -> Array:
         """Sum of quantities at solved points.
@@ -315,7 +345,8 @@ class Box:
         Parameters
         ----------
         names : sequence of str
-            ``ic ib vce vbe``, a role current ``i_<role>`` or a rail current ``rail_<rail>``; their sum is taken.
+            ``ic ib vce vbe``, a role current ``i_<role>``, that of the reference ``i_ref``, a rail current ``rail_<rail>``,
+            the collector voltage ``vc`` against 0 V or the drop ``ve`` of the emitter resistor; their sum is taken.
         values : dict
             See `Values`.
         q : QPoint
@@ -333,7 +364,12 @@ class Box:
                 part = getattr(q, name)
             else:
                 branches = branches or self.branches(values, q)
-                part = branches.rail[name[5:]] if name.startswith("rail_") else branches.current[name[2:]]
+                if name == "vc":
+                    part = branches.nodes["c"]
+                elif name == "ve":
+                    part = branches.voltage.get("re", 0.0 * q.ic)
+                else:
+                    part = branches.rail[name[5:]] if name.startswith("rail_") else branches.current[name[2:]]
             total = part if total is None else total + part
         return np.asarray(total)
 
@@ -455,6 +491,8 @@ class _Climb:
         if self.premise:
             leakage = values["icbo"] * box.transistor.leakage_factor(values["temperature"])
             broken = (q.ib < 0.0) | (q.ic < leakage) | (q.vbe < 0.0)
+            if box.reference is not None:
+                broken = broken | (np.asarray(box.measure(("i_ref",), values, q)) < 0.0)
             if broken.any():
                 broken = np.broadcast_to(broken, np.broadcast_shapes(broken.shape, (box.size,)))
                 self.doubtful |= broken.reshape(-1, box.size).any(axis=0)
@@ -681,10 +719,10 @@ class _Straddle:
 
         def port(moved: Mapping[str, Array]) -> TwoPort:
             now = {**values, **moved}
-            return box.network.two_port({k: now[k] for k in box.rails}, {k: now[k] for k in box.parts}, t)
+            return box.network.two_port(box.sources(now), {k: now[k] for k in box.parts}, t)
 
         plain = port({})
-        found = {"delta": 0.0} if "delta" in box.axes else {}
+        found = {axis: most for axis, most in (("delta", 0.0), ("delta_ref", 1.0)) if axis in box.axes}
         for axis in (a for a in box.axes if a not in DEVICE_AXES):
             other = port({axis: values[axis] * 1.01})
             load = ((plain.e_c, other.e_c), (plain.z_cb, other.z_cb), (plain.z_cc, other.z_cc))

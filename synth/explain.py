@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from synth.answer import Caution, Duty, Neighbour, Nominal, Share
+from synth.answer import Caution, Compared, Duty, Neighbour, Nominal, Share
 from synth.box import Box, Meter, Values
 from synth.catalogue import transistor
 from synth.networks.form import Array, Network
@@ -24,13 +24,22 @@ from synth.spaces import Goal, Index, Space, assess_all
 if TYPE_CHECKING:
     from synth.answer import Candidate
 
-CAUSES = {"delta": "vbe", "hfe": "hfe", "icbo": "leakage", "temperature": "temperature"}
+CAUSES = {
+    "delta": "vbe",
+    "hfe": "hfe",
+    "icbo": "leakage",
+    "temperature": "temperature",
+    "delta_ref": "reference",
+    "r_ref": "reference_slope",
+}
 """Names of the device axes as causes; rails and roles keep their own."""
 
 OFF_TARGET = 0.3
 """Centring above which a candidate that no window forbids gets a caution [-]: as wide as the widest usual window."""
 VCEO_SHARE = 0.8
 """Share of VCEO from which the rail gets a caution [-]: common practice leaves a fifth."""
+WORTH_TELLING = 0.1
+"""Share of a drift from which the difference of one cause explains it [-]."""
 NEGLIGIBLE = 0.005
 """Below this many per cent a share prints as 0 %."""
 
@@ -43,6 +52,9 @@ CAUSE_WORDS = {
     "vcc": "supply",
     "vee": "negative supply",
     "vbb": "base supply",
+    "vload": "load supply",
+    "reference": "reference voltage",
+    "reference_slope": "reference slope",
 }
 
 
@@ -82,6 +94,8 @@ def nominal_points(box: Box, ground: str = "negative") -> list[Nominal]:
             vce=pick(q.vce, k),
             ib=pick(q.ib, k),
             vbe=pick(q.vbe, k),
+            vc=pick(branches.nodes["c"], k),
+            ve=pick(branches.voltage.get("re", 0.0), k),
             region=REGIONS[int(np.broadcast_to(q.region, (box.size,))[k])],
             nodes={node: mirror * (pick(v, k) - zero) for node, v in branches.nodes.items()},
             rails={rail: pick(i, k) for rail, i in branches.rail.items()},
@@ -108,11 +122,11 @@ def place(node: str, polarity: str, ground: str) -> str:
     str
         ``base``, ``VCC``, ``0 V``...
     """
-    if node in ("b", "c", "e"):
-        return {"b": "base", "c": "collector", "e": "emitter"}[node]
+    if node in ("b", "c", "e", "m"):
+        return {"b": "base", "c": "collector", "e": "emitter", "m": "reference"}[node]
     pnp = polarity == "pnp"
-    if node == "vbb":
-        return "VBB"
+    if node in ("vbb", "vload"):
+        return node.upper()
     if ground == "common":
         return {"vcc": "-VCC" if pnp else "VCC", "0": "0 V", "vee": "VEE" if pnp else "-VEE"}[node]
     upper = (node == "vcc") != pnp
@@ -147,7 +161,10 @@ def duties(box: Box, ground: str = "negative") -> list[dict[str, Duty]]:
             drop = np.broadcast_to(np.asarray(branches.voltage[role]), (box.size,))[k]
             current = np.broadcast_to(np.asarray(branches.current[role]), (box.size,))[k]
             one, two = box.network.role(role).nodes
-            nodes = ("vcc" if node == "vbb" and "vbb" not in box.rails else node for node in (one, two))
+            stands_for = {rail: "vcc" for rail in box.network.optional_rails if rail not in box.rails}
+            if box.reference is None:
+                stands_for["m"] = "0"
+            nodes = (stands_for.get(node, node) for node in (one, two))
             first, second = (place(node, box.transistor.polarity, ground) for node in nodes)
             row[role] = Duty(
                 drop=float(drop),
@@ -170,7 +187,7 @@ def budgets(
         n candidates.
     at : dict
         The deciding point of each, arrays of shape (n,).
-    quantity : {"ic", "vce"}
+    quantity : {"ic", "vce", "vc", "ve"}
         What drifts.
     direction : {+1, -1}
         Side of the excursion.
@@ -328,6 +345,11 @@ def point_words(at: Mapping[str, float], skip: Sequence[str] = ()) -> str:
         elif name == "icbo":
             if value:
                 words.append(f"ICBO {format_quantity(value, 'current')} at 25 °C")
+        elif name == "delta_ref":
+            if value:
+                words.append(f"reference {'+' if value > 0 else '-'}{format_quantity(abs(value), 'voltage')}")
+        elif name == "r_ref":
+            words.append(f"reference slope {format_quantity(value, 'resistance')}")
         elif name.startswith("v"):
             words.append(f"{name.upper()} {format_quantity(value, 'voltage')}")
         else:
@@ -351,12 +373,13 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
         One fact each.
     """
     c = candidate
-    ic, vce = c.worst["ic"], c.worst["vce"]
+    ic, vce = c.worst.ic, c.worst.vce
     lines = [
         f"{network.title.capitalize()}: {network.summary}",
         f"Q-point: IC {format_quantity(c.nominal.ic, 'current')} nominal, {format_quantity(ic[0], 'current')} to "
         f"{format_quantity(ic[1], 'current')} over the whole box; VCE {format_quantity(c.nominal.vce, 'voltage')} nominal, "
-        f"{format_quantity(vce[0], 'voltage')} to {format_quantity(vce[1], 'voltage')}.",
+        f"{format_quantity(vce[0], 'voltage')} to {format_quantity(vce[1], 'voltage')}"
+        + (" while the load takes nothing of its rail." if network.sinks else "."),
     ]
     if c.nominal.forced_gain is not None:
         lines.append(
@@ -370,19 +393,15 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
             f"{format_quantity(duty.drop, 'voltage')} at {format_quantity(duty.current, 'current')}."
         )
     larger = c.drift.decides
-    if c.drift.vce is not None:
-        lines.append(
-            f"{larger.upper()} decides the rank: it drifts {percent(c.drift.q_point)} at worst"
-            f" ({'IC' if larger == 'vce' else 'VCE'} {percent(c.drift.ic if larger == 'vce' else c.drift.vce)});"
-            f" the nominal Q-point itself is off target by {percent(c.centring)}."
-        )
-    else:
-        lines.append(f"IC decides the rank: it drifts {percent(c.drift.ic)} at worst; centring {percent(c.centring)}.")
+    others = ", ".join(f"{q.upper()} {percent(drift)}" for q, drift in c.drift.of().items() if q != larger)
+    lines.append(
+        f"{larger.upper()} decides the rank: it drifts {percent(c.drift.q_point)} at worst"
+        f"{f' ({others})' if others else ''}; the nominal Q-point itself is off target by {percent(c.centring)}."
+    )
     for quantity, shares in c.budget.items():
         parts = ", ".join(f"{cause_words(s.cause)} {percent(s.share)}" for s in shares if percent(s.share) != "0 %")
         if parts:
-            total = c.drift.ic if quantity == "ic" else c.drift.vce
-            lines.append(f"Budget of {quantity.upper()} ({percent(total or 0.0)}): {parts}.")
+            lines.append(f"Budget of {quantity.upper()} ({percent(c.drift.of()[quantity])}): {parts}.")
     steps = []
     for n in c.neighbours:
         effect = "the transistor saturates" if n.drift is None else f"drift {percent(n.drift)}"
@@ -403,6 +422,44 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
             f"margin {percent(tight.margin)}."
         )
     return tuple(lines)
+
+
+def comparison(winner: Candidate, other: Candidate) -> Compared | None:
+    """What costs another network more drift than the winner.
+
+    Parameters
+    ----------
+    winner, other : Candidate
+        Best of two networks.
+
+    Returns
+    -------
+    Compared or None
+        The cause with its shares [-]; None where no cause takes much more there.
+    """
+    quantity = other.drift.decides
+    here = {share.cause: share.share for share in winner.budget.get(quantity, ())}
+    costs = [(there.share - here.get(there.cause, 0.0), there) for there in other.budget.get(quantity, ())]
+    more, most = max(costs, key=lambda cost: cost[0], default=(0.0, None))
+    if most is None or more < WORTH_TELLING * other.drift.q_point:
+        return None
+    return Compared(cause=most.cause, there=most.share, here=here.get(most.cause, 0.0))
+
+
+def compared_words(compared: Compared) -> str:
+    """A comparison in words.
+
+    Parameters
+    ----------
+    compared : Compared
+        As `comparison` gives it.
+
+    Returns
+    -------
+    str
+        ``hFE spread takes 21.3 % there and 1.9 % here``.
+    """
+    return f"{cause_words(compared.cause)} takes {percent(compared.there)} there and {percent(compared.here)} here"
 
 
 def cautions(candidate: Candidate, box: Box) -> tuple[Caution, ...]:

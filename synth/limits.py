@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from synth.box import Box, Values
 from synth.networks.form import Array, Network, Value
 from synth.quantities import Interval
+from synth.reference import Reference
 from synth.transistor import CUT_OFF_CURRENT
 
 Sense = Literal[">=", "<="]
@@ -22,6 +23,26 @@ Judged = Literal["nominal", "box"]
 
 SLACK = 1e-12
 """Relative slack of a comparison: equality passes, whatever the last bit of the arithmetic says."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Surroundings:
+    """What a network is built from, as far as limits ask for it.
+
+    Parameters
+    ----------
+    rails, roles : collection of str
+        Rails given and roles used.
+    reference : Reference, optional
+        The reference element, where the network has one.
+    vce_sat : float
+        VCE(sat) [V].
+    """
+
+    rails: Collection[str]
+    roles: Collection[str]
+    reference: Reference | None = None
+    vce_sat: float = 0.0
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -39,8 +60,10 @@ class LimitRule:
     judged : {"nominal", "box"}
         A shape rule holds at nominal values, any other limit over the whole box.
     sums : callable, optional
-        ``sums(network, rails, roles)``: the measured value is the worst of these sums of quantities (see `Box.measure`);
-        empty where the limit does not apply.
+        ``sums(network, around)``: the measured value is the worst of these sums of quantities (see `Box.measure`); empty
+        where the limit does not apply.
+    offset : callable, optional
+        ``offset(around)``: what is subtracted from the sum [A or V].
     static : callable, optional
         ``static(network, r)`` for a limit on the resistances alone, with its signs in `static_signs`; None where it does
         not apply.
@@ -53,17 +76,22 @@ class LimitRule:
     kind: str
     sense: Sense
     judged: Judged
-    sums: Callable[[Network, Collection[str], Collection[str]], tuple[tuple[str, ...], ...]] | None = None
+    sums: Callable[[Network, Surroundings], tuple[tuple[str, ...], ...]] | None = None
+    offset: Callable[[Surroundings], float] | None = None
     static: Callable[[Network, Mapping[str, Value]], Value] | None = None
     static_signs: Callable[[Network], dict[str, int]] | None = None
 
 
-def _bleeder(network: Network, rails: Collection[str], roles: Collection[str]) -> tuple[tuple[str, ...], ...]:
-    return ((f"i_{network.bleeder}",),) if network.bleeder in roles else ()
+def _bleeder(network: Network, around: Surroundings) -> tuple[tuple[str, ...], ...]:
+    return ((f"i_{network.bleeder}",),) if network.bleeder in around.roles else ()
 
 
-def _supply(network: Network, rails: Collection[str], roles: Collection[str]) -> tuple[tuple[str, ...], ...]:
-    return tuple(network.rail_parts(rails).values())
+def _supply(network: Network, around: Surroundings) -> tuple[tuple[str, ...], ...]:
+    return tuple(network.rail_parts(around.rails).values())
+
+
+def _reference(network: Network, around: Surroundings) -> tuple[tuple[str, ...], ...]:
+    return (("i_ref",),) if around.reference is not None else ()
 
 
 def _base_resistance(network: Network, r: Mapping[str, Value]) -> Value:
@@ -120,7 +148,24 @@ RULES: Mapping[str, LimitRule] = {
             kind="voltage",
             sense=">=",
             judged="box",
-            sums=lambda network, rails, roles: (("vce",),),
+            sums=lambda network, around: (("vce",),),
+        ),
+        LimitRule(
+            name="compliance",
+            meaning="voltage that the load of a sink may take of its rail while the transistor stays active",
+            kind="voltage",
+            sense=">=",
+            judged="box",
+            sums=lambda network, around: (("vce",),) if network.sinks else (),
+            offset=lambda around: around.vce_sat,
+        ),
+        LimitRule(
+            name="reference_current",
+            meaning="current in the reference element, which below its knee no longer holds its voltage",
+            kind="current",
+            sense=">=",
+            judged="box",
+            sums=_reference,
         ),
     )
 }
@@ -147,6 +192,8 @@ class Requirement:
         The rule behind it; None for a window.
     target : float, optional
         What the margin of a window is relative to [A or V].
+    offset : float
+        What is subtracted from the sum before it is compared [A or V].
     """
 
     name: str
@@ -156,6 +203,7 @@ class Requirement:
     sums: tuple[tuple[str, ...], ...] = ()
     rule: LimitRule | None = None
     target: float | None = None
+    offset: float = 0.0
 
     @property
     def sides(self) -> tuple[int, ...]:
@@ -185,7 +233,7 @@ class Requirement:
         Parameters
         ----------
         value : array_like
-            Measured [A, V, ohm or -].
+            Measured sum, before the offset [A, V, ohm or -].
 
         Returns
         -------
@@ -193,7 +241,7 @@ class Requirement:
             Of the same shape; NaN fails.
         """
         low, high = self.interval.low, self.interval.high
-        v = np.asarray(value)
+        v = np.asarray(value) - self.offset
         return np.asarray((v >= low - SLACK * abs(low)) & (v <= high + SLACK * abs(high)))
 
     def margin(self, value: Array | float) -> Array:
@@ -202,14 +250,14 @@ class Requirement:
         Parameters
         ----------
         value : array_like
-            Measured [A, V, ohm or -].
+            Measured sum, before the offset [A, V, ohm or -].
 
         Returns
         -------
         ndarray
             Relative to the limit, or to the target for a window [-]; infinite against a limit of zero that passes.
         """
-        v = np.asarray(value, dtype=float)
+        v = np.asarray(value, dtype=float) - self.offset
         # What was not found has no margin.
         margin = np.where(np.isnan(v), np.nan, np.inf)
         for side, end in ((1, self.interval.high), (-1, self.interval.low)):
@@ -240,12 +288,10 @@ class Judgement:
 
 def requirements(
     network: Network,
-    rails: Collection[str],
-    roles: Collection[str],
+    around: Surroundings,
     limits: Mapping[str, Interval],
     given: Collection[str],
     windows: Mapping[str, tuple[Interval, float | None]],
-    vce_sat: float,
 ) -> tuple[Requirement, ...]:
     """What a candidate of one network has to satisfy.
 
@@ -253,16 +299,14 @@ def requirements(
     ----------
     network : Network
         Its network.
-    rails, roles : collection of str
-        Rails given and roles used.
+    around : Surroundings
+        What it is built from.
     limits : mapping of str to Interval
         Limits by name, SI.
     given : collection of str
         Names of the limits that the user gave; a default collector share binds only where rc and re share their rails.
     windows : mapping of str to (Interval, float or None)
-        Windows of ``ic`` and ``vce`` with their targets [A, V].
-    vce_sat : float
-        VCE(sat) [V].
+        Windows of ``ic``, ``vce``, ``vc`` and ``ve`` with their targets [A, V].
 
     Returns
     -------
@@ -283,21 +327,26 @@ def requirements(
     ]
     wanted = {**limits}
     least = wanted.get("vce", Interval(-np.inf, np.inf))
-    wanted["vce"] = Interval(max(least.low, vce_sat), least.high)
+    wanted["vce"] = Interval(max(least.low, around.vce_sat), least.high)
     for name, rule in RULES.items():
         interval = wanted.get(name)
-        if interval is None or not applies(rule, network, rails, roles, name in given):
+        if interval is None or not applies(rule, network, around, name in given):
             continue
-        sums = rule.sums(network, rails, roles) if rule.sums else ()
         found.append(
-            Requirement(name=name, kind=rule.kind, interval=interval, judged=rule.judged, sums=sums, rule=rule)
+            Requirement(
+                name=name,
+                kind=rule.kind,
+                interval=interval,
+                judged=rule.judged,
+                sums=rule.sums(network, around) if rule.sums else (),
+                rule=rule,
+                offset=rule.offset(around) if rule.offset else 0.0,
+            )
         )
     return tuple(found)
 
 
-def applies(
-    rule: LimitRule, network: Network, rails: Collection[str], roles: Collection[str], given: bool
-) -> bool:
+def applies(rule: LimitRule, network: Network, around: Surroundings, given: bool) -> bool:
     """Whether a limit means anything for a network.
 
     Parameters
@@ -306,8 +355,8 @@ def applies(
         The limit.
     network : Network
         The network.
-    rails, roles : collection of str
-        Rails given and roles used.
+    around : Surroundings
+        What it is built from.
     given : bool
         Whether the user gave the limit, rather than the default.
 
@@ -317,10 +366,10 @@ def applies(
         False means "not applicable", which is never an error.
     """
     if rule.sums is not None:
-        return bool(rule.sums(network, rails, roles))
+        return bool(rule.sums(network, around))
     if rule.name == "collector_share":
-        return "rc" in roles and "re" in roles and (given or network.shared_rails)
-    return any(role in roles for role in network.base_side)
+        return "rc" in around.roles and "re" in around.roles and (given or network.shared_rails)
+    return (given or network.takes_signal) and any(role in around.roles for role in network.base_side)
 
 
 def judge(box: Box, requirement: Requirement, worst: Callable[[Sequence[str], int], tuple[Array, Values]]) -> Judgement:
@@ -367,4 +416,4 @@ def judge(box: Box, requirement: Requirement, worst: Callable[[Sequence[str], in
     if requirement.name == "vce":
         # Active means more than not saturated: a cut-off transistor has all the VCE there is.
         passed = passed & (worst(("ic",), -1)[0] > CUT_OFF_CURRENT)
-    return Judgement(requirement, value, at, margin, passed)
+    return Judgement(requirement, value - requirement.offset, at, margin, passed)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from synth.answer import Alternative, Candidate
+from synth.networks import NETWORKS
 from synth.quantities import format_quantity
 
 DIGITS = 12
@@ -63,7 +64,8 @@ def alternatives(candidates: Sequence[Candidate]) -> tuple[Alternative, ...]:
         text += format_quantity(best.supply_current, "current")
         found.append(Alternative(reason="least current", rank=thrifty.rank, text=text))
     light = max(candidates, key=lambda c: (c.base_feed, -c.rank))
-    if light.base_feed > best.base_feed * (1.0 + 1e-9):
+    takes_signal = all(NETWORKS[c.network].takes_signal for c in (best, light))
+    if takes_signal and light.base_feed > best.base_feed * (1.0 + 1e-9):
         text = f"base feed of {format_quantity(light.base_feed, 'resistance')} loads the signal less than "
         text += format_quantity(best.base_feed, "resistance")
         found.append(Alternative(reason="highest base-feed resistance", rank=light.rank, text=text))

@@ -11,7 +11,8 @@ so along re VCE is a concave function of IC alone: least at an end, greatest at 
 
 Proofs of monotonicity assume IB ≥ 0, IC ≥ ICBO and VBE ≥ 0. A bound from a corner that breaks this is replaced by one
 that holds all the same: IC ≤ max(IC, ICEO, IS) above, the least over every vertex of the base-side roles below, nothing
-otherwise.
+otherwise. They also assume that a reference element conducts, which is a limit on every candidate: its current has the sign
+of VB − vref, whatever r2, so a bound from a corner where it conducts holds for every member where it does.
 """
 
 from __future__ import annotations
@@ -26,7 +27,7 @@ from typing import Literal, NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.box import Box, Meter, Parts, Values
+from synth.box import Meter, Values
 from synth.limits import Requirement
 from synth.networks.form import Array, QPoint
 from synth.spaces import Found, Goal, Index, Space, assess, wanted
@@ -42,6 +43,8 @@ COARSE = 40
 """List length that the coarse pass aims at."""
 STEP, LEAST_WEIGHT = 0.01, 0.1
 """Relative step and floor of a role's weight in the choice of what to split."""
+FEEBLE = 10.0
+"""What a pilot is put back by whose reference element lacks current; more than any miss that matters."""
 TIE = 1e-10
 """Relative room for rounding between a bound and a drift; nothing within it of the K-th best is ever excluded."""
 
@@ -107,7 +110,7 @@ class _Corners:
         if space.transistor.vbe_model == "junction":
             unit = np.exp(-self.device["delta"] / thermal_voltage(self.t))
             self.floor = max(self.floor, float(space.transistor.saturation_current(self.t) * unit))
-        self.rails = {rail: self.device[rail] for rail in space.rails}
+        self.frame = space.box(one, meter)
         self.vt = thermal_voltage(self.t) if space.transistor.vbe_model == "junction" else np.zeros(())
 
     def begin(self, lo: Index, hi: Index) -> None:
@@ -123,15 +126,7 @@ class _Corners:
                 for j, (role, end) in enumerate(zip(self.roles, ends, strict=True))
             }
             values: Values = {**self.device, **r}
-            box = Box(
-                network=self.space.network,
-                transistor=self.space.transistor,
-                rails=self.space.rails,
-                temperature=self.space.temperature,
-                parts={role: Parts(nominal=x, band=x, tcr_low=x, tcr_high=x) for role, x in r.items()},
-                meter=self.meter,
-            )
-            self.solved[ends] = (values, box.solve(values, active_law=True))
+            self.solved[ends] = (values, self.frame.solve(values, active_law=True))
         return self.solved[ends]
 
     def ends(self, quantity: str, direction: int) -> tuple[tuple[int, ...], list[int]]:
@@ -147,6 +142,8 @@ class _Corners:
     def uses(self, quantity: str, direction: int) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
         """Which roles' low ends and high ends the bound of a quantity depends on."""
         ends, open_roles = self.ends(quantity, direction)
+        if quantity == "vc" and open_roles:
+            return tuple(a | b for a, b in zip(self.uses("vce", direction), self.uses("ve", direction), strict=True))  # type: ignore[return-value]
         uses = np.zeros((2, len(self.roles)), dtype=bool)
         for j, role in enumerate(self.roles):
             if self.space.network.sign(quantity, role) != 0:
@@ -167,22 +164,30 @@ class _Corners:
         ends, open_roles = self.ends(quantity, direction)
         values, q = self.at(ends)
         if quantity == "ic":
-            return self._least_ic(ends, q, direction)
+            return self._least_ic(ends, direction)
         if quantity == "vce":
             return self._least_vce(ends, open_roles, direction)
+        if quantity == "vc" and open_roles and "vee" not in self.space.rails:
+            return self.least("vce", direction) + self.least("ve", direction)
         nothing = np.full(len(self.lo), -np.inf)
         if open_roles:
             return nothing
-        if quantity == "ib":
-            bound = direction * q.ib
-        else:
-            rails = {rail: values[rail] for rail in self.space.rails}
-            r = {role: values[role] for role in self.roles}
-            bound = direction * np.asarray(self.space.network.branches(rails, r, q).current[quantity[2:]])
-        return np.where(self._sound(q), bound, nothing)
+        bound = direction * self.frame.measure((quantity,), values, q)
+        # Where even the favourable corner leaves the reference without current, no member conducts: that bound holds.
+        sound = self._carries(q) if quantity == "i_ref" and direction < 0 else self._sound(values, q)
+        return np.where(sound, bound, nothing)
 
-    def _sound(self, q: QPoint) -> NDArray[np.bool_]:
+    def _carries(self, q: QPoint) -> NDArray[np.bool_]:
         return np.asarray((q.ib >= 0.0) & (q.ic >= self.icbo) & (q.vbe >= 0.0))
+
+    def _sound(self, values: Values, q: QPoint) -> NDArray[np.bool_]:
+        return self._carries(q) & self._conducts(values, q)
+
+    def _conducts(self, values: Values, q: QPoint) -> NDArray[np.bool_]:
+        """Whether the reference element carries current in its own direction, if there is one."""
+        if self.space.reference is None:
+            return np.ones(len(self.lo), dtype=bool)
+        return np.asarray(self.frame.measure(("i_ref",), values, q) >= 0.0)
 
     def _vertices(self, ends: tuple[int, ...]) -> list[tuple[int, ...]]:
         base = [j for j, role in enumerate(self.roles) if role in self.space.network.base_side]
@@ -194,14 +199,16 @@ class _Corners:
             corners.append(tuple(corner))
         return corners
 
-    def _least_ic(self, ends: tuple[int, ...], q: QPoint, direction: int) -> Array:
+    def _least_ic(self, ends: tuple[int, ...], direction: int) -> Array:
+        values, q = self.at(ends)
+        conducts = self._conducts(values, q)
         if direction < 0:
-            return -np.maximum(q.ic, self.floor)
-        bound, sound = q.ic, q.vbe >= 0.0
+            return np.where(conducts, -np.maximum(q.ic, self.floor), -np.inf)
+        bound, sound = q.ic, (q.vbe >= 0.0) & conducts
         if np.any(q.ib < 0.0):
             every = [self.at(corner)[1] for corner in self._vertices(ends)]
             bound = np.minimum.reduce([point.ic for point in every])
-            sound = np.logical_and.reduce([point.vbe >= 0.0 for point in every])
+            sound = conducts & np.logical_and.reduce([point.vbe >= 0.0 for point in every])
         return np.where(sound & (bound >= self.icbo), bound, 0.0)
 
     def _least_vce(self, ends: tuple[int, ...], open_roles: list[int], direction: int) -> Array:
@@ -219,12 +226,15 @@ class _Corners:
             ends = _swap(ends, j, 0 if sign * direction > 0 else 1)
             open_roles = [k for k in open_roles if k != j]
         bound = self._vce_corner(ends, open_roles, direction)
-        sound = self._sound(self.at(ends)[1])
+        sound = self._sound(*self.at(ends))
+        conducts = self._conducts(*self.at(ends))
         for j in open_roles:
-            sound &= self._sound(self.at(_swap(ends, j, 1))[1])
+            sound &= self._sound(*self.at(_swap(ends, j, 1)))
+            conducts &= self._conducts(*self.at(_swap(ends, j, 1)))
         if not sound.all():
             every = np.minimum.reduce([self._vce_corner(c, open_roles, direction) for c in self._vertices(ends)])
             active = np.minimum.reduce([self.at(c)[1].ic for c in self._vertices(ends)]) >= self.icbo
+            active &= conducts
             bound = np.where(sound, bound, np.where(active, every, -np.inf))
         return np.where(held, bound, -np.inf)
 
@@ -241,7 +251,7 @@ class _Corners:
         if self.space.transistor.vbe_model == "fixed":
             return -top
         r = {role: values[role] for role in self.roles}
-        port = self.space.network.two_port(self.rails, r, self.t)
+        port = self.space.network.two_port(self.frame.sources(values), r, self.t)
         slope = np.asarray((port.z_bb - port.z_cb) / self.hfe + (port.z_bc - port.z_cc))
         vt = thermal_voltage(self.t)
         # A slope of zero or more has no stationary point: the comparison below is then false.
@@ -346,7 +356,8 @@ class _Room:
             run = partial(self._excursion, quantity, side, point, own)
             tests.append(_Test(run, *self.corners(point).uses(quantity, side)))
         for need in rest:
-            if need.judged == "box" and need.sums not in ((("ic",),), (("vce",),)):
+            bounded = [(*need.sums[0], side) in self.anchors for side in need.sides] if len(need.sums) == 1 else [False]
+            if need.judged == "box" and not all(bounded):
                 tests.append(self._sum_test(need, {side: self.anchors["ic", side] for side in need.sides}))
         return tests
 
@@ -371,9 +382,9 @@ class _Room:
     def _excursion(
         self, quantity: str, side: int, point: Mapping[str, float], needs: Sequence[Requirement], lo: Index, hi: Index
     ) -> Array:
-        """Least excursion of IC or VCE to one side of its goal, and the windows and limits on it."""
+        """Least excursion of a quantity to one side of its goal, and the windows and limits on it."""
         value = self.at(point, lo, hi).least(quantity, side)
-        goal = self.goal.ic if quantity == "ic" else self.goal.vce
+        goal = self.goal.aims.get(quantity)
         bound = np.zeros(len(lo)) if goal is None else value / goal - side
         for need in needs:
             bound = np.where(need.side(side).passes(side * value), bound, np.inf)
@@ -507,8 +518,13 @@ def _pilot(space: Space, goal: Goal, meter: Meter) -> Index:
     point = q.solve(q.nominal(), active_law=True)
     with np.errstate(divide="ignore"):
         miss = np.abs(np.log(np.maximum(point.ic, 1e-300) / goal.ic))
-    if goal.vce is not None:
-        miss = miss + np.abs(point.vce / goal.vce - 1.0)
+    for quantity, aim in goal.aims.items():
+        if quantity != "ic":
+            miss = miss + np.abs(q.measure((quantity,), q.nominal(), point) / aim - 1.0)
+    if space.reference is not None:
+        # Without current in the reference another law rules, and its deciding points say nothing.
+        feeble = q.measure(("i_ref",), q.nominal(), point) < space.reference.current
+        miss = miss + np.where(feeble, FEEBLE, 0.0)
     return index[[int(miss.argmin())]]
 
 
@@ -532,8 +548,9 @@ def _bearings(
         moved[role][j + 1] *= 1.0 + STEP
     q = box.solve({**start, **moved}, active_law=True)
     effect = np.abs(q.ic / goal.ic - q.ic[0] / goal.ic)
-    if goal.vce is not None:
-        effect = np.maximum(effect, np.abs(q.vce - q.vce[0]) / goal.vce)
+    for quantity, aim in goal.aims.items():
+        moves = np.broadcast_to(box.measure((quantity,), {**start, **moved}, q), effect.shape)
+        effect = np.maximum(effect, np.abs(moves - moves[0]) / aim)
     return anchors, [max(float(e) / STEP, LEAST_WEIGHT) for e in effect[1:]]
 
 

@@ -15,6 +15,8 @@ from synth.explain import (
     budgets,
     cause_words,
     cautions,
+    compared_words,
+    comparison,
     duties,
     neighbours,
     nominal_points,
@@ -30,6 +32,9 @@ from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_o
 from synth.stage import Assumption, Stage, StageError
 
 Progress = Callable[[float, float, int], bool]
+
+SHORT = 3e4
+"""Q-point solves of a search that only asks whether a limit stands in the way of a network."""
 
 
 def find(
@@ -65,6 +70,9 @@ def find(
     outcome = search(spaces, goal, top=top, progress=progress)
     candidates = _candidates(outcome, goal, top)
     best_of = _best_of_each(spaces, goal, candidates, outcome, progress)
+    rivals = [n for n in best_of if candidates and n.best is not None and n.network != candidates[0].network]
+    if rivals:
+        candidates = (_before_rival(candidates[0], rivals[0]), *candidates[1:])
     infeasible = why_nothing_qualifies(stage) if outcome.status == "infeasible" else None
     warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
     if candidates:
@@ -199,34 +207,53 @@ def _best_of_each(
     """Best drift of each network, by a search of its own where the list does not show it."""
     results = []
     for name in dict.fromkeys(space.network.name for space in spaces):
-        own = [c for c in candidates if c.network == name]
-        if own:
-            first = own[0]
-            why = _strength(first) if first.rank == 1 else f"{_drifts(first)}; rank {first.rank}"
-            results.append(NetworkResult(network=name, best=first.drift.q_point, why=why))
-            continue
-        if not outcome.complete:
-            results.append(NetworkResult(network=name, best=None, why="not settled: the search was stopped"))
-            continue
+        best = next((c for c in candidates if c.network == name), None)
         alone = outcome
-        if candidates:
-            alone = search([s for s in spaces if s.network.name == name], goal, top=1, progress=progress)
-        if not alone.complete and not alone.found:
+        own = [s for s in spaces if s.network.name == name]
+        if best is None and candidates and outcome.complete:
+            alone = search(own, goal, top=1, progress=progress)
+            if alone.found:
+                index = np.array([alone.found[0].index], dtype=np.int32)
+                (best,) = _build(alone.found[0].space, index, goal, any_region=False)
+        if best is not None:
+            results.append(_standing(best, candidates))
+        elif not alone.complete:
             results.append(NetworkResult(network=name, best=None, why="not settled: the search was stopped"))
-            continue
-        if alone.found:
-            space = alone.found[0].space
-            index = np.array([alone.found[0].index], dtype=np.int32)
-            (best,) = _build(space, index, goal, any_region=False)
-            results.append(NetworkResult(network=name, best=best.drift.q_point, why=_drifts(best)))
         else:
-            results.append(NetworkResult(network=name, best=None, why="no combination meets every limit"))
+            culprits = _obstacles(own, goal) if candidates else []
+            some = f"; without {' or without '.join(culprits)} some would" if culprits else ""
+            results.append(NetworkResult(network=name, best=None, why=f"no combination meets every limit{some}"))
     order = sorted(results, key=lambda r: np.inf if r.best is None else r.best)
     return tuple(order)
 
 
-def _strength(candidate: Candidate) -> str:
-    return f"least drift: {_drifts(candidate)}"
+def _standing(candidate: Candidate, candidates: Sequence[Candidate]) -> NetworkResult:
+    """Why the best candidate of a network stands where it does."""
+    against = comparison(candidates[0], candidate) if candidate.rank != 1 else None
+    notes = ["least drift: " * (candidate.rank == 1) + _drifts(candidate)]
+    notes += [compared_words(against)] if against else []
+    notes += [f"rank {candidate.rank}"] if candidate.rank > 1 else []
+    return NetworkResult(network=candidate.network, best=candidate.drift.q_point, why="; ".join(notes), against=against)
+
+
+def _obstacles(spaces: Sequence[Space], goal: Goal) -> list[str]:
+    """Limits and windows without which a network would have a candidate, as far as a short search tells."""
+    names = dict.fromkeys(need.name for space in spaces for need in space.requirements if need.name != "vce")
+    found = []
+    for name in names:
+        freed = [replace(s, requirements=tuple(need for need in s.requirements if need.name != name)) for s in spaces]
+        if search(freed, goal, top=1, first=True, most=SHORT).found:
+            found.append(name)
+    return found
+
+
+def _before_rival(winner: Candidate, rival: NetworkResult) -> Candidate:
+    """The winner among several networks, with why it suits the stage better than the next."""
+    text = f"Of all networks that meet every limit this one drifts least, {percent(winner.drift.q_point)}"
+    text += f"; next is {rival.network} with {percent(rival.best or 0.0)}"
+    text += f", where {compared_words(rival.against)}." if rival.against else "."
+    title, *rest = winner.explanation
+    return replace(winner, rival=rival, explanation=(title, text, *rest))
 
 
 def _drifts(candidate: Candidate) -> str:
@@ -254,8 +281,8 @@ def _build(
             extremes[key] = known if known is not None else law(names, side)
         return extremes[key]
 
-    ends = {(q, side): worst((q,), side) for q in ("ic", "vce") for side in (1, -1)}
-    goals = {"ic": goal.ic, **({"vce": goal.vce} if goal.vce is not None else {})}
+    goals = goal.aims
+    ends = {(q, side): worst((q,), side) for q in dict.fromkeys(("ic", "vce", *goals)) for side in (1, -1)}
     drifts, shares = {}, {}
     for quantity, aim in goals.items():
         up = ends[quantity, 1].value / aim - 1.0
@@ -281,8 +308,7 @@ def _build(
             abs(getattr(point, quantity) / aim - 1.0) for quantity, aim in goals.items()
         )
         drift = Drift(
-            ic=float(drifts["ic"][k]),
-            vce=float(drifts["vce"][k]) if "vce" in drifts else None,
+            **{quantity: float(d[k]) for quantity, d in drifts.items()},
             q_point=float(max(d[k] for d in drifts.values())),
         )
         found.append(
@@ -292,8 +318,7 @@ def _build(
                 resistors=names[k],
                 nominal=point,
                 worst=Worst(
-                    ic=(float(ends["ic", -1].value[k]), float(ends["ic", 1].value[k])),
-                    vce=(float(ends["vce", -1].value[k]), float(ends["vce", 1].value[k])),
+                    **{q: (float(ends[q, -1].value[k]), float(ends[q, 1].value[k])) for q in dict.fromkeys(q for q, _ in ends)},
                 ),
                 regions=_regions(box, [e.at for e in ends.values()], k),
                 drift=drift,

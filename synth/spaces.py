@@ -10,10 +10,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from synth.box import Box, Extreme, Meter, Parts, Values
-from synth.limits import Requirement, judge, requirements
+from synth.limits import Requirement, Surroundings, judge, requirements
 from synth.networks import NETWORKS
 from synth.networks.form import Array, Network
 from synth.quantities import Interval, Spread
+from synth.reference import Reference
 from synth.stage import Stage, StageError
 from synth.transistor import Transistor
 
@@ -38,6 +39,8 @@ class Space:
         Ambient [K].
     requirements : tuple of Requirement
         What every candidate has to satisfy.
+    reference : Reference, optional
+        The reference element of the base voltage, where the network has one.
     ground : {"negative", "positive", "middle", "common"}
         What is 0 V, see `synth.explain.nominal_points`.
     """
@@ -48,6 +51,7 @@ class Space:
     rails: Mapping[str, Spread]
     temperature: Spread
     requirements: tuple[Requirement, ...]
+    reference: Reference | None = None
     ground: str = "negative"
 
     @property
@@ -114,35 +118,43 @@ class Space:
             rails=self.rails,
             temperature=self.temperature,
             parts={role: self.lists[role].take(index[:, j]) for j, role in enumerate(self.roles)},
+            reference=self.reference,
             meter=meter,
         )
 
 
 @dataclass(frozen=True, kw_only=True)
 class Goal:
-    """What drift is measured from: IC [A], and VCE [V] or None when VCE has only a window."""
+    """What drift is measured from: IC [A], and of VCE, VC and VE [V] the one that has a target, the others None."""
 
     ic: float
-    vce: float | None
+    vce: float | None = None
+    vc: float | None = None
+    ve: float | None = None
+
+    @property
+    def aims(self) -> dict[str, float]:
+        """Target of every quantity that has one, IC first [A, V]."""
+        every = {"ic": self.ic, "vce": self.vce, "vc": self.vc, "ve": self.ve}
+        return {quantity: aim for quantity, aim in every.items() if aim is not None}
 
 
 @dataclass(frozen=True, kw_only=True)
 class Found:
     """One qualifying candidate with its worst case.
 
-    `index` are the list positions, `drift_ic` and `drift_vce` the drifts of IC and VCE [-], `extremes` the deciding points.
+    `index` are the list positions, `drifts` those of each quantity that has a target [-], `extremes` the deciding points.
     """
 
     space: Space
     index: tuple[int, ...]
-    drift_ic: float
-    drift_vce: float | None
+    drifts: Mapping[str, float]
     extremes: Mapping[str, Extreme]
 
     @property
     def drift(self) -> float:
         """Q-point drift [-]."""
-        return self.drift_ic if self.drift_vce is None else max(self.drift_ic, self.drift_vce)
+        return max(self.drifts.values())
 
 
 class Exact:
@@ -151,7 +163,7 @@ class Exact:
     def __init__(self, box: Box, goal: Goal) -> None:
         self.box = box
         self.extremes = {key: box.extreme((key[0],), key[1]) for key in wanted(goal)}
-        self.ic, self.vce, self.drift = drift_of({key: e.value for key, e in self.extremes.items()}, goal)
+        self.drifts, self.drift = drift_of({key: e.value for key, e in self.extremes.items()}, goal)
         self._cache: dict[tuple[tuple[str, ...], int], Extreme] = {
             ((quantity,), side): e for (quantity, side), e in self.extremes.items()
         }
@@ -193,7 +205,7 @@ def goal_of(stage: Stage) -> Goal:
         Its targets.
     """
     assert stage.ic.nominal is not None
-    return Goal(ic=stage.ic.nominal, vce=stage.vce.nominal)
+    return Goal(ic=stage.ic.nominal, **{quantity: t.nominal for quantity, t in stage.voltages.items()})
 
 
 def spaces_of(stage: Stage, without: Collection[str] = ()) -> list[Space]:
@@ -239,7 +251,8 @@ def fitted(stage: Stage) -> Space:
     names = set(stage.values)
     matching = []
     for network in stage.networks:
-        optional = {role.name for role in NETWORKS[network].roles if role.optional}
+        form = NETWORKS[network]
+        optional = {role.name for role in form.roles if form.optional(role, stage.reference is not None)}
         every = set(NETWORKS[network].role_names)
         if every - optional <= names <= every:
             matching.append(network)
@@ -290,16 +303,17 @@ def _space(
 ) -> Space:
     network = NETWORKS[name]
     rails = {rail: s for rail, s in stage.rails.items() if rail in (*network.rails, *network.optional_rails)}
-    windows = {q: (Interval(t.low, t.high), t.nominal) for q, t in (("ic", stage.ic), ("vce", stage.vce))}
-    needs = requirements(
-        network, rails, roles, stage.limits, stage.limits_given, windows, stage.transistor.vce_sat
-    )
+    windows = {q: (Interval(t.low, t.high), t.nominal) for q, t in {"ic": stage.ic, **stage.voltages}.items()}
+    reference = stage.reference if network.reference != "no" else None
+    around = Surroundings(rails=rails, roles=roles, reference=reference, vce_sat=stage.transistor.vce_sat)
+    needs = requirements(network, around, stage.limits, stage.limits_given, windows)
     return Space(
         network=network,
         lists=lists,
         transistor=stage.transistor,
         rails=rails,
         temperature=stage.temperature,
+        reference=reference,
         requirements=tuple(need for need in needs if need.name not in without),
         ground="common" if "vee" in stage.rails and stage.ground == "middle" else stage.ground,
     )
@@ -346,7 +360,7 @@ def assess(
     beyond = np.inf
     box = space.box(index, meter)
     rough = {key: box.extreme((key[0],), key[1], thorough=False).value for key in wanted(goal)}
-    drift = drift_of(rough, goal)[2]
+    drift = drift_of(rough, goal)[1]
     over = drift > limit
     if over.any():
         beyond = float(drift[over].min())
@@ -361,8 +375,7 @@ def assess(
         return found, beyond
     box = box.take(keep)
     exact = Exact(box, goal)
-    ic, vce, drift = exact.ic, exact.vce, exact.drift
-
+    drift = exact.drift
     passed = np.ones(box.size, dtype=bool)
     for need in space.requirements:
         passed &= judge(box, need, exact.worst).passed
@@ -374,8 +387,7 @@ def assess(
             Found(
                 space=space,
                 index=tuple(int(i) for i in index[keep[k]]),
-                drift_ic=float(ic[k]),
-                drift_vce=None if vce is None else float(vce[k]),
+                drifts={quantity: float(x[k]) for quantity, x in exact.drifts.items()},
                 extremes={f"{q} {'max' if side > 0 else 'min'}": e.take(int(k)) for (q, side), e in exact.extremes.items()},
             )
         )
@@ -395,11 +407,11 @@ def wanted(goal: Goal) -> tuple[tuple[str, int], ...]:
     tuple of (str, int)
         Quantity and direction; the least VCE always counts, since it tells whether the transistor stays active.
     """
-    return (("ic", 1), ("ic", -1), *((("vce", 1),) if goal.vce is not None else ()), ("vce", -1))
+    return (*((quantity, side) for quantity in goal.aims for side in (1, -1) if (quantity, side) != ("vce", -1)), ("vce", -1))
 
 
-def drift_of(worst: Mapping[tuple[str, int], Array], goal: Goal) -> tuple[Array, Array | None, Array]:
-    """Drift from the worst values of IC and VCE.
+def drift_of(worst: Mapping[tuple[str, int], Array], goal: Goal) -> tuple[dict[str, Array], Array]:
+    """Drift from the worst values of the quantities that have a target.
 
     Parameters
     ----------
@@ -410,14 +422,13 @@ def drift_of(worst: Mapping[tuple[str, int], Array], goal: Goal) -> tuple[Array,
 
     Returns
     -------
-    ic, vce, q_point : ndarray
-        Largest relative excursions [-]; None for VCE without a target.
+    drifts : dict of str to ndarray
+        Largest relative excursion of each quantity [-].
+    q_point : ndarray
+        The largest of them [-].
     """
-    ic = np.maximum(worst["ic", 1] / goal.ic - 1.0, 1.0 - worst["ic", -1] / goal.ic)
-    if goal.vce is None:
-        return ic, None, ic
-    vce = np.maximum(worst["vce", 1] / goal.vce - 1.0, 1.0 - worst["vce", -1] / goal.vce)
-    return ic, vce, np.maximum(ic, vce)
+    drifts = {q: np.maximum(worst[q, 1] / aim - 1.0, 1.0 - worst[q, -1] / aim) for q, aim in goal.aims.items()}
+    return drifts, np.asarray(np.maximum.reduce(list(drifts.values())))
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -27,17 +27,14 @@ from synth.quantities import (
     Target,
     format_resistance,
 )
+from synth.reference import Reference
+from synth.stage_file import read_toml, stage_file, template, toml_literal, unknown_key
 from synth.stage_keys import (
     KEYS,
     NAMES,
     Given,
     StageError,
     nearest,
-    read_toml,
-    stage_file,
-    template,
-    toml_literal,
-    unknown_key,
 )
 from synth.stage_resolve import Assumption, RoleSetting, StageWarning, band, needing, no_role, resolve, rival
 from synth.transistor import Transistor
@@ -69,10 +66,14 @@ class Stage:
         Rails given, magnitudes [V].
     ground : {"negative", "positive", "middle"}
         Which rail is 0 V.
-    ic, vce : Target
-        Targets with their windows [A, V]; only `vce` may be without a nominal value.
+    ic : Target
+        Target of IC with its window [A].
+    voltages : mapping of str to Target
+        The one of ``vce``, ``vc`` and ``ve`` that is given, with its window [V]; empty for a sink.
     transistor : Transistor
         Laws and spreads of the transistor.
+    reference : Reference or None
+        The reference element of the base voltage.
     temperature : Spread
         Ambient [K].
     limits : mapping of str to Interval
@@ -108,8 +109,9 @@ class Stage:
     rails: Mapping[str, Spread]
     ground: str
     ic: Target
-    vce: Target
+    voltages: Mapping[str, Target]
     transistor: Transistor
+    reference: Reference | None
     temperature: Spread
     limits: Mapping[str, Interval]
     values: Mapping[str, float]
@@ -133,7 +135,7 @@ class Stage:
             object.__setattr__(self, attribute, content)
 
     def __hash__(self) -> int:
-        return hash((self.name, self.networks, self.ic, self.vce, self.temperature, self.transistor))
+        return hash((self.name, self.networks, self.ic, self.temperature, self.transistor))
 
     def __repr__(self) -> str:
         given = (f"{KEYS[path].names[0]}={text!r}" for path, text in self.given.items())
@@ -195,6 +197,11 @@ class Stage:
             if path not in KEYS:
                 raise unknown_key(path)
         return cls(folder=folder, **{KEYS[path].flat: value for path, value in keys.items()})
+
+    @property
+    def vce(self) -> Target | None:
+        """Target of VCE with its window [V], None where another voltage or none has the target."""
+        return self.voltages.get("vce")
 
     def replace(self, **flat: Given) -> Stage:
         """The stage with some keys given anew; what was assumed is assumed again.
@@ -324,8 +331,9 @@ class Stage:
             Each in the network's order; with the optional roles, without them, or both ways.
         """
         sets: list[tuple[str, ...]] = [()]
-        for role in NETWORKS[network].roles:
-            use = self.role(role.name).use if role.optional else "yes"
+        form = NETWORKS[network]
+        for role in form.roles:
+            use = self.role(role.name).use if form.optional(role, self.reference is not None) else "yes"
             used = [(*names, role.name) for names in sets] if use != "no" else []
             sets = used + (sets if use != "yes" else [])
         return tuple(sets)
@@ -369,7 +377,7 @@ class Stage:
             # Given, it would bind the networks too whose default is no share at all.
             return all(NETWORKS[name].shared_rails for name in self.networks)
         role = KEYS[assumption.key].table.rpartition(".")[2]
-        return assumption.value != "no" or not needing(role, self.networks)
+        return assumption.value != "no" or not needing(role, self.networks, self.reference is not None)
 
     def as_dict(self) -> dict[str, Any]:
         """The stage as plain data for JSON.
@@ -385,8 +393,9 @@ class Stage:
             "name": self.name,
             "network": list(self.networks),
             "supply": {rail: _plain(spread) for rail, spread in self.rails.items()} | {"ground": self.ground},
-            "target": {"ic": _plain(self.ic), "vce": _plain(self.vce)},
+            "target": {"ic": _plain(self.ic), **{quantity: _plain(t) for quantity, t in self.voltages.items()}},
             "transistor": {f.name: _plain(getattr(t, f.name)) for f in dataclasses.fields(t)},
+            "reference": self.reference and {f: _plain(v) for f, v in vars(self.reference).items()},
             "resistors": {
                 role: {f.name: _plain(getattr(setting, f.name)) for f in dataclasses.fields(setting)}
                 for role, setting in self.roles.items()

@@ -8,10 +8,8 @@ from __future__ import annotations
 
 import difflib
 import os
-import tomllib
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
-from pathlib import Path
 from types import MappingProxyType
 from typing import Any, Literal
 
@@ -407,6 +405,8 @@ _LIMIT_OTHERWISE = {
     "collector_share": "0.5 where rc and re hang between the same two rails",
     "base_resistance": "hFE min times VT over the target IC",
     "vce": "VCE stays above VCE(sat) in any case",
+    "compliance": "a third of the rail of the load",
+    "reference_current": "half of reference.current",
 }
 _LIMIT_EXAMPLE = {
     "current": "3 mA",
@@ -443,6 +443,10 @@ def _supply() -> Iterable[Key]:
         meaning="Supply of the base, a magnitude.", otherwise="the base is fed from vcc itself",
     )  # fmt: skip
     yield Key(
+        path="supply.vload", form="spread", kind="voltage", short="vload", example="24 V ± 5 %",
+        meaning="Supply of the load of a sink, a magnitude.", otherwise="the load hangs on vcc",
+    )  # fmt: skip
+    yield Key(
         path="supply.ground", form="choice", choices=("negative", "positive", "middle"), example="negative",
         meaning="Which rail is 0 V; node voltages are reported against it.",
         otherwise="negative, or middle when vee is given",
@@ -455,8 +459,18 @@ def _target() -> Iterable[Key]:
         meaning="Wanted collector current, with its window if there is one.",
     )  # fmt: skip
     yield Key(
-        path="target.vce", form="target", kind="voltage", short="vce", example="5 V", needed=True,
+        path="target.vce", form="target", kind="voltage", short="vce", example="5 V",
         meaning='Wanted collector-emitter voltage, with its window if there is one; ">= 3 V" is a window alone.',
+        otherwise="vc or ve has to be given in its place; a sink has none",
+    )  # fmt: skip
+    yield Key(
+        path="target.vc", form="target", kind="voltage", short="vc", example="7.5 V",
+        meaning="In place of vce: wanted collector voltage, a magnitude against the end of re, of two supplies against 0 V.",
+        otherwise="vce is given",
+    )  # fmt: skip
+    yield Key(
+        path="target.ve", form="target", kind="voltage", short="ve", example="1.2 V",
+        meaning="In place of vce: wanted drop of the emitter resistor, a magnitude.", otherwise="vce is given",
     )  # fmt: skip
 
 
@@ -501,6 +515,38 @@ def _transistor() -> Iterable[Key]:
         path="transistor.vce_sat", form="quantity", kind="voltage", example="0.2 V", default="0.2 V",
         meaning="Collector-emitter voltage of the saturated transistor.",
         otherwise="the type's; 0.2 V, germanium 0.1 V",
+    )  # fmt: skip
+
+
+def _reference() -> Iterable[Key]:
+    yield Key(
+        path="reference.kind", form="choice", choices=("diode", "led", "zener"), example="diode",
+        meaning="Element below the base that holds a voltage: junctions, a light-emitting diode or a Zener diode.",
+        otherwise="no reference element, unless one of its other keys is given",
+    )  # fmt: skip
+    yield Key(
+        path="reference.number", form="choice", choices=("1", "2", "3"), default="1", example="2",
+        meaning="How many of them in series; the keys below hold for one.",
+    )  # fmt: skip
+    yield Key(
+        path="reference.voltage", form="spread", kind="voltage", example="0.6 V ± 50 mV",
+        meaning="Voltage of one at 25 °C and reference.current, from unit to unit.",
+        otherwise="of a diode, that of the base-emitter law; anything else has no default",
+    )  # fmt: skip
+    yield Key(
+        path="reference.current", form="quantity", kind="current", example="5 mA",
+        meaning="Current at which voltage and slope hold.",
+        otherwise="a tenth of the target IC for a diode, 2 mA for an LED, 5 mA for a Zener diode",
+    )  # fmt: skip
+    yield Key(
+        path="reference.tc", form="spread", kind="voltage_per_kelvin", example="-2.2 : -2 : -1.8 mV/K",
+        meaning="Temperature coefficient of the voltage of one.",
+        otherwise="of a diode, that of the base-emitter law; of others a usual range for their voltage",
+    )  # fmt: skip
+    yield Key(
+        path="reference.slope", form="spread", kind="resistance", example="0 : 60 ohm",
+        meaning="Slope resistance of one, dV/dI.",
+        otherwise="VT over reference.current for a diode, 0 : 30 ohm for an LED, 0 : 60 ohm for a Zener diode",
     )  # fmt: skip
 
 
@@ -613,6 +659,7 @@ KEYS: Mapping[str, Key] = MappingProxyType(
             *_supply(),
             *_target(),
             *_transistor(),
+            *_reference(),
             *_resistors(""),
             *(key for role in ROLES for key in _resistors(role)),
             *_ambient(),
@@ -628,159 +675,3 @@ NAMES: Mapping[str, str] = MappingProxyType({name: key.path for key in KEYS.valu
 
 TABLES: tuple[str, ...] = tuple(dict.fromkeys(filter(None, (key.table for key in KEYS.values()))))
 """Every table of a stage file, in the order of the file."""
-
-
-# --- Stage files --------------------------------------------------------------------------------------------------
-
-LARGEST_FILE = 1_000_000
-"""Size of a stage file above which it is refused [byte]."""
-
-
-def unknown_key(path: str) -> StageError:
-    """The refusal of a key that no stage has.
-
-    Parameters
-    ----------
-    path : str
-        What was read.
-
-    Returns
-    -------
-    StageError
-        Names the nearest known table or keys.
-    """
-    table = path.rpartition(".")[0]
-    if table and table not in TABLES and table.partition(".")[0] not in TABLES:
-        near = [f"[{name}]" for name in nearest(table, TABLES)]
-        return StageError("stage", path, f"whose table [{table}] is unknown", "a table of a stage file", near)
-    return StageError("stage", path, "which is no key of a stage", "a key of a stage file", nearest(path, KEYS))
-
-
-def read_toml(path: Path) -> dict[str, str]:
-    """Texts of a stage file.
-
-    Parameters
-    ----------
-    path : Path
-        File in TOML, UTF-8, at most 1 MB.
-
-    Returns
-    -------
-    dict of str to str
-        Path of each key to its text.
-
-    Raises
-    ------
-    StageError
-        If the file cannot be read, is no TOML, or has an unknown table or key.
-    """
-    return {key: KEYS[key].text_of_toml(value) for key, value in _flattened("", _parsed(path))}
-
-
-def _parsed(path: Path) -> dict[str, Any]:
-    try:
-        with path.open("rb") as file:
-            content = file.read(LARGEST_FILE + 1)
-    except OSError as error:
-        beside = [other.name for other in path.parent.glob("*.toml")] if path.parent.is_dir() else []
-        near = difflib.get_close_matches(path.name, beside, 1)
-        reason = f"which cannot be read ({error.strerror})"
-        raise StageError("stage file", str(path), reason, "a stage file in TOML", near) from None
-    if len(content) > LARGEST_FILE:
-        raise StageError("stage file", str(path), "which is larger than 1 MB", "a stage file of at most 1 MB")
-    try:
-        # The mark that some editors put before UTF-8 is no part of TOML.
-        return tomllib.loads(content.decode("utf-8-sig"))
-    except UnicodeDecodeError as error:
-        where = f"{path}, line {content[: error.start].count(10) + 1}"
-        raise StageError(where, None, "which is not UTF-8", "a text in UTF-8") from None
-    except RecursionError:
-        raise StageError(str(path), None, "which nests too deep", "tables and keys of a stage file") from None
-    except ValueError as error:
-        text, _, place = str(error).partition(" (at ")
-        line = place.removeprefix("line ").partition(",")[0]
-        where = f"{path}, line {line}" if line.isdecimal() else f"{path}, at the end"
-        raise StageError(where, None, f"which is not TOML: {text}", 'lines such as vcc = "12 V"') from None
-
-
-def _flattened(table: str, content: Mapping[str, Any]) -> Iterable[tuple[str, Any]]:
-    """Path and value of every key, in the order of the file."""
-    for name, value in content.items():
-        path = f"{table}.{name}" if table else name
-        if isinstance(value, dict) and path in TABLES:
-            yield from _flattened(path, value)
-        elif path in KEYS:
-            yield path, value
-        elif path in TABLES:
-            leaf = next(key for key in KEYS.values() if key.table == path)
-            raise StageError(path, value, "which is a table", f'[{path}] and below it {leaf.leaf} = "{leaf.example}"')
-        else:
-            raise unknown_key(f"{path}.{next(iter(value), '')}" if isinstance(value, dict) else path)
-
-
-def toml_literal(path: str, text: str) -> str:
-    """A text as the right-hand side of a line.
-
-    Parameters
-    ----------
-    path : str
-        Path of its key.
-    text : str
-        Text of the key; one of a list has commas between its items.
-
-    Returns
-    -------
-    str
-        A basic string of TOML, or an array of them.
-    """
-    key = KEYS[path]
-    items = [f'"{item.translate(_ESCAPES)}"' for item in key.items(text)]
-    return f"[{', '.join(items)}]" if key.many else items[0]
-
-
-_ESCAPES = {code: f"\\u{code:04x}" for code in (*range(32), 127, ord('"'), ord("\\"))}
-
-
-def stage_file(heading: Iterable[str], lines: Mapping[str, str]) -> str:
-    """A stage file made of lines.
-
-    Parameters
-    ----------
-    heading : iterable of str
-        Sentences of the comment at the top.
-    lines : mapping of str to str
-        Path of a key to its line or lines.
-
-    Returns
-    -------
-    str
-        The file, its tables and keys in the order of `KEYS`.
-    """
-    parts = [f"# {sentence}" for sentence in heading]
-    for table in ("", *TABLES):
-        own = [lines[path] for path, key in KEYS.items() if key.table == table and path in lines]
-        if own:
-            parts += ["", f"[{table}]", *own] if table else ["", *own]
-    return "\n".join(parts) + "\n"
-
-
-def template() -> str:
-    """The empty stage file: every key with its meaning, commented out.
-
-    Returns
-    -------
-    str
-        Taking away the ``#`` in front of a key gives it; the keys of one role stand for those of every role.
-    """
-    lines = {}
-    for path, key in KEYS.items():
-        if key.table.startswith("resistors.") and key.table != f"resistors.{ROLES[-1]}":
-            continue
-        state = "needed" if key.needed else f"not given: {key.otherwise or key.default}"
-        lines[path] = f"# {key.meaning} ({state})\n#{key.leaf} = {toml_literal(path, key.example)}"
-    heading = [
-        "A stage of restpoint. Take away the # in front of a key to give it.",
-        "Quantities are texts with a unit; a spread is low : high, low : nominal : high, or nominal ± x % or ± x unit.",
-        f"[resistors.{ROLES[-1]}] stands for a table of each role: {', '.join(ROLES)}.",
-    ]
-    return stage_file(heading, lines)

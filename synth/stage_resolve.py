@@ -26,6 +26,8 @@ from synth.quantities import (
     format_spread,
     parse,
 )
+from synth.reference import Kind as ReferenceKind
+from synth.reference import Reference
 from synth.stage_keys import KEYS, ROLES, StageError, nearest
 from synth.transistor import GAP_VOLTAGE, T0, Transistor, thermal_voltage
 
@@ -43,7 +45,21 @@ FAR_CURRENT = 10.0
 """Ratio of currents from which a printed gain says little about the gain at the stage's own current [-]."""
 
 _GERMANIUM = {"vbe": "0.15 V ± 50 mV", "vbe_ic": "1 mA", "vce_sat": "0.1 V"}
-_RAILS = ("vcc", "vee", "vbb")
+_RAILS = ("vcc", "vee", "vbb", "vload")
+
+_VOLTAGES = ("vce", "vc", "ve")
+"""Targets of which a stage has one besides IC."""
+
+_TEST_CURRENT = {"led": "2 mA", "zener": "5 mA"}
+_SLOPE = {"led": "0 : 30 ohm", "zener": "0 : 60 ohm"}
+"""Usual test currents and slope resistances of reference elements: common practice."""
+
+ZENER_TURN = 5.2
+"""Zener voltage without a temperature coefficient, from memory [V]: tunnelling below, avalanche above."""
+ZENER_TC = (0.9e-3, -2.5e-3, 1.5e-3)
+"""Its coefficient per volt above that [1/K], the least [V/K], and how far units stray [V/K]; from memory."""
+LED_TC = "-3 : -2 : -1 mV/K"
+"""Common practice."""
 
 Use = Literal["yes", "no", "either"]
 
@@ -140,7 +156,7 @@ def no_role(name: str, role: str, networks: Sequence[str]) -> StageError:
     return StageError(name, role, reason, f"one of {', '.join(roles)}", nearest(role, roles))
 
 
-def needing(role: str, networks: Sequence[str]) -> list[str]:
+def needing(role: str, networks: Sequence[str], has_reference: bool) -> list[str]:
     """Networks that have a role and cannot do without it.
 
     Parameters
@@ -149,14 +165,20 @@ def needing(role: str, networks: Sequence[str]) -> list[str]:
         Name of a role.
     networks : sequence of str
         Where to look.
+    has_reference : bool
+        Whether a reference element is given.
 
     Returns
     -------
     list of str
         Their names.
     """
-    parts = {network: NETWORKS[network].roles for network in networks}
-    return [network for network, roles in parts.items() if any(r.name == role and not r.optional for r in roles)]
+    forms = {name: NETWORKS[name] for name in networks}
+    return [
+        name
+        for name, form in forms.items()
+        if any(part.name == role and not form.optional(part, has_reference) for part in form.roles)
+    ]
 
 
 def band(setting: RoleSetting) -> tuple[float, float, float]:
@@ -208,20 +230,28 @@ class _Resolver:
         self.notes: list[Assumption] = []
         self.warnings: list[StageWarning] = []
 
+    @property
+    def has_reference(self) -> bool:
+        """Whether a reference element is given."""
+        return any(KEYS[path].table == "reference" for path in self.given)
+
     def resolve(self) -> dict[str, Any]:
         """Content of every attribute of the stage."""
         rails = self.rails()
         networks, any_network = self.networks(rails)
-        ic, vce = self.targets(networks, rails)
+        ic, voltages = self.targets(networks, rails)
         # Never 0: `targets` refuses a stage without a target for IC.
         current = ic.nominal or 0.0
         temperature = self.temperature()
         transistor = self.transistor(current)
         self.check_junction(transistor, current, temperature.high)
-        if vce.nominal is not None and vce.nominal <= transistor.vce_sat:
+        vce = voltages.get("vce")
+        if vce is not None and vce.nominal is not None and vce.nominal <= transistor.vce_sat:
             least = format_quantity(transistor.vce_sat, "voltage")
             reason = f"which is no more than VCE(sat) = {least}: a saturated switch is set by forced gain, not by a Q-point"
             raise self.refusal("target.vce", reason, f"more than {least}")
+        reference = self.reference(networks, transistor, current)
+        load_rail = rails.get("vload", rails["vcc"]) if any(NETWORKS[name].sinks for name in networks) else None
         roles = self.roles(networks, any_network, temperature)
         if any(setting.style for setting in roles.values()):
             text = "a style is recorded only: its power and voltage ratings get no verdict, so compare the drops and currents"
@@ -233,10 +263,11 @@ class _Resolver:
             "rails": MappingProxyType(rails),
             "ground": self.take("supply.ground", "middle" if "vee" in rails else "negative"),
             "ic": ic,
-            "vce": vce,
+            "voltages": MappingProxyType(voltages),
             "transistor": transistor,
+            "reference": reference,
             "temperature": temperature,
-            "limits": MappingProxyType(self.limits(current, transistor)),
+            "limits": MappingProxyType(self.limits(current, transistor, reference, load_rail)),
             "values": MappingProxyType(self.fitted()),
             "roles": MappingProxyType(roles),
             "assumed": (*(self.assumed[path] for path in KEYS if path in self.assumed), *self.notes),
@@ -281,6 +312,7 @@ class _Resolver:
         path = "network"
         named: tuple[str, ...] = self.take(path)
         fits = {name: [rail for rail in NETWORKS[name].rails if rail not in rails] for name in NETWORKS}
+        has_voltage = any(f"target.{quantity}" in self.given for quantity in _VOLTAGES)
         unused = [role for role in ROLES if self.value(f"resistors.{role}.use") == "no"]
         if "any" not in named:
             found = named
@@ -288,14 +320,25 @@ class _Resolver:
             raise self.refusal(path, "which names others beside any", "any alone, or a list without it", "any")
         else:
             found = tuple(name for name, missing in fits.items() if not missing)
-            found = tuple(name for name in found if not any(needing(role, [name]) for role in unused))
+            found = tuple(name for name in found if not any(needing(role, [name], self.has_reference) for role in unused))
+            # A sink leaves VCE to its load: it meets a request for IC alone, and no other network does.
+            found = tuple(name for name in found if NETWORKS[name].sinks != has_voltage)
+            if "target.vc" in self.given:
+                found = tuple(name for name in found if "c" not in NETWORKS[name].tied)
+            found = tuple(name for name in found if self.has_reference or NETWORKS[name].reference != "needed")
         for name in found:
             for rail in fits[name]:
                 needed = KEYS[f"supply.{rail}"]
                 raise StageError(needed.path, None, f"is not given, but network {name} needs it", needed.accepted)
+            if NETWORKS[name].reference == "needed" and not self.has_reference:
+                accepted = '[reference] and below it kind = "diode", or another network'
+                raise StageError("reference.kind", None, f"is not given, but network {name} needs it", accepted)
+        if self.has_reference and not any(NETWORKS[name].reference != "no" for name in found):
+            text = f"[reference] is given, but {' or '.join(found)} does not use it"
+            self.warnings.append(StageWarning(name="unused_reference", text=text))
         for role in unused:
-            if needing(role, found) or not found:
-                reason = f"without which {' or '.join(needing(role, found or tuple(NETWORKS)))} cannot do"
+            if (needed_by := needing(role, found or tuple(NETWORKS), self.has_reference)) or not found:
+                reason = f"without which {' or '.join(needed_by)} cannot do"
                 raise self.refusal(f"resistors.{role}.use", reason, "yes, or a network that can do without it", "yes")
         for rail in rails:
             if not any(rail in (*NETWORKS[name].rails, *NETWORKS[name].optional_rails) for name in found):
@@ -313,14 +356,29 @@ class _Resolver:
             if role in ROLES and role not in known:
                 raise no_role(path, role, networks)
 
-    def targets(self, networks: Sequence[str], rails: Mapping[str, Spread]) -> tuple[Target, Target]:
-        for path in ("target.ic", "target.vce"):
-            if path not in self.given:
-                raise self.refusal(path, "which is not given", KEYS[path].accepted)
-        ic, vce = self.value("target.ic"), self.value("target.vce")
+    def targets(self, networks: Sequence[str], rails: Mapping[str, Spread]) -> tuple[Target, dict[str, Target]]:
+        if "target.ic" not in self.given:
+            raise self.refusal("target.ic", "which is not given", KEYS["target.ic"].accepted)
+        voltages = {quantity: self.value(f"target.{quantity}") for quantity in _VOLTAGES if f"target.{quantity}" in self.given}
+        ic = self.value("target.ic")
+        sinks = [name for name in networks if NETWORKS[name].sinks]
+        if len(voltages) > 1:
+            first, second = list(voltages)[:2]
+            raise self.refusal(f"target.{second}", f"but target.{first} is given too", "one of vce, vc and ve")
+        tied = [name for name in networks if "c" in NETWORKS[name].tied]
+        if "vc" in voltages and tied:
+            raise self.refusal("target.vc", f"but the collector of {tied[0]} sits on its rail", "target.vce or target.ve")
+        if sinks and len(sinks) < len(networks):
+            accepted = "a sink alone, or networks without one"
+            raise self.refusal("network", f"of which {' and '.join(sinks)} leaves VCE to its load", accepted)
+        if sinks and "vce" in voltages:
+            accepted = "target.ic alone or with target.ve, and limits.compliance for what the load may take"
+            raise self.refusal("target.vce", f"which means nothing for {sinks[0]}: the load decides it", accepted)
+        if not voltages and not sinks:
+            raise self.refusal("target.vce", "which is not given", KEYS["target.vce"].accepted)
         if ic.nominal is None:
             raise self.refusal("target.ic", "which is a window without a target", "a target such as '2 mA' or '2 mA ± 15 %'")
-        for path, target in (("target.ic", ic), ("target.vce", vce)):
+        for path, target in {"target.ic": ic, **{f"target.{quantity}": t for quantity, t in voltages.items()}}.items():
             kind = KEYS[path].kind
             least = target.high if target.nominal is None else target.nominal
             if least <= 0.0 or -math.inf < target.low < 0.0:
@@ -329,11 +387,13 @@ class _Resolver:
                 accepted = f"a magnitude above 0 {'A' if kind == 'current' else 'V'}, for an npn and a pnp alike"
                 raise self.refusal(path, reason, accepted)
         span = max(sum(rails[rail].nominal for rail in NETWORKS[name].rails) for name in networks)
-        wanted = vce.low if vce.nominal is None else vce.nominal
-        if wanted >= span:
-            reason = f"which is not below the {format_quantity(span, 'voltage')} between the rails"
-            raise self.refusal("target.vce", reason, f"less than {format_quantity(span, 'voltage')}, or a higher supply")
-        return ic, vce
+        for quantity, target in voltages.items():
+            wanted = target.low if target.nominal is None else target.nominal
+            if wanted >= span:
+                reason = f"which is not below the {format_quantity(span, 'voltage')} between the rails"
+                accepted = f"less than {format_quantity(span, 'voltage')}, or a higher supply"
+                raise self.refusal(f"target.{quantity}", reason, accepted)
+        return ic, voltages
 
     def temperature(self) -> Spread:
         path = "ambient.temperature"
@@ -470,6 +530,51 @@ class _Resolver:
                 f"more than {least}, or an ambient.temperature that stays below {at}",
             )
 
+    def reference(self, networks: Sequence[str], transistor: Transistor, current: float) -> Reference | None:
+        """The reference element, if one is given and a network has a place for it."""
+        given = [path for path in self.given if KEYS[path].table == "reference"]
+        if not given or not any(NETWORKS[name].reference != "no" for name in networks):
+            return None
+        kind: ReferenceKind = self.take("reference.kind", "diode")
+        count = int(self.take("reference.number"))
+        usual = _TEST_CURRENT.get(kind) or format_exact(current / 10.0, "current")
+        at: float = self.take("reference.current", usual, "not given" if kind in _TEST_CURRENT else "a tenth of the target IC")
+        if at <= 0.0:
+            raise self.refusal("reference.current", "which is no current", "a current above 0 A", usual)
+        if kind == "diode":
+            # A junction like the transistor's own, which is what makes it follow.
+            volts = float(transistor.vbe_at(at, T0))
+            gap = GAP_VOLTAGE[transistor.material]
+            slope_t = (volts - gap) / T0 - 3.0 * float(thermal_voltage(T0)) / T0
+            law = f"{volts:.4g} V ± 50 mV"
+            coefficient, why = f"{1e3 * slope_t:.4g} mV/K", "that of the base-emitter law"
+            slope_text = f"{float(thermal_voltage(T0)) / at:.4g} ohm"
+        elif "reference.voltage" not in self.given:
+            accepted = f"the voltage of the {kind} at its test current, such as '5.1 V ± 5 %'"
+            raise self.refusal("reference.voltage", f"which is not given and has no default for {kind}", accepted)
+        else:
+            law, slope_text = "", _SLOPE[kind]
+            coefficient, why = LED_TC, "usual for LEDs"
+            if kind == "zener":
+                per_volt, least, stray = ZENER_TC
+                middle = max(per_volt * (self.value("reference.voltage").nominal - ZENER_TURN), least)
+                coefficient = " : ".join(f"{1e3 * end:.3g} mV/K" for end in (middle - stray, middle, middle + stray))
+                why = "usual for this voltage"
+        voltage: Spread = self.take("reference.voltage", law, "that of the base-emitter law")
+        tc: Spread = self.take("reference.tc", coefficient, why)
+        slope: Spread = self.take("reference.slope", slope_text)
+        if voltage.low <= 0.0:
+            raise self.refusal("reference.voltage", "which goes down to 0 V", "a magnitude above 0 V")
+        if slope.low < 0.0:
+            raise self.refusal("reference.slope", "which is negative", "a resistance of 0 ohm or more")
+        return Reference(
+            kind=kind,
+            voltage=Spread(*(count * end for end in (voltage.low, voltage.nominal, voltage.high))),
+            current=at,
+            tc=Spread(*(count * end for end in (tc.low, tc.nominal, tc.high))),
+            slope=Spread(*(count * end for end in (slope.low, slope.nominal, slope.high))),
+        )
+
     # Resistors, limits, values
 
     def roles(self, networks: Sequence[str], any_network: bool, temperature: Spread) -> dict[str, RoleSetting]:
@@ -480,7 +585,8 @@ class _Resolver:
             values: tuple[float, ...] = self.value(f"resistors.{role}.values") or ()
             if values and min(values) <= 0.0:
                 raise self.refusal(f"resistors.{role}.values", "which goes down to 0 ohm", "resistances above 0 ohm")
-            optional = any(part.name == role and part.optional for name in networks for part in NETWORKS[name].roles)
+            forms = [(NETWORKS[name], part) for name in networks for part in NETWORKS[name].roles if part.name == role]
+            optional = any(form.optional(part, self.has_reference) for form, part in forms)
             use: Use = self.use(role, bool(values), any_network) if optional else "yes"
             setting: RoleSetting = dataclasses.replace(self.resistor(role, common), use=use, values=values)
             rise = max(abs(temperature.low - T0), abs(temperature.high - T0))
@@ -495,6 +601,11 @@ class _Resolver:
         return settings
 
     def use(self, role: str, has_values: bool, any_network: bool) -> Any:
+        if role == "re" and "target.ve" in self.given:
+            use = self.take("resistors.re.use", "yes", "target.ve is given")
+            if use != "yes":
+                raise self.refusal("resistors.re.use", "but target.ve is the drop of re", "yes, or a target.vce", "yes")
+            return use
         if has_values:
             return self.take(f"resistors.{role}.use", "yes", "its values are given")
         if any_network:
@@ -588,13 +699,19 @@ class _Resolver:
                 lists[role] = read[key]
         return lists
 
-    def limits(self, current: float, transistor: Transistor) -> dict[str, Interval]:
+    def limits(
+        self, current: float, transistor: Transistor, reference: Reference | None, load_rail: Spread | None
+    ) -> dict[str, Interval]:
         least_base = transistor.hfe.low * float(thermal_voltage(T0)) / current
         usual = {
             "bleeder_current": (Interval(-math.inf, current / 10.0), "a tenth of the target IC"),
             "collector_share": (Interval(0.5, math.inf), "half the voltage of rc and re"),
             "base_resistance": (Interval(least_base, math.inf), "hFE min times VT over the target IC"),
         }
+        if load_rail is not None:
+            usual["compliance"] = (Interval(load_rail.nominal / 3.0, math.inf), "a third of the load's rail")
+        if reference is not None:
+            usual["reference_current"] = (Interval(reference.current / 2.0, math.inf), "half of its test current")
         limits: dict[str, Interval] = {}
         for name in RULES:
             path = f"limits.{name}"

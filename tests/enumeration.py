@@ -19,9 +19,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from synth.box import Box, Meter, Parts
-from synth.limits import judge, requirements
+from synth.limits import Surroundings, judge, requirements
 from synth.networks import NETWORKS, Network
 from synth.quantities import Interval, Spread
+from synth.reference import Reference
 from synth.spaces import Goal, Index, Space
 from synth.transistor import Transistor
 
@@ -43,8 +44,7 @@ class Row:
     space: int
     index: tuple[int, ...]
     drift: float
-    drift_ic: float
-    drift_vce: float | None
+    drifts: Mapping[str, float]
     key: tuple[object, ...]
 
 
@@ -54,12 +54,14 @@ def every_index(space: Space) -> Index:
     return np.array(list(itertools.product(*sizes)), dtype=np.int32)
 
 
-def drifts(worst: Mapping[tuple[str, int], Array], goal: Goal) -> tuple[Array, Array | None]:
-    """Largest relative excursion from the target of IC and of VCE."""
-    ic = np.maximum(worst["ic", 1] - goal.ic, goal.ic - worst["ic", -1]) / goal.ic
-    if goal.vce is None:
-        return ic, None
-    return ic, np.maximum(worst["vce", 1] - goal.vce, goal.vce - worst["vce", -1]) / goal.vce
+def drifts(worst: Mapping[tuple[str, int], Array], goal: Goal) -> dict[str, Array]:
+    """Largest relative excursion from the target of every quantity that has one."""
+    targets = {"ic": goal.ic, "vce": goal.vce, "vc": goal.vc, "ve": goal.ve}
+    return {
+        name: np.maximum(worst[name, 1] - target, target - worst[name, -1]) / target
+        for name, target in targets.items()
+        if target is not None
+    }
 
 
 def order_figures(space: Space, index: Index, goal: Goal) -> list[tuple[object, ...]]:
@@ -70,9 +72,10 @@ def order_figures(space: Space, index: Index, goal: Goal) -> list[tuple[object, 
     q = box.solve(values)
     branches = box.branches(values, q)
     supply = np.max([np.broadcast_to(i, (box.size,)) for i in branches.rail.values()], axis=0)
-    off = np.abs(q.ic / goal.ic - 1.0)
-    if goal.vce is not None:
-        off = np.maximum(off, np.abs(q.vce / goal.vce - 1.0))
+    reached = {"ic": q.ic, "vce": q.vce, "vc": branches.nodes["c"], "ve": branches.voltage.get("re", 0.0)}
+    targets = {"ic": goal.ic, "vce": goal.vce, "vc": goal.vc, "ve": goal.ve}
+    every = [np.abs(reached[name] / target - 1.0) for name, target in targets.items() if target is not None]
+    off = np.max(np.broadcast_arrays(*every), axis=0)
     ohms = np.stack([box.parts[role].nominal for role in space.roles], axis=1)
     return [
         (float(off[k]), float(supply[k]), len(row), len(set(row)), space.network.name, tuple(row))
@@ -92,15 +95,16 @@ def enumerate_all(spaces: Sequence[Space], goal: Goal, *, brute: bool = False) -
             names: Sequence[str], side: int, box: Box = box, extremes: dict[Any, Any] = extremes
         ) -> tuple[Array, dict[str, Array]]:
             key = (tuple(names), side)
-            if key not in extremes and brute and names[0] in ("ic", "vce") and len(names) == 1:
+            if key not in extremes and brute and names[0] in ("ic", "vce", "vc", "ve") and len(names) == 1:
                 extremes[key] = worst(box, names[0], side), {}
             elif key not in extremes:
                 found = box.extreme(names, side)
                 extremes[key] = found.value, found.at
             return extremes[key]
 
-        ends = {(q, side): extreme((q,), side)[0] for q in ("ic", "vce") for side in (1, -1)}
-        ic, vce = drifts(ends, goal)
+        aims = dict.fromkeys(("ic", "vce", *(name for name in ("vc", "ve") if getattr(goal, name) is not None)))
+        ends = {(q, side): extreme((q,), side)[0] for q in aims for side in (1, -1)}
+        found = drifts(ends, goal)
         passed = np.ones(len(index), dtype=bool)
         for need in space.requirements:
             passed &= judge(box, need, extreme).passed
@@ -108,14 +112,13 @@ def enumerate_all(spaces: Sequence[Space], goal: Goal, *, brute: bool = False) -
         if not keep.size:
             continue
         for k, figures in zip(keep, order_figures(space, index[keep], goal), strict=True):
-            drift = float(ic[k] if vce is None else max(ic[k], vce[k]))
+            drift = float(max(d[k] for d in found.values()))
             rows.append(
                 Row(
                     space=number,
                     index=tuple(int(i) for i in index[k]),
                     drift=drift,
-                    drift_ic=float(ic[k]),
-                    drift_vce=None if vce is None else float(vce[k]),
+                    drifts={name: float(d[k]) for name, d in found.items()},
                     key=(float(f"{drift:.11e}"), *figures),
                 )
             )
@@ -178,6 +181,7 @@ def random_surroundings(
         rails["vcc"] = Spread(9.0, 12.0, 16.0)
     rails["vbb"] = _spread(rng, float(rng.choice([3.0, 5.0, 9.0])), (0.0, 0.02, 0.1))
     rails["vee"] = _spread(rng, float(rng.choice([3.0, 5.0, 12.0])), (0.0, 0.02, 0.1, 0.2))
+    rails["vload"] = _spread(rng, float(rng.choice([5.0, 12.0, 24.0])), (0.0, 0.02, 0.1, 0.3))
     return device, rails, ambient
 
 
@@ -196,6 +200,7 @@ def _laid_out(
     rails: Mapping[str, Spread],
     ic: float,
     vce: float,
+    reference: Reference | None = None,
 ) -> dict[str, float]:
     """Resistances near which the Q-point is met, by hand calculation; any resistance for an unknown network."""
     h, vcc = device.hfe.nominal, rails["vcc"].nominal
@@ -224,7 +229,28 @@ def _laid_out(
         vb = min(vcc - vce + vbe, 0.95 * vcc)
         bleed = bleed if "r2" in roles else 0.0
         return {"r1": (vcc - vb) / (bleed + ib), "r2": vb / (bleed or ib), "re": (vcc - vce) / (ic + ib)}
+    if network.name in ("diode_divider", "sink"):
+        vb = min(ve + vbe, 0.8 * vcc)
+        base = vb if reference is None else reference.voltage.nominal
+        if network.name == "diode_divider":
+            base = max(vb, base + 0.1)
+        r2 = base / bleed if reference is None else max(base - reference.voltage.nominal, 0.05) / bleed
+        r = {"r1": (vcc - base) / (bleed + ib), "r2": r2, "re": max(base - vbe, 0.1) / (ic + ib)}
+        return {**r, "rc": drop / ic}
     return {role: vcc / ic * 10.0 ** rng.uniform(-1.0, 1.5) for role in network.role_names}
+
+
+def random_reference(rng: np.random.Generator, ic: float, vcc: float) -> Reference:
+    """A reference element for a target IC, with any coefficient and slope."""
+    volts, at = vcc * rng.uniform(0.05, 0.4), ic * 10.0 ** rng.uniform(-1.2, 0.0)
+    tc, stray = volts * rng.choice([-4e-3, -3e-4, 0.0, 8e-4]), volts * rng.choice([0.0, 2e-4, 1e-3])
+    return Reference(
+        kind="zener",
+        voltage=_spread(rng, volts, (0.0, 0.02, 0.08)),
+        current=at,
+        tc=Spread(tc - stray, tc, tc + stray),
+        slope=_spread(rng, volts / at * rng.uniform(0.005, 0.1), (0.0, 0.3, 0.9)),
+    )
 
 
 def _lengths(rng: np.random.Generator, roles: int, most: int) -> list[int]:
@@ -266,6 +292,8 @@ def _limits(
         found["base_resistance"] = Interval(device.hfe.low * 0.0257 / goal.ic * 10.0 ** rng.uniform(-1.0, 0.3), INF)
     if rng.random() < 0.4:
         found["supply_current"] = Interval(float(rng.choice([-INF, goal.ic * 0.1])), goal.ic * rng.uniform(1.3, 4.0))
+    if rng.random() < 0.5:
+        found["compliance"] = Interval(vcc * rng.uniform(0.05, 0.6), INF)
     if rng.random() < 0.3:
         found["vce"] = Interval(vcc * rng.uniform(0.0, 0.15), float(rng.choice([INF, 0.95 * vcc])))
     return found
@@ -291,12 +319,19 @@ def random_spaces(
         device, rails, ambient = random_surroundings(rng, ic, leakages)
     vcc = rails["vcc"].nominal
     vce = vcc * rng.uniform(0.2, 0.6)
-    goal = Goal(ic=ic, vce=None if rng.random() < 0.25 else vce)
+    kind = str(rng.choice(["vce", "vce", "none", "vc", "ve"]))
+    forms = [NETWORKS[name] for name in networks]
+    if any(form.sinks or "vee" in form.rails or (kind == "vc" and "c" in form.tied) for form in forms):
+        # Of a sink the load decides VCE; of two supplies VC and VE count from unlike ends.
+        kind = "none" if any(form.sinks for form in forms) or kind in ("none", "vc") else "vce"
+    ve = rng.uniform(0.05, 0.5) * (vcc - vce)
+    goal = Goal(ic=ic, **{"none": {}, "vce": {"vce": vce}, "vc": {"vc": vce + ve}, "ve": {"ve": ve}}[kind])
     low, high = (_window(rng, vce).low, _window(rng, vce).high)
     one_sided = Interval(low, INF) if rng.random() < 0.5 else Interval(-INF, high)
     windows = {
         "ic": (_window(rng, ic), ic),
         "vce": (one_sided if goal.vce is None else _window(rng, vce), goal.vce),
+        **{kind: (_window(rng, aim), aim) for kind, aim in goal.aims.items() if kind in ("vc", "ve")},
     }
     limits: dict[str, Interval] | None = None
     spaces = []
@@ -304,10 +339,15 @@ def random_spaces(
         network = NETWORKS[name]
         variants = list(nodal.variants(network))
         used, roles = variants[rng.integers(len(variants))]
-        own = {rail: rails[rail] for rail in used}
-        r = _laid_out(rng, network, roles, device, own, ic, vce)
+        own = {rail: rails[rail] for rail in used if rail not in nodal.REFERENCE}
+        reference = random_reference(rng, ic, vcc) if "vref" in used else None
+        r = _laid_out(rng, network, roles, device, own, ic, vce, reference)
+        if "ve" in goal.aims and "re" not in roles:
+            roles = tuple(role for role in network.role_names if role in (*roles, "re"))
         if limits is None:
             limits = _limits(rng, device, goal, r, vcc)
+        if reference is not None:
+            limits = {**limits, "reference_current": Interval(reference.current * rng.uniform(0.05, 0.6), INF)}
         lengths = _lengths(rng, len(roles), most)
         spaces.append(
             Space(
@@ -317,8 +357,13 @@ def random_spaces(
                 rails=own,
                 temperature=ambient,
                 requirements=requirements(
-                    network, own, roles, limits, limits if rng.random() < 0.5 else (), windows, device.vce_sat
+                    network,
+                    Surroundings(rails=own, roles=roles, reference=reference, vce_sat=device.vce_sat),
+                    limits,
+                    limits if rng.random() < 0.5 else (),
+                    windows,
                 ),
+                reference=reference,
             )
         )
     return spaces, goal
@@ -347,7 +392,8 @@ def q_point(network: Network, device: Transistor, p: Mapping[str, Array]) -> dic
     junction by Newton's method in ln IC from the right of its root, where it cannot overshoot."""
     shape = np.broadcast_shapes(*(np.shape(x) for x in p.values()))
     flat = {name: np.broadcast_to(x, shape).ravel() for name, x in p.items()}
-    rails = {name: flat[name] for name in (*network.rails, *network.optional_rails) if name in flat}
+    sources = (*network.rails, *network.optional_rails, *nodal.REFERENCE)
+    rails = {name: flat[name] for name in sources if name in flat}
     circuit = nodal.Circuit(network, rails, {role: flat[role] for role in network.role_names if role in flat})
     vt, vbe, h, leak = _device(device, flat)
     e_b, e_c = circuit.open(0.0, 0.0)
@@ -368,7 +414,10 @@ def q_point(network: Network, device: Transistor, p: Mapping[str, Array]) -> dic
         ic = device.vbe_ic * np.exp(y)
     ib = ic / h - offset
     vce = e_c - (e_c - from_ib[1]) * ib - (e_c - from_ic[1]) * ic
-    return {"ic": ic.reshape(shape), "vce": vce.reshape(shape)}
+    # Every network here has the far end of re at 0 V, or at the negative one of two supplies.
+    ve = flat.get("re", 0.0) * (ic + ib)
+    found = {"ic": ic, "vce": vce, "ve": ve, "vc": vce + ve - flat.get("vee", 0.0)}
+    return {name: x.reshape(shape) for name, x in found.items()}
 
 
 def place(box: Box, u: Mapping[str, Array]) -> dict[str, Array]:
@@ -379,6 +428,12 @@ def place(box: Box, u: Mapping[str, Array]) -> dict[str, Array]:
     found = {name: spread.low + spread.width * u[name] for name, spread in spreads.items()}
     found["delta"] = vbe.low + vbe.width * u["delta"] - vbe.nominal
     found["temperature"] = t
+    if box.reference is not None:
+        ref = box.reference
+        slope = ref.slope.low + ref.slope.width * u["r_ref"]
+        ends = (ref.tc.low * rise, ref.tc.high * rise)
+        low, high = ref.voltage.low + np.minimum(*ends), ref.voltage.high + np.maximum(*ends)
+        found["r_ref"], found["vref"] = slope, low + (high - low) * u["delta_ref"] - slope * ref.current
     for role, part in box.parts.items():
         ends = (part.tcr_low * rise, part.tcr_high * rise)
         low, high = 1.0 - part.band + np.minimum(*ends), 1.0 + part.band + np.maximum(*ends)
@@ -394,6 +449,8 @@ def worst(box: Box, quantity: str, direction: int, temperatures: int = 5, rounds
     of which axis matters or which way.
     """
     spreads = {**box.rails, "delta": box.transistor.vbe, "hfe": box.transistor.hfe, "icbo": box.transistor.icbo}
+    if box.reference is not None:
+        spreads |= {"delta_ref": box.spreads["delta_ref"], "r_ref": box.reference.slope}
     wide = [name for name, spread in spreads.items() if spread.width > 0.0] + list(box.parts)
     still = {name: np.zeros(1) for name in spreads if name not in wide}
     ambient = box.temperature

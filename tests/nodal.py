@@ -19,6 +19,9 @@ from synth.transistor import Transistor
 
 Array = NDArray[np.float64]
 
+REFERENCE = ("vref", "r_ref")
+"""What a reference element is in a circuit: a source with a resistance in series, from node m to 0 V."""
+
 BELOW_GROUND = frozenset({"vee"})
 """Rails given as magnitudes that lie below 0 V (common practice: VEE is the negative emitter supply)."""
 
@@ -30,12 +33,13 @@ def given_rails(network: Network, rails: Mapping[str, object]) -> dict[str, str]
 
 
 def variants(network: Network) -> Iterator[tuple[tuple[str, ...], tuple[str, ...]]]:
-    """Every choice of rails and roles: each optional one given and not given."""
-    needed = tuple(role.name for role in network.roles if not role.optional)
-    optional = tuple(role.name for role in network.roles if role.optional)
-    for rails in _subsets(network.optional_rails):
+    """Every choice of rails, reference element and roles: each optional one given and not given."""
+    references = {"no": ((),), "optional": ((), REFERENCE), "needed": (REFERENCE,)}[network.reference]
+    for rails, reference in itertools.product(_subsets(network.optional_rails), references):
+        optional = tuple(role.name for role in network.roles if network.optional(role, bool(reference)))
+        needed = set(network.role_names) - set(optional)
         for roles in _subsets(optional):
-            yield (*network.rails, *rails), tuple(n for n in network.role_names if n in needed or n in roles)
+            yield (*network.rails, *rails, *reference), tuple(n for n in network.role_names if n in needed or n in roles)
 
 
 def _subsets(names: tuple[str, ...]) -> Iterator[tuple[str, ...]]:
@@ -65,10 +69,13 @@ class Circuit:
 
     def __init__(self, network: Network, rails: Mapping[str, Array], r: Mapping[str, Array]) -> None:
         self.network = network
-        self.rails = {name: np.atleast_1d(value) for name, value in rails.items()}
+        self.rails = {name: np.atleast_1d(value) for name, value in rails.items() if name not in REFERENCE}
+        self.reference = tuple(np.atleast_1d(rails[name]) for name in REFERENCE if name in rails)
         self.r = {name: np.atleast_1d(value) for name, value in r.items()}
-        self.n = max(v.size for v in (*self.rails.values(), *self.r.values()))
+        self.n = max(v.size for v in (*self.rails.values(), *self.reference, *self.r.values()))
         merged = {**given_rails(network, rails), **network.tied}
+        if not self.reference:
+            merged["m"] = "0"
         for role in network.roles:
             if role.name not in r and role.absent == "short":
                 # Its transistor node becomes its other node.
@@ -80,7 +87,7 @@ class Circuit:
         names |= {self.name(node) for node in ("b", "c", "e")}
         self.nodes = sorted(names - {"0"})
         self.index = {node: k for k, node in enumerate(self.nodes)}
-        self.kind = np.result_type(*self.rails.values(), *self.r.values(), float)
+        self.kind = np.result_type(*self.rails.values(), *self.reference, *self.r.values(), float)
 
     def name(self, node: str) -> str:
         """Node that a name stands for once rails and absent resistors are merged."""
@@ -106,6 +113,11 @@ class Circuit:
                     a[:, p, p] += g
                     if q is not None:
                         a[:, p, q] -= g
+        if self.reference:
+            k = self._at("m")
+            volts, ohms = self.reference
+            a[:, k, k] += 1.0 / ohms
+            z[:, k] += volts / ohms
         for k, (rail, value) in enumerate(self.rails.items(), start=len(self.nodes)):
             sign = -1.0 if rail in BELOW_GROUND else 1.0
             i = self.index[rail]
@@ -139,7 +151,7 @@ class Circuit:
 
     def _voltages(self, x: Array) -> dict[str, Array]:
         zero = np.zeros(self.n, dtype=self.kind)
-        outer = {"0", *given_rails(self.network, self.rails), "b", "c", "e"}
+        outer = {"0", *given_rails(self.network, self.rails), "b", "c", "e", *(["m"] if self.reference else [])}
         return {node: zero if self._at(node) is None else x[:, self.index[self.name(node)]] for node in outer}
 
     def open(self, ib: Array | float, ic: Array | float) -> tuple[Array, Array]:

@@ -19,13 +19,16 @@ from scipy.optimize import minimize
 from synth.box import Box, Parts
 from synth.networks import NETWORKS
 from synth.quantities import Spread
+from synth.reference import Reference
 from synth.transistor import Transistor
 
 Numbers = NDArray[Any]
 
-SOLVED = ("collector_divider", "collector_feedback", "divider", "fixed_base", "follower", "two_supply")
+SOLVED = (
+    "collector_divider", "collector_feedback", "diode_divider", "divider", "fixed_base", "follower", "sink", "two_supply",
+)  # fmt: skip
 """Networks whose node equations are written out here."""
-SATURATING = ("divider", "fixed_base", "two_supply")
+SATURATING = ("diode_divider", "divider", "fixed_base", "two_supply")
 """Those of them that can saturate: the collector neither feeds the base nor sits on the rail."""
 
 K_OVER_Q = 1.380649e-23 / 1.602176634e-19
@@ -36,7 +39,8 @@ GAP = {"silicon": 1.17, "germanium": 0.744}
 
 def position(box: Box) -> tuple[str, ...]:
     """Every coordinate of a box, in a fixed order, whether it has a width or not."""
-    return (*box.rails, "delta", "hfe", "icbo", *box.parts, "temperature")
+    reference = ("delta_ref", "r_ref") if box.reference is not None else ()
+    return (*box.rails, "delta", "hfe", "icbo", *reference, *box.parts, "temperature")
 
 
 def _between(spread: Spread, u: Numbers) -> Numbers:
@@ -55,11 +59,29 @@ def point(box: Box, u: Mapping[str, Numbers]) -> dict[str, Numbers]:
     found["icbo"] = _between(box.transistor.icbo, u["icbo"])
     rise = t - ROOM
     warm = np.real(rise) >= 0.0
+    if box.reference is not None:
+        ref = box.reference
+        found["r_ref"] = _between(ref.slope, u["r_ref"])
+        # A unit of its own voltage and its own coefficient, each anywhere in its spread.
+        least = ref.voltage.low + np.where(warm, ref.tc.low, ref.tc.high) * rise
+        most = ref.voltage.high + np.where(warm, ref.tc.high, ref.tc.low) * rise
+        volts = least + (most - least) * u["delta_ref"]
+        found["delta_ref"] = volts - (ref.voltage.nominal + ref.tc.nominal * rise)
+        found["vref"] = volts - ref.current * found["r_ref"]
     for role, part in box.parts.items():
         least = -part.band + np.where(warm, part.tcr_low, part.tcr_high) * rise
         most = part.band + np.where(warm, part.tcr_high, part.tcr_low) * rise
         found[role] = part.nominal * (1.0 + least + (most - least) * u[role])
     return found
+
+
+def circuit(box: Box, values: Mapping[str, Numbers]) -> dict[str, Numbers]:
+    """Parameters of a box as the node equations take them: a reference element by its voltage without current."""
+    if box.reference is None:
+        return dict(values)
+    ref = box.reference
+    volts = ref.voltage.nominal + ref.tc.nominal * (values["temperature"] - ROOM) + values["delta_ref"]
+    return {**values, "vref": volts - ref.current * values["r_ref"]}
 
 
 def _device(device: Transistor, p: Mapping[str, Numbers]) -> tuple[Numbers, Numbers, Numbers, Numbers]:
@@ -82,13 +104,16 @@ def _device(device: Transistor, p: Mapping[str, Numbers]) -> tuple[Numbers, Numb
 
 
 def _feed(network: str, p: Mapping[str, Numbers]) -> tuple[Numbers, Numbers, Numbers, bool]:
-    """Source, conductance from it to the base, conductance from the base to 0 V, and whether the source is the collector.
+    """Source, conductance from it to the base, conductance of the lower leg, and whether the source is the collector.
+
+    The lower leg goes to 0 V, or to the source of a reference element.
 
     Voltages count from the far end of re: 0 V, or the negative rail of a stage with two supplies.
     """
     none = np.zeros(())
-    if network in ("divider", "follower"):
-        return p["vcc"], 1.0 / p["r1"], 1.0 / p["r2"] if "r2" in p else none, False
+    if network in ("divider", "follower", "diode_divider", "sink"):
+        lower = p.get("r2", 0.0) + p.get("r_ref", 0.0)
+        return p["vcc"], 1.0 / p["r1"], 1.0 / lower if np.any(lower) else none, False
     if network == "fixed_base":
         return p.get("vbb", p["vcc"]), 1.0 / p["rb"], none, False
     if network == "two_supply":
@@ -103,12 +128,17 @@ def _report(network: str, p: Mapping[str, Numbers], ic: Numbers, ib: Numbers, vb
     """Every quantity, by Ohm's law from the transistor's currents and the base voltage."""
     source, g1, g2, from_collector = _feed(network, p)
     ve = p.get("re", 0.0) * (ic + ib)
-    feed = ib + vb * g2
-    vc = p["vcc"] + p.get("vee", 0.0) - p.get("rc", 0.0) * (ic + feed if from_collector else ic)
+    feed = ib + (vb - p.get("vref", 0.0)) * g2
+    vc = p.get("vload", p["vcc"]) + p.get("vee", 0.0) - p.get("rc", 0.0) * (ic + feed if from_collector else ic)
     found = {"ic": ic, "ib": ib, "vbe": vb - ve, "vce": vc - ve}
     found["i_r1" if "r1" in p else "i_rb"] = ((vc if from_collector else source) - vb) * g1
     if "r2" in p:
-        found["i_r2"] = vb * g2
+        found["i_r2"] = (vb - p.get("vref", 0.0)) * g2
+    if "vref" in p:
+        found["i_ref"] = (vb - p["vref"]) * g2
+    found["ve"] = ve + 0.0 * ic
+    # Of two supplies the collector counts from their common point.
+    found["vc"] = vc - p.get("vee", 0.0)
     return found
 
 
@@ -127,7 +157,8 @@ def active(network: str, device: Transistor, p: Mapping[str, Numbers]) -> dict[s
     g = g1 + g2
     offset = leak * (1.0 + 1.0 / h)
     # Residual = drive − g·(VBE − vbe0) − load·IC.
-    drive = source * g1 - g * (vbe0 - re * offset) + offset
+    below = p.get("vref", 0.0) * g2
+    drive = source * g1 + below - g * (vbe0 - re * offset) + offset
     load = g * re * (1.0 + 1.0 / h) + 1.0 / h + (p["rc"] * g1 if from_collector else 0.0)
     if device.vbe_model == "fixed":
         ic = np.where(np.real(drive) > 0.0, drive / load, 0.0 * drive)
@@ -147,7 +178,7 @@ def active(network: str, device: Transistor, p: Mapping[str, Numbers]) -> dict[s
         ic = ic0 * np.exp(y)
     ib = ic / h - offset
     # The feed alone sets the base: under a fixed drop that blocks, VBE is what is left over.
-    vb = (source * g1 - ib - (p["rc"] * g1 * ic if from_collector else 0.0)) / g
+    vb = (source * g1 + below - ib - (p["rc"] * g1 * ic if from_collector else 0.0)) / g
     return _report(network, p, ic, ib, vb)
 
 
@@ -167,7 +198,7 @@ def saturated(network: str, device: Transistor, p: Mapping[str, Numbers]) -> dic
 
     def state(ic: Numbers) -> tuple[Numbers, Numbers, Numbers]:
         vb = top - rc * ic + vbe0 + log_slope * np.log(ic / device.vbe_ic)
-        ib = (source - vb) * g1 - vb * g2
+        ib = (source - vb) * g1 - (vb - p.get("vref", 0.0)) * g2
         return top - rc * ic - re * (ic + ib), vb, ib
 
     def slope(ic: Numbers) -> Numbers:
@@ -205,13 +236,14 @@ def total(names: Sequence[str], found: Mapping[str, Numbers]) -> Numbers:
 
 def grain(names: Sequence[str], p: Mapping[str, Numbers]) -> Numbers:
     """Rounding of a sum of quantities: some ulps of the rail or the feed current that it is the difference of."""
-    rail = p["vcc"] + p.get("vee", 0.0) + p.get("vbb", 0.0)
+    rail = p["vcc"] + p.get("vee", 0.0) + p.get("vbb", 0.0) + p.get("vload", 0.0) + np.abs(p.get("vref", 0.0))
     size: Numbers = np.zeros(())
     for name in names:
-        if name == "vce":
+        if name in ("vce", "vc", "ve"):
             size = size + rail
         elif name != "ic":
             size = size + rail / p.get("r1", p.get("rb", 1.0)) + (rail / p["r2"] if "r2" in p else 0.0)
+            size = size + (rail / p["r_ref"] if "r_ref" in p and "r2" not in p else 0.0)
     return np.asarray(1e-14 * size)
 
 
@@ -364,12 +396,15 @@ def random_box(rng: np.random.Generator, size: int, *, network: str | None = Non
         rails["vbb"] = random_spread(rng, 10.0 ** rng.uniform(0.3, 1.5), (0.0, 0.02, 0.1))
     if name == "two_supply":
         rails["vee"] = random_spread(rng, 10.0 ** rng.uniform(0.5, 1.3), (0.0, 0.02, 0.1, 0.3))
+    if name == "sink" and rng.random() < 0.6:
+        rails["vload"] = random_spread(rng, 10.0 ** rng.uniform(0.6, 1.6), (0.0, 0.05, 0.3))
     rails = fixed.get("rails", rails)
     vcc = rails["vcc"].nominal
     vbb = rails.get("vbb", rails["vcc"]).nominal
     cold, hot = AMBIENTS[rng.integers(len(AMBIENTS))]
     ambient = Spread(cold + 273.15, min(max(298.15, cold + 273.15), hot + 273.15), hot + 273.15)
 
+    reference = None
     h = device.hfe.nominal
     ic = 10.0 ** rng.uniform(-4.5, -1.7, size)
     ve = vcc * rng.uniform(0.03, 0.35, size)
@@ -378,7 +413,7 @@ def random_box(rng: np.random.Generator, size: int, *, network: str | None = Non
     vb = np.minimum(ve + vbe, 0.9 * vcc)
     bleed = ic / h * 10.0 ** rng.uniform(0.0, 1.7, size)
     r: dict[str, Numbers] = {"rc": (vcc - ve - vce) / ic, "re": ve / (ic * (1.0 + 1.0 / h))}
-    if name not in ("divider", "two_supply", "follower") and rng.random() < 0.4:
+    if name not in ("divider", "diode_divider", "two_supply", "follower", "sink") and rng.random() < 0.4:
         del r["re"]
         ve, vb = 0.0 * ve, vbe
     if name == "follower":
@@ -388,7 +423,15 @@ def random_box(rng: np.random.Generator, size: int, *, network: str | None = Non
         if rng.random() < 0.4:
             r["r1"] = (vcc - vb) * h / ic
             del r["r2"]
-    elif name == "divider":
+    elif name == "diode_divider" or (name == "sink" and rng.random() < 0.6):
+        # The base stands a little to much above the reference, and r2 takes the difference.
+        reference = random_reference(rng, vb, bleed)
+        drop = np.maximum(vb - reference.voltage.nominal, 0.02 * vcc) if name == "diode_divider" else 0.2 * vb
+        r["r1"] = np.maximum(vcc - vb, 0.1 * vcc) / (bleed + ic / h)
+        if name == "diode_divider" or rng.random() < 0.5:
+            r["r2"] = drop / bleed
+        r["re"] = np.maximum(reference.voltage.nominal + drop - vbe, 0.03 * vcc) / ic
+    elif name in ("divider", "sink"):
         r["r1"], r["r2"] = (vcc - vb) / (bleed + ic / h), vb / bleed
     elif name == "fixed_base":
         r["rb"] = np.maximum(vbb - vb, 0.2 * vbb) * h / ic
@@ -419,13 +462,30 @@ def random_box(rng: np.random.Generator, size: int, *, network: str | None = Non
         rails=rails,
         temperature=fixed.get("temperature", ambient),
         parts=parts,
+        reference=reference,
+    )
+
+
+def random_reference(rng: np.random.Generator, vb: Numbers, current: Numbers) -> Reference:
+    """A reference element below some base voltages, with any coefficient and slope."""
+    volts = float(np.min(vb)) * rng.uniform(0.3, 0.9)
+    at = float(np.median(current))
+    tc = volts * rng.choice([-4e-3, -3e-4, 0.0, 8e-4])
+    stray = volts * rng.choice([0.0, 2e-4, 1e-3])
+    slope = volts / at * rng.uniform(0.005, 0.2)
+    return Reference(
+        kind="zener",
+        voltage=random_spread(rng, volts, (0.0, 0.02, 0.08)),
+        current=at,
+        tc=Spread(tc - stray, tc, tc + stray),
+        slope=random_spread(rng, slope, (0.0, 0.3, 0.9)),
     )
 
 
 def leaky_box(rng: np.random.Generator, size: int) -> Box:
     """A random box whose leakage, when hot, is a tenth to ten times the base current: IB turns round inside the box."""
     box = random_box(rng, size)
-    base = np.median(np.abs(active(box.network.name, box.transistor, box.nominal())["ib"]))
+    base = np.median(np.abs(active(box.network.name, box.transistor, circuit(box, box.nominal()))["ib"]))
     limit = float(base) * 2.0 ** ((ROOM - box.temperature.high) / 10.0) * 10.0 ** rng.uniform(-1.0, 1.0)
     icbo = (Spread(0.0, 0.0, limit), Spread(0.2 * limit, 0.5 * limit, limit), Spread.exact(limit))[rng.integers(3)]
     return replace(box, transistor=replace(box.transistor, icbo=icbo, icbo_hot=None))
@@ -458,7 +518,7 @@ def level_box(rng: np.random.Generator, size: int) -> Box:
 def edge_box(rng: np.random.Generator, size: int) -> Box:
     """A random box around stages that a little more drive saturates; never fed from the collector, which cannot."""
     box = random_box(rng, size, network=str(rng.choice(SATURATING)))
-    nominal = active(box.network.name, box.transistor, box.nominal())
+    nominal = active(box.network.name, box.transistor, circuit(box, box.nominal()))
     wanted = box.transistor.vce_sat + box.rails["vcc"].nominal * rng.uniform(0.0, 0.15, size)
     rc = box.parts["rc"]
     moved = rc.nominal + (nominal["vce"] - wanted) / np.maximum(nominal["ic"], 1e-9)
@@ -469,5 +529,7 @@ def edge_box(rng: np.random.Generator, size: int) -> Box:
 def quantities(box: Box) -> tuple[tuple[str, ...], ...]:
     """Every sum of quantities that the worst case is asked for: IC, VCE, currents of the base feed and of each rail."""
     currents = tuple((f"i_{role}",) for role in box.parts if role in ("r1", "r2", "rb"))
+    currents += (("i_ref",),) if box.reference is not None else ()
     rails = tuple(parts for parts in box.network.rail_parts(box.rails).values() if len(parts) > 1)
-    return (("ic",), ("vce",), *currents, *rails)
+    volts = (("vc",), *([("ve",)] if "re" in box.parts else []))
+    return (("ic",), ("vce",), *volts, *currents, *rails)

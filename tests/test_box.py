@@ -20,6 +20,7 @@ from stages import (
     Numbers,
     active,
     any_region,
+    circuit,
     edge_box,
     grain,
     law,
@@ -127,10 +128,13 @@ def test_points_of_the_box_follow_the_contract(number: int) -> None:
     wanted = point(box, u)
     low, high = box.temperature.low, box.temperature.high
     given = box.values({**u, "temperature": low + (high - low) * u["temperature"]})
+    if box.reference is not None:
+        given["vref"] = box.sources(given)["vref"]
     assert given.keys() == wanted.keys()
     for name, value in wanted.items():
         # δ = VBE − nominal is a difference of like numbers, so its last bits are those of VBE.
-        atol = 1e-15 if name == "delta" else 0.0
+        # So is the voltage of a reference without current.
+        atol = {"delta": 1e-15, "delta_ref": 1e-14, "vref": 1e-14}.get(name, 0.0)
         assert_allclose(np.broadcast_to(given[name], value.shape), value, rtol=1e-13, atol=atol, err_msg=name)
 
 
@@ -559,8 +563,9 @@ def test_deciding_point_gives_the_extreme_again(number: int) -> None:
             again = box.measure(names, worst.at, box.solve(worst.at, active_law=True))
             assert_allclose(again, worst.value, rtol=SAME, atol=0)
             # And it is a point of the box, by the laws written out in `stages`.
-            mine = total(names, active(box.network.name, box.transistor, worst.at))
-            assert np.all(np.abs(mine - worst.value) <= TRUE * np.abs(mine) + grain(names, worst.at))
+            at = circuit(box, worst.at)
+            mine = total(names, active(box.network.name, box.transistor, at))
+            assert np.all(np.abs(mine - worst.value) <= TRUE * np.abs(mine) + grain(names, at))
             assert_inside(box, worst)
 
 
@@ -569,7 +574,7 @@ def assert_inside(box: Box, worst: Extreme) -> None:
     slack = 1e-13
     assert np.all((t >= box.temperature.low * (1 - slack)) & (t <= box.temperature.high * (1 + slack)))
     for name, spread in box.spreads.items():
-        room = slack * max(abs(spread.low), abs(spread.high), 1.0 if name == "delta" else 0.0)
+        room = slack * max(abs(spread.low), abs(spread.high), 1.0 if name in ("delta", "delta_ref") else 0.0)
         assert np.all((worst.at[name] >= spread.low - room) & (worst.at[name] <= spread.high + room)), name
     for role, part in box.parts.items():
         rise = t - ROOM

@@ -761,6 +761,7 @@ def read_everything() -> None:
     catalogue.tolerance_codes()
     catalogue.tcr_codes()
     catalogue.resistor_styles()
+    catalogue.deratings()
     catalogue.transistors()
     catalogue.gain_bins()
     catalogue.hfe_points("2N3906")

@@ -550,12 +550,14 @@ def test_every_key_of_the_empty_stage_file_can_be_uncovered(run: Run, tmp_path: 
     """Each example that the file prints is one that the reader accepts, alone beside the needed keys."""
     (tmp_path / "drawer.csv").write_text("value\n1k\n1k8\n2k\n22k\n24k\n43k\n", encoding="utf-8")
     rails = ["--vee", "12 V", "--network", "divider", "--network", "fixed_base"]
-    fixed = {"target.ic", "target.vce", "supply.vcc", "transistor.hfe", "supply.vee", "network", "transistor.vbe"}
+    fixed = {"target.ic", "target.vce", "target.vc", "target.ve", "supply.vcc", "transistor.hfe", "supply.vee", "network", "transistor.vbe"}
     for path, key in KEYS.items():
         if path in fixed or key.table.startswith("resistors.") or key.leaf == "vbe_ic" or key.table == "values":
             continue
+        # A diode has a default for every other key.
+        rest = ["--reference-kind", "diode"] if key.table == "reference" and key.leaf != "kind" else []
         series = [] if key.leaf in ("stock", "series") else ["--series", "E3"]
-        ran = run("find", *TARGETS, "--hfe", "110:450", *rails, *series, "--top", "1", key.options[-1], key.example)
+        ran = run("find", *TARGETS, "--hfe", "110:450", *rails, *rest, *series, "--top", "1", key.options[-1], key.example)
         assert ran.code in (0, 1), (path, ran.err)
 
 

@@ -49,6 +49,8 @@ def windows(file: Path) -> dict[str, tuple[float, float]]:
         "cable_driver": {"ic": (2.4e-3, 3.6e-3), "vce": (3.825, 5.175)},
         "wave_staff_amplifier": {"ic": (0.8e-3, 1.2e-3), "vce": (0.9, float("inf"))},
         "pressure_line_stage": {"ic": (1.7e-3, 2.3e-3), "vce": (4.25, 5.75)},
+        "float_amplifier": {"ic": (1.6e-3, 2.4e-3), "vce": (3.5, 6.5)},
+        "mast_lamp": {"ic": (8.5e-3, 11.5e-3)},
         "conductivity_bridge": {"ic": (0.9e-3, 1.1e-3), "vce": (4.92, 7.08)},
     }
     return written[file.stem]
@@ -98,7 +100,7 @@ def test_nominal_point_of_example_obeys_kirchhoff(file: Path, capsys: pytest.Cap
     for candidate in answer["candidates"]:
         roles, nominal = candidate["roles"], candidate["nominal"]
         supply = answer["stage"]["supply"]
-        rails = supply["vcc"][1] + (supply["vee"][1] if "vee" in supply else 0.0)
+        rails = supply.get("vload", supply["vcc"])[1] + (supply["vee"][1] if "vee" in supply else 0.0)
         drops = sum(roles[role]["drop"] for role in ("rc", "re") if role in roles)
         # Rounding of a few additions of voltages below 30 V.
         assert_allclose(drops + nominal["vce"], rails, rtol=1e-12, atol=0)

@@ -7,12 +7,14 @@ A value for n-person games, 1953), each Q-point of it solved by nodal analysis a
 import itertools
 import re as regex
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 import pytest
 from enumeration import every_index, generator, q_point, random_spaces
 from numpy.testing import assert_allclose
 from numpy.typing import NDArray
+from stages import circuit
 
 import synth
 from synth.answer import Share
@@ -30,7 +32,8 @@ SUM = 1e-12
 SOLVER = 1e-9
 """A share is a difference of Q-points that Newton's method leaves within some ulps: nine digits of a share above 1e-5."""
 
-CAUSE = {"delta": "vbe", "hfe": "hfe", "icbo": "leakage", "temperature": "temperature"}
+CAUSE = {"delta": "vbe", "icbo": "leakage", "delta_ref": "reference", "r_ref": "reference_slope"}
+"""Parameters whose cause has another name."""
 
 every_network = pytest.mark.parametrize("network", NETWORKS)
 
@@ -56,7 +59,7 @@ def shapley(box: Box, at: Mapping[str, Array], quantity: str, direction: int, go
     points = {name: np.array([value] * len(mixtures)) for name, value in start.items()}
     for j, cause in enumerate(causes):
         points[cause] = np.array([end[cause] if mixture[j] else start[cause] for mixture in mixtures])
-    value = direction * q_point(box.network, box.transistor, points)[quantity] / goal
+    value = direction * q_point(box.network, box.transistor, circuit(box, points))[quantity] / goal
     reached = dict(zip(mixtures, value, strict=True))
     gains: dict[str, list[float]] = {cause: [] for cause in causes}
     for order in itertools.permutations(range(len(causes))):
@@ -72,12 +75,18 @@ def shapley(box: Box, at: Mapping[str, Array], quantity: str, direction: int, go
 def narrow(rng: np.random.Generator, box: Box, axes: int) -> Box:
     """The box with only a few axes that have a width, so that every order can be tried."""
     names = [*box.rails, "vbe", "hfe", "icbo", *box.parts, "temperature"]
+    # A reference element brings two causes at once.
     kept = set(rng.choice(names, axes, replace=False).tolist())
+    if box.reference is not None and axes > 2:
+        kept = {*list(kept)[: axes - 2], "r_ref"}
 
     def spread(name: str, s: Spread) -> Spread:
         return s if name in kept else Spread.exact(s.nominal)
 
-    device = box.transistor
+    device, reference = box.transistor, box.reference
+    if reference is not None:
+        spreads = {name: Spread.exact(getattr(reference, name).nominal) for name in ("voltage", "tc", "slope")}
+        reference = replace(reference, **({} if "r_ref" in kept else spreads))
     parts = {}
     for role, part in box.parts.items():
         still = np.zeros(box.size)
@@ -92,6 +101,7 @@ def narrow(rng: np.random.Generator, box: Box, axes: int) -> Box:
         rails={rail: spread(rail, s) for rail, s in box.rails.items()},
         temperature=spread("temperature", box.temperature),
         parts=parts,
+        reference=reference,
     )
 
 
@@ -307,6 +317,7 @@ def test_nominal_figures_obey_kirchhoff_and_ohm(network: str) -> None:
             known |= {node: sign * v for node, v in point.nodes.items()}
             known["vee"] = -known.get("vee", 0.0)
             known.setdefault("vbb", known["vcc"])
+            known.setdefault("m", 0.0)
             for role, duty in work.items():
                 one, two = (known[node] for node in box.network.role(role).nodes)
                 # Differences of node voltages of up to 24 V: an absolute 1e-12 V is some hundreds of ulps.

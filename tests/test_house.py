@@ -22,8 +22,11 @@ ROOMS = (
     "catalogue",
     "preferred",
     "transistor",
+    "stress",
+    "reference",
     "networks",
     "q_point",
+    "signal",
     "box",
     "limits",
     "stage",
@@ -38,7 +41,7 @@ ROOMS = (
     "cli",
 )
 # Further modules of a room at the top of the package.
-SHARED = {"stage_keys": "stage", "stage_resolve": "stage"}
+SHARED = {"stage_keys": "stage", "stage_file": "stage", "stage_resolve": "stage"}
 # The doors: they name what is inside, and every room may ask the first for the version.
 DOORS = ("__init__", "__main__")
 

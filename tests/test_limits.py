@@ -15,7 +15,7 @@ from numpy.testing import assert_allclose, assert_array_equal
 from stages import SOLVED, Numbers, active, point, random_box, samples, total, vertices
 
 from synth.box import Box, Parts, Values
-from synth.limits import RULES, Judgement, LimitRule, Requirement, applies, judge, requirements
+from synth.limits import RULES, Judgement, LimitRule, Requirement, Surroundings, applies, judge, requirements
 from synth.networks import NETWORKS
 from synth.quantities import Interval, Spread
 from synth.transistor import Transistor
@@ -53,7 +53,9 @@ def hand_box(network: str = "divider", rails: dict[str, float] | None = None, hf
 
 def asked(box: Box, name: str, interval: Interval, given: bool = True) -> Requirement:
     """The requirement of one limit, as `requirements` builds it."""
-    found = requirements(box.network, box.rails, box.parts, {name: interval}, {name} if given else set(), {}, 0.2)
+    found = requirements(box.network, Surroundings(rails=box.rails, roles=box.parts, reference=box.reference,
+                                                   vce_sat=box.transistor.vce_sat),
+                         {name: interval}, {name} if given else set(), {})
     return next(r for r in found if r.name == name)
 
 
@@ -147,34 +149,59 @@ ALWAYS = ("base_resistance", "supply_current", "vce")
 @pytest.mark.parametrize("name", ALWAYS)
 def test_limits_that_apply_to_every_network(network: str, name: str) -> None:
     form = NETWORKS[network]
-    assert applies(RULES[name], form, form.rails, form.role_names, False)
+    # Unasked, the base feed of a network without a signal at the base may be as stiff as it likes.
+    quiet = name == "base_resistance" and not form.takes_signal
+    assert applies(RULES[name], form, Surroundings(rails=form.rails, roles=form.role_names), False) is not quiet
+    assert applies(RULES[name], form, Surroundings(rails=form.rails, roles=form.role_names), True)
+
+
+@pytest.mark.parametrize("network", NETWORKS)
+def test_compliance_is_for_sinks_alone(network: str) -> None:
+    form = NETWORKS[network]
+    around = Surroundings(rails=form.rails, roles=form.role_names)
+    assert applies(RULES["compliance"], form, around, True) is (network == "sink")
+
+
+def test_compliance_by_hand() -> None:
+    # 24 V for the load less 2.2 kohm times 2 mA of emitter current (4.4 V, hFE without end) less 0.2 V of saturation.
+    device = Transistor(hfe=Spread.exact(1e9), vbe=Spread.exact(0.6), vbe_ic=2e-3, vbe_model="fixed", vce_sat=0.2)
+    part = {name: Parts(nominal=np.array([ohm]), band=np.zeros(1), tcr_low=np.zeros(1), tcr_high=np.zeros(1))
+            for name, ohm in (("r1", 7e3), ("r2", 5e3), ("re", 2.2e3))}
+    box = Box(network=NETWORKS["sink"], transistor=device, rails={"vcc": Spread.exact(12.0), "vload": Spread.exact(24.0)},
+              temperature=Spread.exact(298.15), parts=part)
+    for limit, passes in ((19.3, True), (19.5, False)):
+        found = judged(box, asked(box, "compliance", Interval(limit, np.inf)))
+        # Base 5 V, so re takes 4.4 V. hFE of 1e9 leaves 1e-9 of base current.
+        assert_allclose(found.worst, 24.0 - 4.4 - 0.2, rtol=1e-8, atol=0)
+        assert_allclose(found.margin, (19.4 - limit) / limit, rtol=1e-6, atol=0)
+        assert bool(found.passed[0]) is passes
 
 
 @pytest.mark.parametrize(
     ("network", "applicable"),
-    [("divider", True), ("collector_divider", True), ("follower", True), ("fixed_base", False), ("collector_feedback", False),
-     ("two_supply", False)],
+    [("divider", True), ("collector_divider", True), ("follower", True), ("diode_divider", True), ("sink", True),
+     ("fixed_base", False), ("collector_feedback", False), ("two_supply", False)],
 )
 def test_bleeder_needs_a_lower_divider_resistor(network: str, applicable: bool) -> None:
     form = NETWORKS[network]
-    assert applies(RULES["bleeder_current"], form, form.rails, form.role_names, True) is applicable
+    assert applies(RULES["bleeder_current"], form, Surroundings(rails=form.rails, roles=form.role_names), True) is applicable
     without = [role for role in form.role_names if role != "r2"]
-    assert not applies(RULES["bleeder_current"], form, form.rails, without, True)
+    assert not applies(RULES["bleeder_current"], form, Surroundings(rails=form.rails, roles=without), True)
 
 
 @pytest.mark.parametrize("network", [name for name in NETWORKS if {"rc", "re"} <= set(NETWORKS[name].role_names)])
 def test_default_collector_share_binds_only_where_rc_and_re_share_their_rails(network: str) -> None:
     # Section 5: default 0.5 where rc and re hang between the same two rails, else 0. With two supplies re hangs from VEE.
     form = NETWORKS[network]
-    assert applies(RULES["collector_share"], form, form.rails, form.role_names, False) is (network != "two_supply")
-    assert applies(RULES["collector_share"], form, form.rails, form.role_names, True)
+    assert applies(RULES["collector_share"], form, Surroundings(rails=form.rails, roles=form.role_names), False) is (network != "two_supply")
+    assert applies(RULES["collector_share"], form, Surroundings(rails=form.rails, roles=form.role_names), True)
 
 
 @pytest.mark.parametrize(("network", "absent"), [("fixed_base", "re"), ("collector_feedback", "re"), ("collector_divider", "re"), ("follower", "rc")])
 def test_collector_share_needs_both_resistors(network: str, absent: str) -> None:
     form = NETWORKS[network]
     roles = [role for role in form.role_names if role != absent]
-    assert not applies(RULES["collector_share"], form, form.rails, roles, True)
+    assert not applies(RULES["collector_share"], form, Surroundings(rails=form.rails, roles=roles), True)
 
 
 # What a candidate has to satisfy
@@ -185,7 +212,7 @@ def required(network: str = "divider", limits: dict[str, Interval] | None = None
              without: Sequence[str] = ()) -> dict[str, Requirement]:
     form = NETWORKS[network]
     roles = [role for role in form.role_names if role not in without]
-    found = requirements(form, form.rails, roles, limits or {}, given, windows or {}, vce_sat)
+    found = requirements(form, Surroundings(rails=form.rails, roles=roles, vce_sat=vce_sat), limits or {}, given, windows or {})
     assert len({r.name for r in found}) == len(found)
     return {r.name: r for r in found}
 
@@ -349,6 +376,8 @@ def test_supply_current_is_never_less_than_brute_force(network: str) -> None:
             drawn = [total(("ic", f"i_{'rb' if 'rb' in box.parts else 'r1'}"), q)]
             if network == "collector_feedback":
                 drawn = [total(("ic", "ib"), q)]
+            elif "vload" in box.rails:
+                drawn = [q["ic"], q["i_r1"]]
             elif network == "two_supply" or "vbb" in box.rails:
                 drawn = [q["ic"], total(("ic", "ib"), q) if network == "two_supply" else q["ib"]]
             most = np.max([x.max(axis=0) for x in drawn], axis=0)

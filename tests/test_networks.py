@@ -48,7 +48,8 @@ def draw(rails: tuple[str, ...], roles: tuple[str, ...], n: int, seed: int, low:
     """Random stages over the default range of resistances."""
     rng = np.random.default_rng(seed)
     return {
-        **{rail: rng.uniform(2.0, 40.0, n) for rail in rails},
+        **{rail: rng.uniform(2.0, 40.0, n) for rail in rails if rail not in nodal.REFERENCE},
+        **({"vref": rng.uniform(0.2, 12.0, n), "r_ref": log_uniform(rng, 1.0, 1e4, n)} if "vref" in rails else {}),
         **{role: log_uniform(rng, low, high, n) for role in roles},
         "delta": rng.uniform(-0.1, 0.1, n),
         "hfe": log_uniform(rng, 10.0, 1000.0, n),
@@ -59,6 +60,11 @@ def draw(rails: tuple[str, ...], roles: tuple[str, ...], n: int, seed: int, low:
 
 def parts(point: Point, rails: tuple[str, ...], roles: tuple[str, ...]) -> tuple[Point, Point]:
     return {rail: point[rail] for rail in rails}, {role: point[role] for role in roles}
+
+
+def sum_of_sources(volts: Point) -> Array:
+    """Sum of every voltage that drives a network."""
+    return np.asarray(sum(v for name, v in volts.items() if name != "r_ref"))
 
 
 def q_point(
@@ -78,14 +84,15 @@ def test_description_is_complete(network: Network) -> None:
     assert network.title
     assert network.summary.endswith(".")
     names = {*network.role_names, *network.rails, *network.optional_rails}
-    nodes = {"0", "b", "c", "e", *network.rails, *network.optional_rails}
+    nodes = {"0", "b", "c", "e", *(["m"] if network.reference != "no" else []), *network.rails, *network.optional_rails}
     for role in network.roles:
         assert role.meaning
         assert network.role(role.name) is role
         assert set(role.nodes) <= nodes
-    assert set(network.signs) <= {"ic", "vce", *(f"i_{role}" for role in network.role_names)}
+    known = {"ic", "vce", "vc", "ve", *(f"i_{role}" for role in network.role_names)}
+    assert set(network.signs) <= known | ({"i_ref"} if network.reference != "no" else set())
     for signs in network.signs.values():
-        assert set(signs) <= names | set(DEVICE)
+        assert set(signs) <= names | set(DEVICE) | ({"delta_ref"} if network.reference != "no" else set())
         assert set(signs.values()) <= {-1, 0, 1, None}
     assert set(network.draws) == {*network.rails, *network.optional_rails}
     assert {*network.base_side, *([network.bleeder] if network.bleeder else [])} <= set(network.role_names)
@@ -117,11 +124,11 @@ def test_two_port_is_what_open_circuit_measurements_give(name: str, rails: tuple
     port = network.two_port(volts, r, point["temperature"])
     # Transistor removed: the open-circuit voltages. Rails at 0 V and 1 mA through one port: the resistances.
     e_b, e_c = nodal.Circuit(network, volts, r).open(0.0, 0.0)
-    quiet = nodal.Circuit(network, {rail: 0.0 * v for rail, v in volts.items()}, r)
+    quiet = nodal.Circuit(network, {rail: v if rail == "r_ref" else 0.0 * v for rail, v in volts.items()}, r)
     base, collector = quiet.open(1e-3, 0.0), quiet.open(0.0, 1e-3)
     measured = (e_b, -base[0] / 1e-3, -collector[0] / 1e-3, e_c, -base[1] / 1e-3, -collector[1] / 1e-3)
     # Port voltages are differences of node voltages: their error scales with the largest resistance and rail.
-    volt_scale, ohm_scale = sum(volts.values()), np.abs(measured[1]) + np.abs(measured[5])
+    volt_scale, ohm_scale = sum_of_sources(volts), np.abs(measured[1]) + np.abs(measured[5])
     for field, value, scale in zip(port._fields, measured, (volt_scale, *[ohm_scale] * 2) * 2, strict=True):
         assert np.all(np.abs(getattr(port, field) - value) <= 1e-9 * scale), field
 
@@ -162,16 +169,18 @@ def test_branches_obey_kirchhoff_at_every_node(name: str, rails: tuple[str, ...]
     known = ~np.isnan(q.ic)
     assert known.sum() > n // 3
     branches = network.branches(volts, r, q)
-    assert set(branches.voltage) == set(branches.current) == set(roles)
-    assert set(branches.rail) == set(rails)
+    elements = {*roles, *(["ref"] if "vref" in rails else [])}
+    assert set(branches.voltage) == set(branches.current) == elements
+    assert set(branches.rail) == set(rails) - set(nodal.REFERENCE)
     circuit = nodal.Circuit(network, volts, r)
     ground = np.zeros(n)
     level = {"0": ground, **branches.nodes}
     for rail, own in nodal.given_rails(network, volts).items():
         level[rail] = -volts[own] if own in nodal.BELOW_GROUND else volts[own]
-    assert set(branches.nodes) == {"b", "c", "e"}
+    assert set(branches.nodes) == {"b", "c", "e", *(["m"] if "vref" in rails else [])}
+    level.setdefault("m", ground)
     # VBE and VCE are differences of the node voltages.
-    span = sum(volts.values())
+    span = sum_of_sources(volts)
     highest = np.max([np.abs(v) for v in branches.nodes.values()], axis=0) + span
     assert np.all(np.abs(level["b"] - level["e"] - q.vbe)[known] <= 1e-14 * highest[known])
     assert np.all(np.abs(level["c"] - level["e"] - q.vce)[known] <= 1e-14 * highest[known])
@@ -190,6 +199,12 @@ def test_branches_obey_kirchhoff_at_every_node(name: str, rails: tuple[str, ...]
         scale[key] = scale.get(key, ground) + size
 
     largest = np.abs(q.ib) + np.abs(q.ic) + highest * sum(1.0 / ohms for ohms in r.values())
+    if "vref" in rails:
+        current, size = branches.current["ref"], largest + highest / volts["r_ref"]
+        allowed = 1e-14 * (highest + volts["r_ref"] * largest)
+        line = volts["vref"] + volts["r_ref"] * current
+        assert np.all(np.abs(branches.voltage["ref"] - line)[known] <= allowed[known])
+        flow("m", current, size)
     for role in network.roles:
         if role.name in roles:
             one, two = role.nodes
@@ -216,7 +231,7 @@ def test_rail_currents_are_the_sums_that_the_network_names(name: str, rails: tup
     q = q_point(solve, network, device("junction"), point, rails, roles)
     branches = network.branches(*parts(point, rails, roles), q)
     owned = network.rail_parts(rails)
-    assert set(owned) == set(rails)
+    assert set(owned) == set(rails) - set(nodal.REFERENCE)
     known = ~np.isnan(q.ic)
     for rail, names in owned.items():
         flows = [getattr(q, part) if part in ("ic", "ib") else branches.current[part[2:]] for part in names]
@@ -238,6 +253,11 @@ def test_rails_deliver_what_resistors_and_transistor_take(
     delivered = sum(volts[rail] * current for rail, current in branches.rail.items())
     resistors = [branches.voltage[role] * branches.current[role] for role in roles]
     taken = sum(resistors) + q.vce * q.ic + q.vbe * q.ib
+    if "vref" in rails:
+        # A reference that is fed backwards delivers: only one that conducts takes its share.
+        conducts = branches.current["ref"] > 0.0
+        taken = np.where(conducts, taken + branches.voltage["ref"] * branches.current["ref"], np.nan)
+        delivered = np.where(conducts, delivered, np.nan)
     for region in np.unique(q.region):
         judged = (q.region == region) & ~np.isnan(q.ic)
         # Every term is known to a few roundings; so is their sum, since only VBE*IB can be negative and it is small.
@@ -250,22 +270,34 @@ def test_rails_deliver_what_resistors_and_transistor_take(
 
 
 def premise(q: QPoint, point: Point) -> NDArray[np.bool_]:
-    """Where the signs are claimed: current into the base, IC above ICBO, VBE above 0."""
-    return (q.ib > 0.0) & (q.ic > point["icbo"]) & (q.vbe > 0.0)
+    """Where the signs are claimed: current into the base, IC above ICBO, VBE above 0, a reference that conducts."""
+    return (q.ib > 0.0) & (q.ic > point["icbo"]) & (q.vbe > 0.0) & (point.get("i_ref", np.ones(1)) > 0.0)
 
 
 def quantities(network: Network, roles: tuple[str, ...], volts: Point, r: Point, q: QPoint) -> Point:
-    current = network.branches(volts, r, q).current
-    return {"ic": q.ic, "ib": q.ib, "vce": q.vce, **{f"i_{role}": np.asarray(current[role]) for role in roles}}
+    branches = network.branches(volts, r, q)
+    found = {"ic": q.ic, "ib": q.ib, "vce": q.vce, "vc": np.asarray(branches.nodes["c"])}
+    found |= {"ve": np.asarray(branches.voltage["re"])} if "re" in roles else {}
+    return found | {f"i_{name}": np.asarray(current) for name, current in branches.current.items()}
 
 
 def noise(network: Network, roles: tuple[str, ...], volts: Point, r: Point, q: QPoint, point: Point) -> Point:
     """What rounding may move each quantity by: the terms that it is a difference of, times 1e-12."""
-    span = sum(volts.values()) + np.abs(q.vbe)
+    span = sum_of_sources(volts) + np.abs(q.vbe)
     nodes = network.branches(volts, r, q).nodes
     level = span + sum(np.abs(v) for v in nodes.values()) + point["icbo"] * sum(r.values())
     roles_noise = {f"i_{role}": 1e-12 * level / r[role] for role in roles}
-    return {"ic": 1e-12 * q.ic, "ib": 1e-12 * (q.ic / point["hfe"] + point["icbo"]), "vce": 1e-12 * level, **roles_noise}
+    if "vref" in volts:
+        lower = sum((r[role] for role in ("r2",) if role in r), volts["r_ref"])
+        roles_noise["i_ref"] = 1e-12 * (level / lower + level / r["r1"])
+        roles_noise |= {"i_r2": roles_noise["i_ref"]} if "r2" in roles else {}
+    volts_noise = dict.fromkeys(("vce", "vc", "ve"), 1e-12 * level)
+    return {"ic": 1e-12 * q.ic, "ib": 1e-12 * (q.ic / point["hfe"] + point["icbo"]), **volts_noise, **roles_noise}
+
+
+def parameters(rails: tuple[str, ...], roles: tuple[str, ...]) -> dict[str, str]:
+    """Name of every parameter in a table of signs, and in a point: the voltage of a reference moves as its deviation does."""
+    return {"delta_ref" if name == "vref" else name: name for name in (*rails, *roles, *DEVICE)}
 
 
 SIGNS = [
@@ -282,7 +314,11 @@ def test_proved_signs_hold_at_ten_thousand_points(
     network, transistor, n = NETWORKS[name], device(model), 10_000
     points = draw(rails, roles, 40_000, seed=36)
     q = q_point(solve_active, network, transistor, points, rails, roles)
-    meets = np.flatnonzero(premise(q, points))[:n]
+
+    def with_reference(p: Point, q: QPoint) -> Point:
+        return {**p, "i_ref": quantities(network, roles, *parts(p, rails, roles), q).get("i_ref", np.ones(1))}
+
+    meets = np.flatnonzero(premise(q, with_reference(points, q)))[:n]
     assert meets.size > n // 4
     point = {key: value[meets] for key, value in points.items()}
 
@@ -292,8 +328,8 @@ def test_proved_signs_hold_at_ten_thousand_points(
         return quantities(network, roles, volts, r, q), noise(network, roles, volts, r, q, p), q
 
     here, rounding, _ = at(point)
-    for parameter in (*rails, *roles, *DEVICE):
-        claims = {name: network.sign(name, parameter) for name in here}
+    for name_in_table, parameter in parameters(rails, roles).items():
+        claims = {name: network.sign(name, name_in_table) for name in here}
         if all(sign is None for sign in claims.values()):
             continue
         # A monotone quantity keeps its sign over a finite step: 0.1 % of the parameter, 1 mV of delta, and at least
@@ -301,7 +337,7 @@ def test_proved_signs_hold_at_ten_thousand_points(
         step = {"delta": 1e-3, "icbo": 1e-3 * point["icbo"] + 1e-10}.get(parameter, 1e-3 * point[parameter])
         moved = {**point, parameter: point[parameter] + step}
         there, rounding_there, q = at(moved)
-        meets_there = premise(q, moved)
+        meets_there = premise(q, with_reference(moved, q))
         for quantity, sign in claims.items():
             if sign is None:
                 continue
@@ -323,14 +359,14 @@ def test_no_proved_sign_is_idle(network: Network) -> None:
         volts, r = parts(point, rails, roles)
         q = q_point(solve_active, network, device("junction"), point, rails, roles)
         here, small = quantities(network, roles, volts, r, q), noise(network, roles, volts, r, q, point)
-        for parameter in (*rails, *roles, *DEVICE):
+        for name_in_table, parameter in parameters(rails, roles).items():
             step = {"delta": 1e-3, "icbo": 1e-7}.get(parameter, 1e-3 * point[parameter])
             p = {**point, parameter: point[parameter] + step}
             q = q_point(solve_active, network, device("junction"), p, rails, roles)
             there = quantities(network, roles, *parts(p, rails, roles), q)
             for quantity in here:
                 if np.sum(np.abs(there[quantity] - here[quantity]) > 100.0 * small[quantity]) > 20:
-                    moved.add((quantity, parameter))
+                    moved.add((quantity, name_in_table))
     claimed = {(a, b) for a, signs in network.signs.items() for b, sign in signs.items() if sign}
     assert claimed <= moved
 

@@ -282,7 +282,9 @@ NODAL = [
 def test_solution_equals_general_nodal_analysis(name: str, rails: tuple[str, ...], roles: tuple[str, ...], model: str) -> None:
     n, network, q = 400, NETWORKS[name], device(model)
     rng = np.random.default_rng(13)
-    volts = {rail: rng.uniform(3.0, 30.0, n) for rail in rails}
+    volts = {rail: rng.uniform(3.0, 30.0, n) for rail in rails if rail not in nodal.REFERENCE}
+    if "vref" in rails:
+        volts |= {"vref": rng.uniform(0.3, 4.0, n), "r_ref": log_uniform(rng, 1.0, 1e3, n)}
     r = {role: log_uniform(rng, 100.0, 1e6, n) for role in roles}
     h, i0 = log_uniform(rng, 20.0, 900.0, n), np.where(rng.random(n) < 0.3, 0.0, log_uniform(rng, 1e-12, 1e-6, n))
     delta, t = rng.uniform(-0.1, 0.1, n), rng.uniform(218.15, 423.15, n)

@@ -22,7 +22,8 @@ from synth.limits import RULES
 from synth.networks import NETWORKS
 from synth.quantities import Interval, QuantityError, RestpointError, Spread, Target
 from synth.stage import Stage, StageError, template
-from synth.stage_keys import KEYS, NAMES, ROLES, TABLES, read_toml
+from synth.stage_file import read_toml
+from synth.stage_keys import KEYS, NAMES, ROLES, TABLES
 
 BASIC = {"supply": "12 V ± 5 %", "ic": "2 mA ± 15 %", "vce": "5 V", "hfe": "110 : 450", "tolerance": "1 %"}
 EXACT = 4e-16
@@ -532,8 +533,10 @@ def test_role_may_have_a_series_where_the_others_have_stock(tmp_path):
 
 
 def test_any_network_takes_those_whose_rails_are_given():
-    assert set(stage(network="any").networks) == set(NETWORKS) - {"two_supply"}
-    assert set(stage(network="any", vee="12 V").networks) == set(NETWORKS)
+    # Nor does a request with a VCE go to a sink, or one without a reference element to compensating junctions.
+    assert set(stage(network="any").networks) == set(NETWORKS) - {"two_supply", "sink", "diode_divider"}
+    assert set(stage(network="any", vee="12 V").networks) == set(NETWORKS) - {"sink", "diode_divider"}
+    assert set(stage(network="any", reference_kind="diode").networks) == set(NETWORKS) - {"sink", "two_supply"}
 
 
 def test_network_without_its_rail_is_refused():

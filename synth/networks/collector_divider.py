@@ -7,7 +7,8 @@ VCE = VBE·(1 + r1/r2) + r1·IB + (r1/r2)·re·IE rises with IC while r1, r2, re
 collector node rises at fixed currents and both currents fall, so VCE rises. With r2 the loop
 rc·(I1 + IC) + VCE + re·IE = VCC gives dVCE/dIC = [rc·VT/IC − r1·(rc + re + re/h)]/(rc + r1), negative while r1·IC ≥ VT.
 The loop rc·(I1 + IC) + r1·I1 + VB = VCC with I1 = IB + VB/r2 gives the currents: with r2 both IC and VB rise, so I1 and
-I2 = I1 − IB fall; with re or VBE both IC and IB fall, so VB has to rise.
+I2 = I1 − IB fall; with re or VBE both IC and IB fall, so VB has to rise, and VE with it.
+VC = VCC − rc·(I1 + IC) = VB + r1·I1.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -48,6 +49,8 @@ NETWORK = Network(
     signs={
         "ic": {"vcc": 1, "r1": -1, "r2": 1, "rc": -1, "re": -1, "delta": -1, "hfe": 1, "icbo": 1},
         "vce": {"vcc": 1, "r1": 1, "rc": -1, "delta": 1},
+        "vc": {"vcc": 1, "r1": 1, "rc": -1},
+        "ve": {"vcc": 1, "r1": -1, "r2": 1, "rc": -1, "re": 1, "delta": -1},
         "i_r1": {"vcc": 1, "r1": -1, "r2": -1, "rc": -1},
         "i_r2": {"vcc": 1, "r1": -1, "r2": -1, "rc": -1, "re": 1, "delta": 1},
     },

@@ -5,6 +5,7 @@ The current of rc is IE = IC + IB, and VCE = VBE + rb·IB: the transistor cannot
 Signs. At fixed IC and IB the base-loop residual VCC − rb·IB − (rc+re)·IE − VBE falls with rb (−IB), rc and re (−IE).
 VCE = VBE + rb·IB rises with IC while rb stays, so it rises with VCC and falls with rc and re; VCE = VCC − (rc+re)·IE rises
 with rb and with VBE, which lower IC and IB.
+VC = VCC − rc·IE = re·IE + VBE + rb·IB; the drop VE = VCC − rc·IE − rb·IB − VBE of re rises with re, as IC and IB fall.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -42,6 +43,8 @@ NETWORK = Network(
     signs={
         "ic": {"vcc": 1, "rb": -1, "rc": -1, "re": -1, "delta": -1, "hfe": 1, "icbo": 1},
         "vce": {"vcc": 1, "rb": 1, "rc": -1, "re": -1, "delta": 1},
+        "vc": {"vcc": 1, "rb": 1, "rc": -1, "re": 1, "delta": 1},
+        "ve": {"vcc": 1, "rb": -1, "rc": -1, "re": 1, "delta": -1},
         "i_rb": {"vcc": 1, "rb": -1, "rc": -1, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
     },
     draws={"vcc": ("ic", "ib")},

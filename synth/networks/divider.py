@@ -6,7 +6,8 @@ Signs. At fixed IC the base-loop residual e_b − z_bb·IB − z_bc·IC − VBE 
 −r2²(VCC/r2 + IB)/(r1+r2)² in r1, r1(VCC − r1·IB)/(r1+r2)² in r2 (the bracket is (1 + r1/r2)·VB at the solution, and
 VB = VBE + re·IE is positive), −IE in re, and r2/(r1+r2) in VCC; it falls with IC. So IC falls with r1 and re and rises
 with r2 and VCC. VCE = VCC − rc·IC − re·IE falls with every increase of IC that leaves rc, re and VCC alone. The node
-voltage VB rises with VCC, r2 and re, falls with r1, and the currents of r1 and r2 follow from it.
+voltage VB rises with VCC, r2 and re, falls with r1, and the currents of r1 and r2 follow from it. VC = VCC − rc·IC, and
+the drop VE = VB − VBE of re rises with re, since VB rises and IC falls.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -43,6 +44,8 @@ NETWORK = Network(
     signs={
         "ic": {"vcc": 1, "r1": -1, "r2": 1, "rc": 0, "re": -1, "delta": -1, "hfe": 1, "icbo": 1},
         "vce": {"r1": 1, "r2": -1, "rc": -1, "delta": 1},
+        "vc": {"r1": 1, "r2": -1, "rc": -1, "re": 1, "delta": 1, "hfe": -1, "icbo": -1},
+        "ve": {"vcc": 1, "r1": -1, "r2": 1, "rc": 0, "re": 1, "delta": -1},
         "i_r1": {"vcc": 1, "r1": -1, "r2": -1, "rc": 0, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
         "i_r2": {"vcc": 1, "r1": -1, "r2": -1, "rc": 0, "re": 1, "delta": 1, "hfe": 1, "icbo": 1},
     },

@@ -3,7 +3,7 @@
 Without re, IB = (VBB − VBE)/rb is fixed and IC follows hFE from unit to unit.
 
 Signs. At fixed IC the base-loop residual VBB − (rb+re)·IB − re·IC − VBE falls with rb (−IB) and re (−IE) and rises with
-VBB. VCE = VCC − rc·IC − re·IE.
+VBB. VCE = VCC − rc·IC − re·IE, VC = VCC − rc·IC; the drop VE = VBB − rb·IB − VBE of re rises with re, as IC and IB fall.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -42,6 +42,8 @@ NETWORK = Network(
     signs={
         "ic": {"vcc": 1, "vbb": 1, "rb": -1, "rc": 0, "re": -1, "delta": -1, "hfe": 1, "icbo": 1},
         "vce": {"vbb": -1, "rb": 1, "rc": -1, "delta": 1},
+        "vc": {"vbb": -1, "rb": 1, "rc": -1, "re": 1, "delta": 1, "hfe": -1, "icbo": -1},
+        "ve": {"vcc": 1, "vbb": 1, "rb": -1, "rc": 0, "re": 1, "delta": -1},
         "i_rb": {"vcc": 1, "vbb": 1, "rb": -1, "rc": 0, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
     },
     draws={"vcc": ("ic",), "vbb": ("i_rb",)},

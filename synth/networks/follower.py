@@ -46,6 +46,7 @@ NETWORK = Network(
     signs={
         "ic": {"vcc": 1, "r1": -1, "r2": 1, "re": -1, "delta": -1, "hfe": 1, "icbo": 1},
         "vce": {"r1": 1, "r2": -1, "re": -1, "delta": 1},
+        "ve": {"vcc": 1, "r1": -1, "r2": 1, "re": 1, "delta": -1},
         "i_r1": {"vcc": 1, "r1": -1, "r2": -1, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
         "i_r2": {"vcc": 1, "r1": -1, "r2": -1, "re": 1, "delta": 1, "hfe": 1, "icbo": 1},
     },

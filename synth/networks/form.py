@@ -12,7 +12,11 @@ from numpy.typing import NDArray
 Array = NDArray[np.float64]
 Value = NDArray[np.float64] | float
 Rails = Mapping[str, Value]
-"""Rail voltages by name, magnitudes [V]; arrays broadcast with the resistances."""
+"""Rail voltages by name, magnitudes [V]; arrays broadcast with the resistances.
+
+Where a reference element stands in the circuit, it comes with them as the straight line ``vref`` + ``r_ref``·I: the voltage
+that the line meets at no current [V] and the slope resistance [ohm].
+"""
 Resistances = Mapping[str, Value]
 """Resistances by role [ohm]; an absent optional role has no key."""
 Sign = int | None
@@ -64,9 +68,10 @@ class Role:
     meaning : str
         What it does, in a few words.
     nodes : tuple of str
-        The two nodes it hangs between: rails by name, ``0`` for 0 V, ``b c e`` for the transistor.
-    optional : bool
-        Whether the network also works without it.
+        The two nodes it hangs between: rails by name, ``0`` for 0 V, ``b c e`` for the transistor, ``m`` for the upper end
+        of the reference element, which is ``0`` where there is none.
+    optional : bool or "reference"
+        Whether the network also works without it; "reference": only where a reference element is given.
     absent : {"short", "open"}
         What stands in the place of an absent optional resistor: its two nodes in one, or nothing.
     """
@@ -74,7 +79,7 @@ class Role:
     name: str
     meaning: str
     nodes: tuple[str, str]
-    optional: bool = False
+    optional: bool | Literal["reference"] = False
     absent: Literal["short", "open"] = "short"
 
 
@@ -101,8 +106,8 @@ class Network:
         ``branches(rails, r, q)``: a solved Q-point to `Branches`; holds in every region, since the network is linear.
     signs : mapping
         Proved signs of ``ic``, ``vce`` and of role currents ``i_<role>`` against each rail and role, and against
-        ``delta hfe icbo``, while current flows into the base (IB ≥ 0), IC exceeds ICBO and VBE is above 0. What is not
-        named is None.
+        ``delta hfe icbo``, and against ``delta_ref``, the voltage of the reference element, while current flows into the
+        base (IB ≥ 0), IC exceeds ICBO, VBE is above 0 and the reference conducts. What is not named is None.
     signs_while : mapping
         Signs proved under a condition: ``{(quantity, parameter): (sign, role)}`` holds while the resistance of that role
         times IC is at least VT.
@@ -117,6 +122,13 @@ class Network:
         Whether rc and re hang between the same two rails, so that they divide one supply voltage between them.
     base_side : tuple of str
         Roles whose parallel connection feeds the base.
+    reference : {"no", "optional", "needed"}
+        Whether a reference element can stand between the nodes ``m`` and ``0``; its current is ``i_ref``.
+    takes_signal : bool
+        Whether a signal enters at the base, which the base feed would load.
+    sinks : bool
+        Whether the collector feeds a load of somebody else's on its own rail: VCE is then the load's affair and the limit
+        ``compliance`` counts in its place.
     """
 
     name: str
@@ -134,6 +146,26 @@ class Network:
     tied: Mapping[str, str] = field(default_factory=dict)
     shared_rails: bool = True
     base_side: tuple[str, ...] = ()
+    reference: Literal["no", "optional", "needed"] = "no"
+    takes_signal: bool = True
+    sinks: bool = False
+
+    def optional(self, role: Role, has_reference: bool) -> bool:
+        """Whether the network works without a role.
+
+        Parameters
+        ----------
+        role : Role
+            One of its roles.
+        has_reference : bool
+            Whether a reference element is given.
+
+        Returns
+        -------
+        bool
+            True if the resistor may be absent.
+        """
+        return has_reference and self.reference != "no" if role.optional == "reference" else role.optional
 
     @property
     def role_names(self) -> tuple[str, ...]:
@@ -182,7 +214,7 @@ class Network:
         quantity : str
             ``ic``, ``ib``, ``vce`` or ``i_<role>``.
         parameter : str
-            A rail, a role, or ``delta hfe icbo``.
+            A rail, a role, or ``delta hfe icbo delta_ref r_ref``.
 
         Returns
         -------

@@ -1,7 +1,7 @@
 """Emitter bias from two supplies: base near 0 V through rb, emitter resistor to the negative rail.
 
 Signs. At fixed IC and IB the base-loop residual VEE − (rb+re)·IB − re·IC − VBE falls with rb (−IB) and re (−IE) and rises
-with VEE; VCC and rc do not enter. VCE = VCC + VBE + rb·IB − rc·IC.
+with VEE; VCC and rc do not enter. VCE = VCC + VBE + rb·IB − rc·IC, VC = VCC − rc·IC; the drop of re is VEE − rb·IB − VBE.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -38,6 +38,8 @@ NETWORK = Network(
     signs={
         "ic": {"vcc": 0, "vee": 1, "rb": -1, "rc": 0, "re": -1, "delta": -1, "hfe": 1, "icbo": 1},
         "vce": {"vcc": 1, "rb": 1, "rc": -1, "delta": 1},
+        "vc": {"vcc": 1, "vee": -1, "rb": 1, "rc": -1, "re": 1, "delta": 1, "hfe": -1, "icbo": -1},
+        "ve": {"vcc": 0, "vee": 1, "rb": -1, "rc": 0, "re": 1, "delta": -1},
         "i_rb": {"vcc": 0, "vee": 1, "rb": -1, "rc": 0, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
     },
     draws={"vcc": ("ic",), "vee": ("ic", "ib")},

@@ -241,7 +241,9 @@ def _first(answer: Answer, c: Candidate) -> str:
         title += f" ({', '.join(c.regions)} over the box)"
     target = answer.stage.get("target", {})
     rows = [["", "nominal", "over the box", "target", "drift"]]
-    for quantity, kind, drift in (("ic", "current", c.drift.ic), ("vce", "voltage", c.drift.vce)):
+    for quantity in c.worst:
+        kind = "current" if quantity == "ic" else "voltage"
+        drift = c.drift.of().get(quantity)
         aim = (target.get(quantity) or [None, None, None])[1]
         rows.append(
             [
@@ -259,7 +261,7 @@ def _first(answer: Answer, c: Candidate) -> str:
 def _causes(c: Candidate) -> str:
     rows = []
     for quantity, shares in c.budget.items():
-        total = c.drift.ic if quantity == "ic" else c.drift.vce
+        total = c.drift.of().get(quantity)
         top = [f"{cause_words(s.cause)} {percent(s.share)}" for s in shares[:3] if s.share > 0.0]
         if top and total is not None:
             rows.append([f"{quantity.upper()} {percent(total)}", ", ".join(top)])

@@ -104,6 +104,10 @@ _ALL = (
         name="temperature_coefficient", unit="ppm/K", units=dict.fromkeys(("ppm/K", "ppm/°C", "ppm"), -6),
         examples=("100 ppm/K", "-50 ppm/K"),
     ),
+    Kind(
+        name="voltage_per_kelvin", unit="V/K", title="voltage per kelvin", prefixes=PREFIXES,
+        units=dict.fromkeys(("V/K", "V/°C"), 0), examples=("-2 mV/K", "1.2 mV/K"),
+    ),
     # From 1 on, a bare ratio is far more likely per cent whose sign was left out.
     Kind(name="ratio", unit="%", units={"%": -2, "": 0}, bare_below=1.0, examples=("1 %", "0.01")),
     Kind(name="gain", unit="", title="pure number", minimum=0.0, examples=("110", "0.5")),
