@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import math
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, Literal
 
 from synth.stage import Assumption
@@ -108,6 +108,60 @@ class Duty:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Stress:
+    """Worst power [W] and voltage [V] of a resistor against what its style may carry at the hot ambient.
+
+    What is allowed is None without a style; `smallest` is the smallest style that does, None if none of the table; `string`
+    is how many of its own style do in series, None where one does or not even ten.
+    """
+
+    power: float
+    voltage: float
+    style: str | None
+    power_allowed: float | None
+    voltage_allowed: float | None
+    smallest: str | None
+    string: int | None
+
+    @property
+    def power_used(self) -> float | None:
+        """Share of the allowed power [-], None without a style."""
+        return _share(self.power, self.power_allowed)
+
+    @property
+    def voltage_used(self) -> float | None:
+        """Share of the allowed voltage [-], None without a style."""
+        return _share(self.voltage, self.voltage_allowed)
+
+
+def _share(worst: float, allowed: float | None) -> float | None:
+    if allowed is None:
+        return None
+    return worst / allowed if allowed > 0.0 else math.inf
+
+
+@dataclass(frozen=True, kw_only=True)
+class Load:
+    """What the transistor carries at worst: power [W], the rail across it once cut off [V], IC [A].
+
+    `allowed` holds what the ratings and the policy allow of ``power vceo ic`` at the hot ambient, as far as they are known;
+    `junction` is where the junction gets there [K] with a thermal resistance [K/W].
+    """
+
+    power: float
+    vceo: float
+    ic: float
+    allowed: Mapping[str, float]
+    thermal_resistance: float | None
+    junction: float | None
+
+    @property
+    def used(self) -> dict[str, float]:
+        """Share used of each rating that is known [-]."""
+        return {name: getattr(self, name) / limit if limit > 0.0 else math.inf for name, limit in self.allowed.items()}
+
+
+@dataclass(frozen=True, kw_only=True)
 class Verdict:
     """Pass or fail of a window or limit, with margin [-] and the point of the box that decides (SI)."""
 
@@ -151,7 +205,8 @@ class Candidate:
 
     Resistances of `resistors` and `base_feed` [ohm]; `worst` holds the extremes of IC [A] and VCE [V]; `centring` [-];
     `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
-    the next best network, for the winner among several.
+    the next best network, for the winner among several; `signal` holds least, nominal and greatest value of each
+    small-signal figure [S, ohm, - or V], empty where there is none.
     """
 
     rank: int
@@ -171,6 +226,9 @@ class Candidate:
     verdict: Pass
     explanation: tuple[str, ...]
     rival: NetworkResult | None = None
+    stress: Mapping[str, Stress] = field(default_factory=dict)
+    transistor: Load | None = None
+    signal: Mapping[str, tuple[float, float, float]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -406,6 +464,12 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         "verdict": c.verdict,
         "explanation": list(c.explanation),
         **({} if c.rival is None else {"rival": _network(c.rival)}),
+        "stress": {
+            role: _plain({**vars(s), "power_used": s.power_used, "voltage_used": s.voltage_used})
+            for role, s in c.stress.items()
+        },
+        "transistor": None if c.transistor is None else _plain({**vars(c.transistor), "used": c.transistor.used}),
+        "signal": _plain(c.signal),
     }
 
 

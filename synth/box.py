@@ -14,16 +14,18 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 from functools import cached_property, partial
 
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.networks.form import Array, Branches, Network, QPoint, Sign, TwoPort
+from synth.measures import Setting, common, measure, sign
+from synth.networks.form import Array, Branches, Network, QPoint, Sign
 from synth.q_point import solve, solve_active
 from synth.quantities import Spread
 from synth.reference import Reference
+from synth.signal import Signal
 from synth.transistor import T0, Transistor
 
 Values = dict[str, Array]
@@ -172,6 +174,8 @@ class Box:
         The resistors of each role used.
     reference : Reference, optional
         The reference element of the base voltage, where the network has one.
+    signal : Signal
+        What the signal meets, for the small-signal figures.
     meter : Meter, optional
         Where solves are counted.
     """
@@ -182,6 +186,7 @@ class Box:
     temperature: Spread
     parts: Mapping[str, Parts]
     reference: Reference | None = None
+    signal: Signal = field(default_factory=Signal)
     meter: Meter = field(default_factory=Meter)
 
     @cached_property
@@ -232,6 +237,7 @@ class Box:
             temperature=self.temperature,
             parts={role: part.take(index) for role, part in self.parts.items()},
             reference=self.reference,
+            signal=self.signal,
             meter=self.meter,
         )
 
@@ -345,8 +351,7 @@ class Box:
         Parameters
         ----------
         names : sequence of str
-            ``ic ib vce vbe``, a role current ``i_<role>``, that of the reference ``i_ref``, a rail current ``rail_<rail>``,
-            the collector voltage ``vc`` against 0 V or the drop ``ve`` of the emitter resistor; their sum is taken.
+            Names of `synth.measures`; their sum is taken.
         values : dict
             See `Values`.
         q : QPoint
@@ -355,23 +360,13 @@ class Box:
         Returns
         -------
         ndarray
-            The sum, of the broadcast shape [A or V].
+            The sum, of the broadcast shape [A, V, W, ohm or -].
         """
-        branches: Branches | None = None
-        total: Array | None = None
-        for name in names:
-            if name in QPoint._fields:
-                part = getattr(q, name)
-            else:
-                branches = branches or self.branches(values, q)
-                if name == "vc":
-                    part = branches.nodes["c"]
-                elif name == "ve":
-                    part = branches.voltage.get("re", 0.0 * q.ic)
-                else:
-                    part = branches.rail[name[5:]] if name.startswith("rail_") else branches.current[name[2:]]
-            total = part if total is None else total + part
-        return np.asarray(total)
+        r = {role: values[role] for role in self.parts}
+        sources, t = self.sources(values), values["temperature"]
+        gain = values["hfe"] * self.transistor.gain_factor(t)
+        branches = self.network.branches(sources, r, q)
+        return np.asarray(sum(measure(name, self.setting, sources, r, q, branches, gain, t) for name in names))
 
     def sign(self, names: Sequence[str], axis: str) -> Sign:
         """Proved sign of a sum of quantities along an axis.
@@ -388,10 +383,18 @@ class Box:
         int or None
             The common sign of all that are not 0; None where one is unknown or two disagree.
         """
-        signs = {self.network.sign(name, axis) for name in names} - {0}
-        if not signs:
-            return 0
-        return signs.pop() if len(signs) == 1 else None
+        return common([sign(name, axis, self.setting) for name in names])
+
+    @cached_property
+    def setting(self) -> Setting:
+        """What the quantities of this box depend on besides the values of its parameters."""
+        return Setting(
+            network=self.network,
+            transistor=self.transistor,
+            roles=tuple(self.parts),
+            has_reference=self.reference is not None,
+            signal=self.signal,
+        )
 
     @cached_property
     def scan(self) -> Array:
@@ -434,30 +437,6 @@ class Box:
             again = _Climb(self.take(index), tuple(names), direction, {}, self.axes, thorough, premise=False)
             _overwrite(found, index, again.run())
         return found
-
-    def extreme_in_any_region(self, names: Sequence[str], direction: int) -> Extreme:
-        """Extreme over a box that reaches into saturation.
-
-        Parameters
-        ----------
-        names : sequence of str
-            As in `measure`.
-        direction : {+1, -1}
-            +1 for the maximum, −1 for the minimum.
-
-        Returns
-        -------
-        Extreme
-            Value and deciding point, shape (n,).
-
-        Notes
-        -----
-        Where the transistor saturates, hFE no longer governs: IC is the smaller of the active and the saturated law. More
-        base drive raises the first and lowers the second, so the maximum of IC lies on the edge of saturation. Tried are
-        the extreme of the active law, every vertex over temperature, and every point where VCE reaches VCE(sat) along
-        one axis from a vertex of the others, or along all that only drives the base together. NaN without any solution.
-        """
-        return _Straddle(self, tuple(names), direction).run()
 
 
 def _overwrite(found: Extreme, index: NDArray[np.integer], part: Extreme) -> None:
@@ -543,7 +522,7 @@ class _Climb:
             spot = {a: starts[which, i] for i, a in enumerate(self.free)}
             spot["temperature"] = stops[when, who]
             line = partial(_along, part, spot, axis)
-            x, height = _golden(line, np.zeros(who.size), np.ones(who.size))
+            x, height = golden(line, np.zeros(who.size), np.ones(who.size))
             self.doubtful[who[part.doubtful]] = True
             gained |= self._keep(who, height, {**spot, axis: x}, place, best)
         return gained
@@ -553,13 +532,13 @@ class _Climb:
         scan = self.box.scan
         if scan.size < 3:
             return
-        which, when, who = _peaks_that_matter(heights, scan, best)
+        which, when, who = peaks_that_matter(heights, scan, best)
         if not which.size:
             return
         part = _Climb(self.box.take(who), self.names, self.direction, self.fixed, self.free, True, self.premise)
         spot = {axis: corners[which, j] for j, axis in enumerate(self.free)}
         for low, high in ((scan[when], scan[when + 1]), (scan[when + 1], scan[when + 2])):
-            x, height = _golden(partial(_along, part, spot, "temperature"), low, high)
+            x, height = golden(partial(_along, part, spot, "temperature"), low, high)
             self._keep(who, height, {**spot, "temperature": x}, place, best)
         self.doubtful[who[part.doubtful]] = True
 
@@ -588,7 +567,7 @@ class _Climb:
         self._line("temperature", place, best, place["temperature"].copy(), above)
 
     def _line(self, axis: str, place: dict[str, Array], best: Array, low: Array, high: Array) -> NDArray[np.bool_]:
-        x, height = _golden(partial(_along, self, place, axis), low, high)
+        x, height = golden(partial(_along, self, place, axis), low, high)
         better = height > best
         place[axis] = np.where(better, x, place[axis])
         best[better] = height[better]
@@ -606,8 +585,23 @@ class _Climb:
                 return
 
 
-def _peaks_that_matter(heights: Array, scan: Array, best: Array) -> tuple[NDArray[np.intp], ...]:
-    """Points of a scan over temperature (axis 1) that no neighbour tops and whose peak may top the best point."""
+def peaks_that_matter(heights: Array, scan: Array, best: Array) -> tuple[NDArray[np.intp], ...]:
+    """Points of a scan over temperature that no neighbour tops and whose peak may top the best point.
+
+    Parameters
+    ----------
+    heights : ndarray, shape (vertices, temperatures, n)
+        What is to be maximised [any unit].
+    scan : ndarray, shape (temperatures,)
+        Temperatures [K].
+    best : ndarray, shape (n,)
+        Best so far, in the unit of `heights` [any unit].
+
+    Returns
+    -------
+    tuple of ndarray
+        Vertex, position in the scan less one, and candidate of each.
+    """
     left, middle, right = heights[:, :-2], heights[:, 1:-1], heights[:, 2:]
     # A point without a solution has no height; a parabola through three even neighbours overshoots the middle one by at
     # most its distance from the lower of the others.
@@ -623,10 +617,22 @@ def _along(climb: _Climb, spot: Mapping[str, Array], axis: str, x: Array) -> Arr
     return climb.height({**spot, axis: x})
 
 
-def _golden(f: Callable[[Array], Array], low: Array, high: Array, steps: int = 64) -> tuple[Array, Array]:
+def golden(f: Callable[[Array], Array], low: Array, high: Array, steps: int = 64) -> tuple[Array, Array]:
     """Maximum of a unimodal function on [low, high], elementwise.
 
-    64 golden sections leave 4e-14 of the interval: a maximum may be a kink.
+    Parameters
+    ----------
+    f : callable
+        The function, of arrays shaped like the ends.
+    low, high : ndarray
+        Ends of each interval [any unit].
+    steps : int
+        Golden sections; 64 leave 4e-14 of the interval, since a maximum may be a kink [-].
+
+    Returns
+    -------
+    x, height : ndarray
+        Where the maximum is and how high [units of `low` and of `f`].
     """
     a, b = low.copy(), high.copy()
     c, d = b - GOLDEN * (b - a), a + GOLDEN * (b - a)
@@ -644,132 +650,3 @@ def _golden(f: Callable[[Array], Array], low: Array, high: Array, steps: int = 6
             np.where(left, fc, value),
         )
     return np.where(fc > fd, c, d), np.maximum(fc, fd)
-
-
-@dataclass
-class _Straddle:
-    """Extreme over a box in which some points saturate."""
-
-    box: Box
-    names: tuple[str, ...]
-    direction: int
-
-    def run(self) -> Extreme:
-        box, n = self.box, self.box.size
-        # The active law is the true one wherever its own extreme is active: every maximum of VCE, and most minima of IC.
-        active = box.extreme(self.names, self.direction)
-        self.best = np.full(n, -np.inf)
-        self.at = {name: v.copy() for name, v in active.at.items()}
-        self._keep(np.arange(n), active.at)
-        scan = box.scan
-        corners = np.array(list(itertools.product((0.0, 1.0), repeat=len(box.axes)))).reshape(-1, len(box.axes))
-        grid: dict[str, Array] = {a: corners[:, j, None, None] for j, a in enumerate(box.axes)}
-        grid["temperature"] = scan[None, :, None]
-        self._vertices(grid, (len(corners), scan.size, n))
-        for axis in (*box.axes, "temperature", "drive"):
-            self._edges(axis)
-        return Extreme(self.direction * np.where(np.isfinite(self.best), self.best, np.nan), self.at, {})
-
-    def height(self, values: Values) -> Array:
-        """direction·quantity; a point without a solution counts for nothing."""
-        height = self.direction * self.box.measure(self.names, values, self.box.solve(values))
-        return np.where(np.isnan(height), -np.inf, height)
-
-    def over_temperature(self, spot: Mapping[str, Array], t: Array) -> Array:
-        """Height of points that differ in temperature only."""
-        return self.height(self.box.values({**spot, "temperature": t}))
-
-    def _keep(self, who: NDArray[np.integer], values: Values) -> None:
-        height = self.height(values)
-        for k in np.argsort(height):
-            if height[k] > self.best[who[k]]:
-                self.best[who[k]] = height[k]
-                for name, v in values.items():
-                    self.at[name][who[k]] = v[k]
-
-    def _vertices(self, grid: Mapping[str, Array], shape: tuple[int, ...]) -> None:
-        """Every vertex at every temperature of the scan, and the peaks over temperature between them."""
-        box, scan = self.box, self.box.scan
-        heights = np.broadcast_to(self.height(box.values(grid)), shape)
-        flat = heights.reshape(-1, shape[-1])
-        index = np.array(np.unravel_index(flat.argmax(axis=0), shape[:2]))
-        spots = {a: np.broadcast_to(x, shape) for a, x in grid.items()}
-        who = np.arange(shape[-1])
-        self._keep(who, self._whole({a: x[index[0], index[1], who] for a, x in spots.items()}))
-        if scan.size < 3:
-            return
-        which, when, who = _peaks_that_matter(heights, scan, self.best)
-        if who.size:
-            spot = {a: x[which, 0, who] for a, x in spots.items()}
-            part = replace(self, box=box.take(who))
-            for low, high in ((scan[when], scan[when + 1]), (scan[when + 1], scan[when + 2])):
-                t, _ = _golden(partial(part.over_temperature, spot), low, high)
-                self._keep(who, part._whole({**spot, "temperature": t}))
-
-    def _whole(self, spot: Mapping[str, Array]) -> Values:
-        n = self.box.size
-        return {k: np.broadcast_to(v, (n,)).copy() for k, v in self.box.values(spot).items()}
-
-    @cached_property
-    def drive(self) -> dict[str, float]:
-        """Axes that move the base drive alone, with the end of most drive."""
-        box = self.box
-        values = box.nominal()
-        t = values["temperature"]
-
-        def port(moved: Mapping[str, Array]) -> TwoPort:
-            now = {**values, **moved}
-            return box.network.two_port(box.sources(now), {k: now[k] for k in box.parts}, t)
-
-        plain = port({})
-        found = {axis: most for axis, most in (("delta", 0.0), ("delta_ref", 1.0)) if axis in box.axes}
-        for axis in (a for a in box.axes if a not in DEVICE_AXES):
-            other = port({axis: values[axis] * 1.01})
-            load = ((plain.e_c, other.e_c), (plain.z_cb, other.z_cb), (plain.z_cc, other.z_cc))
-            sign = box.network.sign("ic", axis)
-            if sign and all(np.array_equal(np.asarray(a), np.asarray(b)) for a, b in load):
-                found[axis] = 0.5 + 0.5 * sign
-        return found
-
-    def _edges(self, axis: str) -> None:
-        """Points where VCE reaches VCE(sat) along one axis, from every vertex of the others.
-
-        The axis "drive" moves everything that only drives the base together, from least to most.
-        """
-        box, n, scan = self.box, self.box.size, self.box.scan
-        moving = self.drive if axis == "drive" else {axis: 1.0}
-        others = tuple(a for a in box.axes if a not in moving)
-        corners = np.array(list(itertools.product((0.0, 1.0), repeat=len(others)))).reshape(-1, len(others))
-        if axis == "temperature":
-            starts, ends = scan[:-1], scan[1:]
-        else:
-            starts, ends = np.zeros(scan.size), np.ones(scan.size)
-        if not moving or not starts.size:
-            return
-        shape = (len(corners), starts.size, n)
-        base = {a: np.broadcast_to(corners[:, j, None, None], shape) for j, a in enumerate(others)}
-        if axis != "temperature":
-            base["temperature"] = np.broadcast_to(scan[None, :, None], shape)
-        low, high = (np.broadcast_to(x[None, :, None], shape) for x in (starts, ends))
-
-        def along(spot: Mapping[str, Array], x: Array) -> dict[str, Array]:
-            return {**spot, **{a: x if most else 1.0 - x for a, most in moving.items()}}
-
-        def room(b: Box, spot: Mapping[str, Array], x: Array) -> Array:
-            return b.solve(b.values(along(spot, x)), active_law=True).vce - b.transistor.vce_sat
-
-        begin, end = (np.broadcast_to(room(box, base, x), shape) for x in (low, high))
-        crossing = np.nonzero((begin >= 0.0) != (end >= 0.0))
-        who = crossing[-1]
-        if not who.size:
-            return
-        part = box.take(who)
-        spot = {a: x[crossing] for a, x in base.items()}
-        one, two = low[crossing].copy(), high[crossing].copy()
-        rising = begin[crossing] < 0.0
-        for _ in range(60):
-            middle = 0.5 * (one + two)
-            before = (room(part, spot, middle) >= 0.0) != rising
-            one, two = np.where(before, middle, one), np.where(before, two, middle)
-        # Of the last two points, the one that is still active: there both laws give the same.
-        self._keep(who, replace(self, box=part)._whole(along(spot, np.where(rising, two, one))))

@@ -5,18 +5,22 @@ Stage keys, options, verdicts and search all read `RULES`; a limit that is not h
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Collection, Mapping, Sequence
-from dataclasses import dataclass, replace
-from typing import Literal
+from dataclasses import dataclass, field, replace
+from typing import Literal, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from synth.box import Box, Values
+from synth.catalogue import Derating, ResistorStyle
+from synth.measures import POWER_OF_TRANSISTOR
 from synth.networks.form import Array, Network, Value
 from synth.quantities import Interval
 from synth.reference import Reference
-from synth.transistor import CUT_OFF_CURRENT
+from synth.stress import TransistorRatings, allowed_dissipation, allowed_ic, allowed_power, allowed_vce
+from synth.transistor import CUT_OFF_CURRENT, T0
 
 Sense = Literal[">=", "<="]
 Judged = Literal["nominal", "box"]
@@ -37,12 +41,24 @@ class Surroundings:
         The reference element, where the network has one.
     vce_sat : float
         VCE(sat) [V].
+    hot : float
+        Hottest ambient [K].
+    styles : mapping of str to ResistorStyle
+        Style of each role that has one.
+    ratings : TransistorRatings
+        What is known of the transistor.
+    derating : Derating, optional
+        Policy that ratings are judged by; None judges none.
     """
 
     rails: Collection[str]
     roles: Collection[str]
     reference: Reference | None = None
     vce_sat: float = 0.0
+    hot: float = T0
+    styles: Mapping[str, ResistorStyle] = field(default_factory=dict)
+    ratings: TransistorRatings = field(default_factory=TransistorRatings)
+    derating: Derating | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -69,6 +85,9 @@ class LimitRule:
         not apply.
     static_signs : callable, optional
         ``static_signs(network)``: the sign of the measured value along each role that matters.
+    parts : callable, optional
+        ``parts(network, around)``: for a limit on the used share of several ratings, the rating of each with its name, kind,
+        sum of quantities and allowed value.
     """
 
     name: str
@@ -80,6 +99,46 @@ class LimitRule:
     offset: Callable[[Surroundings], float] | None = None
     static: Callable[[Network, Mapping[str, Value]], Value] | None = None
     static_signs: Callable[[Network], dict[str, int]] | None = None
+    parts: Callable[[Network, Surroundings], tuple[Rating, ...]] | None = None
+
+
+class Rating(NamedTuple):
+    """One rating of a part: its name, kind of quantity, what is measured, and what is allowed of it [W, V or A]."""
+
+    name: str
+    kind: str
+    names: tuple[str, ...]
+    allowed: float
+
+
+def _resistor_ratings(network: Network, around: Surroundings) -> tuple[Rating, ...]:
+    policy, found = around.derating, []
+    for role in network.role_names:
+        style = around.styles.get(role)
+        if role in around.roles and style is not None and policy is not None:
+            power = float(allowed_power(style, around.hot, policy))
+            found.append(Rating(f"{role}.power", "power", (f"p_{role}",), power))
+            # What the root of power times resistance allows is a limit on power, and a laxer one than that.
+            volts = policy.resistor_voltage * style.max_working_voltage_v
+            found.append(Rating(f"{role}.voltage", "voltage", (f"u_{role}",), volts))
+    return tuple(found)
+
+
+def _transistor_ratings(network: Network, around: Surroundings) -> tuple[Rating, ...]:
+    if around.derating is None:
+        return ()
+    ratings, policy = around.ratings, around.derating
+    power = allowed_dissipation(ratings, around.hot, policy)
+    every = (
+        Rating("vceo", "voltage", ("span",), allowed_vce(ratings, policy) or math.nan),
+        Rating("ic", "current", ("ic",), allowed_ic(ratings, policy) or math.nan),
+        Rating("power", "power", (POWER_OF_TRANSISTOR,), math.nan if power is None else float(power)),
+    )
+    return tuple(rating for rating in every if not math.isnan(rating.allowed))
+
+
+def _figure(name: str) -> Callable[[Network, Surroundings], tuple[tuple[str, ...], ...]]:
+    return lambda network, around: ((name,),) if network.takes_signal else ()
 
 
 def _bleeder(network: Network, around: Surroundings) -> tuple[tuple[str, ...], ...]:
@@ -167,6 +226,56 @@ RULES: Mapping[str, LimitRule] = {
             judged="box",
             sums=_reference,
         ),
+        LimitRule(
+            name="input_resistance",
+            meaning="resistance that the signal meets at the base, bias feed included",
+            kind="resistance",
+            sense=">=",
+            judged="box",
+            sums=_figure("input_resistance"),
+        ),
+        LimitRule(
+            name="output_resistance",
+            meaning="resistance of the output, without the load",
+            kind="resistance",
+            sense=">=",
+            judged="box",
+            sums=_figure("output_resistance"),
+        ),
+        LimitRule(
+            name="gain",
+            meaning="voltage gain from the base to the output with the load, a magnitude",
+            kind="gain",
+            sense=">=",
+            judged="box",
+            sums=_figure("gain"),
+        ),
+        LimitRule(
+            name="swing",
+            meaning="peak of the output before the transistor saturates or cuts off, whichever comes first",
+            kind="voltage",
+            sense=">=",
+            judged="box",
+            sums=lambda network, around: (
+                (("swing_to_cutoff",), ("swing_to_saturation",)) if network.takes_signal else ()
+            ),
+        ),
+        LimitRule(
+            name="resistor_stress",
+            meaning="share used of what the style and the derating policy allow each resistor at the hot ambient",
+            kind="ratio",
+            sense="<=",
+            judged="box",
+            parts=_resistor_ratings,
+        ),
+        LimitRule(
+            name="transistor_stress",
+            meaning="share used of what the ratings and the derating policy allow the transistor at the hot ambient",
+            kind="ratio",
+            sense="<=",
+            judged="box",
+            parts=_transistor_ratings,
+        ),
     )
 }
 """Every limit by name, in the order of output."""
@@ -194,6 +303,8 @@ class Requirement:
         What the margin of a window is relative to [A or V].
     offset : float
         What is subtracted from the sum before it is compared [A or V].
+    rated : float, optional
+        For a part of a limit on used shares: what is allowed at 100 % [W, V or A].
     """
 
     name: str
@@ -204,6 +315,12 @@ class Requirement:
     rule: LimitRule | None = None
     target: float | None = None
     offset: float = 0.0
+    rated: float | None = None
+
+    @property
+    def limit(self) -> str:
+        """Name of the window or limit that this is, or is a part of."""
+        return self.name if self.rule is None else self.rule.name
 
     @property
     def sides(self) -> tuple[int, ...]:
@@ -332,6 +449,20 @@ def requirements(
         interval = wanted.get(name)
         if interval is None or not applies(rule, network, around, name in given):
             continue
+        if rule.parts is not None:
+            found += [
+                Requirement(
+                    name=f"{name}.{part}",
+                    kind=kind,
+                    interval=Interval(*(end * allowed if math.isfinite(end) else end for end in (interval.low, interval.high))),
+                    judged=rule.judged,
+                    sums=(names,),
+                    rule=rule,
+                    rated=allowed,
+                )
+                for part, kind, names, allowed in rule.parts(network, around)
+            ]
+            continue
         found.append(
             Requirement(
                 name=name,
@@ -367,6 +498,8 @@ def applies(rule: LimitRule, network: Network, around: Surroundings, given: bool
     """
     if rule.sums is not None:
         return bool(rule.sums(network, around))
+    if rule.parts is not None:
+        return bool(rule.parts(network, around))
     if rule.name == "collector_share":
         return "rc" in around.roles and "re" in around.roles and (given or network.shared_rails)
     return (given or network.takes_signal) and any(role in around.roles for role in network.base_side)

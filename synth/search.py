@@ -29,8 +29,11 @@ from numpy.typing import NDArray
 
 from synth.box import Meter, Values
 from synth.limits import Requirement
+from synth.measures import POWER_OF_TRANSISTOR, is_figure, parts_of_current, small_signal
+from synth.measures import sign as quantity_sign
 from synth.networks.form import Array, QPoint
-from synth.spaces import Found, Goal, Index, Space, assess, wanted
+from synth.signal import own_signs
+from synth.spaces import MOST_VBE, Found, Goal, Index, Space, assess, wanted
 from synth.transistor import thermal_voltage
 
 Status = Literal["optimal", "feasible", "infeasible", "unknown"]
@@ -133,7 +136,7 @@ class _Corners:
         """Corner where direction·quantity is least, and the roles whose sign is not proved."""
         ends, open_roles = [], []
         for j, role in enumerate(self.roles):
-            sign = self.space.network.sign(quantity, role)
+            sign = quantity_sign(quantity, role, self.frame.setting)
             if sign is None:
                 open_roles.append(j)
             ends.append(0 if not sign or sign * direction > 0 else 1)
@@ -145,8 +148,17 @@ class _Corners:
         if quantity == "vc" and open_roles:
             return tuple(a | b for a, b in zip(self.uses("vce", direction), self.uses("ve", direction), strict=True))  # type: ignore[return-value]
         uses = np.zeros((2, len(self.roles)), dtype=bool)
+        if is_figure(quantity):
+            return ~uses[0], ~uses[1]
+        behind = self._behind(quantity)
+        if behind:
+            for name in behind:
+                uses |= np.stack(self.uses(name, direction))
+            if (role := quantity[2:]) in self.roles:
+                uses[0, self.roles.index(role)] = True
+            return uses[0], uses[1]
         for j, role in enumerate(self.roles):
-            if self.space.network.sign(quantity, role) != 0:
+            if quantity_sign(quantity, role, self.frame.setting) != 0:
                 uses[ends[j], j] = True
             # Where leakage may turn IB round, every vertex of the base side may be asked for.
             if self.icbo > 0.0 and role in self.space.network.base_side:
@@ -159,8 +171,65 @@ class _Corners:
                 uses |= np.stack(self.uses("ic", 1))
         return uses[0], uses[1]
 
+    def _behind(self, quantity: str) -> tuple[str, ...]:
+        """Quantities with bounds of their own that the bound of this one is made of; none for one that has its own."""
+        kind, _, role = quantity.partition("_")
+        if quantity == POWER_OF_TRANSISTOR:
+            return ("ic", "vce")
+        if role in self.roles and kind in ("u", "p"):
+            return (f"i_{role}",)
+        if role in self.roles and kind == "i" and quantity not in self.space.network.signs:
+            return parts_of_current(self.space.network, role)
+        return ()
+
+    def _least_made_up(self, quantity: str, behind: tuple[str, ...], direction: int) -> Array:
+        """Bound of a sum of currents, or of a product of quantities each at its own end."""
+        kind, _, role = quantity.partition("_")
+        if kind == "i":
+            return np.asarray(sum(self.least(name, direction) for name in behind))
+        if direction < 0:
+            return np.full(len(self.lo), -np.inf)
+        parts = [np.maximum(self.least(name, 1), 0.0) for name in behind]
+        if quantity == POWER_OF_TRANSISTOR:
+            # Where leakage flows out of the base it takes back this much of VBE·IB at most.
+            return np.asarray(parts[0] * parts[1] - MOST_VBE * self.icbo * (1.0 + 1.0 / self.hfe))
+        ohms = self.low[role][self.lo[:, self.roles.index(role)]]
+        return np.asarray(parts[0] * ohms if kind == "u" else parts[0] ** 2 * ohms)
+
+    def _least_figure(self, figure: str, direction: int) -> Array:
+        """Bound of a small-signal figure, with every resistance and IC each at its own favourable end.
+
+        The output share of what VCE leaves towards saturation is at most 1.
+        """
+        nothing = np.full(len(self.lo), -np.inf)
+        if figure == "swing_to_saturation":
+            room = np.maximum(-self.least("vce", -1) - self.space.transistor.vce_sat, 0.0)
+            return nothing if direction > 0 else -room
+        own = own_signs(self.space.network, figure, self.space.signal.bypass, roles=self.roles)
+        along = own["ic"]
+        if along is None:
+            return nothing
+        current = self.least("ic", 1) if along * direction >= 0 else -self.least("ic", -1)
+        held = np.isfinite(current)
+        ends = []
+        for j, role in enumerate(self.roles):
+            sign = own[role]
+            if sign is None:
+                held &= self.low[role][self.lo[:, j]] == self.high[role][self.hi[:, j]]
+            ends.append(0 if not sign or sign * direction > 0 else 1)
+        values, q = self.at(tuple(ends))
+        r = {role: values[role] for role in self.roles}
+        mixed = q._replace(ic=np.where(held, current, 0.0))
+        stage = small_signal(self.frame.setting, self.frame.sources(values), r, mixed, self.hfe, self.t)
+        return np.where(held, direction * np.asarray(getattr(stage, figure)), nothing)
+
     def least(self, quantity: str, direction: int) -> Array:
         """Lower bound over each block of direction·quantity at this point of the box."""
+        if is_figure(quantity):
+            return self._least_figure(quantity, direction)
+        behind = self._behind(quantity)
+        if behind:
+            return self._least_made_up(quantity, behind, direction)
         ends, open_roles = self.ends(quantity, direction)
         values, q = self.at(ends)
         if quantity == "ic":

@@ -683,6 +683,50 @@ def signs(
     return found
 
 
+def own_signs(
+    network: Network, figure: str, bypass: Bypass = "full", *, roles: Collection[str] | None = None
+) -> dict[str, Sign]:
+    """Proved signs of a figure along each resistance while IC stays, and along IC while the resistances stay.
+
+    Parameters
+    ----------
+    network : Network
+        The bias network.
+    figure : str
+        ``input_resistance``, ``output_resistance``, ``gain``, ``overall_gain`` or ``swing_to_cutoff``.
+    bypass : {"full", "none", "part"}
+        Of re.
+    roles : collection of str, optional
+        Roles used; all by default.
+
+    Returns
+    -------
+    dict
+        For each role and ``ic``: +1, −1, 0, or None where nothing is proved.
+
+    Notes
+    -----
+    The parts of `signs` before they are put together: with each of them at its own favourable end a figure has a bound over
+    resistances and currents that need not go together. With "part", re may carry signal or not: its part is what it is
+    without a bypass, or nothing.
+    """
+    used = network.role_names if roles is None else roles
+    wiring = _wire(network, used, "none" if bypass == "part" else bypass, network.reference != "no")
+    role_path, star = _paths(wiring)
+    paths = frozenset((*role_path.values(), "b", wiring.output)) | star
+    grounded = frozenset(node for node in TERMINALS if wiring.home[node] == GROUND)
+    quotient = {"swing_to_cutoff": "cutoff_excursion"}.get(figure, figure)
+    slope = _slopes(quotient, wiring.output, paths, grounded)
+    found: dict[str, Sign] = {"ic": slope["ic"]}
+    for role in used:
+        starred = bool(star) and REFERENCE in wiring.ends.get(role, ())
+        found[role] = None if starred else _times(-1, slope[role_path[role]]) if role in role_path else 0
+    if figure == "swing_to_cutoff":
+        # IC·Rac is VT times the quotient, so it moves as that does.
+        found["ic"] = slope["ic"]
+    return found
+
+
 def _paths(wiring: _Wiring) -> tuple[dict[str, str], frozenset[str]]:
     """Path that each role, and ``r_ref``, is a part of; and the paths of a star around m, which many roles move at once."""
     at_middle = [role for role, ends in wiring.ends.items() if REFERENCE in ends]

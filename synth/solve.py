@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
+from functools import partial
 
 import numpy as np
 
@@ -23,6 +24,7 @@ from synth.explain import (
     percent,
     sentences,
 )
+from synth.facts import loads, signals, stress_cautions, stresses
 from synth.limits import Judgement, Requirement, judge
 from synth.networks.form import Array
 from synth.q_point import REGIONS
@@ -30,6 +32,8 @@ from synth.ranking import alternatives, order_key
 from synth.search import Outcome, search
 from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_of, spaces_of
 from synth.stage import Assumption, Stage, StageError
+from synth.straddle import extreme_in_any_region
+from synth.stress import TransistorRatings
 
 Progress = Callable[[float, float, int], bool]
 
@@ -68,7 +72,7 @@ def find(
     goal = goal_of(stage)
     spaces = spaces_of(stage)
     outcome = search(spaces, goal, top=top, progress=progress)
-    candidates = _candidates(outcome, goal, top)
+    candidates = _candidates(outcome, goal, top, stage.ratings)
     best_of = _best_of_each(spaces, goal, candidates, outcome, progress)
     rivals = [n for n in best_of if candidates and n.best is not None and n.network != candidates[0].network]
     if rivals:
@@ -78,7 +82,8 @@ def find(
     if candidates:
         first = candidates[0]
         space = next(s for s in spaces if _is_of(first, s))
-        warnings += cautions(first, space.box(_index(space, first), Meter()))
+        box = space.box(_index(space, first), Meter())
+        warnings += cautions(first, box) + stress_cautions(first, box, space.styles, space.derating)
     return Answer(
         kind="find",
         version=__version__,
@@ -124,10 +129,11 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
     (candidate,) = _build(space, index, goal, any_region=True)
     network = space.network
     (around,) = neighbours(*among_values(stage, space), goal)
-    candidate = replace(candidate, rank=1, neighbours=around)
+    candidate = _reviewed(replace(candidate, rank=1, neighbours=around), space, stage.ratings)
     candidate = replace(candidate, explanation=sentences(candidate, network))
     warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
-    warnings += cautions(candidate, space.box(index, Meter()))
+    box = space.box(index, Meter())
+    warnings += cautions(candidate, box) + stress_cautions(candidate, box, space.styles, space.derating)
     failed = [v.name for v in candidate.limits if v.verdict == "fail"]
     why = f"fails {', '.join(failed)}" if failed else "passes every verdict"
     return Answer(
@@ -178,7 +184,19 @@ def _index(space: Space, candidate: Candidate) -> Index:
     return np.array([position], dtype=np.int32)
 
 
-def _candidates(outcome: Outcome, goal: Goal, top: int) -> tuple[Candidate, ...]:
+def _reviewed(candidate: Candidate, space: Space, ratings: TransistorRatings) -> Candidate:
+    """A candidate with the stress of its parts and its small-signal figures."""
+    box = space.box(_index(space, candidate), Meter())
+    active = candidate.regions == ("active",)
+    return replace(
+        candidate,
+        stress=stresses(box, space.styles, space.derating)[0],
+        transistor=loads(box, ratings, space.derating)[0],
+        signal=signals(box)[0] if active else {},
+    )
+
+
+def _candidates(outcome: Outcome, goal: Goal, top: int, ratings: TransistorRatings) -> tuple[Candidate, ...]:
     built: list[tuple[Candidate, Space]] = []
     for space in dict.fromkeys(f.space for f in outcome.found):
         index = np.array([f.index for f in outcome.found if f.space is space], dtype=np.int32)
@@ -192,7 +210,7 @@ def _candidates(outcome: Outcome, goal: Goal, top: int) -> tuple[Candidate, ...]
         around.update(zip(ranks, neighbours(space, index, goal), strict=True))
     final = []
     for k, (candidate, space) in enumerate(listed):
-        full = replace(candidate, rank=k + 1, neighbours=around[k])
+        full = _reviewed(replace(candidate, rank=k + 1, neighbours=around[k]), space, ratings)
         final.append(replace(full, explanation=sentences(full, space.network)))
     return tuple(final)
 
@@ -271,7 +289,7 @@ def _build(
     box = space.box(index, Meter())
     exact = Exact(box, goal)
     saturates = any_region and bool(np.any(exact.extremes["vce", -1].value < space.transistor.vce_sat))
-    law = box.extreme_in_any_region if saturates else box.extreme
+    law = partial(extreme_in_any_region, box) if saturates else box.extreme
     extremes: dict[tuple[tuple[str, ...], int], Extreme] = {}
 
     def worst(names: Sequence[str], side: int) -> Extreme:

@@ -4,19 +4,26 @@ from __future__ import annotations
 
 import math
 from collections.abc import Collection, Mapping, Sequence
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass, field, fields, replace
+from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
 
 from synth.box import Box, Extreme, Meter, Parts, Values
+from synth.catalogue import Derating, ResistorStyle, derating, resistor_style
 from synth.limits import Requirement, Surroundings, judge, requirements
+from synth.measures import POWER_OF_TRANSISTOR, is_figure
 from synth.networks import NETWORKS
 from synth.networks.form import Array, Network
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
+from synth.signal import Signal
 from synth.stage import Stage, StageError
 from synth.transistor import Transistor
+
+MOST_VBE = 2.0
+"""What VBE never reaches [V]: beyond the gap the junction law ends."""
 
 Index = NDArray[np.int32]
 
@@ -41,6 +48,12 @@ class Space:
         What every candidate has to satisfy.
     reference : Reference, optional
         The reference element of the base voltage, where the network has one.
+    signal : Signal
+        What the signal meets.
+    styles : mapping of str to ResistorStyle
+        Style of each role that has one.
+    derating : Derating
+        Policy that ratings are judged by.
     ground : {"negative", "positive", "middle", "common"}
         What is 0 V, see `synth.explain.nominal_points`.
     """
@@ -52,6 +65,9 @@ class Space:
     temperature: Spread
     requirements: tuple[Requirement, ...]
     reference: Reference | None = None
+    signal: Signal = field(default_factory=Signal)
+    styles: Mapping[str, ResistorStyle] = field(default_factory=dict)
+    derating: Derating = field(default_factory=partial(derating, "none"))
     ground: str = "negative"
 
     @property
@@ -119,6 +135,7 @@ class Space:
             temperature=self.temperature,
             parts={role: self.lists[role].take(index[:, j]) for j, role in enumerate(self.roles)},
             reference=self.reference,
+            signal=self.signal,
             meter=meter,
         )
 
@@ -305,7 +322,18 @@ def _space(
     rails = {rail: s for rail, s in stage.rails.items() if rail in (*network.rails, *network.optional_rails)}
     windows = {q: (Interval(t.low, t.high), t.nominal) for q, t in {"ic": stage.ic, **stage.voltages}.items()}
     reference = stage.reference if network.reference != "no" else None
-    around = Surroundings(rails=rails, roles=roles, reference=reference, vce_sat=stage.transistor.vce_sat)
+    named = {role: stage.role(role).style for role in roles}
+    styles = {role: resistor_style(style) for role, style in named.items() if style}
+    around = Surroundings(
+        rails=rails,
+        roles=roles,
+        reference=reference,
+        vce_sat=stage.transistor.vce_sat,
+        hot=stage.temperature.high,
+        styles=styles,
+        ratings=stage.ratings,
+        derating=stage.derating,
+    )
     needs = requirements(network, around, stage.limits, stage.limits_given, windows)
     return Space(
         network=network,
@@ -314,7 +342,10 @@ def _space(
         rails=rails,
         temperature=stage.temperature,
         reference=reference,
-        requirements=tuple(need for need in needs if need.name not in without),
+        signal=stage.signal,
+        styles=styles,
+        derating=stage.derating,
+        requirements=tuple(need for need in needs if need.limit not in without),
         ground="common" if "vee" in stage.rails and stage.ground == "middle" else stage.ground,
     )
 
@@ -377,9 +408,15 @@ def assess(
     exact = Exact(box, goal)
     drift = exact.drift
     passed = np.ones(box.size, dtype=bool)
+    late = [need for need in space.requirements if is_dear(need)]
     for need in space.requirements:
-        passed &= judge(box, need, exact.worst).passed
+        if need not in late:
+            passed &= judge(box, need, exact.worst).passed
     far = passed & (drift > limit)
+    # What is dear to judge is judged last, and of a candidate beyond the limit a bound is all that counts.
+    for need in late:
+        asked = np.flatnonzero(passed & ~far)
+        passed[asked] = passes(exact, need, asked)
     if far.any():
         beyond = min(beyond, float(drift[far].min()))
     for k in np.flatnonzero(passed & ~far):
@@ -392,6 +429,93 @@ def assess(
             )
         )
     return found, beyond
+
+
+def is_dear(need: Requirement) -> bool:
+    """Whether a requirement takes long to judge: its quantity has no proved signs to go by.
+
+    Parameters
+    ----------
+    need : Requirement
+        Any requirement; no unit matters.
+
+    Returns
+    -------
+    bool
+        True for the power of the transistor and small-signal figures.
+    """
+    return any(name == POWER_OF_TRANSISTOR or is_figure(name) for names in need.sums for name in names)
+
+
+def surely(exact: Exact, need: Requirement) -> NDArray[np.bool_]:
+    """Which candidates pass a requirement by a bound that is quick to have.
+
+    Parameters
+    ----------
+    exact : Exact
+        Their extremes.
+    need : Requirement
+        What is asked.
+
+    Returns
+    -------
+    ndarray of bool, shape (n,)
+        The transistor's power is at most ICmax·VCEmax + VBE·IBmax [W]; of anything else nothing is sure.
+    """
+    if need.sums != ((POWER_OF_TRANSISTOR,),) or need.sides != (1,):
+        return np.zeros(exact.box.size, dtype=bool)
+    ic, vce, ib = (exact.worst((name,), 1)[0] for name in ("ic", "vce", "ib"))
+    return need.passes(ic * vce + MOST_VBE * np.maximum(ib, 0.0))
+
+
+def passes(exact: Exact, need: Requirement, who: NDArray[np.integer]) -> NDArray[np.bool_]:
+    """Which of some candidates pass a requirement.
+
+    Parameters
+    ----------
+    exact : Exact
+        Candidates with their extremes.
+    need : Requirement
+        What is asked.
+    who : ndarray of int
+        Which candidates.
+
+    Returns
+    -------
+    ndarray of bool
+        In the order of `who`; no unit.
+    """
+    if not is_dear(need):
+        return np.asarray(judge(exact.box, need, exact.worst).passed[who])
+    passed: NDArray[np.bool_] = surely(exact, need)[who]
+    asked = np.flatnonzero(~passed)
+    if asked.size:
+        some = exact.box.take(who[asked])
+        passed[asked] = judge(some, need, partial(extreme_of, some)).passed
+    return passed
+
+
+def extreme_of(box: Box, names: Sequence[str], side: int) -> tuple[Array, Values]:
+    """Extreme of a sum of quantities and its point.
+
+    Parameters
+    ----------
+    box : Box
+        n candidates.
+    names : sequence of str
+        Quantities, see `synth.measures`.
+    side : {+1, -1}
+        Maximum or minimum.
+
+    Returns
+    -------
+    value : ndarray, shape (n,)
+        The extreme [A, V, W, ohm or -].
+    at : dict
+        The point that decides.
+    """
+    found = box.extreme(names, side)
+    return found.value, found.at
 
 
 def wanted(goal: Goal) -> tuple[tuple[str, int], ...]:
@@ -460,8 +584,9 @@ def assess_all(space: Space, index: Index, goal: Goal, meter: Meter) -> list[Ass
     """
     exact = Exact(space.box(index, meter), goal)
     failed: list[list[str]] = [[] for _ in index]
+    everyone = np.arange(len(index))
     for need in space.requirements:
-        for k in np.flatnonzero(~judge(exact.box, need, exact.worst).passed):
+        for k in np.flatnonzero(~passes(exact, need, everyone)):
             failed[k].append(need.name)
     active = exact.extremes["vce", -1].value >= space.transistor.vce_sat
     return [

@@ -17,6 +17,7 @@ from typing import Any
 
 import numpy as np
 
+from synth.catalogue import Derating
 from synth.networks import NETWORKS
 from synth.preferred import ValueList
 from synth.preferred import nearest as nearest_value
@@ -28,6 +29,7 @@ from synth.quantities import (
     format_resistance,
 )
 from synth.reference import Reference
+from synth.signal import Signal
 from synth.stage_file import read_toml, stage_file, template, toml_literal, unknown_key
 from synth.stage_keys import (
     KEYS,
@@ -37,6 +39,7 @@ from synth.stage_keys import (
     nearest,
 )
 from synth.stage_resolve import Assumption, RoleSetting, StageWarning, band, needing, no_role, resolve, rival
+from synth.stress import TransistorRatings
 from synth.transistor import Transistor
 
 __all__ = ["Assumption", "RoleSetting", "Stage", "StageError", "StageWarning", "template"]
@@ -74,6 +77,12 @@ class Stage:
         Laws and spreads of the transistor.
     reference : Reference or None
         The reference element of the base voltage.
+    ratings : TransistorRatings
+        What is known of the transistor's ratings.
+    derating : Derating
+        The policy that ratings are judged by.
+    signal : Signal
+        What the signal meets.
     temperature : Spread
         Ambient [K].
     limits : mapping of str to Interval
@@ -112,6 +121,9 @@ class Stage:
     voltages: Mapping[str, Target]
     transistor: Transistor
     reference: Reference | None
+    ratings: TransistorRatings
+    derating: Derating
+    signal: Signal
     temperature: Spread
     limits: Mapping[str, Interval]
     values: Mapping[str, float]
@@ -396,6 +408,9 @@ class Stage:
             "target": {"ic": _plain(self.ic), **{quantity: _plain(t) for quantity, t in self.voltages.items()}},
             "transistor": {f.name: _plain(getattr(t, f.name)) for f in dataclasses.fields(t)},
             "reference": self.reference and {f: _plain(v) for f, v in vars(self.reference).items()},
+            "ratings": {f: _plain(v) for f, v in vars(self.ratings).items()},
+            "derating": self.derating.name,
+            "signal": {f: _plain(v) for f, v in vars(self.signal).items()},
             "resistors": {
                 role: {f.name: _plain(getattr(setting, f.name)) for f in dataclasses.fields(setting)}
                 for role, setting in self.roles.items()

@@ -407,6 +407,8 @@ _LIMIT_OTHERWISE = {
     "vce": "VCE stays above VCE(sat) in any case",
     "compliance": "a third of the rail of the load",
     "reference_current": "half of reference.current",
+    "resistor_stress": "100 % where a style is given",
+    "transistor_stress": "100 % of the ratings that are known",
 }
 _LIMIT_EXAMPLE = {
     "current": "3 mA",
@@ -425,6 +427,10 @@ def _top() -> Iterable[Key]:
     yield Key(
         path="network", form="texts", choices=(*NETWORKS, "any"), default="divider", example="divider",
         meaning="How the resistors are connected: one network, a list of them, or any.",
+    )  # fmt: skip
+    yield Key(
+        path="derating", form="text", default="half_power", example="half_power",
+        meaning="How much of each rating may be used, a row of the table of derating policies.",
     )  # fmt: skip
 
 
@@ -515,6 +521,23 @@ def _transistor() -> Iterable[Key]:
         path="transistor.vce_sat", form="quantity", kind="voltage", example="0.2 V", default="0.2 V",
         meaning="Collector-emitter voltage of the saturated transistor.",
         otherwise="the type's; 0.2 V, germanium 0.1 V",
+    )  # fmt: skip
+    yield Key(
+        path="transistor.vceo", form="quantity", kind="voltage", example="45 V",
+        meaning="Largest collector-emitter voltage; the whole rail counts against it, which stands there at cut-off.",
+        otherwise="the type's; no verdict",
+    )  # fmt: skip
+    yield Key(
+        path="transistor.ic_max", form="quantity", kind="current", example="100 mA",
+        meaning="Largest collector current.", otherwise="the type's; no verdict",
+    )  # fmt: skip
+    yield Key(
+        path="transistor.ptot", form="quantity", kind="power", example="0.25 W",
+        meaning="Largest power at 25 °C ambient.", otherwise="the type's; no verdict",
+    )  # fmt: skip
+    yield Key(
+        path="transistor.tj_max", form="quantity", kind="temperature", example="150 °C",
+        meaning="Largest junction temperature.", otherwise="the type's; no verdict",
     )  # fmt: skip
 
 
@@ -612,6 +635,25 @@ def _ambient() -> Iterable[Key]:
     )  # fmt: skip
 
 
+def _signal() -> Iterable[Key]:
+    yield Key(
+        path="signal.bypass", form="choice", choices=("full", "none", "part"), default="full", example="full",
+        meaning="How much of re a capacitor bypasses for the signal.",
+    )  # fmt: skip
+    yield Key(
+        path="signal.unbypassed", form="quantity", kind="resistance", example="100 ohm",
+        meaning="With bypass part: the upper part of re, which carries the signal.", otherwise="none",
+    )  # fmt: skip
+    yield Key(
+        path="signal.load", form="quantity", kind="resistance", example="10 kohm",
+        meaning="Load of the output for the signal.", otherwise="no load",
+    )  # fmt: skip
+    yield Key(
+        path="signal.source", form="quantity", kind="resistance", default="0 ohm", example="1 kohm",
+        meaning="Resistance of the source of the signal.",
+    )  # fmt: skip
+
+
 def _limits() -> Iterable[Key]:
     for rule in RULES.values():
         meaning = rule.meaning[0].upper() + rule.meaning[1:]
@@ -663,6 +705,7 @@ KEYS: Mapping[str, Key] = MappingProxyType(
             *_resistors(""),
             *(key for role in ROLES for key in _resistors(role)),
             *_ambient(),
+            *_signal(),
             *_limits(),
             *_values(),
         ]

@@ -11,7 +11,7 @@ from types import MappingProxyType
 from typing import Any, Literal
 
 from synth import catalogue
-from synth.catalogue import TransistorRow
+from synth.catalogue import Derating, TransistorRow
 from synth.limits import RULES
 from synth.networks import NETWORKS
 from synth.preferred import ValueList
@@ -28,7 +28,9 @@ from synth.quantities import (
 )
 from synth.reference import Kind as ReferenceKind
 from synth.reference import Reference
+from synth.signal import Bypass, Signal
 from synth.stage_keys import KEYS, ROLES, StageError, nearest
+from synth.stress import TransistorRatings, transistor_ratings
 from synth.transistor import GAP_VOLTAGE, T0, Transistor, thermal_voltage
 
 LARGEST_TOLERANCE = 0.5
@@ -58,6 +60,7 @@ ZENER_TURN = 5.2
 """Zener voltage without a temperature coefficient, from memory [V]: tunnelling below, avalanche above."""
 ZENER_TC = (0.9e-3, -2.5e-3, 1.5e-3)
 """Its coefficient per volt above that [1/K], the least [V/K], and how far units stray [V/K]; from memory."""
+_RATINGS = ("vceo", "ic_max", "ptot", "tj_max")
 LED_TC = "-3 : -2 : -1 mV/K"
 """Common practice."""
 
@@ -253,9 +256,8 @@ class _Resolver:
         reference = self.reference(networks, transistor, current)
         load_rail = rails.get("vload", rails["vcc"]) if any(NETWORKS[name].sinks for name in networks) else None
         roles = self.roles(networks, any_network, temperature)
-        if any(setting.style for setting in roles.values()):
-            text = "a style is recorded only: its power and voltage ratings get no verdict, so compare the drops and currents"
-            self.warnings.append(StageWarning(name="style_not_judged", text=f"{text} listed with restpoint tables styles"))
+        ratings = self.ratings()
+        has_styles = any(setting.style for setting in roles.values())
         return {
             "name": self.value("name") or "stage",
             "networks": networks,
@@ -266,8 +268,11 @@ class _Resolver:
             "voltages": MappingProxyType(voltages),
             "transistor": transistor,
             "reference": reference,
+            "ratings": ratings,
+            "derating": self.policy(has_styles or ratings != TransistorRatings()),
+            "signal": self.signal(),
             "temperature": temperature,
-            "limits": MappingProxyType(self.limits(current, transistor, reference, load_rail)),
+            "limits": MappingProxyType(self.limits(current, transistor, reference, load_rail, has_styles, ratings)),
             "values": MappingProxyType(self.fitted()),
             "roles": MappingProxyType(roles),
             "assumed": (*(self.assumed[path] for path in KEYS if path in self.assumed), *self.notes),
@@ -575,6 +580,48 @@ class _Resolver:
             slope=Spread(*(count * end for end in (slope.low, slope.nominal, slope.high))),
         )
 
+    def ratings(self) -> TransistorRatings:
+        """What is known of the transistor's ratings: the type's, with the keys given in their place."""
+        kind = self.value("transistor.type")
+        found = TransistorRatings() if kind is None else transistor_ratings(catalogue.transistor(kind))
+        given = {leaf: self.value(f"transistor.{leaf}") for leaf in _RATINGS if f"transistor.{leaf}" in self.given}
+        for leaf, figure in given.items():
+            if figure <= 0.0:
+                example = KEYS[f"transistor.{leaf}"].example
+                raise self.refusal(f"transistor.{leaf}", "which is no rating", "a rating above 0", example)
+        if "ptot" in given:
+            given["ptot_ambient"] = T0
+        if (hottest := given.get("tj_max", found.tj_max)) is not None and hottest <= T0:
+            raise self.refusal("transistor.tj_max", "which is no more than 25 °C", "a temperature above that", "150 °C")
+        return dataclasses.replace(found, **given)
+
+    def policy(self, is_needed: bool) -> Derating:
+        """The derating policy; assumed only where a rating asks for one."""
+        key = KEYS["derating"]
+        name: str = self.take("derating") if is_needed else self.value("derating") or key.default
+        try:
+            return catalogue.derating(name)
+        except RestpointError:
+            near = nearest(name, catalogue.deratings())
+            accepted = f"one of {', '.join(catalogue.deratings())}"
+            raise self.refusal("derating", "which is unknown", accepted, *near) from None
+
+    def signal(self) -> Signal:
+        """What the signal meets."""
+        bypass: Bypass = self.value("signal.bypass") or "full"
+        unbypassed = self.value("signal.unbypassed")
+        if bypass == "part" and unbypassed is None:
+            accepted = "the resistance of re that carries the signal, such as '100 ohm'"
+            raise self.refusal("signal.unbypassed", "which is not given, but signal.bypass is part", accepted)
+        if bypass != "part" and unbypassed is not None:
+            raise self.refusal("signal.unbypassed", f"but signal.bypass is {bypass}", "this key with bypass part alone")
+        for leaf, figure in (("unbypassed", unbypassed), ("load", self.value("signal.load"))):
+            if figure is not None and figure <= 0.0:
+                raise self.refusal(f"signal.{leaf}", "which is no resistance", "a resistance above 0 ohm")
+        return Signal(
+            bypass=bypass, unbypassed=unbypassed, load=self.value("signal.load"), source=self.value("signal.source") or 0.0
+        )
+
     # Resistors, limits, values
 
     def roles(self, networks: Sequence[str], any_network: bool, temperature: Spread) -> dict[str, RoleSetting]:
@@ -700,7 +747,13 @@ class _Resolver:
         return lists
 
     def limits(
-        self, current: float, transistor: Transistor, reference: Reference | None, load_rail: Spread | None
+        self,
+        current: float,
+        transistor: Transistor,
+        reference: Reference | None,
+        load_rail: Spread | None,
+        has_styles: bool,
+        ratings: TransistorRatings,
     ) -> dict[str, Interval]:
         least_base = transistor.hfe.low * float(thermal_voltage(T0)) / current
         usual = {
@@ -712,6 +765,11 @@ class _Resolver:
             usual["compliance"] = (Interval(load_rail.nominal / 3.0, math.inf), "a third of the load's rail")
         if reference is not None:
             usual["reference_current"] = (Interval(reference.current / 2.0, math.inf), "half of its test current")
+        whole = Interval(-math.inf, 1.0)
+        if has_styles:
+            usual["resistor_stress"] = (whole, "all that the derating policy allows")
+        if ratings != TransistorRatings():
+            usual["transistor_stress"] = (whole, "all that the derating policy allows")
         limits: dict[str, Interval] = {}
         for name in RULES:
             path = f"limits.{name}"

@@ -11,7 +11,7 @@ from __future__ import annotations
 import itertools
 import zlib
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import nodal
@@ -19,11 +19,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from synth.box import Box, Meter, Parts
+from synth.catalogue import ResistorStyle, derating, deratings, resistor_style
 from synth.limits import Surroundings, judge, requirements
 from synth.networks import NETWORKS, Network
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
+from synth.signal import Signal
 from synth.spaces import Goal, Index, Space
+from synth.stress import TransistorRatings
 from synth.transistor import Transistor
 
 Array = NDArray[np.float64]
@@ -277,7 +280,7 @@ def _list(rng: np.random.Generator, around: float, length: int) -> Parts:
 
 
 def _limits(
-    rng: np.random.Generator, device: Transistor, goal: Goal, r: Mapping[str, float], vcc: float
+    rng: np.random.Generator, device: Transistor, goal: Goal, r: Mapping[str, float], vcc: float, stressed: bool
 ) -> dict[str, Interval]:
     """Some limits of each name, mostly such that something passes; now and then a range."""
     found: dict[str, Interval] = {}
@@ -294,6 +297,18 @@ def _limits(
         found["supply_current"] = Interval(float(rng.choice([-INF, goal.ic * 0.1])), goal.ic * rng.uniform(1.3, 4.0))
     if rng.random() < 0.5:
         found["compliance"] = Interval(vcc * rng.uniform(0.05, 0.6), INF)
+    if stressed:
+        load = r.get("rc", r["re"])
+        gm = goal.ic / 0.0257
+        if rng.random() < 0.3:
+            found["gain"] = Interval(gm * load * 10.0 ** rng.uniform(-2.5, -0.4), float(rng.choice([INF, 2.0 * gm * load])))
+        if rng.random() < 0.3:
+            found["input_resistance"] = Interval(device.hfe.low / gm * 10.0 ** rng.uniform(-2.0, -0.3), INF)
+        if rng.random() < 0.2:
+            found["output_resistance"] = Interval(-INF, load * rng.uniform(0.8, 2.0))
+        if rng.random() < 0.3:
+            found["swing"] = Interval(vcc * rng.uniform(0.003, 0.1), INF)
+        found["resistor_stress"] = found["transistor_stress"] = Interval(-INF, float(rng.choice([0.5, 1.0])))
     if rng.random() < 0.3:
         found["vce"] = Interval(vcc * rng.uniform(0.0, 0.15), float(rng.choice([INF, 0.95 * vcc])))
     return found
@@ -311,6 +326,7 @@ def random_spaces(
     *,
     most: int = 400,
     leakages: Sequence[str] = LEAKAGES,
+    stressed: bool = False,
 ) -> tuple[list[Space], Goal]:
     """Spaces of some networks, one for each variant of rails and roles drawn, that share device, goal and windows."""
     ic = 10.0 ** rng.uniform(-5.0, -2.0)
@@ -334,6 +350,14 @@ def random_spaces(
         **{kind: (_window(rng, aim), aim) for kind, aim in goal.aims.items() if kind in ("vc", "ve")},
     }
     limits: dict[str, Interval] | None = None
+    signal, ratings, policy = Signal(), TransistorRatings(), derating("none")
+    if stressed:
+        signal = _signal(rng, vcc, ic)
+        watts = vcc * ic * 10.0 ** rng.uniform(-0.3, 1.3)
+        known = {"vceo": vcc * rng.uniform(1.5, 5.0), "ic_max": ic * rng.uniform(1.5, 8.0), "ptot": watts}
+        hot_limit = {"ptot_ambient": ROOM, "tj_max": ambient.high + rng.uniform(20.0, 100.0)}
+        ratings = TransistorRatings(**{name: figure for name, figure in known.items() if rng.random() < 0.7}, **hot_limit)
+        policy = derating(str(rng.choice(list(deratings()))))
     spaces = []
     for name in networks:
         network = NETWORKS[name]
@@ -345,10 +369,15 @@ def random_spaces(
         if "ve" in goal.aims and "re" not in roles:
             roles = tuple(role for role in network.role_names if role in (*roles, "re"))
         if limits is None:
-            limits = _limits(rng, device, goal, r, vcc)
+            limits = _limits(rng, device, goal, r, vcc, stressed)
         if reference is not None:
             limits = {**limits, "reference_current": Interval(reference.current * rng.uniform(0.05, 0.6), INF)}
         lengths = _lengths(rng, len(roles), most)
+        styles = {}
+        if stressed:
+            # A style such that its rating is somewhere near what the resistor has to carry.
+            styles = {role: invented_style(ic**2 * r[role] * 10.0 ** rng.uniform(0.6, 2.5), vcc * rng.uniform(0.8, 4.0))
+                      for role in roles if rng.random() < 0.6}  # fmt: skip
         spaces.append(
             Space(
                 network=network,
@@ -358,15 +387,33 @@ def random_spaces(
                 temperature=ambient,
                 requirements=requirements(
                     network,
-                    Surroundings(rails=own, roles=roles, reference=reference, vce_sat=device.vce_sat),
+                    Surroundings(rails=own, roles=roles, reference=reference, vce_sat=device.vce_sat, hot=ambient.high,
+                                 styles=styles, ratings=ratings, derating=policy),
                     limits,
                     limits if rng.random() < 0.5 else (),
                     windows,
                 ),
                 reference=reference,
+                signal=signal,
+                styles=styles,
+                derating=policy,
             )
         )
     return spaces, goal
+
+
+def _signal(rng: np.random.Generator, vcc: float, ic: float) -> Signal:
+    """Any condition of the signal: bypass, load and source."""
+    bypass = str(rng.choice(["full", "full", "none", "part"]))
+    unbypassed = 0.02 * vcc / ic * 10.0 ** rng.uniform(-1.0, 0.5) if bypass == "part" else None
+    load = vcc / ic * 10.0 ** rng.uniform(-0.5, 1.0) if rng.random() < 0.6 else None
+    return Signal(bypass=bypass, unbypassed=unbypassed, load=load, source=float(rng.choice([0.0, 100.0, 1e4])))  # type: ignore[arg-type]
+
+
+def invented_style(power: float, volts: float) -> ResistorStyle:
+    """A chip of any rating, made at any resistance; full power to 70 °C, none at 155 °C, as makers' sheets have it."""
+    row = resistor_style("0805")
+    return replace(row, power_w_conservative=power, max_working_voltage_v=volts, r_min_ohm=1e-3, r_max_ohm=1e12)
 
 
 # --- Worst case by brute force ------------------------------------------------------------------------------------

@@ -43,6 +43,7 @@ from synth.limits import Requirement
 from synth.networks import NETWORKS
 from synth.q_point import SATURATED
 from synth.quantities import Interval, Spread
+from synth.straddle import extreme_in_any_region
 from synth.transistor import Transistor
 
 TRUE = 1e-9
@@ -615,7 +616,7 @@ def check_any_region(box: Box, u: dict[str, Numbers], case: object, wanted: Sequ
     for names in wanted or quantities(box):
         values = total(names, found)
         for direction in BOTH:
-            worst = box.extreme_in_any_region(names, direction)
+            worst = extreme_in_any_region(box, names, direction)
             some = np.where(np.isnan(values), -direction * np.inf, values)
             assert_never_less(box, names, direction, extreme_of(some, direction), worst.value, case)
     return int(np.size(values))
@@ -649,7 +650,7 @@ def test_any_region_deciding_point_gives_the_extreme_again(number: int) -> None:
     box = edge_box(rng, 3)
     for names in (("ic",), ("vce",)):
         for direction in BOTH:
-            worst = box.extreme_in_any_region(names, direction)
+            worst = extreme_in_any_region(box, names, direction)
             assert_allclose(box.measure(names, worst.at, box.solve(worst.at)), worst.value, rtol=SAME, atol=0)
             assert_inside(box, worst)
 
@@ -675,9 +676,9 @@ def test_ic_maximum_lies_on_the_edge_of_saturation() -> None:
     found = any_region("divider", box.transistor, point(box, u))
     # The edge runs between the vertices: with least drive the active law gives less, with most drive saturation takes some.
     assert found["ic"].max() < edge * (1.0 - 1e-4)
-    worst = box.extreme_in_any_region(("ic",), 1)
+    worst = extreme_in_any_region(box, ("ic",), 1)
     assert_allclose(worst.value, edge, rtol=TRUE, atol=0)
-    assert_allclose(box.extreme_in_any_region(("vce",), -1).value, box.transistor.vce_sat, rtol=SAME, atol=0)
+    assert_allclose(extreme_in_any_region(box, ("vce",), -1).value, box.transistor.vce_sat, rtol=SAME, atol=0)
     # The active law alone would promise a current that the load line cannot carry.
     assert box.extreme(("ic",), 1).value[0] > 1.03 * edge
 
@@ -689,7 +690,7 @@ def test_ic_maximum_on_the_edge_with_a_base_rail_of_its_own() -> None:
     edge = load_line(box, 10.5, 0.95 * 2.7e3, 1e3, 300.0)
     found = any_region("fixed_base", box.transistor, point(box, vertices(box)))
     assert found["ic"].max() < edge * (1.0 - 1e-4)
-    assert_allclose(box.extreme_in_any_region(("ic",), 1).value, edge, rtol=TRUE, atol=0)
+    assert_allclose(extreme_in_any_region(box, ("ic",), 1).value, edge, rtol=TRUE, atol=0)
 
 
 def test_ic_maximum_on_the_edge_of_a_stage_with_two_supplies() -> None:
@@ -698,7 +699,7 @@ def test_ic_maximum_on_the_edge_of_a_stage_with_two_supplies() -> None:
                 rb=10e3, rc=2.5e3, re=1.1e3)
     u = samples(np.random.default_rng(0), box, 20_000, at_ends=0.8)
     found = any_region("two_supply", box.transistor, point(box, u))["ic"]
-    assert_never_less(box, ("ic",), 1, found.max(axis=0), box.extreme_in_any_region(("ic",), 1).value, "two supplies")
+    assert_never_less(box, ("ic",), 1, found.max(axis=0), extreme_in_any_region(box, ("ic",), 1).value, "two supplies")
 
 
 @pytest.mark.parametrize("rb", [220e3, 470e3, 680e3])
@@ -708,10 +709,10 @@ def test_fixed_base_without_re_is_held_by_the_load_line(rb: float) -> None:
                 vbe=(0.6, 0.65, 0.7), rb=rb, rc=2.2e3)
     # 5 % and 100 ppm/K over 45 K, the farther end.
     line = (12.6 - 0.2) / (2.2e3 * (1.0 - 0.05 - 45e-4))
-    worst = box.extreme_in_any_region(("ic",), 1)
+    worst = extreme_in_any_region(box, ("ic",), 1)
     assert_allclose(worst.value, line, rtol=TRUE, atol=0)
     assert box.solve(worst.at).region[0] == SATURATED
-    assert_allclose(box.extreme_in_any_region(("vce",), -1).value, 0.2, rtol=SAME, atol=0)
+    assert_allclose(extreme_in_any_region(box, ("vce",), -1).value, 0.2, rtol=SAME, atol=0)
 
 
 def test_active_box_has_the_same_extremes_in_any_region() -> None:
@@ -722,7 +723,7 @@ def test_active_box_has_the_same_extremes_in_any_region() -> None:
     for names in (("ic",), ("vce",), ("i_r1",), ("i_r2",), ("ic", "i_r1")):
         for direction in BOTH:
             wanted = box.extreme(names, direction).value
-            assert_allclose(box.extreme_in_any_region(names, direction).value, wanted, rtol=TRUE, atol=0, err_msg=f"{names} {direction}")
+            assert_allclose(extreme_in_any_region(box, names, direction).value, wanted, rtol=TRUE, atol=0, err_msg=f"{names} {direction}")
 
 
 def test_vce_maximum_inside_a_rail_range_that_ends_in_saturation() -> None:
@@ -734,7 +735,7 @@ def test_vce_maximum_inside_a_rail_range_that_ends_in_saturation() -> None:
     assert 9.0 < vcc < 16.0
     box = stage(rails={"vcc": (9.0, 12.0, 16.0)}, r1=r1, r2=r2, rc=rc, re=re)
     assert any_region("divider", box.transistor, point(box, vertices(box)))["vce"].min() < 0.2001
-    assert_allclose(box.extreme_in_any_region(("vce",), 1).value, vcc - b * ic, rtol=1e-12, atol=0)
+    assert_allclose(extreme_in_any_region(box, ("vce",), 1).value, vcc - b * ic, rtol=1e-12, atol=0)
 
 
 def test_supply_current_on_the_edge_of_saturation() -> None:
@@ -748,7 +749,7 @@ def test_supply_current_on_the_edge_of_saturation() -> None:
     edge = rest(box, u, "r2", ("ic", "i_r1"))(x)
     values = any_region("divider", box.transistor, point(box, vertices(box)))
     assert edge > 1.0001 * total(("ic", "i_r1"), values).max()
-    worst = box.extreme_in_any_region(("ic", "i_r1"), 1).value
+    worst = extreme_in_any_region(box, ("ic", "i_r1"), 1).value
     assert_never_less(box, ("ic", "i_r1"), 1, np.array([edge]), worst, "edge")
 
 
@@ -762,7 +763,7 @@ def test_temperature_at_which_the_edge_is_just_reached() -> None:
     assert f(0.0) > 0.2 > f(1.0)
     x = brentq(lambda x: f(x) - 0.2, 0.0, 1.0, xtol=1e-15)
     ic = rest(box, u, "temperature", ("ic",))(x)
-    assert_allclose(box.extreme_in_any_region(("ic",), 1).value, ic, rtol=TRUE, atol=0)
+    assert_allclose(extreme_in_any_region(box, ("ic",), 1).value, ic, rtol=TRUE, atol=0)
 
 
 def test_stage_without_any_operating_point_has_no_worst_case() -> None:
@@ -771,5 +772,5 @@ def test_stage_without_any_operating_point_has_no_worst_case() -> None:
     assert np.isnan(saturated("fixed_base", box.transistor, point(box, vertices(box)))["ic"]).all()
     window = Requirement(name="target.ic", kind="current", interval=Interval(1e-4, 1e-3), judged="box", target=5e-4)
     for direction in BOTH:
-        worst = box.extreme_in_any_region(("ic",), direction).value
+        worst = extreme_in_any_region(box, ("ic",), direction).value
         assert not window.side(direction).passes(worst).any(), (direction, worst)

@@ -17,6 +17,7 @@ from typing import Any
 import pytest
 
 from synth.answer import Answer, Infeasible, NoCandidate, Relaxation
+from synth.catalogue import resistor_styles
 from synth.limits import RULES
 from synth.present import catalogue, export, terminal
 from synth.search import search
@@ -41,7 +42,8 @@ FOUND: dict[str, dict[str, Any]] = {
     "sagging battery": PLAIN | {"supply": "9 : 12 : 16 V", "supply_current": "4 mA"},
     "any network": PLAIN | {"network": "any", "vee": "12 V", "series": "E3", "tolerance": "5 %"},
     "fixed base with re or without": PLAIN | {"network": "fixed_base", "resistors_re_use": "either", "vbb": "5 V ± 5 %"},
-    "cautions": PLAIN | {"supply": "60 V", "vce": "30 V", "ic": "20 mA", "hfe": None, "type": "BC847B"},
+    "cautions": PLAIN | {"supply": "60 V", "vce": "30 V", "ic": "20 mA", "hfe": None, "type": "BC847B",
+                         "limits_transistor_stress": "none"},
     "odd values": PLAIN | {"series": None, "resistors_r1_values": "38.31k, 39.97k", "resistors_r2_values": "21.07k"},
     "small": {"supply": "3 V", "ic": "1 µA", "vce": "1 V", "hfe": "420 : 800", "series": "E24", "range": "1 kohm : 100 Mohm"},
     "long name": PLAIN | {"name": LONG},
@@ -242,7 +244,7 @@ def test_rank_beyond_the_list_is_refused(folder: Path) -> None:
 # --- Numbers --------------------------------------------------------------------------------------------------------
 
 PREFIX = {"f": -15, "p": -12, "n": -9, "µ": -6, "m": -3, "": 0, "k": 3, "M": 6, "G": 9}
-NUMBER = regex.compile(r"(?<![\w.,])([-−]?)([0-9]+(?:\.[0-9]+)?)(?: ?(%|°C|([fpnµmkMG]?)(?:V|A|Ω|W)\b))?(?![\w])")
+NUMBER = regex.compile(r"(?<![\w.,])([-−]?)([0-9]+(?:\.[0-9]+)?)(?: ?(%|°C|([fpnµmkMG]?)(?:V|A|Ω|W|S)\b))?(?![\w])")
 LETTER_CODE = regex.compile(r"\b([0-9]+)([RKMG])([0-9]*)\b")
 
 
@@ -331,8 +333,11 @@ def test_every_number_of_the_table_is_in_the_answer(kind: str, name: str, folder
     for heading in ("Worth a look", "Networks", "Cautions", "Assumed, since not given", "Next: "):
         body = body.partition(f"\n\n{heading}")[0]
     body = body.replace("against 0 V", "").replace("at 25 °C", "")
+    # The sizes of styles are names.
+    for style in sorted(resistor_styles(), key=len, reverse=True):
+        body = body.replace(f" {style}", "")
     # "1.78 to 2.19 mA" shows the unit of both ends once.
-    body = regex.sub(r"([0-9.]+) to ([0-9.]+) ([fpnµmkM]?[AV])\b", r"\1 \3 to \2 \3", body)
+    body = regex.sub(r"([0-9.]+) to ([0-9.]+) ([fpnµmkM]?(?:[AVSΩ]))(?!\w)", r"\1 \3 to \2 \3", body)
     assert missing(" ".join(body.split()), json.loads(answer.to_json())) == []
 
 

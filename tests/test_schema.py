@@ -65,7 +65,8 @@ FEASIBLE: dict[str, dict[str, Any]] = {
     "only one combination": PLAIN
     | {f"resistors_{role}_values": value for role, value in (("r1", "43k"), ("r2", "24k"), ("rc", "1k8"), ("re", "1k8"))},
     "no spread at all": PLAIN | {"hfe": "200", "vbe": "0.65 V", "tcr": "0 ppm/K", "temperature": "25 °C"},
-    "warnings": PLAIN | {"supply": "60 V", "vce": "30 V", "ic": "20 mA", "type": "BC847B", "hfe": None},
+    "warnings": PLAIN | {"supply": "60 V", "vce": "30 V", "ic": "20 mA", "type": "BC847B", "hfe": None,
+                         "limits_transistor_stress": "none"},
 }
 INFEASIBLE: dict[str, dict[str, Any]] = {
     "window too narrow": PLAIN | {"ic": "2 mA ± 1 %"},

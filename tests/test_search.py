@@ -119,6 +119,51 @@ def test_search_equals_full_enumeration(network: str, number: int, monkeypatch: 
         check_complete(search(spaces, goal, top=top), spaces, rows, top)
 
 
+STRESSED = 16
+"""Random spaces of each network with limits on stress and signal."""
+
+
+@cache
+def stressed_case(network: str, number: int) -> tuple[list[Space], Goal, int, list[Row]]:
+    """As `case`, with random styles, ratings, derating policy and signal, and limits on all of them."""
+    rng = generator("stressed", network, number)
+    names = [network]
+    if network == "any":
+        names = [str(name) for name in rng.choice(list(NETWORKS), int(rng.integers(2, 4)))]
+    spaces, goal = random_spaces(rng, names, most=60 if number % 8 == 0 else 12, stressed=True)
+    return spaces, goal, int(rng.integers(1, 7)), enumerate_all(spaces, goal)
+
+
+@pytest.mark.parametrize("number", range(STRESSED))
+@pytest.mark.parametrize("network", [*NETWORKS, "any"])
+def test_search_with_limits_on_stress_and_signal_equals_full_enumeration(
+    network: str, number: int, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    spaces, goal, top, rows = stressed_case(network, number)
+    check_complete(search(spaces, goal, top=top), spaces, rows, top)
+    if number % 4 == 1:
+        small_steps(monkeypatch, number // 4)
+        check_complete(search(spaces, goal, top=top), spaces, rows, top)
+
+
+def test_the_stressed_cases_are_of_every_kind() -> None:
+    """They would prove little if their limits never failed anything, or failed everything."""
+    feasible, deciding = 0, set()
+    for network in NETWORKS:
+        for number in range(STRESSED):
+            spaces, goal, _, rows = stressed_case(network, number)
+            feasible += bool(rows)
+            free = [replace(s, requirements=tuple(n for n in s.requirements if not is_stress_or_signal(n))) for s in spaces]
+            if len(enumerate_all(free, goal)) > len(rows):
+                deciding.add(network)
+    assert feasible >= 20
+    assert deciding == set(NETWORKS)
+
+
+def is_stress_or_signal(need: Requirement) -> bool:
+    return need.limit in ("gain", "input_resistance", "output_resistance", "swing", "resistor_stress", "transistor_stress")
+
+
 @pytest.mark.parametrize(("network", "number"), EVERY[::4])
 def test_candidates_stand_in_the_order_of_the_written_rule(network: str, number: int) -> None:
     _, goal, top, rows = case(network, number)

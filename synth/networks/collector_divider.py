@@ -58,4 +58,5 @@ NETWORK = Network(
     draws={"vcc": ("ic", "ib", "i_r2")},
     bleeder="r2",
     base_side=("r1", "r2"),
+    carries={"rc": ("ic", "i_r1"), "re": ("ic", "ib")},
 )

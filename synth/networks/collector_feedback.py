@@ -49,4 +49,5 @@ NETWORK = Network(
     },
     draws={"vcc": ("ic", "ib")},
     base_side=("rb",),
+    carries={"rb": ("ib",), "rc": ("ic", "ib"), "re": ("ic", "ib")},
 )

@@ -122,6 +122,8 @@ class Network:
         Whether rc and re hang between the same two rails, so that they divide one supply voltage between them.
     base_side : tuple of str
         Roles whose parallel connection feeds the base.
+    carries : mapping
+        Currents whose sum each resistor carries, where the table of signs does not name it.
     reference : {"no", "optional", "needed"}
         Whether a reference element can stand between the nodes ``m`` and ``0``; its current is ``i_ref``.
     takes_signal : bool
@@ -146,6 +148,7 @@ class Network:
     tied: Mapping[str, str] = field(default_factory=dict)
     shared_rails: bool = True
     base_side: tuple[str, ...] = ()
+    carries: Mapping[str, tuple[str, ...]] = field(default_factory=lambda: {"rc": ("ic",), "re": ("ic", "ib")})
     reference: Literal["no", "optional", "needed"] = "no"
     takes_signal: bool = True
     sinks: bool = False

@@ -45,4 +45,5 @@ NETWORK = Network(
     draws={"vcc": ("ic",), "vee": ("ic", "ib")},
     shared_rails=False,
     base_side=("rb",),
+    carries={"rb": ("ib",), "rc": ("ic",), "re": ("ic", "ib")},
 )

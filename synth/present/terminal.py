@@ -12,6 +12,7 @@ from synth.stage_keys import KEYS
 
 WIDTH = 100
 FIGURES = 3
+STRESS = ("resistor_stress.", "transistor_stress.")
 LEGEND = """Words
   over the box  worst case over every spread at once: gain, VBE, temperature, supply, resistors
   drift         largest excursion from target over the box, relative to the target
@@ -40,7 +41,7 @@ def render(answer: Answer) -> str:
     if best is not None:
         if answer.kind == "find":
             blocks.append(_ranking(answer.candidates))
-        blocks += [_first(answer, best), _causes(best), _limits(best)]
+        blocks += [_first(answer, best), _causes(best), _limits(best), _stress(answer, best), _signal(answer, best)]
     if answer.alternatives:
         blocks.append(
             _section("Worth a look", [[f"rank {a.rank}", a.reason, a.text] for a in answer.alternatives])
@@ -289,11 +290,77 @@ def limit_words(v: Verdict) -> str:
 def _limits(c: Candidate) -> str:
     rows = [["limit", "allowed", "worst", "margin", "", "decided at"]]
     for v in c.limits:
+        if v.verdict == "pass" and v.name.startswith(STRESS):
+            continue
         decides = point_words(v.at, skip=tuple(c.resistors)) if v.at and v.name not in ("bleeder_current",) else "nominal"
         saturates = v.name == "vce" and v.verdict == "fail" and v.worst == v.limit
         margin = "saturates" if saturates else percent(v.margin) if abs(v.margin) < inf else "–"
         rows.append([v.name, limit_words(v), figure(v.worst, v.kind), margin, v.verdict, decides])
     return _section("Limits and windows", rows, right=(3,)) if len(rows) > 1 else ""
+
+
+def _used(worst: float, allowed: float | None, kind: str) -> str:
+    """A worst value with the share used of what is allowed."""
+    if allowed is None:
+        return figure(worst, kind)
+    share = percent(worst / allowed) if allowed > 0.0 else "none allowed"
+    return f"{figure(worst, kind)}, {share} of {format_quantity(allowed, kind)}"
+
+
+def _stress(answer: Answer, c: Candidate) -> str:
+    """What every part carries at its own worst point, against its rating."""
+    if not c.stress or c.transistor is None:
+        return ""
+    policy = answer.stage.get("derating", "none")
+    hot = format_quantity(answer.stage["ambient"]["temperature"][2], "temperature")
+    rows = [["part", "style", "power", "voltage", "smallest style that does"]]
+    for role, s in c.stress.items():
+        smallest = s.smallest or "none in the table"
+        if s.string is not None:
+            smallest += f"; or {s.string} x {s.style} in series"
+        power, volts = _used(s.power, s.power_allowed, "power"), _used(s.voltage, s.voltage_allowed, "voltage")
+        rows.append([f"{role.upper()} {format_resistance(c.resistors[role])}", s.style or "–", power, volts, smallest])
+    lines = [table(rows)]
+    load = c.transistor
+    labels = {"power": ("dissipates", "power"), "vceo": ("cut off it holds", "voltage"), "ic": ("carries", "current")}
+    parts = [
+        f"{words} {_used(getattr(load, name), load.allowed.get(name), kind)}"
+        for name, (words, kind) in labels.items()
+        if name == "power" or name in load.allowed
+    ]
+    if c.transistor.junction is not None and c.transistor.thermal_resistance is not None:
+        at = format_quantity(c.transistor.thermal_resistance, "thermal_resistance")
+        parts.append(f"junction at {format_quantity(c.transistor.junction, 'temperature')} with {at}")
+    lines.append(_wrapped(f"  transistor: {'; '.join(parts)}", "    "))
+    title = f"Stress of every part at its own worst point (derating {policy}, ambient up to {hot})"
+    return "\n".join([title, *lines])
+
+
+SIGNAL_WORDS = {
+    "gm": ("transconductance gm", "conductance"),
+    "r_pi": ("r pi", "resistance"),
+    "r_intrinsic": ("intrinsic emitter resistance VT/IE", "resistance"),
+    "input_resistance": ("input resistance, feed included", "resistance"),
+    "output_resistance": ("output resistance", "resistance"),
+    "gain": ("voltage gain", "gain"),
+    "swing": ("peak output swing", "voltage"),
+}
+
+
+def _signal(answer: Answer, c: Candidate) -> str:
+    """Small-signal figures over the box."""
+    if not c.signal:
+        return ""
+    around = answer.stage["signal"]
+    bypass = {"full": "re bypassed", "none": "re not bypassed", "part": "re partly bypassed"}[around["bypass"]]
+    load = "no load" if around["load"] is None else f"load {format_quantity(around['load'], 'resistance')}"
+    source = format_quantity(around["source"], "resistance")
+    notes = [bypass] if "re" in c.resistors and c.network != "follower" else []
+    rows = [["", "nominal", "over the box"]]
+    for name, (low, middle, high) in c.signal.items():
+        words, kind = SIGNAL_WORDS[name]
+        rows.append([words, figure(middle, kind), span(low, high, kind)])
+    return _section(f"Signal ({', '.join([*notes, load, f'source {source}'])})", rows)
 
 
 def _infeasible(answer: Answer) -> str:

@@ -104,6 +104,7 @@ _ALL = (
         name="temperature_coefficient", unit="ppm/K", units=dict.fromkeys(("ppm/K", "ppm/°C", "ppm"), -6),
         examples=("100 ppm/K", "-50 ppm/K"),
     ),
+    Kind(name="conductance", unit="S", prefixes=PREFIXES, minimum=0.0, examples=("80 mS", "1 S")),
     Kind(
         name="voltage_per_kelvin", unit="V/K", title="voltage per kelvin", prefixes=PREFIXES,
         units=dict.fromkeys(("V/K", "V/°C"), 0), examples=("-2 mV/K", "1.2 mV/K"),

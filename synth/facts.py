@@ -1,0 +1,205 @@
+"""What a review asks of a candidate besides its drift: stress of every part, and small-signal figures over the box."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+
+from synth.answer import Candidate, Caution, Load, Stress
+from synth.box import Box
+from synth.catalogue import Derating, ResistorStyle, resistor_styles
+from synth.explain import percent
+from synth.measures import POWER_OF_TRANSISTOR
+from synth.quantities import format_quantity, format_resistance
+from synth.stress import (
+    TransistorRatings,
+    allowed_dissipation,
+    allowed_ic,
+    allowed_power,
+    allowed_vce,
+    allowed_voltage,
+    carries,
+    smallest_style,
+    string_length,
+    temperature_rise,
+)
+
+SHOWN = ("gm", "r_pi", "r_intrinsic", "input_resistance", "output_resistance", "gain", "swing")
+"""Small-signal figures of an answer: [S], [ohm], [ohm], [ohm], [ohm], [-], [V]."""
+WARM = 10.0
+"""Rise of a resistor's own temperature from which it is worth a caution [K]."""
+
+
+def stresses(
+    box: Box, styles: Mapping[str, ResistorStyle], policy: Derating
+) -> list[dict[str, Stress]]:
+    """Worst power and voltage of every resistor, each at its own point of the box, against its style.
+
+    Parameters
+    ----------
+    box : Box
+        n candidates.
+    styles : mapping of str to ResistorStyle
+        Style of each role that has one.
+    policy : Derating
+        Derating policy.
+
+    Returns
+    -------
+    list of dict
+        Role to stress, one mapping for each candidate [W, V].
+    """
+    hot = box.temperature.high
+    found: list[dict[str, Stress]] = [{} for _ in range(box.size)]
+    for role, part in box.parts.items():
+        power = box.extreme((f"p_{role}",), 1).value
+        volts = np.maximum(box.extreme((f"u_{role}",), 1).value, -box.extreme((f"u_{role}",), -1).value)
+        style = styles.get(role)
+        mounting = "chip" if style is None else style.style
+        among = [row for row in resistor_styles().values() if row.style == mounting]
+        for k in range(box.size):
+            ohms = float(part.nominal[k])
+            needed = smallest_style(power[k], volts[k], ohms, hot, policy, among=among)
+            number = None
+            if style is not None and not bool(carries(style, power[k], volts[k], ohms, hot, policy)):
+                number = string_length(style, power[k], volts[k], ohms, hot, policy, band=float(part.band[k]))
+            found[k][role] = Stress(
+                power=float(power[k]),
+                voltage=float(volts[k]),
+                style=None if style is None else style.name,
+                power_allowed=None if style is None else float(allowed_power(style, hot, policy)),
+                voltage_allowed=None if style is None else float(allowed_voltage(style, ohms, policy)),
+                smallest=None if needed is None else needed.name,
+                string=number,
+            )
+    return found
+
+
+def loads(box: Box, ratings: TransistorRatings, policy: Derating) -> list[Load]:
+    """What the transistor carries at worst, and where its junction gets at the hot ambient.
+
+    Parameters
+    ----------
+    box : Box
+        n candidates.
+    ratings : TransistorRatings
+        What is known of the transistor.
+    policy : Derating
+        Derating policy.
+
+    Returns
+    -------
+    list of Load
+        One for each candidate [W, V, A, K, K/W].
+    """
+    power, rail, ic = (box.extreme((name,), 1).value for name in (POWER_OF_TRANSISTOR, "span", "ic"))
+    hot, rth = box.temperature.high, ratings.thermal_resistance
+    most = allowed_dissipation(ratings, hot, policy)
+    known = {
+        "power": None if most is None else float(most),
+        "vceo": allowed_vce(ratings, policy),
+        "ic": allowed_ic(ratings, policy),
+    }
+    allowed = {name: limit for name, limit in known.items() if limit is not None}
+    return [
+        Load(
+            power=float(power[k]),
+            vceo=float(rail[k]),
+            ic=float(ic[k]),
+            allowed=allowed,
+            thermal_resistance=rth,
+            junction=None if rth is None else hot + rth * float(power[k]),
+        )
+        for k in range(box.size)
+    ]
+
+
+def signals(box: Box) -> list[dict[str, tuple[float, float, float]]]:
+    """Small-signal figures: least, nominal and greatest over the box.
+
+    Parameters
+    ----------
+    box : Box
+        n candidates, active over the whole box.
+
+    Returns
+    -------
+    list of dict
+        Figure to its three values [S, ohm, - or V]; empty for a network that takes no signal.
+    """
+    if not box.network.takes_signal:
+        return [{} for _ in range(box.size)]
+    values = box.nominal()
+    q = box.solve(values)
+    found: list[dict[str, tuple[float, float, float]]] = [{} for _ in range(box.size)]
+    for name in SHOWN:
+        middle = np.broadcast_to(box.measure((name,), values, q), (box.size,))
+        if name == "swing":
+            sides = ("swing_to_cutoff", "swing_to_saturation")
+            low = np.minimum.reduce([box.extreme((side,), -1).value for side in sides])
+            high = np.minimum.reduce([box.extreme((side,), 1).value for side in sides])
+        else:
+            low, high = (box.extreme((name,), side).value for side in (-1, 1))
+        for k in range(box.size):
+            found[k][name] = (float(low[k]), float(middle[k]), float(high[k]))
+    return found
+
+
+def stress_cautions(
+    candidate: Candidate, box: Box, styles: Mapping[str, ResistorStyle], policy: Derating
+) -> tuple[Caution, ...]:
+    """Cautions about resistors: what they carry when the transistor fails, and how warm they make themselves.
+
+    Parameters
+    ----------
+    candidate : Candidate
+        With its stress.
+    box : Box
+        Its box, of one candidate.
+    styles : mapping of str to ResistorStyle
+        Style of each role that has one.
+    policy : Derating
+        Derating policy.
+
+    Returns
+    -------
+    tuple of Caution
+        In the order of the roles.
+    """
+    found = []
+    hot = box.temperature.high
+    # With the transistor shorted, or saturated, the rails stand across rc and re alone.
+    chain = [role for role in ("rc", "re") if role in box.parts and not box.network.sinks]
+    span = box.rails["vcc"].high + (box.rails["vee"].high if "vee" in box.rails else 0.0)
+    total = sum(candidate.resistors[role] for role in chain)
+    for role in chain:
+        style = styles.get(role)
+        if style is None:
+            continue
+        ohms = candidate.resistors[role]
+        power, volts = (span / total) ** 2 * ohms, span * ohms / total
+        if not bool(carries(style, power, volts, ohms, hot, policy)):
+            least = format_quantity(float(allowed_power(style, hot, policy)), "power")
+            found.append(
+                Caution(
+                    name="resistor_when_shorted",
+                    text=f"With the transistor shorted or saturated {role.upper()} {format_resistance(ohms)} carries "
+                    f"{format_quantity(power, 'power')} at {format_quantity(volts, 'voltage')}, more than the {least} that "
+                    f"style {style.name} may have here: it gets hot or burns open.",
+                )
+            )
+    for role, stress in candidate.stress.items():
+        style = styles.get(role)
+        rise = 0.0 if style is None else float(temperature_rise(style, stress.power))
+        if rise > WARM:
+            part = box.parts[role]
+            more = rise * max(abs(float(part.tcr_low[0])), abs(float(part.tcr_high[0])))
+            found.append(
+                Caution(
+                    name="resistor_self_heating",
+                    text=f"{role.upper()} heats itself by up to {rise:.0f} K, which with its temperature coefficient adds "
+                    f"{percent(more)} to its band; the worst case counts the ambient only.",
+                )
+            )
+    return tuple(found)

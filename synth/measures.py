@@ -1,0 +1,252 @@
+"""Every quantity that a limit can ask for: its value at a solved point, and what is proved of its slopes.
+
+Names are ``ic ib vce vbe``; ``vc``, the collector against 0 V, and ``ve``, the drop of re; ``i_<role>``, ``u_<role>`` and
+``p_<role>`` for the current, voltage and power of a resistor; ``i_ref`` for the reference element; ``rail_<rail>`` for what
+is drawn from a rail; ``span`` for the voltage that stands across the transistor once it is cut off; ``p_q`` for what the
+transistor dissipates; and the small-signal parameters ``gm r_pi r_intrinsic`` and figures of `synth.signal`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+import numpy as np
+
+from synth.networks.form import Array, Branches, Network, QPoint, Rails, Resistances, Sign
+from synth.signal import FIGURES, Signal, SmallSignal, signs
+from synth.transistor import Transistor
+
+POWER_OF_TRANSISTOR = "p_q"
+PARAMETERS_OF_SIGNAL = ("gm", "r_pi", "r_intrinsic")
+PARAMETERS_OF_DEVICE = ("delta", "hfe", "icbo", "delta_ref", "r_ref")
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Setting:
+    """What a quantity depends on besides the values of the parameters.
+
+    Parameters
+    ----------
+    network : Network
+        How the resistors are connected.
+    transistor : Transistor
+        Its laws.
+    roles : tuple of str
+        Roles used.
+    has_reference : bool
+        Whether a reference element stands in the circuit.
+    signal : Signal
+        What the signal meets.
+    """
+
+    network: Network
+    transistor: Transistor
+    roles: tuple[str, ...]
+    has_reference: bool
+    signal: Signal
+
+
+def is_figure(name: str) -> bool:
+    """Whether a quantity is a small-signal figure.
+
+    Parameters
+    ----------
+    name : str
+        Name of a quantity.
+
+    Returns
+    -------
+    bool
+        True for those of `synth.signal`.
+    """
+    return name in FIGURES
+
+
+def small_signal(
+    setting: Setting, sources: Rails, r: Resistances, q: QPoint, gain: Array, temperature: Array
+) -> SmallSignal:
+    """The small-signal stage at solved points.
+
+    Parameters
+    ----------
+    setting : Setting
+        Network and signal.
+    sources : mapping of str to array_like
+        Rails and reference element [V, ohm].
+    r : mapping of str to array_like
+        Resistances [ohm].
+    q : QPoint
+        The Q-point.
+    gain, temperature : ndarray
+        hFE at that temperature [-], and the temperature [K].
+
+    Returns
+    -------
+    SmallSignal
+        Its figures, of the broadcast shape.
+    """
+    return SmallSignal(
+        network=setting.network,
+        r=r,
+        q=q,
+        hfe=gain,
+        temperature=temperature,
+        vce_sat=setting.transistor.vce_sat,
+        signal=setting.signal,
+        r_ref=sources.get("r_ref"),
+    )
+
+
+def measure(
+    name: str, setting: Setting, sources: Rails, r: Resistances, q: QPoint, branches: Branches, gain: Array, temperature: Array
+) -> Array:
+    """One quantity at solved points.
+
+    Parameters
+    ----------
+    name : str
+        Its name.
+    setting : Setting
+        Network and signal.
+    sources : mapping of str to array_like
+        Rails and reference element [V, ohm].
+    r : mapping of str to array_like
+        Resistances [ohm].
+    q : QPoint
+        The Q-point.
+    branches : Branches
+        Voltages and currents around it.
+    gain, temperature : ndarray
+        hFE at that temperature [-], and the temperature [K].
+
+    Returns
+    -------
+    ndarray
+        Of the broadcast shape [A, V, W, ohm or -].
+    """
+    if name in QPoint._fields:
+        return np.asarray(getattr(q, name))
+    if name == POWER_OF_TRANSISTOR:
+        return np.asarray(q.vce * q.ic + q.vbe * q.ib)
+    if name == "vc":
+        return np.asarray(branches.nodes["c"])
+    if name == "ve":
+        return np.asarray(branches.voltage.get("re", 0.0 * q.ic))
+    if name == "span":
+        return np.asarray(sources.get("vload", sources["vcc"]) + sources.get("vee", 0.0) + 0.0 * q.ic)
+    if is_figure(name) or name in PARAMETERS_OF_SIGNAL:
+        return np.asarray(getattr(small_signal(setting, sources, r, q, gain, temperature), name))
+    kind, _, what = name.partition("_")
+    if kind == "rail":
+        return np.asarray(branches.rail[what])
+    if kind == "p":
+        return np.asarray(branches.voltage[what] * branches.current[what])
+    return np.asarray(branches.voltage[what] if kind == "u" else branches.current[what])
+
+
+def sign(name: str, axis: str, setting: Setting) -> Sign:
+    """Proved sign of a quantity along an axis of the box.
+
+    Parameters
+    ----------
+    name : str
+        Its name.
+    axis : str
+        A rail, a role, or ``delta hfe icbo delta_ref r_ref``.
+    setting : Setting
+        Network and signal.
+
+    Returns
+    -------
+    int or None
+        +1, −1, 0, or None where nothing is proved.
+
+    Notes
+    -----
+    A resistor's current is positive where the signs of its network hold. u = R·i and p = R·i² follow it along every axis
+    but their own; along their own they rise where the current does not depend on it.
+    """
+    network = setting.network
+    if name == "span":
+        return 0 if axis in (*setting.roles, *PARAMETERS_OF_DEVICE) else 1
+    if name == POWER_OF_TRANSISTOR:
+        return None
+    if name in PARAMETERS_OF_SIGNAL:
+        behind = ("ic", "ib") if name == "r_intrinsic" else ("ic",)
+        current = common(network.sign(part, axis) for part in behind)
+        if name == "gm" or current is None:
+            return current
+        # IC/h = IB + (1 + 1/h)·ICBO falls along hfe, as IB does.
+        return 1 if name == "r_pi" and axis == "hfe" else -current
+    if is_figure(name):
+        return signs(network, name, setting.signal.bypass, roles=setting.roles).get(axis)
+    kind, _, role = name.partition("_")
+    if kind in ("i", "u", "p") and role in setting.roles:
+        current = current_sign(network, role, axis)
+        if kind == "i" or axis != role:
+            return current
+        if kind == "u" and role == "re":
+            return network.sign("ve", "re")
+        return 1 if current == 0 else None
+    return network.sign(name, axis)
+
+
+def current_sign(network: Network, role: str, axis: str) -> Sign:
+    """Proved sign of a resistor's current along an axis.
+
+    Parameters
+    ----------
+    network : Network
+        Its network.
+    role : str
+        The resistor.
+    axis : str
+        As in `sign`.
+
+    Returns
+    -------
+    int or None
+        Of the network's own table, or the common sign of the currents that the resistor carries together.
+    """
+    if f"i_{role}" in network.signs:
+        return network.sign(f"i_{role}", axis)
+    return common(network.sign(part, axis) for part in network.carries.get(role, ()))
+
+
+def common(found: Iterable[Sign]) -> Sign:
+    """The sign that all have that are not 0.
+
+    Parameters
+    ----------
+    found : iterable of int or None
+        Signs.
+
+    Returns
+    -------
+    int or None
+        0 if all are; None where one is unknown, two disagree, or there is none.
+    """
+    every = list(found)
+    kinds = set(every) - {0}
+    if not every or None in kinds or len(kinds) > 1:
+        return None
+    return kinds.pop() if kinds else 0
+
+
+def parts_of_current(network: Network, role: str) -> tuple[str, ...]:
+    """Currents whose sum a resistor carries.
+
+    Parameters
+    ----------
+    network : Network
+        Its network.
+    role : str
+        The resistor.
+
+    Returns
+    -------
+    tuple of str
+        Names of quantities with proved signs of their own.
+    """
+    return (f"i_{role}",) if f"i_{role}" in network.signs else network.carries.get(role, ())
