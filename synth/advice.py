@@ -4,13 +4,15 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
 from synth.answer import Infeasible, Relaxation
 from synth.box import Meter
+from synth.facts import stresses
 from synth.limits import Requirement, judge
-from synth.quantities import Interval, Target, format_exact, format_limit, format_target
+from synth.quantities import Interval, Target, format_exact, format_limit, format_quantity, format_target
 from synth.search import Outcome, search
 from synth.spaces import Exact, Found, Space, goal_of, spaces_of
 from synth.stage import Stage
@@ -47,7 +49,7 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
     -----
     Deletion filter: each limit in turn is dropped for good if the rest still conflict. Every step is an exact search.
     """
-    needs = {need.name: need for space in spaces_of(stage) for need in space.requirements}
+    needs = {need.limit: need for space in spaces_of(stage) for need in space.requirements}
     given = {name for name in needs if name.startswith("target.") or name in stage.limits_given}
     # Staying active is physics, not a request; and what the user did not ask for is named, and given up, first.
     names = sorted((n for n in needs if n != ACTIVE or n in given), key=lambda n: n in given)
@@ -58,32 +60,60 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
             dropped.add(name)
     binding = tuple(name for name in names if name not in dropped) or (ACTIVE,)
     best_without: dict[str, float | None] = {}
+    notes: dict[str, str] = {}
     ranked: list[tuple[bool, float, Relaxation]] = []
     for name in binding:
         outcome = _search(stage, {name})
         best_without[name] = outcome.found[0].drift if outcome.found else None
         relaxed = _relax(stage, name, outcome.found[0]) if outcome.found else None
+        if outcome.found and (note := _note(stage, name, outcome.found[0])):
+            notes[name] = note
         if relaxed is not None:
             ranked.append((name in given, *relaxed))
     ranked.sort(key=lambda entry: entry[:2])
-    return Infeasible(binding=binding, best_without=best_without, relaxations=tuple(r for _, _, r in ranked))
+    return Infeasible(
+        binding=binding, best_without=best_without, relaxations=tuple(r for _, _, r in ranked), notes=notes
+    )
 
 
 def _search(stage: Stage, without: set[str]) -> Outcome:
     return search(spaces_of(stage, without), goal_of(stage), top=1, gap=GAP, most=EFFORT)
 
 
-def _requirement(stage: Stage, name: str, like: Space) -> Requirement:
-    """A requirement as it reads for one network: what a limit measures differs between them."""
+def _requirements(stage: Stage, name: str, like: Space) -> list[Requirement]:
+    """A limit as it reads for one network: what it measures differs between them, and it may have several parts."""
     space = next(s for s in spaces_of(stage) if s.network is like.network and s.roles == like.roles)
-    return next(need for need in space.requirements if need.name == name)
+    return [need for need in space.requirements if need.limit == name]
+
+
+def _note(stage: Stage, name: str, found: Found) -> str:
+    """Which parts of a limit the best candidate without it breaks, with figures; "" of a limit without parts."""
+    exact = Exact(found.space.box(np.array([found.index], dtype=np.int32), Meter()), goal_of(stage))
+    broken = []
+    for need in _requirements(stage, name, found.space):
+        judged = judge(exact.box, need, exact.worst)
+        if need.rated is not None and not bool(judged.passed[0]):
+            reached, allowed = (format_quantity(x, need.kind) for x in (float(judged.worst[0]), need.interval.high))
+            broken.append(f"{need.name.partition('.')[2]} reaches {reached}, allowed is {allowed}")
+    for role, stress in stresses(exact.box, found.space.styles, found.space.derating)[0].items():
+        if name == "resistor_stress" and stress.string is not None:
+            broken.append(f"{stress.string} x {stress.style} in series would do for {role}")
+    return "; ".join(broken)
 
 
 def _relax(stage: Stage, name: str, found: Found) -> tuple[float, Relaxation] | None:
     """Least relaxation of one limit that lets a candidate qualify, with how far it moves the limit."""
-    need = _requirement(stage, name, found.space)
+    needs = _requirements(stage, name, found.space)
     exact = Exact(found.space.box(np.array([found.index], dtype=np.int32), Meter()), goal_of(stage))
-    reached = float(judge(exact.box, need, exact.worst).worst[0])
+    judged = [judge(exact.box, need, exact.worst) for need in needs]
+    worst = min(judged, key=lambda j: float(j.margin[0]))
+    need, reached = worst.requirement, float(worst.worst[0])
+    if (rated := need.rated) is not None:
+        # Of a limit on used shares the share counts, whichever part uses most of its own.
+        if rated <= 0.0:
+            return None
+        low, high = (end / rated if math.isfinite(end) else end for end in (need.interval.low, need.interval.high))
+        need, reached = replace(need, name=name, kind="ratio", interval=Interval(low, high), rated=None), reached / rated
     if need.name == ACTIVE and reached < found.space.transistor.vce_sat:
         return None
     start = need.interval.low if reached < need.interval.low else need.interval.high

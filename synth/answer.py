@@ -145,7 +145,9 @@ class Load:
     """What the transistor carries at worst: power [W], the rail across it once cut off [V], IC [A].
 
     `allowed` holds what the ratings and the policy allow of ``power vceo ic`` at the hot ambient, as far as they are known;
-    `junction` is where the junction gets there [K] with a thermal resistance [K/W].
+    `junction` is where the junction settles at the point of most power, heating itself [K], and `loop_gain` what a kelvin
+    of its temperature gives back [-], with a thermal resistance [K/W]; both None where that is not known, or where it does
+    not settle, which `state` says. `heating` is how far self-heating moves the nominal IC [-], None where not known.
     """
 
     power: float
@@ -154,6 +156,9 @@ class Load:
     allowed: Mapping[str, float]
     thermal_resistance: float | None
     junction: float | None
+    loop_gain: float | None = None
+    state: str | None = None
+    heating: float | None = None
 
     @property
     def used(self) -> dict[str, float]:
@@ -272,11 +277,15 @@ class Relaxation:
 
 @dataclass(frozen=True, kw_only=True)
 class Infeasible:
-    """Why nothing qualifies: the limits that bind together, the best drift without each [-], single changes that would do."""
+    """Why nothing qualifies: the limits that bind together, the best drift without each [-], single changes that would do.
+
+    `notes` says of a limit with several parts which ones the best candidate without it breaks.
+    """
 
     binding: tuple[str, ...]
     best_without: Mapping[str, float | None]
     relaxations: tuple[Relaxation, ...]
+    notes: Mapping[str, str] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -427,6 +436,7 @@ class Answer:
                 "binding": list(self.infeasible.binding),
                 "best_without": _plain(self.infeasible.best_without),
                 "relaxations": [_plain(vars(r)) for r in self.infeasible.relaxations],
+                "notes": dict(self.infeasible.notes),
             }
         return body
 

@@ -298,7 +298,7 @@ class Box:
             found |= self.reference.line(values["delta_ref"], values["r_ref"], values["temperature"])
         return found
 
-    def solve(self, values: Values, active_law: bool = False) -> QPoint:
+    def solve(self, values: Values, active_law: bool = False, junction: Array | None = None) -> QPoint:
         """Q-point at given parameters.
 
         Parameters
@@ -307,13 +307,15 @@ class Box:
             See `Values`; broadcast.
         active_law : bool
             Whether to stay with the active-region law below VCE(sat).
+        junction : ndarray, optional
+            Temperature of the transistor [K]; the ambient temperature when not given. Resistors stay at the ambient.
 
         Returns
         -------
         QPoint
             Of the broadcast shape.
         """
-        t = values["temperature"]
+        t = values["temperature"] if junction is None else junction
         law = solve_active if active_law else solve
         q = law(
             self.network,

@@ -533,7 +533,7 @@ def cautions(candidate: Candidate, box: Box) -> tuple[Caution, ...]:
                 "checked by a licensed person, and discharge capacitors before touching.",
             )
         )
-    power = candidate.worst["ic"][1] * candidate.worst["vce"][1]
+    power = dissipation(candidate)
     if power > 0.1:
         found.append(
             Caution(
@@ -543,6 +543,24 @@ def cautions(candidate: Candidate, box: Box) -> tuple[Caution, ...]:
             )
         )
     return tuple(found)
+
+
+def dissipation(candidate: Candidate) -> float:
+    """Greatest dissipation of the transistor.
+
+    Parameters
+    ----------
+    candidate : Candidate
+        Any candidate.
+
+    Returns
+    -------
+    float
+        Over the box, or where that was not looked for the product of the greatest IC and VCE, which is more [W].
+    """
+    if candidate.transistor is not None:
+        return candidate.transistor.power
+    return candidate.worst.ic[1] * candidate.worst.vce[1]
 
 
 def _ratings(candidate: Candidate, box: Box) -> list[Caution]:
@@ -569,7 +587,7 @@ def _ratings(candidate: Candidate, box: Box) -> list[Caution]:
                 f"that {row.type} may carry.",
             )
         )
-    power = most * candidate.worst.vce[1]
+    power = dissipation(candidate)
     if row.ptot_w is not None and power > 0.5 * row.ptot_w:
         found.append(
             Caution(

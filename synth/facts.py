@@ -7,12 +7,15 @@ from collections.abc import Mapping
 import numpy as np
 
 from synth.answer import Candidate, Caution, Load, Stress
-from synth.box import Box
+from synth.box import Box, Values
 from synth.catalogue import Derating, ResistorStyle, resistor_styles
 from synth.explain import percent
 from synth.measures import POWER_OF_TRANSISTOR
+from synth.networks.form import Array
 from synth.quantities import format_quantity, format_resistance
 from synth.stress import (
+    JUNCTION_STATES,
+    Junction,
     TransistorRatings,
     allowed_dissipation,
     allowed_ic,
@@ -20,6 +23,7 @@ from synth.stress import (
     allowed_vce,
     allowed_voltage,
     carries,
+    junction_temperature,
     smallest_style,
     string_length,
     temperature_rise,
@@ -27,6 +31,10 @@ from synth.stress import (
 
 SHOWN = ("gm", "r_pi", "r_intrinsic", "input_resistance", "output_resistance", "gain", "swing")
 """Small-signal figures of an answer: [S], [ohm], [ohm], [ohm], [ohm], [-], [V]."""
+HOTTEST = 473.15
+"""Junction temperature at which the laws end where no TJ max is known, 200 °C [K]."""
+GAIN_TO_TELL, SHIFT_TO_TELL = 0.5, 0.01
+"""Thermal loop gain, and shift of the nominal IC by self-heating, from which they are worth a caution [-]."""
 WARM = 10.0
 """Rise of a resistor's own temperature from which it is worth a caution [K]."""
 
@@ -93,7 +101,8 @@ def loads(box: Box, ratings: TransistorRatings, policy: Derating) -> list[Load]:
     list of Load
         One for each candidate [W, V, A, K, K/W].
     """
-    power, rail, ic = (box.extreme((name,), 1).value for name in (POWER_OF_TRANSISTOR, "span", "ic"))
+    worst = box.extreme((POWER_OF_TRANSISTOR,), 1)
+    rail, ic = (box.extreme((name,), 1).value for name in ("span", "ic"))
     hot, rth = box.temperature.high, ratings.thermal_resistance
     most = allowed_dissipation(ratings, hot, policy)
     known = {
@@ -102,17 +111,45 @@ def loads(box: Box, ratings: TransistorRatings, policy: Derating) -> list[Load]:
         "ic": allowed_ic(ratings, policy),
     }
     allowed = {name: limit for name, limit in known.items() if limit is not None}
+    settled = None if rth is None else _settled(box, worst.at | {"temperature": np.full(box.size, hot)}, rth, ratings)
+    nominal = None if rth is None else _settled(box, box.nominal(), rth, ratings)
     return [
         Load(
-            power=float(power[k]),
+            power=float(worst.value[k]),
             vceo=float(rail[k]),
             ic=float(ic[k]),
             allowed=allowed,
             thermal_resistance=rth,
-            junction=None if rth is None else hot + rth * float(power[k]),
+            junction=None if settled is None else _known(settled.temperature[k]),
+            loop_gain=None if settled is None else _known(settled.loop_gain[k]),
+            state=None if settled is None else JUNCTION_STATES[int(settled.status[k])],
+            heating=None if nominal is None else _known(_shift(box, nominal.temperature)[k]),
         )
         for k in range(box.size)
     ]
+
+
+def _known(x: float) -> float | None:
+    return float(x) if np.isfinite(x) else None
+
+
+def _settled(box: Box, values: Values, rth: float, ratings: TransistorRatings) -> Junction:
+    """Where the junctions settle at one point of the box each, power and Q-point solved together."""
+
+    def power_of(t: Array) -> Array:
+        q = box.solve(values, junction=t)
+        return np.maximum(np.broadcast_to(q.vce * q.ic + q.vbe * q.ib, t.shape), 0.0)
+
+    ambient = np.broadcast_to(np.asarray(values["temperature"], dtype=float), (box.size,))
+    limit = max(ratings.tj_max or HOTTEST, float(ambient.max()) + 1.0)
+    return junction_temperature(power_of, ambient, rth, limit)
+
+
+def _shift(box: Box, junction: Array) -> Array:
+    """How far self-heating moves the nominal IC [-]."""
+    values = box.nominal()
+    cold = box.solve(values).ic
+    return np.broadcast_to(box.solve(values, junction=junction).ic / cold - 1.0, (box.size,))
 
 
 def signals(box: Box) -> list[dict[str, tuple[float, float, float]]]:
@@ -167,7 +204,7 @@ def stress_cautions(
     tuple of Caution
         In the order of the roles.
     """
-    found = []
+    found = _thermal_cautions(candidate)
     hot = box.temperature.high
     # With the transistor shorted, or saturated, the rails stand across rc and re alone.
     chain = [role for role in ("rc", "re") if role in box.parts and not box.network.sinks]
@@ -203,3 +240,36 @@ def stress_cautions(
                 )
             )
     return tuple(found)
+
+
+def _thermal_cautions(candidate: Candidate) -> list[Caution]:
+    """What self-heating does, where a thermal resistance is known."""
+    load = candidate.transistor
+    if load is None or load.thermal_resistance is None:
+        return []
+    at = format_quantity(load.thermal_resistance, "thermal_resistance")
+    if load.state != JUNCTION_STATES[0]:
+        return [
+            Caution(
+                name="thermal_runaway",
+                text=f"With {at} to the ambient the junction finds no rest below its limit at the point of most power: heat "
+                "raises IC and IC raises heat. Cool it better, or let the resistors limit the power.",
+            )
+        ]
+    found = []
+    if load.loop_gain is not None and load.loop_gain > GAIN_TO_TELL:
+        found.append(
+            Caution(
+                name="thermal_loop_gain",
+                text=f"The thermal loop gain is {load.loop_gain:.2f} at the point of most power, where 1 is runaway.",
+            )
+        )
+    if load.heating is not None and abs(load.heating) > SHIFT_TO_TELL:
+        found.append(
+            Caution(
+                name="self_heating",
+                text=f"Self-heating with {at} moves the nominal IC by {percent(load.heating)}; the worst case counts the "
+                "ambient alone.",
+            )
+        )
+    return found

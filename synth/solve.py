@@ -150,12 +150,12 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
 
 def _assumed(stage: Stage, spaces: Sequence[Space]) -> tuple[Assumption, ...]:
     """What was assumed, without the limits that mean nothing for these networks."""
-    used = {f"limits.{need.name}" for space in spaces for need in space.requirements}
+    used = {f"limits.{need.limit}" for space in spaces for need in space.requirements}
     return tuple(a for a in stage.assumed if not a.key.startswith("limits.") or a.key in used)
 
 
 def _not_applicable(stage: Stage, spaces: Sequence[Space]) -> tuple[Caution, ...]:
-    used = {need.name for space in spaces for need in space.requirements}
+    used = {need.limit for space in spaces for need in space.requirements}
     networks = " or ".join(dict.fromkeys(space.network.name for space in spaces))
     return tuple(
         Caution(name="limit_not_applicable", text=f"limits.{name} means nothing for {networks} and was not judged.")
@@ -256,10 +256,10 @@ def _standing(candidate: Candidate, candidates: Sequence[Candidate]) -> NetworkR
 
 def _obstacles(spaces: Sequence[Space], goal: Goal) -> list[str]:
     """Limits and windows without which a network would have a candidate, as far as a short search tells."""
-    names = dict.fromkeys(need.name for space in spaces for need in space.requirements if need.name != "vce")
+    names = dict.fromkeys(need.limit for space in spaces for need in space.requirements if need.limit != "vce")
     found = []
     for name in names:
-        freed = [replace(s, requirements=tuple(need for need in s.requirements if need.name != name)) for s in spaces]
+        freed = [replace(s, requirements=tuple(need for need in s.requirements if need.limit != name)) for s in spaces]
         if search(freed, goal, top=1, first=True, most=SHORT).found:
             found.append(name)
     return found

@@ -539,6 +539,11 @@ def _transistor() -> Iterable[Key]:
         path="transistor.tj_max", form="quantity", kind="temperature", example="150 °C",
         meaning="Largest junction temperature.", otherwise="the type's; no verdict",
     )  # fmt: skip
+    yield Key(
+        path="transistor.rth_ja", form="quantity", kind="thermal_resistance", example="250 K/W",
+        meaning="Thermal resistance from junction to ambient of this mounting.",
+        otherwise="the type's, else what its power at 25 °C implies; no junction temperature",
+    )  # fmt: skip
 
 
 def _reference() -> Iterable[Key]:

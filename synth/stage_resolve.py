@@ -60,7 +60,7 @@ ZENER_TURN = 5.2
 """Zener voltage without a temperature coefficient, from memory [V]: tunnelling below, avalanche above."""
 ZENER_TC = (0.9e-3, -2.5e-3, 1.5e-3)
 """Its coefficient per volt above that [1/K], the least [V/K], and how far units stray [V/K]; from memory."""
-_RATINGS = ("vceo", "ic_max", "ptot", "tj_max")
+_RATINGS = ("vceo", "ic_max", "ptot", "tj_max", "rth_ja")
 LED_TC = "-3 : -2 : -1 mV/K"
 """Common practice."""
 
@@ -583,12 +583,14 @@ class _Resolver:
     def ratings(self) -> TransistorRatings:
         """What is known of the transistor's ratings: the type's, with the keys given in their place."""
         kind = self.value("transistor.type")
-        found = TransistorRatings() if kind is None else transistor_ratings(catalogue.transistor(kind))
         given = {leaf: self.value(f"transistor.{leaf}") for leaf in _RATINGS if f"transistor.{leaf}" in self.given}
         for leaf, figure in given.items():
             if figure <= 0.0:
                 example = KEYS[f"transistor.{leaf}"].example
                 raise self.refusal(f"transistor.{leaf}", "which is no rating", "a rating above 0", example)
+        found = TransistorRatings()
+        if kind is not None:
+            found = transistor_ratings(catalogue.transistor(kind), given.get("rth_ja"))
         if "ptot" in given:
             given["ptot_ambient"] = T0
         if (hottest := given.get("tj_max", found.tj_max)) is not None and hottest <= T0:

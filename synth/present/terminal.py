@@ -330,7 +330,10 @@ def _stress(answer: Answer, c: Candidate) -> str:
     ]
     if c.transistor.junction is not None and c.transistor.thermal_resistance is not None:
         at = format_quantity(c.transistor.thermal_resistance, "thermal_resistance")
-        parts.append(f"junction at {format_quantity(c.transistor.junction, 'temperature')} with {at}")
+        gain = "" if load.loop_gain is None else f", thermal loop gain {percent(load.loop_gain)}"
+        parts.append(f"junction at {format_quantity(c.transistor.junction, 'temperature')} with {at}{gain}")
+    elif load.state is not None:
+        parts.append(f"junction: {load.state}")
     lines.append(_wrapped(f"  transistor: {'; '.join(parts)}", "    "))
     title = f"Stress of every part at its own worst point (derating {policy}, ambient up to {hot})"
     return "\n".join([title, *lines])
@@ -368,6 +371,7 @@ def _infeasible(answer: Answer) -> str:
     assert why is not None
     one = len(why.binding) == 1
     lines = [f"{'This limit cannot be met' if one else 'These limits cannot be met together'}: {', '.join(why.binding)}"]
+    lines += [f"  {name}: {note}" for name, note in why.notes.items()]
     for name, drift in why.best_without.items():
         effect = "other limits still conflict" if drift is None else f"the best candidate drifts {percent(drift)}"
         lines.append(f"  without {name}: {effect}")
