@@ -15,10 +15,21 @@ import numpy as np
 from numpy.typing import NDArray
 
 from synth.quantities import Spread
-from synth.transistor import T0
+from synth.transistor import GAP_VOLTAGE, T0, Transistor, thermal_voltage
 
 Array = NDArray[np.float64]
 Kind = Literal["diode", "led", "zener"]
+
+TEST_CURRENT = {"led": "2 mA", "zener": "5 mA"}
+"""Usual test currents: common practice. A diode in a divider carries what the divider does."""
+SLOPE = {"led": "0 : 30 ohm", "zener": "0 : 60 ohm"}
+"""Usual slope resistances at these currents: common practice."""
+LED_TC = "-3 : -2 : -1 mV/K"
+"""Common practice."""
+ZENER_TURN = 5.2
+"""Zener voltage without a temperature coefficient, from memory [V]: tunnelling below, avalanche above."""
+ZENER_TC = (0.9e-3, -2.5e-3, 1.5e-3)
+"""Its coefficient per volt above that [1/K], the least [V/K], and how far units stray [V/K]; from memory."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -101,3 +112,47 @@ class Reference:
             "vref": np.asarray(self.nominal(temperature) + deviation - slope * np.asarray(self.current)),
             "r_ref": np.asarray(slope),
         }
+
+
+def usual_figures(
+    kind: Kind, transistor: Transistor, current: float, voltage: Spread | None
+) -> dict[Literal["voltage", "tc", "slope"], tuple[str, str]]:
+    """What is taken for the figures of one element that are not given, as texts of a stage file.
+
+    Parameters
+    ----------
+    kind : {"diode", "led", "zener"}
+        What it is.
+    transistor : Transistor
+        The transistor; a diode is taken for a junction like its own, which is what makes it follow.
+    current : float
+        Test current [A].
+    voltage : Spread or None
+        Voltage given [V]; a Zener diode's coefficient goes by it.
+
+    Returns
+    -------
+    dict
+        ``voltage``, ``tc`` and ``slope``: text and why. There is no usual voltage of an LED or a Zener diode.
+    """
+    if kind == "diode":
+        vt = float(thermal_voltage(T0))
+        volts = float(transistor.vbe_at(current, T0))
+        tc = (volts - GAP_VOLTAGE[transistor.material] - 3.0 * vt) / T0
+        law = "that of the base-emitter law"
+        return {
+            "voltage": (f"{volts:.4g} V ± 50 mV", law),
+            "tc": (f"{1e3 * tc:.4g} mV/K", law),
+            "slope": (f"{vt / current:.4g} ohm", "VT over its test current"),
+        }
+    found: dict[Literal["voltage", "tc", "slope"], tuple[str, str]] = {
+        "voltage": ("", ""),
+        "tc": (LED_TC, "usual for LEDs"),
+        "slope": (SLOPE[kind], "usual at its test current"),
+    }
+    if kind == "zener" and voltage is not None:
+        per_volt, least, stray = ZENER_TC
+        middle = max(per_volt * (voltage.nominal - ZENER_TURN), least)
+        ends = (middle - stray, middle, middle + stray)
+        found["tc"] = (" : ".join(f"{1e3 * end:.3g} mV/K" for end in ends), "usual for this voltage")
+    return found

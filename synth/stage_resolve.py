@@ -26,8 +26,8 @@ from synth.quantities import (
     format_spread,
     parse,
 )
+from synth.reference import TEST_CURRENT, Reference, usual_figures
 from synth.reference import Kind as ReferenceKind
-from synth.reference import Reference
 from synth.signal import Bypass, Signal
 from synth.stage_keys import KEYS, ROLES, StageError, nearest
 from synth.stress import TransistorRatings, transistor_ratings
@@ -52,17 +52,7 @@ _RAILS = ("vcc", "vee", "vbb", "vload")
 _VOLTAGES = ("vce", "vc", "ve")
 """Targets of which a stage has one besides IC."""
 
-_TEST_CURRENT = {"led": "2 mA", "zener": "5 mA"}
-_SLOPE = {"led": "0 : 30 ohm", "zener": "0 : 60 ohm"}
-"""Usual test currents and slope resistances of reference elements: common practice."""
-
-ZENER_TURN = 5.2
-"""Zener voltage without a temperature coefficient, from memory [V]: tunnelling below, avalanche above."""
-ZENER_TC = (0.9e-3, -2.5e-3, 1.5e-3)
-"""Its coefficient per volt above that [1/K], the least [V/K], and how far units stray [V/K]; from memory."""
 _RATINGS = ("vceo", "ic_max", "ptot", "tj_max", "rth_ja")
-LED_TC = "-3 : -2 : -1 mV/K"
-"""Common practice."""
 
 Use = Literal["yes", "no", "either"]
 
@@ -542,32 +532,18 @@ class _Resolver:
             return None
         kind: ReferenceKind = self.take("reference.kind", "diode")
         count = int(self.take("reference.number"))
-        usual = _TEST_CURRENT.get(kind) or format_exact(current / 10.0, "current")
-        at: float = self.take("reference.current", usual, "not given" if kind in _TEST_CURRENT else "a tenth of the target IC")
+        own = TEST_CURRENT.get(kind)
+        text, why = (own, "not given") if own else (format_exact(current / 10.0, "current"), "a tenth of the target IC")
+        at: float = self.take("reference.current", text, why)
         if at <= 0.0:
-            raise self.refusal("reference.current", "which is no current", "a current above 0 A", usual)
-        if kind == "diode":
-            # A junction like the transistor's own, which is what makes it follow.
-            volts = float(transistor.vbe_at(at, T0))
-            gap = GAP_VOLTAGE[transistor.material]
-            slope_t = (volts - gap) / T0 - 3.0 * float(thermal_voltage(T0)) / T0
-            law = f"{volts:.4g} V ± 50 mV"
-            coefficient, why = f"{1e3 * slope_t:.4g} mV/K", "that of the base-emitter law"
-            slope_text = f"{float(thermal_voltage(T0)) / at:.4g} ohm"
-        elif "reference.voltage" not in self.given:
+            raise self.refusal("reference.current", "which is no current", "a current above 0 A", text)
+        if kind != "diode" and "reference.voltage" not in self.given:
             accepted = f"the voltage of the {kind} at its test current, such as '5.1 V ± 5 %'"
             raise self.refusal("reference.voltage", f"which is not given and has no default for {kind}", accepted)
-        else:
-            law, slope_text = "", _SLOPE[kind]
-            coefficient, why = LED_TC, "usual for LEDs"
-            if kind == "zener":
-                per_volt, least, stray = ZENER_TC
-                middle = max(per_volt * (self.value("reference.voltage").nominal - ZENER_TURN), least)
-                coefficient = " : ".join(f"{1e3 * end:.3g} mV/K" for end in (middle - stray, middle, middle + stray))
-                why = "usual for this voltage"
-        voltage: Spread = self.take("reference.voltage", law, "that of the base-emitter law")
-        tc: Spread = self.take("reference.tc", coefficient, why)
-        slope: Spread = self.take("reference.slope", slope_text)
+        usual = usual_figures(kind, transistor, at, self.value("reference.voltage"))
+        voltage: Spread = self.take("reference.voltage", *usual["voltage"])
+        tc: Spread = self.take("reference.tc", *usual["tc"])
+        slope: Spread = self.take("reference.slope", *usual["slope"])
         if voltage.low <= 0.0:
             raise self.refusal("reference.voltage", "which goes down to 0 V", "a magnitude above 0 V")
         if slope.low < 0.0:
