@@ -10,9 +10,10 @@ from synth.answer import Candidate, Caution, Load, Stress
 from synth.box import Box, Values
 from synth.catalogue import Derating, ResistorStyle, resistor_styles
 from synth.explain import percent
-from synth.measures import POWER_OF_TRANSISTOR
-from synth.networks.form import Array
+from synth.measures import BYPASS, POWER_OF_TRANSISTOR
+from synth.networks.form import Array, Network
 from synth.quantities import format_quantity, format_resistance
+from synth.signal import corner_capacitance
 from synth.stress import (
     JUNCTION_STATES,
     Junction,
@@ -152,13 +153,15 @@ def _shift(box: Box, junction: Array) -> Array:
     return np.broadcast_to(box.solve(values, junction=junction).ic / cold - 1.0, (box.size,))
 
 
-def signals(box: Box) -> list[dict[str, tuple[float, float, float]]]:
+def signals(box: Box, corner: float | None = None) -> list[dict[str, tuple[float, float, float]]]:
     """Small-signal figures: least, nominal and greatest over the box.
 
     Parameters
     ----------
     box : Box
         n candidates, active over the whole box.
+    corner : float, optional
+        Frequency that the bypass capacitor is sized for [Hz].
 
     Returns
     -------
@@ -180,7 +183,29 @@ def signals(box: Box) -> list[dict[str, tuple[float, float, float]]]:
             low, high = (box.extreme((name,), side).value for side in (-1, 1))
         for k in range(box.size):
             found[k][name] = (float(low[k]), float(middle[k]), float(high[k]))
+    has_bypass = box.signal.bypass != "none" and "re" in box.parts and "e" in free_nodes(box.network)
+    if corner is not None and has_bypass:
+        ohms = (box.extreme((BYPASS,), 1).value, box.measure((BYPASS,), values, q), box.extreme((BYPASS,), -1).value)
+        sizes = [np.broadcast_to(corner_capacitance(r, corner), (box.size,)) for r in ohms]
+        for k in range(box.size):
+            found[k]["bypass_capacitor"] = (float(sizes[0][k]), float(sizes[1][k]), float(sizes[2][k]))
     return found
+
+
+def free_nodes(network: Network) -> set[str]:
+    """Terminals of the transistor that are no output and sit on no rail.
+
+    Parameters
+    ----------
+    network : Network
+        Any network.
+
+    Returns
+    -------
+    set of str
+        Of ``b c e``; the emitter of a follower is its output. No unit.
+    """
+    return {"b", "c", "e"} - set(network.tied) - ({"e"} if "c" in network.tied else set())
 
 
 def stress_cautions(

@@ -19,6 +19,8 @@ from synth.transistor import Transistor
 
 POWER_OF_TRANSISTOR = "p_q"
 PARAMETERS_OF_SIGNAL = ("gm", "r_pi", "r_intrinsic")
+BYPASS = "bypass_resistance"
+"""Resistance that the bypass capacitor of re sees; only where there is one."""
 PARAMETERS_OF_DEVICE = ("delta", "hfe", "icbo", "delta_ref", "r_ref")
 
 
@@ -135,7 +137,7 @@ def measure(
         return np.asarray(branches.voltage.get("re", 0.0 * q.ic))
     if name == "span":
         return np.asarray(sources.get("vload", sources["vcc"]) + sources.get("vee", 0.0) + 0.0 * q.ic)
-    if is_figure(name) or name in PARAMETERS_OF_SIGNAL:
+    if is_figure(name) or name in (*PARAMETERS_OF_SIGNAL, BYPASS):
         return np.asarray(getattr(small_signal(setting, sources, r, q, gain, temperature), name))
     kind, _, what = name.partition("_")
     if kind == "rail":
@@ -170,7 +172,7 @@ def sign(name: str, axis: str, setting: Setting) -> Sign:
     network = setting.network
     if name == "span":
         return 0 if axis in (*setting.roles, *PARAMETERS_OF_DEVICE) else 1
-    if name == POWER_OF_TRANSISTOR:
+    if name in (POWER_OF_TRANSISTOR, BYPASS):
         return None
     if name in PARAMETERS_OF_SIGNAL:
         behind = ("ic", "ib") if name == "r_intrinsic" else ("ic",)

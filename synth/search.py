@@ -19,7 +19,7 @@ from __future__ import annotations
 
 import itertools
 import time
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from functools import cached_property, partial
 from typing import Literal, NamedTuple
@@ -33,7 +33,7 @@ from synth.measures import POWER_OF_TRANSISTOR, is_figure, parts_of_current, sma
 from synth.measures import sign as quantity_sign
 from synth.networks.form import Array, QPoint
 from synth.signal import own_signs
-from synth.spaces import MOST_VBE, Found, Goal, Index, Space, assess, wanted
+from synth.spaces import MOST_VBE, Found, Goal, Index, Space, assess, is_dear, wanted
 from synth.transistor import thermal_voltage
 
 Status = Literal["optimal", "feasible", "infeasible", "unknown"]
@@ -46,6 +46,8 @@ COARSE = 40
 """List length that the coarse pass aims at."""
 STEP, LEAST_WEIGHT = 0.01, 0.1
 """Relative step and floor of a role's weight in the choice of what to split."""
+FAR = 0.4
+"""Nominal margin from which a limit on stress or signal is left to the assessment of single candidates [-]."""
 FEEBLE = 10.0
 """What a pilot is put back by whose reference element lacks current; more than any miss that matters."""
 TIE = 1e-10
@@ -372,6 +374,7 @@ class _Room:
     meter: Meter
     anchors: Mapping[tuple[str, int], Mapping[str, float]]
     weights: Sequence[float]
+    asleep: Collection[Requirement] = ()
 
     def __post_init__(self) -> None:
         roles = self.space.roles
@@ -425,6 +428,8 @@ class _Room:
             run = partial(self._excursion, quantity, side, point, own)
             tests.append(_Test(run, *self.corners(point).uses(quantity, side)))
         for need in rest:
+            if need in self.asleep:
+                continue
             bounded = [(*need.sums[0], side) in self.anchors for side in need.sides] if len(need.sums) == 1 else [False]
             if need.judged == "box" and not all(bounded):
                 tests.append(self._sum_test(need, {side: self.anchors["ic", side] for side in need.sides}))
@@ -603,11 +608,12 @@ def _thin(size: int, count: int) -> Index:
 
 def _bearings(
     space: Space, index: Index, goal: Goal, meter: Meter
-) -> tuple[dict[tuple[str, int], dict[str, float]], list[float]]:
+) -> tuple[dict[tuple[str, int], dict[str, float]], list[float], list[Requirement]]:
     """What one candidate tells about its surroundings.
 
-    The points of the box that decide its extremes, which serve as the points of every bound, and the weight of each role:
-    how far IC, and VCE where it has a target, move with it, in ratio. Neither choice touches what is proved.
+    The points of the box that decide its extremes, which serve as the points of every bound; the weight of each role: how far
+    IC, and VCE where it has a target, move with it, in ratio; and the limits on stress and signal that are far from binding
+    here, on which no block is worth a test. No choice touches what is proved.
     """
     box = space.box(index, meter)
     anchors = {(name, side): box.extreme((name,), side, thorough=False).anchor(0) for name, side in wanted(goal)}
@@ -620,7 +626,13 @@ def _bearings(
     for quantity, aim in goal.aims.items():
         moves = np.broadcast_to(box.measure((quantity,), {**start, **moved}, q), effect.shape)
         effect = np.maximum(effect, np.abs(moves - moves[0]) / aim)
-    return anchors, [max(float(e) / STEP, LEAST_WEIGHT) for e in effect[1:]]
+    nominal = box.solve(start)
+    idle = []
+    for need in space.requirements:
+        if need.rated is not None or is_dear(need):
+            margins = [float(need.margin(box.measure(names, start, nominal)).min()) for names in need.sums]
+            idle += [need] if min(margins) > FAR else []
+    return anchors, [max(float(e) / STEP, LEAST_WEIGHT) for e in effect[1:]], idle
 
 
 def search(
@@ -696,7 +708,7 @@ def _coarse(room: _Room, top: int) -> list[Found]:
         return []
     thin = replace(space, lists={role: space.lists[role].take(at) for role, at in positions.items()})
     pool = _Pool(top)
-    _run([_Room(thin, room.goal, room.meter, room.anchors, room.weights)], pool, None)
+    _run([_Room(thin, room.goal, room.meter, room.anchors, room.weights, room.asleep)], pool, None)
     return [
         replace(f, space=space, index=tuple(int(positions[r][i]) for r, i in zip(space.roles, f.index, strict=True)))
         for f in pool.found.values()

@@ -33,7 +33,6 @@ from synth.search import Outcome, search
 from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_of, spaces_of
 from synth.stage import Assumption, Stage, StageError
 from synth.straddle import extreme_in_any_region
-from synth.stress import TransistorRatings
 
 Progress = Callable[[float, float, int], bool]
 
@@ -72,7 +71,7 @@ def find(
     goal = goal_of(stage)
     spaces = spaces_of(stage)
     outcome = search(spaces, goal, top=top, progress=progress)
-    candidates = _candidates(outcome, goal, top, stage.ratings)
+    candidates = _candidates(outcome, goal, top, stage)
     best_of = _best_of_each(spaces, goal, candidates, outcome, progress)
     rivals = [n for n in best_of if candidates and n.best is not None and n.network != candidates[0].network]
     if rivals:
@@ -129,7 +128,7 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
     (candidate,) = _build(space, index, goal, any_region=True)
     network = space.network
     (around,) = neighbours(*among_values(stage, space), goal)
-    candidate = _reviewed(replace(candidate, rank=1, neighbours=around), space, stage.ratings)
+    candidate = _reviewed(replace(candidate, rank=1, neighbours=around), space, stage)
     candidate = replace(candidate, explanation=sentences(candidate, network))
     warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
     box = space.box(index, Meter())
@@ -184,19 +183,19 @@ def _index(space: Space, candidate: Candidate) -> Index:
     return np.array([position], dtype=np.int32)
 
 
-def _reviewed(candidate: Candidate, space: Space, ratings: TransistorRatings) -> Candidate:
+def _reviewed(candidate: Candidate, space: Space, stage: Stage) -> Candidate:
     """A candidate with the stress of its parts and its small-signal figures."""
     box = space.box(_index(space, candidate), Meter())
     active = candidate.regions == ("active",)
     return replace(
         candidate,
         stress=stresses(box, space.styles, space.derating)[0],
-        transistor=loads(box, ratings, space.derating)[0],
-        signal=signals(box)[0] if active else {},
+        transistor=loads(box, stage.ratings, space.derating)[0],
+        signal=signals(box, stage.corner)[0] if active else {},
     )
 
 
-def _candidates(outcome: Outcome, goal: Goal, top: int, ratings: TransistorRatings) -> tuple[Candidate, ...]:
+def _candidates(outcome: Outcome, goal: Goal, top: int, stage: Stage) -> tuple[Candidate, ...]:
     built: list[tuple[Candidate, Space]] = []
     for space in dict.fromkeys(f.space for f in outcome.found):
         index = np.array([f.index for f in outcome.found if f.space is space], dtype=np.int32)
@@ -210,7 +209,7 @@ def _candidates(outcome: Outcome, goal: Goal, top: int, ratings: TransistorRatin
         around.update(zip(ranks, neighbours(space, index, goal), strict=True))
     final = []
     for k, (candidate, space) in enumerate(listed):
-        full = _reviewed(replace(candidate, rank=k + 1, neighbours=around[k]), space, ratings)
+        full = _reviewed(replace(candidate, rank=k + 1, neighbours=around[k]), space, stage)
         final.append(replace(full, explanation=sentences(full, space.network)))
     return tuple(final)
 

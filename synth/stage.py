@@ -83,6 +83,8 @@ class Stage:
         The policy that ratings are judged by.
     signal : Signal
         What the signal meets.
+    corner : float or None
+        Frequency that the bypass capacitor of re is sized for [Hz].
     temperature : Spread
         Ambient [K].
     limits : mapping of str to Interval
@@ -124,6 +126,7 @@ class Stage:
     ratings: TransistorRatings
     derating: Derating
     signal: Signal
+    corner: float | None
     temperature: Spread
     limits: Mapping[str, Interval]
     values: Mapping[str, float]
@@ -410,7 +413,7 @@ class Stage:
             "reference": self.reference and {f: _plain(v) for f, v in vars(self.reference).items()},
             "ratings": {f: _plain(v) for f, v in vars(self.ratings).items()},
             "derating": self.derating.name,
-            "signal": {f: _plain(v) for f, v in vars(self.signal).items()},
+            "signal": {f: _plain(v) for f, v in vars(self.signal).items()} | {"corner": self.corner},
             "resistors": {
                 role: {f.name: _plain(getattr(setting, f.name)) for f in dataclasses.fields(setting)}
                 for role, setting in self.roles.items()

@@ -657,6 +657,10 @@ def _signal() -> Iterable[Key]:
         path="signal.source", form="quantity", kind="resistance", default="0 ohm", example="1 kohm",
         meaning="Resistance of the source of the signal.",
     )  # fmt: skip
+    yield Key(
+        path="signal.corner", form="quantity", kind="frequency", example="20 Hz",
+        meaning="Frequency down to which the bypass capacitor of re has to serve; the answer sizes it.", otherwise="not sized",
+    )  # fmt: skip
 
 
 def _limits() -> Iterable[Key]:

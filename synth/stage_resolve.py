@@ -261,6 +261,7 @@ class _Resolver:
             "ratings": ratings,
             "derating": self.policy(has_styles or ratings != TransistorRatings()),
             "signal": self.signal(),
+            "corner": self.corner(),
             "temperature": temperature,
             "limits": MappingProxyType(self.limits(current, transistor, reference, load_rail, has_styles, ratings)),
             "values": MappingProxyType(self.fitted()),
@@ -599,6 +600,13 @@ class _Resolver:
         return Signal(
             bypass=bypass, unbypassed=unbypassed, load=self.value("signal.load"), source=self.value("signal.source") or 0.0
         )
+
+    def corner(self) -> float | None:
+        """Frequency that the bypass capacitor is sized for."""
+        corner: float | None = self.value("signal.corner")
+        if corner is not None and corner <= 0.0:
+            raise self.refusal("signal.corner", "which is no frequency", "a frequency above 0 Hz", "20 Hz")
+        return corner
 
     # Resistors, limits, values
 

@@ -23,6 +23,7 @@ from synth.networks import NETWORKS
 from synth.quantities import Interval, Spread
 from synth.search import Outcome, _Blocks, _Corners, _Room, search
 from synth.spaces import Goal, Space, goal_of, spaces_of, wanted
+from synth.stage import Stage
 from synth.transistor import Transistor
 
 Array = NDArray[np.float64]
@@ -167,7 +168,9 @@ def is_stress_or_signal(need: Requirement) -> bool:
 @pytest.mark.parametrize(("network", "number"), EVERY[::4])
 def test_candidates_stand_in_the_order_of_the_written_rule(network: str, number: int) -> None:
     _, goal, top, rows = case(network, number)
-    candidates = home._candidates(solved(network, number), goal, top)
+    # Of the request itself only ratings matter here, and none are known.
+    request = Stage(supply="12 V", ic="2 mA", vce="5 V", hfe="110 : 450")
+    candidates = home._candidates(solved(network, number), goal, top, request)
     assert [(c.network, tuple(c.resistors.values())) for c in candidates] == [row.key[5:] for row in rows[:top]]
     assert [c.rank for c in candidates] == list(range(1, len(candidates) + 1))
     assert_allclose([c.centring for c in candidates], [row.key[1] for row in rows[:top]], rtol=1e-9, atol=1e-15)

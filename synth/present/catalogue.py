@@ -8,6 +8,7 @@ from typing import NamedTuple
 from scipy.constants import zero_Celsius
 
 from synth.catalogue import (
+    deratings,
     hfe_points,
     preferred_numbers,
     resistor_styles,
@@ -115,6 +116,22 @@ def _gains() -> list[list[str]]:
     return rows
 
 
+def _deratings() -> list[list[str]]:
+    rows = [["policy", "resistor power", "voltage", "transistor voltage", "current", "power", "junction", "evidence"]]
+    for policy in deratings().values():
+        shares = (
+            policy.resistor_power,
+            policy.resistor_voltage,
+            policy.transistor_voltage,
+            policy.transistor_current,
+            policy.transistor_power,
+        )
+        below = f"TJ max - {policy.junction_below_max_k:g} K" if policy.junction_below_max_k else "TJ max"
+        top = "" if policy.junction_max_k is None else f"{policy.junction_max_k - zero_Celsius:.0f} °C or "
+        rows.append([policy.name, *(format_quantity(share, "ratio") for share in shares), f"{top}{below}", policy.evidence])
+    return rows
+
+
 TABLES: dict[str, _Table] = {
     "series": _Table("Preferred numbers", "IEC 60063, E3 to E192", _series),
     "tolerances": _Table("Tolerance letters", "IEC 60062", _tolerances),
@@ -122,6 +139,12 @@ TABLES: dict[str, _Table] = {
     "styles": _Table("Resistor styles", "conservative figures of several makers' sheets", _styles, (2, 3)),
     "transistors": _Table(
         "Transistors with their gain bins", "makers' sheets; always check the current data sheet", _transistors, (3, 4)
+    ),
+    "derating": _Table(
+        "Derating policies, shares of the ratings that may be used",
+        "common practice, ECSS-Q-ST-30-11C, EEE-INST-002",
+        _deratings,
+        (1, 2, 3, 4, 5),
     ),
     "gains": _Table("hFE at other currents", "makers' sheets; – where no limit is printed", _gains, (1, 2)),
 }

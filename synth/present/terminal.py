@@ -347,6 +347,7 @@ SIGNAL_WORDS = {
     "output_resistance": ("output resistance", "resistance"),
     "gain": ("voltage gain", "gain"),
     "swing": ("peak output swing", "voltage"),
+    "bypass_capacitor": ("bypass capacitor of re", "capacitance"),
 }
 
 
@@ -359,6 +360,8 @@ def _signal(answer: Answer, c: Candidate) -> str:
     load = "no load" if around["load"] is None else f"load {format_quantity(around['load'], 'resistance')}"
     source = format_quantity(around["source"], "resistance")
     notes = [bypass] if "re" in c.resistors and c.network != "follower" else []
+    if around.get("corner") is not None:
+        notes.append(f"down to {format_quantity(around['corner'], 'frequency')}")
     rows = [["", "nominal", "over the box"]]
     for name, (low, middle, high) in c.signal.items():
         words, kind = SIGNAL_WORDS[name]

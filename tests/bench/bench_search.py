@@ -1,6 +1,6 @@
 """Time of the exact search over the preferred series, beside the time of its Q-point solves alone.
 
-    python -m tests.bench.bench_search [SERIES ...]
+    python -m tests.bench.bench_search [SERIES ... any plain limits]
 
 Each row searches the divider of the contract (12 V, 2 mA, 5 V, hFE 110 : 450, four roles from 10 ohm to 10 Mohm, default
 limits) for its ten best. `ratio` is the time of the search over the time of one Wright omega call for each of its solves,
@@ -23,6 +23,15 @@ from synth.spaces import goal_of, spaces_of
 from synth.stage import Stage
 
 SERIES = ("E6", "E12", "E24", "E48", "E96", "E192")
+REQUESTS = {
+    "any": {"network": "any", "ic": "2 mA ± 15 %", "supply": "12 V ± 5 %"},
+    "plain": {"hfe": None, "type": "BC847B", "ic": "2 mA ± 20 %", "supply": "12 V ± 5 %", "transistor_stress": "none"},
+    "limits": {
+        "hfe": None, "type": "BC847B", "ic": "2 mA ± 20 %", "supply": "12 V ± 5 %", "style": "0805", "load": "10 kohm",
+        "source": "1 kohm", "supply_current": "3 mA", "input_resistance": "1.5 kohm", "gain": "80", "swing": "1.5 V",
+    },
+}  # fmt: skip
+"""Besides, with E96: every network in one search, and a stage without and with a limit of every kind."""
 CHUNK = 8192
 """Arguments of a Wright omega call: as many as a batch of the search has, so that both run in the same cache."""
 
@@ -62,7 +71,10 @@ class Row:
 
 def request(series: str) -> Stage:
     """The request that is timed, with one series in every role and its own tolerance."""
-    return Stage(supply="12 V", ic="2 mA", vce="5 V", hfe="110 : 450", series=series)
+    contract = {"supply": "12 V", "ic": "2 mA", "vce": "5 V", "hfe": "110 : 450"}
+    if series in REQUESTS:
+        return Stage(**{**contract, "series": "E96", **REQUESTS[series]})  # type: ignore[arg-type]
+    return Stage(**contract, series=series)
 
 
 def omega_seconds(count: int) -> float:
@@ -109,14 +121,15 @@ def table(rows: Sequence[Row]) -> str:
 
 def main(arguments: Sequence[str] = ()) -> int:
     """Print the table of the series named, all by default."""
-    unknown = [name for name in arguments if name not in SERIES]
+    known = (*SERIES, *REQUESTS)
+    unknown = [name for name in arguments if name not in known]
     if unknown:
-        print(f"series: read {unknown[0]!r}, accepted are {' '.join(SERIES)}", file=sys.stderr)
+        print(f"series: read {unknown[0]!r}, accepted are {' '.join(known)}", file=sys.stderr)
         return 2
     # The first search also loads and warms what every later one finds ready.
     measure("E6", top=1)
     print(f"{platform.machine()}, Python {platform.python_version()}, numpy {np.__version__}, one core")
-    print(table([measure(series) for series in arguments or SERIES]))
+    print(table([measure(series) for series in arguments or known]))
     return 0
 
 
