@@ -147,7 +147,8 @@ class Load:
     `allowed` holds what the ratings and the policy allow of ``power vceo ic`` at the hot ambient, as far as they are known;
     `junction` is where the junction settles at the point of most power, heating itself [K], and `loop_gain` what a kelvin
     of its temperature gives back [-], with a thermal resistance [K/W]; both None where that is not known, or where it does
-    not settle, which `state` says. `heating` is how far self-heating moves the nominal IC [-], None where not known.
+    not settle, which `state` says. `heating` is how far self-heating moves the nominal IC [-], None where not known;
+    `worst` holds least and greatest IC [A] and VCE [V] over the box with self-heating, empty where it was not looked for.
     """
 
     power: float
@@ -159,6 +160,7 @@ class Load:
     loop_gain: float | None = None
     state: str | None = None
     heating: float | None = None
+    worst: Mapping[str, tuple[float, float]] = field(default_factory=dict)
 
     @property
     def used(self) -> dict[str, float]:

@@ -14,8 +14,9 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property, partial
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,6 +27,7 @@ from synth.q_point import solve, solve_active
 from synth.quantities import Spread
 from synth.reference import Reference
 from synth.signal import Signal
+from synth.stress import junction_temperature
 from synth.transistor import T0, Transistor
 
 Values = dict[str, Array]
@@ -40,6 +42,8 @@ INWARD = 1e-5
 to the end than this gains at most about INWARD² of the quantity's curvature."""
 NEAR = 0.02
 """How far below the best point a peak beside a stop of the scan is still polished, relative."""
+HEAT_STEPS = 8
+"""Secant steps towards the junction temperature; far from runaway four do."""
 GOLDEN = (5.0**0.5 - 1.0) / 2.0
 
 
@@ -108,6 +112,13 @@ class Meter:
     solves: int = 0
 
 
+class Heat(NamedTuple):
+    """Thermal resistance from junction to ambient [K/W], and the junction temperature above which nothing settles [K]."""
+
+    rth: float
+    limit: float
+
+
 @dataclass(frozen=True, eq=False)
 class Extreme:
     """An extreme over the box.
@@ -174,6 +185,8 @@ class Box:
         The resistors of each role used.
     reference : Reference, optional
         The reference element of the base voltage, where the network has one.
+    heat : Heat, optional
+        How the transistor warms itself; None leaves it at the ambient temperature.
     signal : Signal
         What the signal meets, for the small-signal figures.
     meter : Meter, optional
@@ -186,6 +199,7 @@ class Box:
     temperature: Spread
     parts: Mapping[str, Parts]
     reference: Reference | None = None
+    heat: Heat | None = None
     signal: Signal = field(default_factory=Signal)
     meter: Meter = field(default_factory=Meter)
 
@@ -237,6 +251,7 @@ class Box:
             temperature=self.temperature,
             parts={role: part.take(index) for role, part in self.parts.items()},
             reference=self.reference,
+            heat=self.heat,
             signal=self.signal,
             meter=self.meter,
         )
@@ -308,13 +323,16 @@ class Box:
         active_law : bool
             Whether to stay with the active-region law below VCE(sat).
         junction : ndarray, optional
-            Temperature of the transistor [K]; the ambient temperature when not given. Resistors stay at the ambient.
+            Temperature of the transistor [K]; when not given the ambient temperature, or where it settles with its own heat.
+            Resistors stay at the ambient.
 
         Returns
         -------
         QPoint
             Of the broadcast shape.
         """
+        if junction is None and self.heat is not None:
+            return self._heated(values, active_law, self.heat)
         t = values["temperature"] if junction is None else junction
         law = solve_active if active_law else solve
         q = law(
@@ -329,6 +347,43 @@ class Box:
         )
         self.meter.solves += q.ic.size
         return q
+
+    def _heated(self, values: Values, active_law: bool, heat: Heat) -> QPoint:
+        """Q-point at the junction temperature that it settles at; NaN where it does not."""
+        shape = np.broadcast_shapes(*(np.shape(v) for v in values.values()))
+        ambient = np.broadcast_to(values["temperature"], shape).astype(float)
+
+        def power(t: Array, at: Values = values) -> Array:
+            q = self.solve(at, active_law, junction=t)
+            return np.asarray(np.maximum(np.broadcast_to(q.vce * q.ic + q.vbe * q.ib, t.shape), 0.0))
+
+        before, off_before = ambient, heat.rth * power(ambient)
+        t = np.minimum(ambient + off_before, heat.limit)
+        gain = np.zeros(shape)
+        for _ in range(HEAT_STEPS):
+            off = ambient + heat.rth * power(t) - t
+            with np.errstate(divide="ignore", invalid="ignore"):
+                slope = (off - off_before) / (t - before)
+                moved = np.abs(t - before) > 1e-9 * t
+                gain = np.where(moved, slope + 1.0, gain)
+                step = np.where(moved & (slope < 0.0), -off / slope, 0.0)
+            before, off_before = t, off
+            t = np.clip(t + step, ambient, heat.limit)
+            if not np.any(np.abs(step) > 1e-12 * t):
+                break
+        # Far from runaway the secant ends at the first root; the rest is walked up to from the ambient.
+        left = np.nonzero(~((np.abs(t - before) <= 1e-9 * t) & (gain < 0.5) & (t < heat.limit)))
+        if left[0].size:
+            some = {name: np.broadcast_to(v, shape)[left] for name, v in values.items()}
+            alone = replace(self.take(left[-1]), heat=None)
+
+            def power_of(at: Array) -> Array:
+                q = alone.solve(some, active_law, junction=at)
+                return np.asarray(np.maximum(np.broadcast_to(q.vce * q.ic + q.vbe * q.ib, at.shape), 0.0))
+
+            t = t.copy()
+            t[left] = junction_temperature(power_of, ambient[left], heat.rth, heat.limit).temperature
+        return self.solve(values, active_law, junction=t)
 
     def branches(self, values: Values, q: QPoint) -> Branches:
         """Voltages and currents of every resistor and rail.
@@ -429,6 +484,9 @@ class Box:
         Extreme
             Value and deciding point, shape (n,).
         """
+        if self.heat is not None:
+            # The proofs hold at one temperature of the transistor: with its own heat every axis is searched.
+            return _Climb(self, tuple(names), direction, {}, self.axes, thorough, premise=False).run()
         known = {axis: self.sign(names, axis) for axis in self.axes}
         fixed = {axis: 0.5 + 0.5 * direction * s for axis, s in known.items() if s}
         free = tuple(axis for axis, s in known.items() if s is None)

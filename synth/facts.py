@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
 from synth.answer import Candidate, Caution, Load, Stress
-from synth.box import Box, Values
+from synth.box import Box, Heat, Values
 from synth.catalogue import Derating, ResistorStyle, resistor_styles
 from synth.explain import percent
 from synth.measures import BYPASS, POWER_OF_TRANSISTOR
@@ -128,6 +129,35 @@ def loads(box: Box, ratings: TransistorRatings, policy: Derating) -> list[Load]:
         )
         for k in range(box.size)
     ]
+
+
+def heated(box: Box, load: Load, ratings: TransistorRatings) -> Load:
+    """A load with the worst case of a candidate that warms itself.
+
+    Parameters
+    ----------
+    box : Box
+        Of one candidate.
+    load : Load
+        Its load, with a thermal resistance [K/W].
+    ratings : TransistorRatings
+        What is known of the transistor.
+
+    Returns
+    -------
+    Load
+        With least and greatest IC [A] and VCE [V] over the box.
+
+    Notes
+    -----
+    At every point the junction temperature is solved with the Q-point; since the proved signs hold at one temperature,
+    every vertex, edge and temperature is looked at.
+    """
+    if load.thermal_resistance is None or load.state != JUNCTION_STATES[0]:
+        return load
+    warm = replace(box, heat=Heat(load.thermal_resistance, max(ratings.tj_max or HOTTEST, box.temperature.high + 1.0)))
+    ends = {name: tuple(float(warm.extreme((name,), side).value[0]) for side in (-1, 1)) for name in ("ic", "vce")}
+    return replace(load, worst={name: (low, high) for name, (low, high) in ends.items() if np.isfinite([low, high]).all()})
 
 
 def _known(x: float) -> float | None:
@@ -290,11 +320,28 @@ def _thermal_cautions(candidate: Candidate) -> list[Caution]:
             )
         )
     if load.heating is not None and abs(load.heating) > SHIFT_TO_TELL:
+        ends = [format_quantity(end, "current") for end in load.worst.get("ic", ())]
+        with_it = f"with it IC spans {ends[0]} to {ends[1]}" if ends else "with it some corner does not settle"
         found.append(
             Caution(
                 name="self_heating",
-                text=f"Self-heating with {at} moves the nominal IC by {percent(load.heating)}; the worst case counts the "
-                "ambient alone.",
+                text=f"Self-heating with {at} moves the nominal IC by {percent(load.heating)}; the worst case above counts the "
+                f"ambient alone, {with_it}.",
             )
         )
+    for verdict in candidate.limits:
+        quantity = verdict.name.partition(".")[2]
+        if verdict.verdict == "pass" and verdict.name.startswith("target.") and quantity in load.worst:
+            low, high = verdict.limit if isinstance(verdict.limit, tuple) else (
+                (-np.inf, verdict.limit) if verdict.sense == "<=" else (verdict.limit, np.inf)
+            )  # fmt: skip
+            if load.worst[quantity][0] < low or load.worst[quantity][1] > high:
+                ends = [format_quantity(end, verdict.kind) for end in load.worst[quantity]]
+                found.append(
+                    Caution(
+                        name="self_heating_window",
+                        text=f"With self-heating {quantity.upper()} spans {ends[0]} to {ends[1]} and leaves its window: cool "
+                        "the transistor better, or narrow the window by as much and search again.",
+                    )
+                )
     return found

@@ -24,7 +24,7 @@ from synth.explain import (
     percent,
     sentences,
 )
-from synth.facts import loads, signals, stress_cautions, stresses
+from synth.facts import heated, loads, signals, stress_cautions, stresses
 from synth.limits import Judgement, Requirement, judge
 from synth.networks.form import Array
 from synth.q_point import REGIONS
@@ -36,6 +36,8 @@ from synth.straddle import extreme_in_any_region
 
 Progress = Callable[[float, float, int], bool]
 
+HEAT_TO_LOOK = 0.005
+"""Shift of the nominal IC by self-heating from which its worst case is looked for unasked [-]."""
 SHORT = 3e4
 """Q-point solves of a search that only asks whether a limit stands in the way of a network."""
 
@@ -79,9 +81,10 @@ def find(
     infeasible = why_nothing_qualifies(stage) if outcome.status == "infeasible" else None
     warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
     if candidates:
-        first = candidates[0]
-        space = next(s for s in spaces if _is_of(first, s))
-        box = space.box(_index(space, first), Meter())
+        space = next(s for s in spaces if _is_of(candidates[0], s))
+        box = space.box(_index(space, candidates[0]), Meter())
+        first = _with_heat(candidates[0], box, stage)
+        candidates = (first, *candidates[1:])
         warnings += cautions(first, box) + stress_cautions(first, box, space.styles, space.derating)
     return Answer(
         kind="find",
@@ -132,6 +135,7 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
     candidate = replace(candidate, explanation=sentences(candidate, network))
     warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
     box = space.box(index, Meter())
+    candidate = _with_heat(candidate, box, stage)
     warnings += cautions(candidate, box) + stress_cautions(candidate, box, space.styles, space.derating)
     failed = [v.name for v in candidate.limits if v.verdict == "fail"]
     why = f"fails {', '.join(failed)}" if failed else "passes every verdict"
@@ -193,6 +197,15 @@ def _reviewed(candidate: Candidate, space: Space, stage: Stage) -> Candidate:
         transistor=loads(box, stage.ratings, space.derating)[0],
         signal=signals(box, stage.corner)[0] if active else {},
     )
+
+
+def _with_heat(candidate: Candidate, box: Box, stage: Stage) -> Candidate:
+    """A candidate with its worst case under self-heating, where that is asked for or matters."""
+    load = candidate.transistor
+    matters = load is not None and load.heating is not None and abs(load.heating) > HEAT_TO_LOOK
+    if load is None or not (matters or "transistor.rth_ja" in stage.given) or candidate.regions != ("active",):
+        return candidate
+    return replace(candidate, transistor=heated(box, load, stage.ratings))
 
 
 def _candidates(outcome: Outcome, goal: Goal, top: int, stage: Stage) -> tuple[Candidate, ...]:

@@ -501,6 +501,8 @@ def test_tables_lists_the_tables(run: Run) -> None:
         ("tcr", r"^  S +brown +100 ppm/K"),
         ("styles", r"^  0805 +thick film "),
         ("transistors", r"^  BC847B +npn +SOT-23 +45 V +100 mA +200 : 450 +2 mA "),
+        # ECSS-Q-ST-30-11C, from memory: resistors 50 % power and 80 % voltage, transistors 75 %, 75 % and 65 %.
+        ("derating", r"^  ECSS-Q-ST-30-11C +50 % +80 % +75 % +75 % +65 % +110 °C or TJ max - 40 K +memory"),
         ("gains", r"^  2N3904 +1 mA +1 V +25 °C +70 : – "),
     ],
 )
@@ -511,7 +513,7 @@ def test_table(run: Run, name: str, line: str) -> None:
 
 
 def test_every_table_has_a_test() -> None:
-    names = {"series", "tolerances", "tcr", "styles", "transistors", "gains"}
+    names = {"series", "tolerances", "tcr", "styles", "transistors", "gains", "derating"}
     assert names == set(TABLES)
 
 

@@ -13,7 +13,7 @@ import pytest
 from numpy.testing import assert_allclose
 from stages import active, circuit, point, random_box, samples, vertices
 
-from synth.box import Box, Meter
+from synth.box import Box, Heat, Meter
 from synth.measures import is_figure, sign
 from synth.networks import NETWORKS
 from synth.signal import Signal
@@ -138,3 +138,38 @@ def test_greatest_dissipation_lies_at_half_the_rail() -> None:
 def test_names_of_figures() -> None:
     assert is_figure("gain")
     assert not is_figure("p_q")
+
+
+@pytest.mark.parametrize("network", ["divider", "fixed_base", "collector_feedback", "sink"])
+def test_no_sample_escapes_an_extreme_with_self_heating(network: str) -> None:
+    """Where each junction settles with its own heat, signs proved at one temperature no longer hold; the extreme does."""
+    looked = 0
+    for box, rng in boxes(network, 2):
+        power = box.extreme(("p_q",), 1).value.max()
+        # Some tens of kelvin at the point of most power.
+        warm = replace(box.take([0, 1]), heat=Heat(float(30.0 / power), 473.15))
+        clouds = [point(warm, u) for u in (vertices(warm), samples(rng, warm, 2000, at_ends=0.5), samples(rng, warm, 2000, at_ends=0.0))]
+        solved = [(p, warm.solve(p, active_law=True)) for p in clouds]
+        for name in ("ic", "vce"):
+            seen = np.concatenate([np.broadcast_to(warm.measure((name,), p, q), (len(q.ic), 2)) for p, q in solved])
+            for direction in (1, -1):
+                value = warm.extreme((name,), direction).value
+                best = (direction * seen).max(axis=0)
+                settles = np.isfinite(value)
+                assert np.all((direction * value >= best - 1e-9 * np.abs(value))[settles]), (name, direction)
+                looked += int(settles.sum())
+    assert looked >= 8
+
+
+def test_heated_q_point_agrees_with_its_own_temperature() -> None:
+    """TJ = TA + RthJA·P with the power of the very Q-point that is solved at TJ."""
+    (box, rng), *_ = boxes("divider", 1)
+    warm = replace(box, heat=Heat(800.0, 473.15))
+    p = point(box, samples(rng, box, 300, at_ends=0.3))
+    q = warm.solve(p, active_law=True)
+    junction = p["temperature"] + 800.0 * np.maximum(q.vce * q.ic + q.vbe * q.ib, 0.0)
+    again = box.solve(p, active_law=True, junction=junction)
+    settled = np.isfinite(q.ic)
+    assert settled.mean() > 0.5
+    # A loop gain far below 1 leaves the tolerance of the iteration, 1e-12 of the temperature.
+    assert_allclose(again.ic[settled], q.ic[settled], rtol=1e-8, atol=0)

@@ -117,7 +117,7 @@ def _gains() -> list[list[str]]:
 
 
 def _deratings() -> list[list[str]]:
-    rows = [["policy", "resistor power", "voltage", "transistor voltage", "current", "power", "junction", "evidence"]]
+    rows = [["policy", "R power", "R voltage", "VCEO", "IC", "P", "junction", "evidence"]]
     for policy in deratings().values():
         shares = (
             policy.resistor_power,

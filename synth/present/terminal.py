@@ -332,6 +332,9 @@ def _stress(answer: Answer, c: Candidate) -> str:
         at = format_quantity(c.transistor.thermal_resistance, "thermal_resistance")
         gain = "" if load.loop_gain is None else f", thermal loop gain {percent(load.loop_gain)}"
         parts.append(f"junction at {format_quantity(c.transistor.junction, 'temperature')} with {at}{gain}")
+        if load.worst:
+            spans = [span(*ends, "current" if name == "ic" else "voltage") for name, ends in load.worst.items()]
+            parts.append(f"heating itself IC spans {spans[0]}, VCE {spans[-1]}")
     elif load.state is not None:
         parts.append(f"junction: {load.state}")
     lines.append(_wrapped(f"  transistor: {'; '.join(parts)}", "    "))

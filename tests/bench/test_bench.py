@@ -38,7 +38,7 @@ def test_the_table_has_a_row_for_each_series(capsys: pytest.CaptureFixture[str])
 
 def test_an_unknown_series_is_refused(capsys: pytest.CaptureFixture[str]) -> None:
     assert main(["E7"]) == 2
-    assert capsys.readouterr().err == "series: read 'E7', accepted are E6 E12 E24 E48 E96 E192\n"
+    assert capsys.readouterr().err == "series: read 'E7', accepted are E6 E12 E24 E48 E96 E192 any plain limits\n"
 
 
 def test_every_series_of_the_table_is_searched_by_default() -> None:
