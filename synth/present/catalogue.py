@@ -141,7 +141,7 @@ TABLES: dict[str, _Table] = {
         "Transistors with their gain bins", "makers' sheets; always check the current data sheet", _transistors, (3, 4)
     ),
     "derating": _Table(
-        "Derating policies, shares of the ratings that may be used",
+        "Derating policies: usable shares of each rating",
         "common practice, ECSS-Q-ST-30-11C, EEE-INST-002",
         _deratings,
         (1, 2, 3, 4, 5),

@@ -5,10 +5,10 @@ from __future__ import annotations
 import csv
 import io
 
-from synth.answer import Answer
+from synth.answer import Answer, Candidate
 from synth.explain import percent
-from synth.present.terminal import figure, limit_words, span
-from synth.quantities import format_resistance
+from synth.present.terminal import SIGNAL_WORDS, figure, limit_words, span
+from synth.quantities import format_quantity, format_resistance
 
 FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
 """First characters at which a spreadsheet takes a text for a formula."""
@@ -57,12 +57,17 @@ def to_csv(answer: Answer) -> str:
     roles = list(dict.fromkeys(role for c in answer.candidates for role in c.resistors))
     head = ["rank", "network", "verdict", *(f"{role}_ohm" for role in roles)]
     head += ["ic_a", "ic_min_a", "ic_max_a", "vce_v", "vce_min_v", "vce_max_v"]
-    head += ["drift_ic", "drift_vce", "drift", "centring", "supply_current_a", "decides"]
+    others = [q for q in (answer.candidates[0].worst if answer.candidates else ()) if q not in ("ic", "vce")]
+    head += [column for q in others for column in (f"{q}_v", f"{q}_min_v", f"{q}_max_v")]
+    head += ["drift_ic", "drift_vce", *(f"drift_{q}" for q in others)]
+    head += ["drift", "centring", "supply_current_a", "transistor_power_w", "decides"]
     writer.writerow(head)
     for c in answer.candidates:
         row: list[object] = [c.rank, inert(c.network), c.verdict, *(c.resistors.get(role, "") for role in roles)]
         row += [c.nominal.ic, *c.worst["ic"], c.nominal.vce, *c.worst["vce"]]
-        row += [c.drift.ic, "" if c.drift.vce is None else c.drift.vce, c.drift.q_point, c.centring, c.supply_current]
+        row += [figure for q in others for figure in (getattr(c.nominal, q), *c.worst[q])]
+        row += [c.drift.ic, "" if c.drift.vce is None else c.drift.vce, *(c.drift.of()[q] for q in others)]
+        row += [c.drift.q_point, c.centring, c.supply_current, "" if c.transistor is None else c.transistor.power]
         writer.writerow([*row, c.drift.decides])
     return out.getvalue()
 
@@ -86,6 +91,34 @@ def escaped(text: str) -> str:
 def _table(rows: list[list[str]]) -> str:
     lines = ["| " + " | ".join(row) + " |" for row in rows]
     return "\n".join([lines[0], "|" + "---|" * len(rows[0]), *lines[1:]])
+
+
+def _review(answer: Answer, c: Candidate) -> list[str]:
+    """Stress of the parts and figures of the signal."""
+    parts = []
+    if c.stress:
+        rows = [["part", "style", "power", "allowed", "voltage", "allowed", "smallest style"]]
+        for role, s in c.stress.items():
+            allowed = [
+                "–" if limit is None else format_quantity(limit, kind)
+                for limit, kind in ((s.power_allowed, "power"), (s.voltage_allowed, "voltage"))
+            ]
+            power, volts = figure(s.power, "power"), figure(s.voltage, "voltage")
+            cells = [role.upper(), s.style or "–", power, allowed[0], volts, allowed[1], s.smallest or "none in the table"]
+            rows.append([escaped(cell) for cell in cells])
+        if (load := c.transistor) is not None:
+            limit = format_quantity(load.allowed["power"], "power") if "power" in load.allowed else "–"
+            cells = ["transistor", "–", figure(load.power, "power"), limit, figure(load.vceo, "voltage")]
+            limit = format_quantity(load.allowed["vceo"], "voltage") if "vceo" in load.allowed else "–"
+            rows.append([escaped(cell) for cell in (*cells, limit, "–")])
+        parts += [f"## Stress (derating {escaped(str(answer.stage.get('derating', 'none')))})", _table(rows)]
+    if c.signal:
+        rows = [["figure", "nominal", "over the box"]]
+        for name, (low, middle, high) in c.signal.items():
+            words, kind = SIGNAL_WORDS[name]
+            rows.append([escaped(words), figure(middle, kind), span(low, high, kind)])
+        parts += ["## Signal", _table(rows)]
+    return parts
 
 
 def to_markdown(answer: Answer) -> str:
@@ -116,17 +149,19 @@ def to_markdown(answer: Answer) -> str:
             parts.append(f"- {change} would do: best drift {percent(r.drift)}.")
     if best is not None:
         roles = list(dict.fromkeys(role for c in answer.candidates for role in c.resistors))
-        rows = [["rank", "network", *map(str.upper, roles), "IC over the box", "VCE over the box", "drift", "verdict"]]
+        shown = [f"{q.upper()} over the box" for q in best.worst]
+        rows = [["rank", "network", *map(str.upper, roles), *shown, "drift", "verdict"]]
         for c in answer.candidates:
             values = [format_resistance(c.resistors[r]) if r in c.resistors else "–" for r in roles]
-            ends = [span(*c.worst["ic"], "current"), span(*c.worst["vce"], "voltage")]
+            ends = [span(*c.worst[q], "current" if q == "ic" else "voltage") for q in best.worst]
             rows.append([str(c.rank), escaped(c.network), *values, *ends, percent(c.drift.q_point), c.verdict])
         parts += ["## Candidates", _table(rows), "## Limits"]
         limits = [["limit", "allowed", "worst", "margin", "verdict"]]
         for v in best.limits:
             margin = percent(v.margin) if abs(v.margin) < float("inf") else "–"
             limits.append([escaped(v.name), escaped(limit_words(v)), figure(v.worst, v.kind), margin, v.verdict])
-        parts += [_table(limits), "## Reasons", "\n".join(f"- {escaped(line)}" for line in best.explanation)]
+        parts += [_table(limits), *_review(answer, best)]
+        parts += ["## Reasons", "\n".join(f"- {escaped(line)}" for line in best.explanation)]
     if answer.warnings:
         parts += ["## Cautions", "\n".join(f"- {escaped(w.name)}: {escaped(w.text)}" for w in answer.warnings)]
     if answer.assumed:

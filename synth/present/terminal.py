@@ -216,7 +216,9 @@ def _ranking(candidates: Sequence[Candidate]) -> str:
     roles = list(candidates[0].resistors) if same else []
     head = ["rank", *(["network"] if not same else []), *([r.upper() for r in roles] if same else ["resistors"])]
     # Beside the names of networks and roles there is no room for the supply current.
-    head += ["IC over the box", "VCE over the box", "drift", *(["supply"] if same else [])]
+    # The voltage that has the target, if another than VCE has it.
+    volts = list(candidates[0].worst)[-1]
+    head += ["IC over the box", f"{volts.upper()} over the box", "drift", *(["supply"] if same else [])]
     rows = [head]
     for c in candidates:
         values = [format_resistance(c.resistors[r]) for r in roles] if same else [
@@ -228,7 +230,7 @@ def _ranking(candidates: Sequence[Candidate]) -> str:
                 *([c.network] if not same else []),
                 *values,
                 span(*c.worst["ic"], "current"),
-                span(*c.worst["vce"], "voltage"),
+                span(*c.worst[volts], "voltage"),
                 percent(c.drift.q_point),
                 *([figure(c.supply_current, "current")] if same else []),
             ]
