@@ -287,7 +287,7 @@ class _Corners:
         for j in [j for j in open_roles if self.roles[j] != "re"]:
             condition = self.space.network.signs_while.get(("vce", self.roles[j]))
             if condition is None:
-                return np.full(len(self.lo), -np.inf)
+                return self._least_vce_over_feedback(direction)
             sign, role = condition
             least = self.at(self.ends("ic", 1)[0])[1].ic * self.low[role][self.lo[:, self.roles.index(role)]]
             # A role without width in a block needs no sign; where bands overlap even one value has an envelope of its own.
@@ -307,7 +307,25 @@ class _Corners:
             active = np.minimum.reduce([self.at(c)[1].ic for c in self._vertices(ends)]) >= self.icbo
             active &= conducts
             bound = np.where(sound, bound, np.where(active, every, -np.inf))
-        return np.where(held, bound, -np.inf)
+        return np.where(held, bound, -np.inf) if held.all() else np.where(held, bound, self._least_vce_over_feedback(direction))
+
+    def _least_vce_over_feedback(self, direction: int) -> Array:
+        """Bound of VCE = VBE + R·I over a resistor from collector to base, each factor at its own end."""
+        nothing = np.full(len(self.lo), -np.inf)
+        network = self.space.network
+        role = next((role.name for role in network.roles if set(role.nodes) == {"b", "c"} and role.name in self.roles), None)
+        if role is None:
+            return nothing
+        j = self.roles.index(role)
+        ic = direction * self.least("ic", direction)
+        current = np.asarray(sum(self.least(name, direction) for name in network.carries.get(role, (f"i_{role}",))))
+        # Of what flows at least the least resistance counts, of what flows at most the greatest.
+        ohms = np.where(current * direction >= 0.0, 1.0, 0.0)
+        low, high = self.low[role][self.lo[:, j]], self.high[role][self.hi[:, j]]
+        ohms = np.where((direction > 0) == (ohms > 0.0), low, high)
+        known = np.isfinite(current) & np.isfinite(ic) & (ic > 0.0)
+        vbe = self.space.transistor.vbe_at(np.where(known, ic, 1.0), self.t, self.device["delta"])
+        return np.where(known, direction * vbe + ohms * np.where(known, current, 0.0), nothing)
 
     def _vce_corner(self, ends: tuple[int, ...], open_roles: list[int], direction: int) -> Array:
         """Least of direction·VCE over re at one corner of the other roles."""

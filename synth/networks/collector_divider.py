@@ -58,5 +58,5 @@ NETWORK = Network(
     draws={"vcc": ("ic", "ib", "i_r2")},
     bleeder="r2",
     base_side=("r1", "r2"),
-    carries={"rc": ("ic", "i_r1"), "re": ("ic", "ib")},
+    carries={"r1": ("ib", "i_r2"), "rc": ("ic", "i_r1"), "re": ("ic", "ib")},
 )
