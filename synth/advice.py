@@ -27,6 +27,8 @@ WIDE = 0.95
 """Half-width from which a window is written by its ends [-]."""
 GAP = 0.005
 """Relative gap left in the drifts that advice quotes [-]; they are drifts of real candidates all the same."""
+BUDGET = 1.5e7
+"""Q-point solves for all of the advice together, some seconds; what is left then is not looked at."""
 STEPS = 7
 """Bisections of a relaxation: below one per cent of the way."""
 
@@ -52,32 +54,50 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
     needs = {need.limit: need for space in spaces_of(stage) for need in space.requirements}
     given = {name for name in needs if name.startswith("target.") or name in stage.limits_given}
     # Staying active is physics, not a request; and what the user did not ask for is named, and given up, first.
+    purse = _Purse()
     names = sorted((n for n in needs if n != ACTIVE or n in given), key=lambda n: n in given)
     dropped: set[str] = set()
     for name in sorted(names, key=lambda n: (n in given, n == "collector_share")):
         # Only what is proved infeasible without a limit makes it superfluous.
-        if search(spaces_of(stage, dropped | {name}), goal_of(stage), top=1, first=True, most=EFFORT).status == "infeasible":
+        if purse.search(stage, dropped | {name}, first=True).status == "infeasible":
             dropped.add(name)
     binding = tuple(name for name in names if name not in dropped) or (ACTIVE,)
     best_without: dict[str, float | None] = {}
     notes: dict[str, str] = {}
+    unsettled: list[str] = []
     ranked: list[tuple[bool, float, Relaxation]] = []
     for name in binding:
-        outcome = _search(stage, {name})
+        outcome = purse.search(stage, {name})
         best_without[name] = outcome.found[0].drift if outcome.found else None
-        relaxed = _relax(stage, name, outcome.found[0]) if outcome.found else None
+        unsettled += [name] if outcome.status == "unknown" else []
+        relaxed = _relax(stage, name, outcome.found[0], purse) if outcome.found else None
         if outcome.found and (note := _note(stage, name, outcome.found[0])):
             notes[name] = note
         if relaxed is not None:
             ranked.append((name in given, *relaxed))
     ranked.sort(key=lambda entry: entry[:2])
     return Infeasible(
-        binding=binding, best_without=best_without, relaxations=tuple(r for _, _, r in ranked), notes=notes
+        binding=binding,
+        best_without=best_without,
+        relaxations=tuple(r for _, _, r in ranked),
+        notes=notes,
+        unsettled=tuple(unsettled),
     )
 
 
-def _search(stage: Stage, without: set[str]) -> Outcome:
-    return search(spaces_of(stage, without), goal_of(stage), top=1, gap=GAP, most=EFFORT)
+class _Purse:
+    """The solves that are left for advice."""
+
+    def __init__(self) -> None:
+        self.left = BUDGET
+
+    def search(self, stage: Stage, without: set[str], *, first: bool = False) -> Outcome:
+        """Search for one candidate without some limits; 'unknown' once the purse is empty."""
+        most = min(EFFORT, max(self.left, 0.0))
+        gap = 0.0 if first else GAP
+        outcome = search(spaces_of(stage, without), goal_of(stage), top=1, gap=gap, first=first, most=most)
+        self.left -= outcome.evaluated
+        return outcome
 
 
 def _requirements(stage: Stage, name: str, like: Space) -> list[Requirement]:
@@ -94,14 +114,15 @@ def _note(stage: Stage, name: str, found: Found) -> str:
         judged = judge(exact.box, need, exact.worst)
         if need.rated is not None and not bool(judged.passed[0]):
             reached, allowed = (format_quantity(x, need.kind) for x in (float(judged.worst[0]), need.interval.high))
-            broken.append(f"{need.name.partition('.')[2]} reaches {reached}, allowed is {allowed}")
+            beyond = "; more than its rating" if need.whole is not None and judged.worst[0] > need.whole else ""
+            broken.append(f"{need.name.partition('.')[2]} reaches {reached}, allowed is {allowed}{beyond}")
     for role, stress in stresses(exact.box, found.space.styles, found.space.derating)[0].items():
         if name == "resistor_stress" and stress.string is not None:
             broken.append(f"{stress.string} x {stress.style} in series would do for {role}")
     return "; ".join(broken)
 
 
-def _relax(stage: Stage, name: str, found: Found) -> tuple[float, Relaxation] | None:
+def _relax(stage: Stage, name: str, found: Found, purse: _Purse) -> tuple[float, Relaxation] | None:
     """Least relaxation of one limit that lets a candidate qualify, with how far it moves the limit."""
     needs = _requirements(stage, name, found.space)
     exact = Exact(found.space.box(np.array([found.index], dtype=np.int32), Meter()), goal_of(stage))
@@ -110,7 +131,8 @@ def _relax(stage: Stage, name: str, found: Found) -> tuple[float, Relaxation] | 
     need, reached = worst.requirement, float(worst.worst[0])
     if (rated := need.rated) is not None:
         # Of a limit on used shares the share counts, whichever part uses most of its own.
-        if rated <= 0.0:
+        # What exceeds the maker's own rating is no advice.
+        if rated <= 0.0 or any(j.requirement.whole is not None and j.worst[0] > j.requirement.whole for j in judged):
             return None
         low, high = (end / rated if math.isfinite(end) else end for end in (need.interval.low, need.interval.high))
         need, reached = replace(need, name=name, kind="ratio", interval=Interval(low, high), rated=None), reached / rated
@@ -121,7 +143,7 @@ def _relax(stage: Stage, name: str, found: Found) -> tuple[float, Relaxation] | 
     for step in range(STEPS + 1):
         share = good if step == 0 else 0.5 * (good + bad)
         change = _change(need, start + share * (reached - start), outward=1 if reached > start else -1)
-        drift = _drift_with(stage, change)
+        drift = _drift_with(stage, change, purse)
         if drift is None and step == 0:
             return None
         if drift is None:
@@ -165,6 +187,6 @@ def _round(value: float, direction: int) -> float:
     return float(f"{rounded / scale:.{FIGURES}g}")
 
 
-def _drift_with(stage: Stage, change: Mapping[str, str]) -> float | None:
-    outcome = _search(Stage.from_keys({**stage.given, **change}, stage.folder), set())
+def _drift_with(stage: Stage, change: Mapping[str, str], purse: _Purse) -> float | None:
+    outcome = purse.search(Stage.from_keys({**stage.given, **change}, stage.folder), set())
     return outcome.found[0].drift if outcome.found else None

@@ -148,6 +148,7 @@ class Load:
     `junction` is where the junction settles at the point of most power, heating itself [K], and `loop_gain` what a kelvin
     of its temperature gives back [-], with a thermal resistance [K/W]; both None where that is not known, or where it does
     not settle, which `state` says. `heating` is how far self-heating moves the nominal IC [-], None where not known;
+    `too_hot` tells that the power alone, without a loop, takes it beyond its limit;
     `worst` holds least and greatest IC [A] and VCE [V] over the box with self-heating, empty where it was not looked for.
     """
 
@@ -161,6 +162,7 @@ class Load:
     state: str | None = None
     heating: float | None = None
     worst: Mapping[str, tuple[float, float]] = field(default_factory=dict)
+    too_hot: bool = False
 
     @property
     def used(self) -> dict[str, float]:
@@ -213,7 +215,7 @@ class Candidate:
     Resistances of `resistors` and `base_feed` [ohm]; `worst` holds the extremes of IC [A] and VCE [V]; `centring` [-];
     `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
     the next best network, for the winner among several; `signal` holds least, nominal and greatest value of each
-    small-signal figure [S, ohm, - or V], empty where there is none.
+    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none.
     """
 
     rank: int
@@ -281,13 +283,15 @@ class Relaxation:
 class Infeasible:
     """Why nothing qualifies: the limits that bind together, the best drift without each [-], single changes that would do.
 
-    `notes` says of a limit with several parts which ones the best candidate without it breaks.
+    `notes` says of a limit with several parts which ones the best candidate without it breaks; of the limits in `unsettled`
+    the search for advice was stopped before it could tell.
     """
 
     binding: tuple[str, ...]
     best_without: Mapping[str, float | None]
     relaxations: tuple[Relaxation, ...]
     notes: Mapping[str, str] = field(default_factory=dict)
+    unsettled: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -439,6 +443,7 @@ class Answer:
                 "best_without": _plain(self.infeasible.best_without),
                 "relaxations": [_plain(vars(r)) for r in self.infeasible.relaxations],
                 "notes": dict(self.infeasible.notes),
+                "unsettled": list(self.infeasible.unsettled),
             }
         return body
 

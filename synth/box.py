@@ -492,6 +492,9 @@ class Box:
         free = tuple(axis for axis, s in known.items() if s is None)
         search = _Climb(self, tuple(names), direction, fixed, free, thorough)
         found = search.run()
+        for role in (name[2:] for name in names if name.startswith("p_") and name[2:] in self.parts):
+            # A power has the signs of its current only while that does not turn round.
+            search.doubtful |= self.extreme((f"i_{role}",), -1, thorough=False).value < 0.0
         if search.doubtful.any():
             index = np.flatnonzero(search.doubtful)
             again = _Climb(self.take(index), tuple(names), direction, {}, self.axes, thorough, premise=False)

@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
 
 from synth.answer import Candidate, Caution, Load, Stress
-from synth.box import Box, Heat, Values
+from synth.box import Box, Extreme, Heat, Values
 from synth.catalogue import Derating, ResistorStyle, resistor_styles
 from synth.explain import percent
 from synth.measures import BYPASS, POWER_OF_TRANSISTOR
@@ -41,8 +41,11 @@ WARM = 10.0
 """Rise of a resistor's own temperature from which it is worth a caution [K]."""
 
 
+Law = Callable[[Sequence[str], int], Extreme]
+
+
 def stresses(
-    box: Box, styles: Mapping[str, ResistorStyle], policy: Derating
+    box: Box, styles: Mapping[str, ResistorStyle], policy: Derating, law: Law | None = None
 ) -> list[dict[str, Stress]]:
     """Worst power and voltage of every resistor, each at its own point of the box, against its style.
 
@@ -54,17 +57,19 @@ def stresses(
         Style of each role that has one.
     policy : Derating
         Derating policy.
+    law : callable, optional
+        ``law(names, side)``: extreme of a sum of quantities; that of the active region when not given.
 
     Returns
     -------
     list of dict
         Role to stress, one mapping for each candidate [W, V].
     """
-    hot = box.temperature.high
+    hot, law = box.temperature.high, law or box.extreme
     found: list[dict[str, Stress]] = [{} for _ in range(box.size)]
     for role, part in box.parts.items():
-        power = box.extreme((f"p_{role}",), 1).value
-        volts = np.maximum(box.extreme((f"u_{role}",), 1).value, -box.extreme((f"u_{role}",), -1).value)
+        power = law((f"p_{role}",), 1).value
+        volts = np.maximum(law((f"u_{role}",), 1).value, -law((f"u_{role}",), -1).value)
         style = styles.get(role)
         mounting = "chip" if style is None else style.style
         among = [row for row in resistor_styles().values() if row.style == mounting]
@@ -86,7 +91,7 @@ def stresses(
     return found
 
 
-def loads(box: Box, ratings: TransistorRatings, policy: Derating) -> list[Load]:
+def loads(box: Box, ratings: TransistorRatings, policy: Derating, law: Law | None = None) -> list[Load]:
     """What the transistor carries at worst, and where its junction gets at the hot ambient.
 
     Parameters
@@ -97,14 +102,17 @@ def loads(box: Box, ratings: TransistorRatings, policy: Derating) -> list[Load]:
         What is known of the transistor.
     policy : Derating
         Derating policy.
+    law : callable, optional
+        As in `stresses`.
 
     Returns
     -------
     list of Load
         One for each candidate [W, V, A, K, K/W].
     """
-    worst = box.extreme((POWER_OF_TRANSISTOR,), 1)
-    rail, ic = (box.extreme((name,), 1).value for name in ("span", "ic"))
+    law = law or box.extreme
+    worst = law((POWER_OF_TRANSISTOR,), 1)
+    rail, ic = (law((name,), 1).value for name in ("span", "ic"))
     hot, rth = box.temperature.high, ratings.thermal_resistance
     most = allowed_dissipation(ratings, hot, policy)
     known = {
@@ -126,6 +134,7 @@ def loads(box: Box, ratings: TransistorRatings, policy: Derating) -> list[Load]:
             loop_gain=None if settled is None else _known(settled.loop_gain[k]),
             state=None if settled is None else JUNCTION_STATES[int(settled.status[k])],
             heating=None if nominal is None else _known(_shift(box, nominal.temperature)[k]),
+            too_hot=rth is not None and hot + rth * float(worst.value[k]) > (ratings.tj_max or HOTTEST),
         )
         for k in range(box.size)
     ]
@@ -208,7 +217,8 @@ def signals(box: Box, corner: float | None = None) -> list[dict[str, tuple[float
         if name == "swing":
             sides = ("swing_to_cutoff", "swing_to_saturation")
             low = np.minimum.reduce([box.extreme((side,), -1).value for side in sides])
-            high = np.minimum.reduce([box.extreme((side,), 1).value for side in sides])
+            # The greatest of the smaller of two is no corner of either: only the least is told.
+            high = np.full(box.size, np.nan)
         else:
             low, high = (box.extreme((name,), side).value for side in (-1, 1))
         for k in range(box.size):
@@ -303,6 +313,14 @@ def _thermal_cautions(candidate: Candidate) -> list[Caution]:
     if load is None or load.thermal_resistance is None:
         return []
     at = format_quantity(load.thermal_resistance, "thermal_resistance")
+    if load.state != JUNCTION_STATES[0] and load.too_hot:
+        return [
+            Caution(
+                name="junction_too_hot",
+                text=f"With {at} to the ambient {format_quantity(load.power, 'power')} take the junction beyond its limit: "
+                "cool it better, or let the transistor dissipate less.",
+            )
+        ]
     if load.state != JUNCTION_STATES[0]:
         return [
             Caution(

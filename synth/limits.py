@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from synth.box import Box, Values
-from synth.catalogue import Derating, ResistorStyle
+from synth.catalogue import Derating, ResistorStyle, derating
 from synth.measures import POWER_OF_TRANSISTOR
 from synth.networks.form import Array, Network, Value
 from synth.quantities import Interval
@@ -103,12 +103,13 @@ class LimitRule:
 
 
 class Rating(NamedTuple):
-    """One rating of a part: its name, kind of quantity, what is measured, and what is allowed of it [W, V or A]."""
+    """One rating of a part: its name, kind of quantity, what is measured, what is allowed of it and what it is [W, V or A]."""
 
     name: str
     kind: str
     names: tuple[str, ...]
     allowed: float
+    whole: float
 
 
 def _resistor_ratings(network: Network, around: Surroundings) -> tuple[Rating, ...]:
@@ -116,11 +117,11 @@ def _resistor_ratings(network: Network, around: Surroundings) -> tuple[Rating, .
     for role in network.role_names:
         style = around.styles.get(role)
         if role in around.roles and style is not None and policy is not None:
-            power = float(allowed_power(style, around.hot, policy))
-            found.append(Rating(f"{role}.power", "power", (f"p_{role}",), power))
+            power, whole = (float(allowed_power(style, around.hot, p)) for p in (policy, derating("none")))
+            found.append(Rating(f"{role}.power", "power", (f"p_{role}",), power, whole))
             # What the root of power times resistance allows is a limit on power, and a laxer one than that.
             volts = policy.resistor_voltage * style.max_working_voltage_v
-            found.append(Rating(f"{role}.voltage", "voltage", (f"u_{role}",), volts))
+            found.append(Rating(f"{role}.voltage", "voltage", (f"u_{role}",), volts, style.max_working_voltage_v))
     return tuple(found)
 
 
@@ -128,11 +129,12 @@ def _transistor_ratings(network: Network, around: Surroundings) -> tuple[Rating,
     if around.derating is None:
         return ()
     ratings, policy = around.ratings, around.derating
-    power = allowed_dissipation(ratings, around.hot, policy)
+    power, whole = (allowed_dissipation(ratings, around.hot, p) for p in (policy, derating("none")))
+    watts = (math.nan, math.nan) if power is None or whole is None else (float(power), float(whole))
     every = (
-        Rating("vceo", "voltage", ("span",), allowed_vce(ratings, policy) or math.nan),
-        Rating("ic", "current", ("ic",), allowed_ic(ratings, policy) or math.nan),
-        Rating("power", "power", (POWER_OF_TRANSISTOR,), math.nan if power is None else float(power)),
+        Rating("vceo", "voltage", ("span",), allowed_vce(ratings, policy) or math.nan, ratings.vceo or math.nan),
+        Rating("ic", "current", ("ic",), allowed_ic(ratings, policy) or math.nan, ratings.ic_max or math.nan),
+        Rating("power", "power", (POWER_OF_TRANSISTOR,), *watts),
     )
     return tuple(rating for rating in every if not math.isnan(rating.allowed))
 
@@ -305,6 +307,8 @@ class Requirement:
         What is subtracted from the sum before it is compared [A or V].
     rated : float, optional
         For a part of a limit on used shares: what is allowed at 100 % [W, V or A].
+    whole : float, optional
+        The rating itself, without derating [W, V or A].
     """
 
     name: str
@@ -316,6 +320,7 @@ class Requirement:
     target: float | None = None
     offset: float = 0.0
     rated: float | None = None
+    whole: float | None = None
 
     @property
     def limit(self) -> str:
@@ -459,8 +464,9 @@ def requirements(
                     sums=(names,),
                     rule=rule,
                     rated=allowed,
+                    whole=whole,
                 )
-                for part, kind, names, allowed in rule.parts(network, around)
+                for part, kind, names, allowed, whole in rule.parts(network, around)
             ]
             continue
         found.append(
@@ -496,6 +502,9 @@ def applies(rule: LimitRule, network: Network, around: Surroundings, given: bool
     bool
         False means "not applicable", which is never an error.
     """
+    if rule.name == "bleeder_current" and around.reference is not None and not given:
+        # The current of the reference element has a limit of its own.
+        return False
     if rule.sums is not None:
         return bool(rule.sums(network, around))
     if rule.parts is not None:

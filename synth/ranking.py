@@ -8,6 +8,8 @@ from synth.answer import Alternative, Candidate
 from synth.networks import NETWORKS
 from synth.quantities import format_quantity
 
+WORTH = 0.02
+"""Relative gain from which another candidate is worth a look [-]."""
 DIGITS = 12
 """Significant digits of drift that order candidates; beyond them arithmetic noise would."""
 
@@ -59,13 +61,13 @@ def alternatives(candidates: Sequence[Candidate]) -> tuple[Alternative, ...]:
     best = candidates[0]
     found = []
     thrifty = min(candidates, key=lambda c: (c.supply_current, c.rank))
-    if thrifty.supply_current < best.supply_current * (1.0 - 1e-9):
+    if thrifty.supply_current < best.supply_current * (1.0 - WORTH):
         text = f"{format_quantity(thrifty.supply_current, 'current')} from the supply at nominal, instead of "
         text += format_quantity(best.supply_current, "current")
         found.append(Alternative(reason="least current", rank=thrifty.rank, text=text))
     light = max(candidates, key=lambda c: (c.base_feed, -c.rank))
     takes_signal = all(NETWORKS[c.network].takes_signal for c in (best, light))
-    if takes_signal and light.base_feed > best.base_feed * (1.0 + 1e-9):
+    if takes_signal and light.base_feed > best.base_feed * (1.0 + WORTH):
         text = f"base feed of {format_quantity(light.base_feed, 'resistance')} loads the signal less than "
         text += format_quantity(best.base_feed, "resistance")
         found.append(Alternative(reason="highest base-feed resistance", rank=light.rank, text=text))

@@ -140,9 +140,10 @@ def usual_figures(
         volts = float(transistor.vbe_at(current, T0))
         tc = (volts - GAP_VOLTAGE[transistor.material] - 3.0 * vt) / T0
         law = "that of the base-emitter law"
+        moves = transistor.vbe_model == "junction"
         return {
             "voltage": (f"{volts:.4g} V ± 50 mV", law),
-            "tc": (f"{1e3 * tc:.4g} mV/K", law),
+            "tc": (f"{1e3 * tc:.4g} mV/K", law) if moves else ("0 V/K", "VBE is fixed, and so is the diode's voltage"),
             "slope": (f"{vt / current:.4g} ohm", "VT over its test current"),
         }
     found: dict[Literal["voltage", "tc", "slope"], tuple[str, str]] = {

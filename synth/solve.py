@@ -10,7 +10,7 @@ import numpy as np
 
 from synth import __version__
 from synth.advice import why_nothing_qualifies
-from synth.answer import Answer, Candidate, Caution, Drift, Neighbour, NetworkResult, Search, Verdict, Worst
+from synth.answer import Answer, Candidate, Caution, Drift, Load, Neighbour, NetworkResult, Search, Verdict, Worst
 from synth.box import Box, Extreme, Meter, Values
 from synth.explain import (
     budgets,
@@ -33,6 +33,7 @@ from synth.search import Outcome, search
 from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_of, spaces_of
 from synth.stage import Assumption, Stage, StageError
 from synth.straddle import extreme_in_any_region
+from synth.stress import junction_limit
 
 Progress = Callable[[float, float, int], bool]
 
@@ -191,11 +192,37 @@ def _reviewed(candidate: Candidate, space: Space, stage: Stage) -> Candidate:
     """A candidate with the stress of its parts and its small-signal figures."""
     box = space.box(_index(space, candidate), Meter())
     active = candidate.regions == ("active",)
+    law = box.extreme if active else partial(extreme_in_any_region, box)
+    (load,) = loads(box, stage.ratings, space.derating, law)
+    limits = (*candidate.limits, *_junction_verdict(load, stage))
     return replace(
         candidate,
-        stress=stresses(box, space.styles, space.derating)[0],
-        transistor=loads(box, stage.ratings, space.derating)[0],
-        signal=signals(box, stage.corner)[0] if active else {},
+        stress=stresses(box, space.styles, space.derating, law)[0],
+        transistor=load,
+        # Figures over the box take longest; a list is compared by its limits on them.
+        signal=signals(box, stage.corner)[0] if active and candidate.rank == 1 else {},
+        limits=limits,
+        verdict="pass" if all(v.verdict == "pass" for v in limits) else "fail",
+    )
+
+
+def _junction_verdict(load: Load, stage: Stage) -> tuple[Verdict, ...]:
+    """Whether the junction, heating itself, settles below its limit at the point of most power."""
+    limit = junction_limit(stage.ratings, stage.derating)
+    if "transistor_stress" not in stage.limits or limit is None or load.thermal_resistance is None:
+        return ()
+    worst = np.nan if load.junction is None else load.junction
+    return (
+        Verdict(
+            name="transistor_stress.junction",
+            kind="temperature",
+            sense="<=",
+            limit=limit,
+            worst=worst,
+            margin=(limit - worst) / limit,
+            at={},
+            verdict="pass" if worst <= limit else "fail",
+        ),
     )
 
 

@@ -391,6 +391,10 @@ class Stage:
         if assumption.key == "limits.collector_share":
             # Given, it would bind the networks too whose default is no share at all.
             return all(NETWORKS[name].shared_rails for name in self.networks)
+        if assumption.key == "limits.base_resistance":
+            return all(NETWORKS[name].takes_signal for name in self.networks)
+        if assumption.key == "limits.bleeder_current":
+            return self.reference is None and any(NETWORKS[name].bleeder for name in self.networks)
         role = KEYS[assumption.key].table.rpartition(".")[2]
         return assumption.value != "no" or not needing(role, self.networks, self.reference is not None)
 

@@ -411,6 +411,14 @@ _LIMIT_OTHERWISE = {
     "transistor_stress": "100 % of the ratings that are known",
 }
 _LIMIT_EXAMPLE = {
+    "bleeder_current": "200 uA",
+    "reference_current": "2.5 : 10 mA",
+    "compliance": "8 V",
+    "input_resistance": "1.5 kohm",
+    "output_resistance": "<= 2 kohm",
+    "swing": "1.5 V",
+    "resistor_stress": "100 %",
+    "transistor_stress": "100 %",
     "current": "3 mA",
     "ratio": "0.4",
     "resistance": "15 kohm",
@@ -668,7 +676,8 @@ def _limits() -> Iterable[Key]:
         meaning = rule.meaning[0].upper() + rule.meaning[1:]
         yield Key(
             path=f"limits.{rule.name}", form="limit", kind=rule.kind, rule=rule.sense, short=rule.name,
-            meaning=f"{meaning.rstrip('.')}.", example=_LIMIT_EXAMPLE.get(rule.kind, KINDS[rule.kind].examples[0]),
+            meaning=f"{meaning.rstrip('.')}.",
+            example=_LIMIT_EXAMPLE.get(rule.name) or _LIMIT_EXAMPLE.get(rule.kind, KINDS[rule.kind].examples[0]),
             otherwise=_LIMIT_OTHERWISE.get(rule.name, "no limit"),
         )  # fmt: skip
 

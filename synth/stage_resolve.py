@@ -243,7 +243,7 @@ class _Resolver:
             least = format_quantity(transistor.vce_sat, "voltage")
             reason = f"which is no more than VCE(sat) = {least}: a saturated switch is set by forced gain, not by a Q-point"
             raise self.refusal("target.vce", reason, f"more than {least}")
-        reference = self.reference(networks, transistor, current)
+        reference = self.reference(networks, transistor, current, rails)
         load_rail = rails.get("vload", rails["vcc"]) if any(NETWORKS[name].sinks for name in networks) else None
         roles = self.roles(networks, any_network, temperature)
         ratings = self.ratings()
@@ -330,7 +330,7 @@ class _Resolver:
                 accepted = '[reference] and below it kind = "diode", or another network'
                 raise StageError("reference.kind", None, f"is not given, but network {name} needs it", accepted)
         if self.has_reference and not any(NETWORKS[name].reference != "no" for name in found):
-            text = f"[reference] is given, but {' or '.join(found)} does not use it"
+            text = f"[reference] is given, but {' or '.join(found)} does not use it."
             self.warnings.append(StageWarning(name="unused_reference", text=text))
         for role in unused:
             if (needed_by := needing(role, found or tuple(NETWORKS), self.has_reference)) or not found:
@@ -526,7 +526,9 @@ class _Resolver:
                 f"more than {least}, or an ambient.temperature that stays below {at}",
             )
 
-    def reference(self, networks: Sequence[str], transistor: Transistor, current: float) -> Reference | None:
+    def reference(
+        self, networks: Sequence[str], transistor: Transistor, current: float, rails: Mapping[str, Spread]
+    ) -> Reference | None:
         """The reference element, if one is given and a network has a place for it."""
         given = [path for path in self.given if KEYS[path].table == "reference"]
         if not given or not any(NETWORKS[name].reference != "no" for name in networks):
@@ -539,7 +541,8 @@ class _Resolver:
         if at <= 0.0:
             raise self.refusal("reference.current", "which is no current", "a current above 0 A", text)
         if kind != "diode" and "reference.voltage" not in self.given:
-            accepted = f"the voltage of the {kind} at its test current, such as '5.1 V ± 5 %'"
+            example = "'1.8 V ± 0.1 V'" if kind == "led" else "'5.1 V ± 5 %'"
+            accepted = f"the voltage of the {kind} at its test current, such as {example}"
             raise self.refusal("reference.voltage", f"which is not given and has no default for {kind}", accepted)
         usual = usual_figures(kind, transistor, at, self.value("reference.voltage"))
         voltage: Spread = self.take("reference.voltage", *usual["voltage"])
@@ -547,6 +550,10 @@ class _Resolver:
         slope: Spread = self.take("reference.slope", *usual["slope"])
         if voltage.low <= 0.0:
             raise self.refusal("reference.voltage", "which goes down to 0 V", "a magnitude above 0 V")
+        if count * voltage.low >= rails["vcc"].high:
+            most_supply = format_quantity(rails["vcc"].high, "voltage")
+            reason = f"which is not below the supply of at most {most_supply}: no current ever reaches the reference"
+            raise self.refusal("reference.voltage", reason, f"less than {most_supply} for all of them together")
         if slope.low < 0.0:
             raise self.refusal("reference.slope", "which is negative", "a resistance of 0 ohm or more")
         return Reference(
@@ -750,7 +757,9 @@ class _Resolver:
         if load_rail is not None:
             usual["compliance"] = (Interval(load_rail.nominal / 3.0, math.inf), "a third of the load's rail")
         if reference is not None:
-            usual["reference_current"] = (Interval(reference.current / 2.0, math.inf), "half of its test current")
+            most = 2.0 if reference.kind == "diode" else 5.0
+            line = Interval(reference.current / 2.0, reference.current * most)
+            usual["reference_current"] = (line, f"half to {most:g} times its test current, where its straight line holds")
         whole = Interval(-math.inf, 1.0)
         if has_styles:
             usual["resistor_stress"] = (whole, "all that the derating policy allows")
@@ -776,6 +785,8 @@ class _Resolver:
 
 
 def _rounded(limit: Interval, kind: str) -> str:
+    if math.isfinite(limit.low) and math.isfinite(limit.high):
+        return " : ".join(format_quantity(end, kind) for end in (limit.low, limit.high))
     is_least = math.isinf(limit.high)
     return f"{'>=' if is_least else '<='} {format_quantity(limit.low if is_least else limit.high, kind)}"
 

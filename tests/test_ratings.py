@@ -229,4 +229,45 @@ def test_wrong_ratings_are_refused(given: dict[str, object], message: str | None
 def test_figures_of_an_answer_are_finite_where_known() -> None:
     c = checked(style="0603", vceo="45 V")
     assert all(np.isfinite([s.power, s.voltage]).all() for s in c.stress.values())
-    assert all(low <= middle <= high for low, middle, high in c.signal.values())
+    # Of the swing, the smaller of two, only the least over the box is told.
+    assert np.isnan(c.signal["swing"][2])
+    assert all(low <= middle for low, middle, _ in c.signal.values())
+    assert all(middle <= high for name, (_, middle, high) in c.signal.items() if name != "swing")
+
+
+def test_power_of_a_resistor_whose_current_turns_round() -> None:
+    """Leakage of 1 µA at 25 °C flows out of the base of a hot stage and through RB: u²/R there exceeds what the drive gives."""
+    given = stage(
+        network="two_supply", vee="12 V ± 5 %", icbo="1 uA", hfe="110 : 450", temperature="0 : 25 : 100 °C", ic="3 mA", vce="8 V"
+    )
+    stress = synth.check(given, rb="10k", rc="2k7", re="3k9").candidates[0].stress["rb"]
+    # At 100 °C the leakage is 2**7.5 = 181 µA; RB is 10 kohm within 1 % and 100 ppm/K·75 K.
+    assert_allclose(stress.power, stress.voltage**2 / 10e3, rtol=0.05, atol=0)
+    assert stress.power > 0.9 * (181e-6) ** 2 * 10e3
+
+
+def test_stress_of_a_saturated_stage_stays_on_its_load_line() -> None:
+    # 12.6 V is all that there is: no resistor and no transistor has more, and none delivers power.
+    best = synth.check(stage(), r1="10k", r2="10k", rc="4k7", re="1k").candidates[0]
+    assert "saturated" in best.regions
+    assert best.transistor is not None
+    assert 0.0 < best.transistor.power < 12.6**2 / 4.0 / 5.7e3 + 1e-3
+    assert best.transistor.ic <= 12.6 / 5.6e3
+    assert all(0.0 < s.voltage <= 12.6 for s in best.stress.values())
+
+
+def test_a_relaxation_never_exceeds_the_rating_itself() -> None:
+    # 48 V on 45 V of VCEO: derating is not what stands in the way.
+    why = synth.find(stage(supply="48 V", vce="20 V", hfe=None, type="BC847B"), top=1).infeasible
+    assert why is not None
+    assert "more than its rating" in why.notes["transistor_stress"]
+    assert not [r for r in why.relaxations if "limits.transistor_stress" in r.change]
+
+
+def test_a_junction_that_does_not_settle_fails() -> None:
+    hot = stage(network="sink", vce=None, ic="10 mA", hfe=None, type="BC547B", vload="30 V", derating="none", bleeder_current="none",
+                temperature="-10 : 15 : 55 °C")
+    answer = synth.check(hot, r1="10k", r2="1k", re="47R")
+    (verdict,) = (v for v in answer.candidates[0].limits if v.name == "transistor_stress.junction")
+    assert verdict.verdict == "fail"
+    assert not answer.passed

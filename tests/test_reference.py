@@ -162,6 +162,7 @@ def test_source_is_the_mirror_image_of_a_sink() -> None:
     ("given", "message"),
     [
         ({"reference_kind": "zener"}, r"reference\.voltage is not given and has no default for zener, accepted is the voltage"),
+        ({"reference_kind": "zener", "reference_voltage": "15 V"}, r"reference\.voltage: read '15 V', which is not below the supply"),
         ({"reference_kind": "diode", "reference_current": "0 A"}, r"reference\.current: read '0 A', which is no current"),
         ({"reference_kind": "diode", "reference_voltage": "-0.1 : 0.7 V"}, r"reference\.voltage: read '-0\.1 : 0\.7 V', which goes down"),
         ({"reference_kind": "diode", "reference_slope": "-1 : 20 ohm"}, r"reference\.slope: .*-1"),
@@ -206,3 +207,24 @@ def test_vc_and_ve_drift_from_their_own_targets() -> None:
         # Against 0 V the collector of an NPN stage on a negative ground reads VC, and re drops VE.
         node = {"vc": best.nominal.nodes["c"], "ve": best.roles["re"].drop}[quantity]
         assert_allclose(getattr(best.nominal, quantity), node, rtol=1e-12, atol=0)
+
+
+def test_a_diode_is_kept_where_its_straight_line_holds() -> None:
+    """VT over its test current is no slope at ten times that current: half to twice it is allowed."""
+    best = synth.find(stage(tolerance="5 %", reference_kind="diode", reference_number="2"), top=1).best
+    assert best is not None
+    (verdict,) = (v for v in best.limits if v.name == "reference_current")
+    assert verdict.limit == (0.5e-3, 2e-3)
+    assert verdict.verdict == "pass"
+
+
+def test_fixed_vbe_is_compensated_by_a_fixed_diode() -> None:
+    reference = stage(reference_kind="diode", vbe_model="fixed").reference
+    assert reference is not None
+    assert reference.tc == Spread.exact(0.0)
+
+
+def test_defaults_of_an_led_fit_each_other() -> None:
+    # A tenth of IC in the bleeder would never light an LED of 2 mA: its own limit takes the place.
+    answer = synth.find(amplifier(network="diode_divider", reference_kind="led", reference_voltage="1.8 V"), top=1)
+    assert answer.passed

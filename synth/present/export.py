@@ -7,7 +7,7 @@ import io
 
 from synth.answer import Answer, Candidate
 from synth.explain import percent
-from synth.present.terminal import SIGNAL_WORDS, figure, limit_words, span
+from synth.present.terminal import SIGNAL_WORDS, ends_words, figure, limit_words, span
 from synth.quantities import format_quantity, format_resistance
 
 FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
@@ -116,7 +116,7 @@ def _review(answer: Answer, c: Candidate) -> list[str]:
         rows = [["figure", "nominal", "over the box"]]
         for name, (low, middle, high) in c.signal.items():
             words, kind = SIGNAL_WORDS[name]
-            rows.append([escaped(words), figure(middle, kind), span(low, high, kind)])
+            rows.append([escaped(words), figure(middle, kind), ends_words(low, high, kind)])
         parts += ["## Signal", _table(rows)]
     return parts
 
@@ -159,7 +159,8 @@ def to_markdown(answer: Answer) -> str:
         limits = [["limit", "allowed", "worst", "margin", "verdict"]]
         for v in best.limits:
             margin = percent(v.margin) if abs(v.margin) < float("inf") else "–"
-            limits.append([escaped(v.name), escaped(limit_words(v)), figure(v.worst, v.kind), margin, v.verdict])
+            worst = "none" if v.worst != v.worst else figure(v.worst, v.kind)
+            limits.append([escaped(v.name), escaped(limit_words(v)), worst, margin, v.verdict])
         parts += [_table(limits), *_review(answer, best)]
         parts += ["## Reasons", "\n".join(f"- {escaped(line)}" for line in best.explanation)]
     if answer.warnings:

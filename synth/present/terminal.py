@@ -160,7 +160,9 @@ def _headline(answer: Answer) -> str:
         only = "the only candidate" if search.bound is None else "the best"
         listed = only if count == 1 else f"the best {count}"
         beyond = "" if search.bound is None else f"; every other drifts {percent(search.bound)} or more"
-        return _wrapped(f"PASS  {name}: {listed} of {space}, proved{beyond} ({effort})", "      ")
+        # A junction that does not settle is found out when the candidates are reviewed.
+        verdict = "PASS" if answer.passed else "FAIL"
+        return _wrapped(f"{verdict}  {name}: {listed} of {space}, proved{beyond} ({effort})", "      ")
     if search.status == "infeasible":
         return _wrapped(f"FAIL  {name}: none of {space} meets every limit, proved ({effort})", "      ")
     bound = f"; nothing can drift less than {percent(search.bound)}" if search.bound else ""
@@ -294,6 +296,9 @@ def _limits(c: Candidate) -> str:
     for v in c.limits:
         if v.verdict == "pass" and v.name.startswith(STRESS):
             continue
+        if v.worst != v.worst:
+            rows.append([v.name, limit_words(v), "none", "–", v.verdict, "no temperature at which it settles"])
+            continue
         decides = point_words(v.at, skip=tuple(c.resistors)) if v.at and v.name not in ("bleeder_current",) else "nominal"
         saturates = v.name == "vce" and v.verdict == "fail" and v.worst == v.limit
         margin = "saturates" if saturates else percent(v.margin) if abs(v.margin) < inf else "–"
@@ -338,7 +343,7 @@ def _stress(answer: Answer, c: Candidate) -> str:
             spans = [span(*ends, "current" if name == "ic" else "voltage") for name, ends in load.worst.items()]
             parts.append(f"heating itself IC spans {spans[0]}, VCE {spans[-1]}")
     elif load.state is not None:
-        parts.append(f"junction: {load.state}")
+        parts.append("junction beyond its limit" if load.too_hot else f"junction: {load.state}")
     lines.append(_wrapped(f"  transistor: {'; '.join(parts)}", "    "))
     title = f"Stress of every part at its own worst point (derating {policy}, ambient up to {hot})"
     return "\n".join([title, *lines])
@@ -356,6 +361,24 @@ SIGNAL_WORDS = {
 }
 
 
+def ends_words(low: float, high: float, kind: str) -> str:
+    """A range of which the upper end may not be known.
+
+    Parameters
+    ----------
+    low, high : float
+        Ends, SI [-]; `high` may be NaN.
+    kind : str
+        Kind of quantity.
+
+    Returns
+    -------
+    str
+        ``2.55 V or more``, else as `span`.
+    """
+    return f"{figure(low, kind)} or more" if high != high else span(low, high, kind)
+
+
 def _signal(answer: Answer, c: Candidate) -> str:
     """Small-signal figures over the box."""
     if not c.signal:
@@ -370,7 +393,7 @@ def _signal(answer: Answer, c: Candidate) -> str:
     rows = [["", "nominal", "over the box"]]
     for name, (low, middle, high) in c.signal.items():
         words, kind = SIGNAL_WORDS[name]
-        rows.append([words, figure(middle, kind), span(low, high, kind)])
+        rows.append([words, figure(middle, kind), ends_words(low, high, kind)])
     return _section(f"Signal ({', '.join([*notes, load, f'source {source}'])})", rows)
 
 
@@ -382,6 +405,8 @@ def _infeasible(answer: Answer) -> str:
     lines += [f"  {name}: {note}" for name, note in why.notes.items()]
     for name, drift in why.best_without.items():
         effect = "other limits still conflict" if drift is None else f"the best candidate drifts {percent(drift)}"
+        if name in why.unsettled:
+            effect = "not settled, the search for advice was stopped"
         lines.append(f"  without {name}: {effect}")
     if why.relaxations:
         lines.append("Any one of these changes would do (each verified by a search of its own):")
