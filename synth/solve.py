@@ -10,7 +10,7 @@ import numpy as np
 
 from synth import __version__
 from synth.advice import why_nothing_qualifies
-from synth.answer import Answer, Candidate, Caution, Drift, Load, Neighbour, NetworkResult, Search, Verdict, Worst
+from synth.answer import Answer, Candidate, Caution, Drift, Load, NetworkResult, Pass, Search, Verdict, Worst
 from synth.box import Box, Extreme, Meter, Values
 from synth.explain import (
     budgets,
@@ -132,7 +132,7 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
     (candidate,) = _build(space, index, goal, any_region=True)
     network = space.network
     (around,) = neighbours(*among_values(stage, space), goal)
-    candidate = _reviewed(replace(candidate, rank=1, neighbours=around), space, stage)
+    (candidate,) = _reviewed([replace(candidate, rank=1, neighbours=around)], space, stage)
     candidate = replace(candidate, explanation=sentences(candidate, network))
     warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
     box = space.box(index, Meter())
@@ -188,22 +188,23 @@ def _index(space: Space, candidate: Candidate) -> Index:
     return np.array([position], dtype=np.int32)
 
 
-def _reviewed(candidate: Candidate, space: Space, stage: Stage) -> Candidate:
-    """A candidate with the stress of its parts and its small-signal figures."""
-    box = space.box(_index(space, candidate), Meter())
-    active = candidate.regions == ("active",)
+def _reviewed(candidates: Sequence[Candidate], space: Space, stage: Stage) -> list[Candidate]:
+    """Candidates of one space with the stress of their parts, the first of all with its small-signal figures."""
+    index = np.concatenate([_index(space, candidate) for candidate in candidates])
+    box = space.box(index, Meter())
+    active = all(candidate.regions == ("active",) for candidate in candidates)
     law = box.extreme if active else partial(extreme_in_any_region, box)
-    (load,) = loads(box, stage.ratings, space.derating, law)
-    limits = (*candidate.limits, *_junction_verdict(load, stage))
-    return replace(
-        candidate,
-        stress=stresses(box, space.styles, space.derating, law)[0],
-        transistor=load,
+    stress, load = stresses(box, space.styles, space.derating, law), loads(box, stage.ratings, space.derating, law)
+    found = []
+    for k, candidate in enumerate(candidates):
+        limits = (*candidate.limits, *_junction_verdict(load[k], stage))
         # Figures over the box take longest; a list is compared by its limits on them.
-        signal=signals(box, stage.corner)[0] if active and candidate.rank == 1 else {},
-        limits=limits,
-        verdict="pass" if all(v.verdict == "pass" for v in limits) else "fail",
-    )
+        figures = signals(box.take([k]), stage.corner)[0] if active and candidate.rank == 1 else {}
+        verdict: Pass = "pass" if all(v.verdict == "pass" for v in limits) else "fail"
+        found.append(
+            replace(candidate, stress=stress[k], transistor=load[k], signal=figures, limits=limits, verdict=verdict)
+        )
+    return found
 
 
 def _junction_verdict(load: Load, stage: Stage) -> tuple[Verdict, ...]:
@@ -242,16 +243,15 @@ def _candidates(outcome: Outcome, goal: Goal, top: int, stage: Stage) -> tuple[C
         built += [(c, space) for c in _build(space, index, goal, any_region=False)]
     built.sort(key=lambda pair: order_key(pair[0], pair[1].roles))
     listed = built[:top]
-    around: dict[int, tuple[Neighbour, ...]] = {}
+    final: dict[int, Candidate] = {}
     for space in dict.fromkeys(s for _, s in listed):
         ranks = [k for k, (_, s) in enumerate(listed) if s is space]
         index = np.concatenate([_index(space, listed[k][0]) for k in ranks])
-        around.update(zip(ranks, neighbours(space, index, goal), strict=True))
-    final = []
-    for k, (candidate, space) in enumerate(listed):
-        full = _reviewed(replace(candidate, rank=k + 1, neighbours=around[k]), space, stage)
-        final.append(replace(full, explanation=sentences(full, space.network)))
-    return tuple(final)
+        around = neighbours(space, index, goal)
+        own = [replace(listed[k][0], rank=k + 1, neighbours=near) for k, near in zip(ranks, around, strict=True)]
+        for k, full in zip(ranks, _reviewed(own, space, stage), strict=True):
+            final[k] = replace(full, explanation=sentences(full, space.network))
+    return tuple(final[k] for k in sorted(final))
 
 
 def _best_of_each(
