@@ -27,7 +27,7 @@ WIDE = 0.95
 """Half-width from which a window is written by its ends [-]."""
 GAP = 0.005
 """Relative gap left in the drifts that advice quotes [-]; they are drifts of real candidates all the same."""
-BUDGET = 1.5e7
+BUDGET = 1.2e7
 """Q-point solves for all of the advice together, some seconds; what is left then is not looked at."""
 STEPS = 7
 """Bisections of a relaxation: below one per cent of the way."""

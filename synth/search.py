@@ -693,7 +693,7 @@ def search(
     rooms: list[_Room] = []
     for number, space in enumerate(spaces):
         pilot = _pilot(space, goal, meter)
-        seeds = _coarse(_Room(space, goal, meter, *_bearings(space, pilot, goal, meter)), top)
+        seeds = _coarse(_Room(space, goal, meter, *_bearings(space, pilot, goal, meter)), top, most)
         if seeds:
             pool.add(number, seeds)
             best = min(seeds, key=lambda f: f.drift)
@@ -718,7 +718,7 @@ def search(
     )
 
 
-def _coarse(room: _Room, top: int) -> list[Found]:
+def _coarse(room: _Room, top: int, most: float) -> list[Found]:
     """The best of a thinned-out space: good candidates to start from, never an answer by themselves."""
     space = room.space
     positions = {role: _thin(space.lists[role].nominal.size, COARSE) for role in space.roles}
@@ -726,7 +726,7 @@ def _coarse(room: _Room, top: int) -> list[Found]:
         return []
     thin = replace(space, lists={role: space.lists[role].take(at) for role, at in positions.items()})
     pool = _Pool(top)
-    _run([_Room(thin, room.goal, room.meter, room.anchors, room.weights, room.asleep)], pool, None)
+    _run([_Room(thin, room.goal, room.meter, room.anchors, room.weights, room.asleep)], pool, None, most=most)
     return [
         replace(f, space=space, index=tuple(int(positions[r][i]) for r, i in zip(space.roles, f.index, strict=True)))
         for f in pool.found.values()
