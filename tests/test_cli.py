@@ -837,7 +837,7 @@ ARGUMENTS = st.one_of(
 )
 
 
-@settings(max_examples=120, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@settings(max_examples=60, suppress_health_check=[HealthCheck.function_scoped_fixture])
 @given(argv=ARGUMENTS)
 def test_no_arguments_lead_to_a_traceback(run: Run, argv: list[str]) -> None:
     """Any other exception than SystemExit fails here, as does a warning, an odd exit status or a chatty refusal."""

@@ -120,7 +120,7 @@ def test_search_equals_full_enumeration(network: str, number: int, monkeypatch: 
         check_complete(search(spaces, goal, top=top), spaces, rows, top)
 
 
-STRESSED = 16
+STRESSED = 13
 """Random spaces of each network with limits on stress and signal."""
 
 
@@ -157,7 +157,7 @@ def test_the_stressed_cases_are_of_every_kind() -> None:
             free = [replace(s, requirements=tuple(n for n in s.requirements if not is_stress_or_signal(n))) for s in spaces]
             if len(enumerate_all(free, goal)) > len(rows):
                 deciding.add(network)
-    assert feasible >= 20
+    assert feasible >= 15
     assert deciding == set(NETWORKS)
 
 
@@ -251,7 +251,8 @@ def test_searches_were_stopped_with_and_without_a_candidate(monkeypatch: pytest.
 def test_progress_reports_a_rising_bound_and_a_falling_best(network: str, monkeypatch: pytest.MonkeyPatch) -> None:
     small_steps(monkeypatch, 0)
     reports = 0
-    for number in range(CASES):
+    # Spaces with a reference element are mostly decided in a few steps, so more of them are looked at.
+    for number in range(0, CASES, 4 if NETWORKS[network].reference == "no" else 1):
         spaces, goal, top, rows = case(network, number)
         seen = stop_after(10**9)
         search(spaces, goal, top=top, progress=seen[0])
