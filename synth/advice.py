@@ -3,18 +3,18 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
 
 from synth.answer import Infeasible, Relaxation
-from synth.box import Meter
+from synth.box import Box, Meter
 from synth.facts import stresses
-from synth.limits import Requirement, judge
+from synth.limits import Judgement, Requirement, judge
 from synth.quantities import Interval, Target, format_exact, format_limit, format_quantity, format_target
 from synth.search import Outcome, search
-from synth.spaces import Exact, Found, Space, goal_of, spaces_of
+from synth.spaces import Exact, Found, goal_of, spaces_of
 from synth.stage import Stage
 
 ACTIVE = "vce"
@@ -70,8 +70,12 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
         outcome = purse.search(stage, {name})
         best_without[name] = outcome.found[0].drift if outcome.found else None
         unsettled += [name] if outcome.status == "unknown" else []
-        relaxed = _relax(stage, name, outcome.found[0], purse) if outcome.found else None
-        if outcome.found and (note := _note(stage, name, outcome.found[0])):
+        if not outcome.found:
+            continue
+        found = outcome.found[0]
+        judged = _judged(stage, name, found)
+        relaxed = _relax(stage, name, found, judged, purse)
+        if note := _note(name, found, judged):
             notes[name] = note
         if relaxed is not None:
             ranked.append((name in given, *relaxed))
@@ -100,33 +104,38 @@ class _Purse:
         return outcome
 
 
-def _requirements(stage: Stage, name: str, like: Space) -> list[Requirement]:
-    """A limit as it reads for one network: what it measures differs between them, and it may have several parts."""
+def _box(found: Found) -> Box:
+    return found.space.box(np.array([found.index], dtype=np.int32), Meter())
+
+
+def _judged(stage: Stage, name: str, found: Found) -> list[Judgement]:
+    """What a candidate makes of a limit that it was found without: for each part of it, as it reads for its network."""
+    like = found.space
     space = next(s for s in spaces_of(stage) if s.network is like.network and s.roles == like.roles)
-    return [need for need in space.requirements if need.limit == name]
+    exact = Exact(_box(found), goal_of(stage))
+    return [judge(exact.box, need, exact.worst) for need in space.requirements if need.limit == name]
 
 
-def _note(stage: Stage, name: str, found: Found) -> str:
+def _note(name: str, found: Found, judged: Sequence[Judgement]) -> str:
     """Which parts of a limit the best candidate without it breaks, with figures; "" of a limit without parts."""
-    exact = Exact(found.space.box(np.array([found.index], dtype=np.int32), Meter()), goal_of(stage))
     broken = []
-    for need in _requirements(stage, name, found.space):
-        judged = judge(exact.box, need, exact.worst)
-        if need.rated is not None and not bool(judged.passed[0]):
-            reached, allowed = (format_quantity(x, need.kind) for x in (float(judged.worst[0]), need.interval.high))
-            beyond = "; more than its rating" if need.whole is not None and judged.worst[0] > need.whole else ""
+    for judgement in judged:
+        need = judgement.requirement
+        if need.rated is not None and not bool(judgement.passed[0]):
+            reached, allowed = (format_quantity(x, need.kind) for x in (float(judgement.worst[0]), need.interval.high))
+            beyond = "; more than its rating" if need.whole is not None and judgement.worst[0] > need.whole else ""
             broken.append(f"{need.name.partition('.')[2]} reaches {reached}, allowed is {allowed}{beyond}")
-    for role, stress in stresses(exact.box, found.space.styles, found.space.derating)[0].items():
-        if name == "resistor_stress" and stress.string is not None:
-            broken.append(f"{stress.string} x {stress.style} in series would do for {role}")
+    if name == "resistor_stress":
+        for role, stress in stresses(_box(found), found.space.styles, found.space.derating)[0].items():
+            if stress.string is not None:
+                broken.append(f"{stress.string} x {stress.style} in series would do for {role}")
     return "; ".join(broken)
 
 
-def _relax(stage: Stage, name: str, found: Found, purse: _Purse) -> tuple[float, Relaxation] | None:
+def _relax(
+    stage: Stage, name: str, found: Found, judged: Sequence[Judgement], purse: _Purse
+) -> tuple[float, Relaxation] | None:
     """Least relaxation of one limit that lets a candidate qualify, with how far it moves the limit."""
-    needs = _requirements(stage, name, found.space)
-    exact = Exact(found.space.box(np.array([found.index], dtype=np.int32), Meter()), goal_of(stage))
-    judged = [judge(exact.box, need, exact.worst) for need in needs]
     worst = min(judged, key=lambda j: float(j.margin[0]))
     need, reached = worst.requirement, float(worst.worst[0])
     if (rated := need.rated) is not None:

@@ -21,8 +21,8 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.measures import Setting, common, measure, sign
-from synth.networks.form import Array, Branches, Network, QPoint, Sign
+from synth.measures import Setting, measure, sign
+from synth.networks.form import Array, Branches, Network, QPoint, Sign, common_sign
 from synth.q_point import solve, solve_active
 from synth.quantities import Spread
 from synth.reference import Reference
@@ -34,7 +34,6 @@ Values = dict[str, Array]
 """A value of every parameter of the box at some points: rails [V], delta [V], hfe [-] and icbo [A] at 25 °C,
 temperature [K], and the resistance of each role [ohm]; of a reference element delta_ref [V] and r_ref [ohm]."""
 
-DEVICE_AXES = ("delta", "hfe", "icbo", "delta_ref", "r_ref")
 SCAN_POINTS = 8
 """Interior temperatures of the scan on each side of 25 °C."""
 INWARD = 1e-5
@@ -353,9 +352,8 @@ class Box:
         shape = np.broadcast_shapes(*(np.shape(v) for v in values.values()))
         ambient = np.broadcast_to(values["temperature"], shape).astype(float)
 
-        def power(t: Array, at: Values = values) -> Array:
-            q = self.solve(at, active_law, junction=t)
-            return np.asarray(np.maximum(np.broadcast_to(q.vce * q.ic + q.vbe * q.ib, t.shape), 0.0))
+        def power(t: Array) -> Array:
+            return self._warming(values, active_law, t)
 
         before, off_before = ambient, heat.rth * power(ambient)
         t = np.minimum(ambient + off_before, heat.limit)
@@ -376,14 +374,16 @@ class Box:
         if left[0].size:
             some = {name: np.broadcast_to(v, shape)[left] for name, v in values.items()}
             alone = replace(self.take(left[-1]), heat=None)
-
-            def power_of(at: Array) -> Array:
-                q = alone.solve(some, active_law, junction=at)
-                return np.asarray(np.maximum(np.broadcast_to(q.vce * q.ic + q.vbe * q.ib, at.shape), 0.0))
-
             t = t.copy()
-            t[left] = junction_temperature(power_of, ambient[left], heat.rth, heat.limit).temperature
+            t[left] = junction_temperature(
+                partial(alone._warming, some, active_law), ambient[left], heat.rth, heat.limit
+            ).temperature
         return self.solve(values, active_law, junction=t)
+
+    def _warming(self, values: Values, active_law: bool, junction: Array) -> Array:
+        """What warms the transistor at a junction temperature [W]; below VCE(sat) the active law gives nothing."""
+        power = self.solve(values, active_law, junction).power
+        return np.asarray(np.maximum(np.broadcast_to(power, junction.shape), 0.0))
 
     def branches(self, values: Values, q: QPoint) -> Branches:
         """Voltages and currents of every resistor and rail.
@@ -419,6 +419,8 @@ class Box:
         ndarray
             The sum, of the broadcast shape [A, V, W, ohm or -].
         """
+        if all(name in QPoint._fields for name in names):
+            return np.asarray(sum(getattr(q, name) for name in names))
         r = {role: values[role] for role in self.parts}
         sources, t = self.sources(values), values["temperature"]
         gain = values["hfe"] * self.transistor.gain_factor(t)
@@ -440,7 +442,7 @@ class Box:
         int or None
             The common sign of all that are not 0; None where one is unknown or two disagree.
         """
-        return common([sign(name, axis, self.setting) for name in names])
+        return common_sign(sign(name, axis, self.setting) for name in names)
 
     @cached_property
     def setting(self) -> Setting:
@@ -449,7 +451,6 @@ class Box:
             network=self.network,
             transistor=self.transistor,
             roles=tuple(self.parts),
-            has_reference=self.reference is not None,
             signal=self.signal,
         )
 

@@ -12,7 +12,7 @@ from synth.box import Box, Extreme, Heat, Values
 from synth.catalogue import Derating, ResistorStyle, resistor_styles
 from synth.explain import percent
 from synth.measures import BYPASS, POWER_OF_TRANSISTOR
-from synth.networks.form import Array, Network
+from synth.networks.form import Array
 from synth.quantities import format_quantity, format_resistance
 from synth.signal import corner_capacitance
 from synth.stress import (
@@ -177,8 +177,7 @@ def _settled(box: Box, values: Values, rth: float, ratings: TransistorRatings) -
     """Where the junctions settle at one point of the box each, power and Q-point solved together."""
 
     def power_of(t: Array) -> Array:
-        q = box.solve(values, junction=t)
-        return np.maximum(np.broadcast_to(q.vce * q.ic + q.vbe * q.ib, t.shape), 0.0)
+        return np.maximum(np.broadcast_to(box.solve(values, junction=t).power, t.shape), 0.0)
 
     ambient = np.broadcast_to(np.asarray(values["temperature"], dtype=float), (box.size,))
     limit = max(ratings.tj_max or HOTTEST, float(ambient.max()) + 1.0)
@@ -223,29 +222,14 @@ def signals(box: Box, corner: float | None = None) -> list[dict[str, tuple[float
             low, high = (box.extreme((name,), side).value for side in (-1, 1))
         for k in range(box.size):
             found[k][name] = (float(low[k]), float(middle[k]), float(high[k]))
-    has_bypass = box.signal.bypass != "none" and "re" in box.parts and "e" in free_nodes(box.network)
+    # The emitter of a follower is its output.
+    has_bypass = box.signal.bypass != "none" and "re" in box.parts and "c" not in box.network.tied
     if corner is not None and has_bypass:
         ohms = (box.extreme((BYPASS,), 1).value, box.measure((BYPASS,), values, q), box.extreme((BYPASS,), -1).value)
         sizes = [np.broadcast_to(corner_capacitance(r, corner), (box.size,)) for r in ohms]
         for k in range(box.size):
             found[k]["bypass_capacitor"] = (float(sizes[0][k]), float(sizes[1][k]), float(sizes[2][k]))
     return found
-
-
-def free_nodes(network: Network) -> set[str]:
-    """Terminals of the transistor that are no output and sit on no rail.
-
-    Parameters
-    ----------
-    network : Network
-        Any network.
-
-    Returns
-    -------
-    set of str
-        Of ``b c e``; the emitter of a follower is its output. No unit.
-    """
-    return {"b", "c", "e"} - set(network.tied) - ({"e"} if "c" in network.tied else set())
 
 
 def stress_cautions(

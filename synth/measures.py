@@ -8,12 +8,11 @@ transistor dissipates; and the small-signal parameters ``gm r_pi r_intrinsic`` a
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import dataclass
 
 import numpy as np
 
-from synth.networks.form import Array, Branches, Network, QPoint, Rails, Resistances, Sign
+from synth.networks.form import Array, Branches, Network, QPoint, Rails, Resistances, Sign, common_sign
 from synth.signal import FIGURES, Signal, SmallSignal, signs
 from synth.transistor import Transistor
 
@@ -36,8 +35,6 @@ class Setting:
         Its laws.
     roles : tuple of str
         Roles used.
-    has_reference : bool
-        Whether a reference element stands in the circuit.
     signal : Signal
         What the signal meets.
     """
@@ -45,7 +42,6 @@ class Setting:
     network: Network
     transistor: Transistor
     roles: tuple[str, ...]
-    has_reference: bool
     signal: Signal
 
 
@@ -130,7 +126,7 @@ def measure(
     if name in QPoint._fields:
         return np.asarray(getattr(q, name))
     if name == POWER_OF_TRANSISTOR:
-        return np.asarray(q.vce * q.ic + q.vbe * q.ib)
+        return q.power
     if name == "vc":
         return np.asarray(branches.nodes["c"])
     if name == "ve":
@@ -176,7 +172,7 @@ def sign(name: str, axis: str, setting: Setting) -> Sign:
         return None
     if name in PARAMETERS_OF_SIGNAL:
         behind = ("ic", "ib") if name == "r_intrinsic" else ("ic",)
-        current = common(network.sign(part, axis) for part in behind)
+        current = common_sign(network.sign(part, axis) for part in behind)
         if name == "gm" or current is None:
             return current
         # IC/h = IB + (1 + 1/h)·ICBO falls along hfe, as IB does.
@@ -213,27 +209,8 @@ def current_sign(network: Network, role: str, axis: str) -> Sign:
     """
     if f"i_{role}" in network.signs:
         return network.sign(f"i_{role}", axis)
-    return common(network.sign(part, axis) for part in network.carries.get(role, ()))
-
-
-def common(found: Iterable[Sign]) -> Sign:
-    """The sign that all have that are not 0.
-
-    Parameters
-    ----------
-    found : iterable of int or None
-        Signs.
-
-    Returns
-    -------
-    int or None
-        0 if all are; None where one is unknown, two disagree, or there is none.
-    """
-    every = list(found)
-    kinds = set(every) - {0}
-    if not every or None in kinds or len(kinds) > 1:
-        return None
-    return kinds.pop() if kinds else 0
+    carried = network.carries.get(role)
+    return common_sign(network.sign(part, axis) for part in carried) if carried else None
 
 
 def parts_of_current(network: Network, role: str) -> tuple[str, ...]:

@@ -147,8 +147,6 @@ class _Corners:
     def uses(self, quantity: str, direction: int) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
         """Which roles' low ends and high ends the bound of a quantity depends on."""
         ends, open_roles = self.ends(quantity, direction)
-        if quantity == "vc" and open_roles:
-            return tuple(a | b for a, b in zip(self.uses("vce", direction), self.uses("ve", direction), strict=True))  # type: ignore[return-value]
         uses = np.zeros((2, len(self.roles)), dtype=bool)
         if is_figure(quantity):
             return ~uses[0], ~uses[1]
@@ -182,12 +180,15 @@ class _Corners:
             return (f"i_{role}",)
         if role in self.roles and kind == "i" and quantity not in self.space.network.signs:
             return parts_of_current(self.space.network, role)
+        # Of two supplies VC and VE count from unlike ends.
+        if quantity == "vc" and self.ends(quantity, 1)[1] and "vee" not in self.space.rails:
+            return ("vce", "ve")
         return ()
 
     def _least_made_up(self, quantity: str, behind: tuple[str, ...], direction: int) -> Array:
-        """Bound of a sum of currents, or of a product of quantities each at its own end."""
+        """Bound of a sum, or of a product of quantities each at its own end."""
         kind, _, role = quantity.partition("_")
-        if kind == "i":
+        if kind in ("i", "vc"):
             return np.asarray(sum(self.least(name, direction) for name in behind))
         if direction < 0:
             return np.full(len(self.lo), -np.inf)
@@ -238,8 +239,6 @@ class _Corners:
             return self._least_ic(ends, direction)
         if quantity == "vce":
             return self._least_vce(ends, open_roles, direction)
-        if quantity == "vc" and open_roles and "vee" not in self.space.rails:
-            return self.least("vce", direction) + self.least("ve", direction)
         nothing = np.full(len(self.lo), -np.inf)
         if open_roles:
             return nothing
@@ -307,7 +306,7 @@ class _Corners:
             active = np.minimum.reduce([self.at(c)[1].ic for c in self._vertices(ends)]) >= self.icbo
             active &= conducts
             bound = np.where(sound, bound, np.where(active, every, -np.inf))
-        return np.where(held, bound, -np.inf) if held.all() else np.where(held, bound, self._least_vce_over_feedback(direction))
+        return bound if held.all() else np.where(held, bound, self._least_vce_over_feedback(direction))
 
     def _least_vce_over_feedback(self, direction: int) -> Array:
         """Bound of VCE = VBE + R·I over a resistor from collector to base, each factor at its own end."""
@@ -319,10 +318,7 @@ class _Corners:
         j = self.roles.index(role)
         ic = direction * self.least("ic", direction)
         current = np.asarray(sum(self.least(name, direction) for name in network.carries.get(role, (f"i_{role}",))))
-        # Of what flows at least the least resistance counts, of what flows at most the greatest.
-        ohms = np.where(current * direction >= 0.0, 1.0, 0.0)
-        low, high = self.low[role][self.lo[:, j]], self.high[role][self.hi[:, j]]
-        ohms = np.where((direction > 0) == (ohms > 0.0), low, high)
+        ohms = np.where(current >= 0.0, self.low[role][self.lo[:, j]], self.high[role][self.hi[:, j]])
         known = np.isfinite(current) & np.isfinite(ic) & (ic > 0.0)
         vbe = self.space.transistor.vbe_at(np.where(known, ic, 1.0), self.t, self.device["delta"])
         return np.where(known, direction * vbe + ohms * np.where(known, current, 0.0), nothing)

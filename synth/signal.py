@@ -25,7 +25,7 @@ from typing import Generic, Literal, TypeVar, get_args
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.networks.form import Array, Network, QPoint, Resistances, Sign
+from synth.networks.form import Array, Network, QPoint, Resistances, Sign, common_sign
 from synth.quantities import RestpointError
 from synth.transistor import thermal_voltage
 
@@ -143,7 +143,7 @@ class _Polynomial:
     def sign(self) -> Sign:
         """Sign for all positive values of the variables, where the coefficients alone decide it."""
         signs = {1 if n > 0 else -1 for n in self.terms.values()}
-        return _common(signs)
+        return common_sign(signs)
 
 
 Number = TypeVar("Number", NDArray[np.float64], _Polynomial)
@@ -552,14 +552,6 @@ def corner_capacitance(resistance: Array | float, frequency: Array | float) -> A
 # --- Signs ----------------------------------------------------------------------------------------------------------
 
 
-def _common(signs: Collection[Sign]) -> Sign:
-    """Sign of a sum of terms, where their signs decide it."""
-    moving = set(signs) - {0}
-    if not moving:
-        return 0
-    return moving.pop() if len(moving) == 1 else None
-
-
 def _times(one: Sign, two: Sign) -> Sign:
     if one == 0 or two == 0:
         return 0
@@ -601,6 +593,20 @@ def _slopes(quotient: str, output: str, paths: frozenset[str], grounded: frozens
             # A swing is claimed only where P is above zero, and then what exceeds P·Q is beyond doubt.
             found[name] = 1 if (slope - p * q).sign == 1 else -1 if (slope + p * q).sign == -1 else None
     return found
+
+
+def _own_slopes(
+    network: Network, figure: str, bypass: Bypass, used: Collection[str]
+) -> tuple[_Wiring, dict[str, str], frozenset[str], Mapping[str, Sign]]:
+    """Wiring, path of each role, star around m, and the signs of a figure's slope along every path and the transistor."""
+    wiring = _wire(network, used, "none" if bypass == "part" else bypass, network.reference != "no")
+    role_path, star = _paths(wiring)
+    # Source and load may hang where no resistor of the network does.
+    paths = frozenset((*role_path.values(), "b", wiring.output)) | star
+    grounded = frozenset(node for node in TERMINALS if wiring.home[node] == GROUND)
+    quotient = {"swing_to_cutoff": "cutoff_excursion", "swing_to_saturation": "output_share"}.get(figure, figure)
+    slope = _slopes(quotient, wiring.output, paths, grounded)
+    return wiring, role_path, star, slope
 
 
 def signs(
@@ -655,15 +661,9 @@ def signs(
     _known("signal.bypass", bypass, BYPASSES)
     if figure == "swing":
         two = [signs(network, side, bypass, roles=roles) for side in ("swing_to_cutoff", "swing_to_saturation")]
-        return {parameter: _common([side[parameter] for side in two]) for parameter in two[0]}
+        return {parameter: common_sign([side[parameter] for side in two]) for parameter in two[0]}
     used = network.role_names if roles is None else roles
-    wiring = _wire(network, used, "none" if bypass == "part" else bypass, network.reference != "no")
-    role_path, star = _paths(wiring)
-    # Source and load may hang where no resistor of the network does.
-    paths = frozenset((*role_path.values(), "b", wiring.output)) | star
-    grounded = frozenset(node for node in TERMINALS if wiring.home[node] == GROUND)
-    quotient = {"swing_to_cutoff": "cutoff_excursion", "swing_to_saturation": "output_share"}.get(figure, figure)
-    slope = _slopes(quotient, wiring.output, paths, grounded)
+    wiring, role_path, star, slope = _own_slopes(network, figure, bypass, used)
     found: dict[str, Sign] = {}
     rails = (*network.rails, *network.optional_rails)
     reference = ("delta_ref", "r_ref") if network.reference != "no" else ()
@@ -679,7 +679,7 @@ def signs(
             parts.append(None)
         if figure == "swing_to_saturation":
             parts.append(network.sign("vce", parameter))
-        found[parameter] = _common(parts)
+        found[parameter] = common_sign(parts)
     return found
 
 
@@ -711,19 +711,11 @@ def own_signs(
     without a bypass, or nothing.
     """
     used = network.role_names if roles is None else roles
-    wiring = _wire(network, used, "none" if bypass == "part" else bypass, network.reference != "no")
-    role_path, star = _paths(wiring)
-    paths = frozenset((*role_path.values(), "b", wiring.output)) | star
-    grounded = frozenset(node for node in TERMINALS if wiring.home[node] == GROUND)
-    quotient = {"swing_to_cutoff": "cutoff_excursion"}.get(figure, figure)
-    slope = _slopes(quotient, wiring.output, paths, grounded)
+    wiring, role_path, star, slope = _own_slopes(network, figure, bypass, used)
     found: dict[str, Sign] = {"ic": slope["ic"]}
     for role in used:
         starred = bool(star) and REFERENCE in wiring.ends.get(role, ())
         found[role] = None if starred else _times(-1, slope[role_path[role]]) if role in role_path else 0
-    if figure == "swing_to_cutoff":
-        # IC·Rac is VT times the quotient, so it moves as that does.
-        found["ic"] = slope["ic"]
     return found
 
 

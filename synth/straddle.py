@@ -14,7 +14,8 @@ from functools import cached_property, partial
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.box import DEVICE_AXES, Box, Extreme, Values, golden, peaks_that_matter
+from synth.box import Box, Extreme, Values, golden, peaks_that_matter
+from synth.measures import PARAMETERS_OF_DEVICE
 from synth.networks.form import Array, TwoPort
 
 
@@ -120,7 +121,7 @@ class _Straddle:
 
         plain = port({})
         found = {axis: most for axis, most in (("delta", 0.0), ("delta_ref", 1.0)) if axis in box.axes}
-        for axis in (a for a in box.axes if a not in DEVICE_AXES):
+        for axis in (a for a in box.axes if a not in PARAMETERS_OF_DEVICE):
             other = port({axis: values[axis] * 1.01})
             load = ((plain.e_c, other.e_c), (plain.z_cb, other.z_cb), (plain.z_cc, other.z_cc))
             sign = box.network.sign("ic", axis)

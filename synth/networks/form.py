@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Mapping
+from collections.abc import Callable, Collection, Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import Literal, NamedTuple
 
@@ -42,6 +42,30 @@ class QPoint(NamedTuple):
     vbe: Array
     vce: Array
     region: NDArray[np.int8]
+
+    @property
+    def power(self) -> Array:
+        """What the transistor dissipates [W]."""
+        return np.asarray(self.vce * self.ic + self.vbe * self.ib)
+
+
+def common_sign(signs: Iterable[Sign]) -> Sign:
+    """Sign of a sum of terms, where their signs decide it.
+
+    Parameters
+    ----------
+    signs : iterable of int or None
+        Sign of each term.
+
+    Returns
+    -------
+    int or None
+        0 if all are; None where one is unknown or two disagree.
+    """
+    moving = set(signs) - {0}
+    if not moving:
+        return 0
+    return moving.pop() if len(moving) == 1 else None
 
 
 class Branches(NamedTuple):
