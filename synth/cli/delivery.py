@@ -1,0 +1,82 @@
+"""Where an answer goes: standard output, files, and a bar on stderr while it is worked out."""
+
+from __future__ import annotations
+
+import sys
+import time
+from collections.abc import Callable, Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import click
+
+from synth.cli.options import FOUND, NOT_FOUND, WrongInput
+
+if TYPE_CHECKING:
+    from synth.answer import Answer
+    from synth.stage import Stage
+
+QUIET_SECONDS = 0.5
+"""A search shorter than this shows no progress bar [s]."""
+
+
+def files(options: dict[str, Any]) -> dict[str, Path]:
+    """Files that the options name; refused before the work if they cannot be written."""
+    from synth.present.files import refuse
+
+    files = {f"--{name}": options[name] for name in ("output", "save") if options[name] is not None}
+    refuse(files, options["force"])
+    return files
+
+
+def deliver(answer: Answer, stage: Stage, explain: Sequence[int], options: dict[str, Any]) -> int:
+    """Write the answer and the request where they were asked for; the exit status."""
+    from synth.answer import Answer
+    from synth.present.export import to_csv, to_markdown
+    from synth.present.files import write
+    from synth.present.terminal import explanation, render
+
+    makers: dict[str, Callable[[Answer], str]] = {
+        "table": render, "json": Answer.to_json, "csv": to_csv, "markdown": to_markdown,
+    }
+    if explain and options["form"] != "table":
+        raise WrongInput(f"--explain: goes with --format table, read {options['form']!r}, which holds the reasons already")
+    text = makers[options["form"]](answer)
+    if answer.candidates:
+        count = len(answer.candidates)
+        for rank in explain:
+            if rank > count:
+                raise WrongInput(f"--explain: read {rank}, accepted is 1 to {count}")
+            text += "\n" + explanation(answer, rank)
+    content = {"--output": text, "--save": stage.to_toml(options["save"].parent) if options["save"] else ""}
+    write({option: (path, content[option]) for option, path in files(options).items()})
+    if options["output"] is None:
+        click.echo(text, nl=False)
+    return FOUND if answer.passed else NOT_FOUND
+
+
+def progress() -> Callable[[float, float, int], bool] | None:
+    """A bar on stderr that shows how near the proof is, if stderr is a terminal and the search takes long."""
+    if not sys.stderr.isatty():
+        return None
+    start = last = time.monotonic()
+    shown = False
+
+    def report(bound: float, best: float, blocks: int) -> bool:
+        nonlocal last, shown
+        now = time.monotonic()
+        if now - start > QUIET_SECONDS and now - last > 0.1:
+            last, shown = now, True
+            share = min(bound / best, 1.0) if 0.0 < best < float("inf") else 0.0
+            bar = "█" * round(30 * share) + "·" * (30 - round(30 * share))
+            best_text = f"best {100 * best:.1f} %" if best < float("inf") else "no candidate yet"
+            text = f"\r{bar} {best_text}, nothing below {100 * bound:.1f} %, {blocks} blocks open   "
+            click.echo(text, err=True, nl=False)
+        return True
+
+    def finish() -> None:
+        if shown:
+            click.echo("\r" + " " * 90 + "\r", err=True, nl=False)
+
+    click.get_current_context().call_on_close(finish)
+    return report

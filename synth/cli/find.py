@@ -1,0 +1,46 @@
+"""The command ``restpoint find``."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Any
+
+import click
+
+from synth.cli.delivery import deliver, files, progress
+from synth.cli.options import FORMATS, Count, WrongInput, command_line, key_options, output_options, read_stage
+
+
+def command(meaning: str) -> click.Command:
+    """The command, with what it is for in one sentence."""
+
+    def run(stage_file: Path | None, top: int, explain: tuple[int, ...], every: bool, **options: Any) -> int:
+        from synth.solve import find
+
+        for key, value in options.items():
+            role = key.removeprefix("key_values__")
+            if role != key and value is not None:
+                pin = f"--resistors-{role}-values {value}"
+                raise WrongInput(f"--{role}: find chooses values itself, accepted is {pin!r} to pin one, or the command check")
+        files(options)
+        stage = read_stage(stage_file, options)
+        answer = find(stage, top=top, progress=progress(), command=command_line())
+        ranks = [c.rank for c in answer.candidates] if every else list(explain)
+        return deliver(answer, stage, ranks, options)
+
+    return click.Command(
+        "find",
+        callback=run,
+        help=meaning + "\n\nGive a stage file, options, or both; an option overrides the file's key. Every key of"
+        " [resistors] can be given for one role as well, as in --resistors-re-values 1k8.",
+        params=[
+            click.Argument(["stage_file"], required=False, type=click.Path(path_type=Path), metavar="[STAGE.toml]"),
+            *key_options(),
+            click.Option(["--top"], type=Count(1, 1000), default=10, show_default=True, metavar="N",
+                         help="How many candidates to list and prove."),
+            click.Option(["--explain"], type=Count(1), metavar="N", multiple=True,
+                         help="Explain candidate N as well."),
+            click.Option(["--all", "every"], is_flag=True, help="Explain every candidate listed."),
+            *output_options(FORMATS),
+        ],
+    )

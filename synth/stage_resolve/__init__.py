@@ -1,0 +1,87 @@
+"""From the texts of a stage to its resolved values: defaults, tables, refusals, and what had to be assumed."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from pathlib import Path
+from types import MappingProxyType
+from typing import Any
+
+from synth.networks import NETWORKS
+from synth.quantities import format_quantity
+from synth.stage_keys import KEYS
+from synth.stage_resolve.limits import read_limits
+from synth.stage_resolve.reference import read_reference
+from synth.stage_resolve.request import Assumption, Request, StageWarning
+from synth.stage_resolve.resistors import RoleSetting, band, needing, no_role, read_fitted, read_roles, read_stock, rival
+from synth.stage_resolve.signal import read_corner, read_signal
+from synth.stage_resolve.transistor import check_junction, read_policy, read_ratings, read_transistor
+from synth.stage_resolve.wanted import read_networks, read_rails, read_targets, read_temperature
+from synth.stress import TransistorRatings
+
+__all__ = ["Assumption", "RoleSetting", "StageWarning", "band", "needing", "no_role", "resolve", "rival"]
+
+
+def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
+    """The content of a stage.
+
+    Parameters
+    ----------
+    given : mapping of str to str
+        Text of every key given, by dotted path.
+    folder : Path
+        Where the paths in it start.
+
+    Returns
+    -------
+    dict
+        Every attribute of `synth.stage.Stage` by name, SI.
+
+    Raises
+    ------
+    StageError
+        If the stage contradicts itself.
+    """
+    request = Request(given, folder)
+    rails = read_rails(request)
+    networks, any_network = read_networks(request, rails)
+    ic, voltages = read_targets(request, networks, rails)
+    # Never 0: `targets` refuses a stage without a target for IC.
+    current = ic.nominal or 0.0
+    temperature = read_temperature(request)
+    transistor = read_transistor(request, current)
+    check_junction(request, transistor, current, temperature.high)
+    vce = voltages.get("vce")
+    if vce is not None and vce.nominal is not None and vce.nominal <= transistor.vce_sat:
+        least = format_quantity(transistor.vce_sat, "voltage")
+        reason = f"which is no more than VCE(sat) = {least}: a saturated switch is set by forced gain, not by a Q-point"
+        raise request.refusal("target.vce", reason, f"more than {least}")
+    reference = read_reference(request, networks, transistor, current, rails)
+    load_rail = rails.get("vload", rails["vcc"]) if any(NETWORKS[name].sinks for name in networks) else None
+    roles = read_roles(request, networks, any_network, temperature)
+    ratings = read_ratings(request)
+    has_styles = any(setting.style for setting in roles.values())
+    return {
+        "name": request.value("name") or "stage",
+        "networks": networks,
+        "any_network": any_network,
+        "rails": MappingProxyType(rails),
+        "ground": request.take("supply.ground", "middle" if "vee" in rails else "negative"),
+        "ic": ic,
+        "voltages": MappingProxyType(voltages),
+        "transistor": transistor,
+        "reference": reference,
+        "ratings": ratings,
+        "derating": read_policy(request, has_styles or ratings != TransistorRatings()),
+        "signal": read_signal(request),
+        "corner": read_corner(request),
+        "temperature": temperature,
+        "limits": MappingProxyType(read_limits(request, current, transistor, reference, load_rail, has_styles, ratings)),
+        "values": MappingProxyType(read_fitted(request)),
+        "roles": MappingProxyType(roles),
+        "assumed": (*(request.assumed[path] for path in KEYS if path in request.assumed), *request.notes),
+        "warnings": tuple(request.warnings),
+        "given": MappingProxyType({path: request.given[path] for path in KEYS if path in request.given}),
+        "folder": request.folder,
+        "_stock": MappingProxyType(read_stock(request, roles)),
+    }
