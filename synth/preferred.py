@@ -22,11 +22,12 @@ from synth.quantities import RestpointError, format_resistance, parse
 
 FloatArray = NDArray[np.float64]
 
-STOCK_COLUMNS = ("value", "tolerance", "tcr", "quantity", "style", "price", "part")
+STOCK_COLUMNS = ("value", "tolerance", "tcr", "quantity", "style", "price", "part", "minimum")
 """Columns of a stock list; only `value` is required."""
 
 _LARGEST_STOCK = 5_000_000
 _LONGEST_QUANTITY = 9
+_PRICE_DECIMALS = 6
 
 
 class PreferredError(RestpointError):
@@ -194,7 +195,7 @@ class ValueList:
     quantities : tuple of (int or None), optional
         Number of pieces of each value [-], None where not given.
     prices : tuple of (float or None), optional
-        Price of one piece, in the currency of the list [-], None where not given.
+        Price of one piece of the first price break, in the currency of the list [-], None where not given.
 
     Raises
     ------
@@ -450,21 +451,71 @@ def _band(name: str, band: ArrayLike, values: FloatArray) -> FloatArray:
 
 
 @dataclass(frozen=True, kw_only=True)
-class _StockRow:
+class StockRow:
+    """One row of a stock list.
+
+    Parameters
+    ----------
+    value, tolerance, tcr : float
+        Resistance [ohm], tolerance [-] and temperature coefficient [1/K], plus and minus.
+    label : str
+        The value as the list writes it.
+    part, style : str or None
+        Part number and style.
+    quantity : int or None
+        Pieces on hand [-], None where not given.
+    prices : tuple of (int, float)
+        Price breaks, ascending: from this number of pieces on, one costs this much [-, currency of the list]; empty where
+        nothing is for sale.
+    minimum : int
+        Least number of pieces that can be ordered [-].
+    """
+
     value: float
     tolerance: float
     tcr: float
     label: str
     part: str | None
     style: str | None
-    price: float | None
     quantity: int | None
+    prices: tuple[tuple[int, float], ...]
+    minimum: int
+
+    @property
+    def price(self) -> float | None:
+        """Price of one piece of the first price break [currency of the list]."""
+        return self.prices[0][1] if self.prices else None
 
 
-def _stock_rows(path: Path, tolerance: float, tcr: float) -> list[_StockRow]:
+def stock_rows(path: str | Path, *, tolerance: float, tcr: float) -> list[StockRow]:
+    """Every row of a stock list, in its order.
+
+    Parameters
+    ----------
+    path : str or Path
+        CSV file as `ValueList.from_stock` reads it. ``price`` is a number, or price breaks such as ``1:0.05 100:0.02``.
+    tolerance, tcr : float
+        Tolerance [-] and temperature coefficient [1/K] of rows that give none.
+
+    Returns
+    -------
+    list of StockRow
+        Rows of quantity 0 among them.
+
+    Raises
+    ------
+    StockError
+        If the file or a row cannot be used; names the line, what was read and what is accepted.
+    QuantityError
+        If a cell is not the quantity it should be; names line and column likewise.
+    """
+    return _stock_rows(Path(path), tolerance, tcr)
+
+
+def _stock_rows(path: Path, tolerance: float, tcr: float) -> list[StockRow]:
     records = _records(path.name, _stock_text(path))
     header, width = _stock_header(path.name, records)
-    rows: list[_StockRow] = []
+    rows: list[StockRow] = []
     for line, cells in records:
         where = f"stock '{path.name}', line {line}"
         # Even an empty cell too many tells that a decimal comma has split a figure.
@@ -482,15 +533,16 @@ def _stock_rows(path: Path, tolerance: float, tcr: float) -> list[_StockRow]:
         own_tolerance = _stock_tolerance(f"{where}, column tolerance", row["tolerance"])
         own_tcr = _stock_figure(f"{where}, column tcr", row["tcr"], "temperature_coefficient")
         rows.append(
-            _StockRow(
+            StockRow(
                 value=value,
                 tolerance=tolerance if own_tolerance is None else own_tolerance,
                 tcr=tcr if own_tcr is None else own_tcr,
                 label=row["value"],
                 part=row["part"] or None,
                 style=row["style"] or None,
-                price=_stock_figure(f"{where}, column price", row["price"], "gain"),
                 quantity=_stock_quantity(f"{where}, column quantity", row["quantity"]),
+                prices=_stock_prices(f"{where}, column price", row["price"]),
+                minimum=_stock_quantity(f"{where}, column minimum", row["minimum"]) or 1,
             )
         )
     if not rows:
@@ -586,9 +638,27 @@ def _stock_quantity(where: str, text: str) -> int | None:
     return int(text) if text else None
 
 
-def _merged(rows: Iterable[_StockRow]) -> list[_StockRow]:
+def _stock_prices(where: str, text: str) -> tuple[tuple[int, float], ...]:
+    breaks: dict[int, float] = {}
+    for item in text.split():
+        pieces, colon, price = item.rpartition(":")
+        number = (_stock_quantity(where, pieces) if colon else 1) or 0
+        if number < 1 or (breaks and number <= max(breaks)):
+            raise StockError(
+                f"{where}: read {quoted(text)}, accepted is the price of one piece, or price breaks with rising numbers of"
+                " pieces, such as '1:0.05 100:0.02'"
+            )
+        figure = _stock_figure(where, price, "gain")
+        # Costs are added up exactly, so a price needs a last decimal.
+        if figure is None or round(figure, _PRICE_DECIMALS) != figure:
+            raise StockError(f"{where}: read {quoted(text)}, accepted are prices of at most {_PRICE_DECIMALS} decimals")
+        breaks[number] = figure
+    return tuple(breaks.items())
+
+
+def _merged(rows: Iterable[StockRow]) -> list[StockRow]:
     """One row for each value that is there, ascending."""
-    best: dict[float, _StockRow] = {}
+    best: dict[float, StockRow] = {}
     for row in sorted(
         (row for row in rows if row.quantity != 0), key=lambda row: (row.value, row.tolerance, row.tcr)
     ):

@@ -434,6 +434,9 @@ def test_a_cell_that_is_no_quantity_is_named_by_its_line(tmp_path: Path, row: st
         ("1k,,,-1,,,", r"line 3, column quantity: read '-1', accepted is a whole number"),
         ("1k,,,³,,,", r"line 3, column quantity: read '³', accepted is a whole number"),
         ("1k,,,9999999999,,,", r"line 3, column quantity: read '9999999999', accepted is a whole number"),
+        ("1k,,,,,1:0.05 1:0.02,", r"line 3, column price: read '1:0\.05 1:0\.02', accepted is .* rising numbers of pieces"),
+        ("1k,,,,,0:0.05,", r"line 3, column price: read '0:0\.05', accepted is the price of one piece"),
+        ("1k,,,,,0.0000001,", r"line 3, column price: read '0\.0000001', accepted are prices of at most 6 decimals"),
         ("4,7k,,,,,,", r"line 3: read 8 cells, accepted are 7"),
         ("1k,,,,,,a,b", r"line 3: read 8 cells, accepted are 7"),
         ('"1k,,,,,,', r"line 3: read a record that is not CSV \(unexpected end of data\)"),
@@ -536,10 +539,19 @@ def test_a_file_above_five_megabytes_is_refused(tmp_path: Path, size: int) -> No
 
 
 def test_the_columns_are_those_of_the_contract() -> None:
-    assert preferred.STOCK_COLUMNS == ("value", "tolerance", "tcr", "quantity", "style", "price", "part")
+    assert preferred.STOCK_COLUMNS[:7] == ("value", "tolerance", "tcr", "quantity", "style", "price", "part")
 
 
 def test_every_style_of_the_table_fits_into_a_stock_list(tmp_path: Path) -> None:
     names = list(catalogue.resistor_styles())
     rows = "".join(f'{100 + number} ohm,"{name}"\n' for number, name in enumerate(names))
     assert drawer(tmp_path, f"value,style\n{rows}").styles == tuple(names)
+
+
+def test_price_breaks_and_minimum_order_are_read(tmp_path: Path) -> None:
+    path = tmp_path / "prices.csv"
+    path.write_text("value,price,minimum,quantity\n1k,1:0.05 100:0.021,50,7\n2k2,0.1,,0\n3k3,,,\n", encoding="utf-8")
+    first, second, third = preferred.stock_rows(path, tolerance=0.01, tcr=1e-4)
+    assert (first.prices, first.price, first.minimum, first.quantity) == (((1, 0.05), (100, 0.021)), 0.05, 50, 7)
+    assert (second.prices, second.minimum, second.quantity) == (((1, 0.1),), 1, 0)
+    assert (third.prices, third.price, third.quantity) == ((), None, None)
