@@ -91,6 +91,8 @@ class Stage:
         Limits given and limits by default, SI units; whether one applies is a matter of the network.
     values : mapping of str to float
         Resistors fitted today [ohm].
+    replacement : mapping of str to Spread, float or str
+        What is given of the transistor that is to take the place of today's, by key, SI units; empty for none.
     roles : mapping of str to RoleSetting
         What each role of the networks may be.
     assumed : tuple of Assumption
@@ -130,6 +132,7 @@ class Stage:
     temperature: Spread
     limits: Mapping[str, Interval]
     values: Mapping[str, float]
+    replacement: Mapping[str, Any]
     roles: Mapping[str, RoleSetting]
     assumed: tuple[Assumption, ...] = field(compare=False)
     warnings: tuple[StageWarning, ...] = field(compare=False)
@@ -425,6 +428,7 @@ class Stage:
             "ambient": {"temperature": _plain(self.temperature)},
             "limits": {name: _plain(interval) for name, interval in self.limits.items()},
             "values": dict(self.values),
+            "replacement": {leaf: _plain(value) for leaf, value in self.replacement.items()},
         }
 
 

@@ -539,7 +539,8 @@ def test_empty_stage_file_is_refused_for_what_it_lacks(run: Run, tmp_path: Path)
 def test_empty_stage_file_works_once_the_needed_keys_are_filled(run: Run, tmp_path: Path) -> None:
     text = run("stage").out
     for key in ("vcc", "ic", "hfe"):
-        text, count = regex.subn(rf"^#({key} = )", r"\1", text, flags=regex.MULTILINE)
+        # The first `hfe` is that of [transistor], the other one of [replacement].
+        text, count = regex.subn(rf"^#({key} = )", r"\1", text, count=1, flags=regex.MULTILINE)
         assert count == 1
     # The first `vce` is the target, the other one a limit.
     text = regex.sub(r"^#(vce = )", r"\1", text, count=1, flags=regex.MULTILINE)
@@ -554,13 +555,19 @@ def test_every_key_of_the_empty_stage_file_can_be_uncovered(run: Run, tmp_path: 
     rails = ["--vee", "12 V", "--network", "divider", "--network", "fixed_base"]
     fixed = {"target.ic", "target.vce", "target.vc", "target.ve", "signal.unbypassed", "supply.vcc", "transistor.hfe", "supply.vee", "network", "transistor.vbe"}
     for path, key in KEYS.items():
-        if path in fixed or key.table.startswith("resistors.") or key.leaf == "vbe_ic" or key.table == "values":
+        if path in fixed or key.table.startswith("resistors.") or key.leaf == "vbe_ic" or key.table in ("values", "replacement"):
             continue
         # A diode has a default for every other key.
         rest = ["--reference-kind", "diode"] if key.table == "reference" and key.leaf != "kind" else []
         series = [] if key.leaf in ("stock", "series") else ["--series", "E3"]
         ran = run("find", *TARGETS, "--hfe", "110:450", *rails, *rest, *series, "--top", "1", key.options[-1], key.example)
         assert ran.code in (0, 1), (path, ran.err)
+
+
+@pytest.mark.parametrize("command", ["find", "check"])
+def test_a_replacement_goes_with_refit_alone(run: Run, command: str) -> None:
+    line = refused(run(command, *TARGETS, "--hfe", "110:450", "--to", "BC847C"))
+    assert regex.search(r"^--to: read 'BC847C', which this command makes no use of, .* with the command refit$", line)
 
 
 def test_version(run: Run) -> None:

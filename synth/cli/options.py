@@ -59,13 +59,18 @@ def nearest_of(word: str, choices: Iterable[str]) -> str:
     return f", nearest is {close[0]!r}" if close else ""
 
 
-def key_options() -> list[click.Parameter]:
-    """One option for each key of the stage file."""
+OWN_TABLES = {"replacement": "refit"}
+"""Tables of the stage file that one command alone makes use of."""
+
+
+def key_options(command: str = "") -> list[click.Parameter]:
+    """One option for each key of the stage file; what only another command uses is not shown."""
     from synth.stage_keys import KEYS
 
     options: list[click.Parameter] = []
     for key in KEYS.values():
         hidden = key.path.startswith("resistors.") and key.path.count(".") > 1
+        hidden |= OWN_TABLES.get(key.table, command) != command
         options.append(
             click.Option(
                 [*key.options, parameter(key.path)],
@@ -94,8 +99,8 @@ def output_options(formats: Sequence[str]) -> list[click.Parameter]:
     ]
 
 
-def read_stage(path: Path | None, options: dict[str, Any]) -> Stage:
-    """The stage of a file, its keys overridden by options."""
+def read_stage(path: Path | None, options: dict[str, Any], command: str = "") -> Stage:
+    """The stage of a file, its keys overridden by options; those that only another command uses are refused."""
     from synth.stage import Stage
     from synth.stage_keys import KEYS
 
@@ -103,6 +108,9 @@ def read_stage(path: Path | None, options: dict[str, Any]) -> Stage:
     for key in KEYS.values():
         value = options.get(parameter(key.path))
         if value not in (None, ()):
+            if OWN_TABLES.get(key.table, command) != command:
+                accepted = f"accepted is this option with the command {OWN_TABLES[key.table]}"
+                raise WrongInput(f"{key.options[0]}: read {value!r}, which this command makes no use of, {accepted}")
             given[key.path] = list(value) if key.many else value
     if path is None:
         return Stage.from_keys(given)

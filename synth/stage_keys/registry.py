@@ -310,6 +310,17 @@ def _values() -> Iterable[Key]:
         )  # fmt: skip
 
 
+def _replacement() -> Iterable[Key]:
+    """The keys of ``[replacement]``: those of ``[transistor]``, for the one that is to take its place."""
+    for key in _transistor():
+        meaning = key.meaning[0].lower() + key.meaning[1:]
+        yield _with(
+            key, path=f"replacement.{key.leaf}", short="to" if key.leaf == "type" else f"to_{key.leaf}", default="",
+            meaning=f"Of the transistor that refit puts in its place: {meaning}",
+            otherwise="no other type" if key.leaf == "type" else "the type's; without another type as in [transistor]",
+        )  # fmt: skip
+
+
 def _named(keys: Iterable[Key]) -> dict[str, Key]:
     """The keys by path, each with its names; of two keys that want one name the first has it."""
     found = {key.path: key for key in keys}
@@ -346,6 +357,7 @@ KEYS: Mapping[str, Key] = MappingProxyType(
             *_signal(),
             *_limits(),
             *_values(),
+            *_replacement(),
         ]
     )
 )

@@ -15,7 +15,7 @@ from synth.stage_resolve.reference import read_reference
 from synth.stage_resolve.request import Assumption, Request, StageWarning
 from synth.stage_resolve.resistors import RoleSetting, band, needing, no_role, read_fitted, read_roles, read_stock, rival
 from synth.stage_resolve.signal import read_corner, read_signal
-from synth.stage_resolve.transistor import check_junction, read_policy, read_ratings, read_transistor
+from synth.stage_resolve.transistor import check_junction, read_policy, read_ratings, read_replacement, read_transistor
 from synth.stage_resolve.wanted import read_networks, read_rails, read_targets, read_temperature
 from synth.stress import TransistorRatings
 
@@ -78,6 +78,7 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
         "temperature": temperature,
         "limits": MappingProxyType(read_limits(request, current, transistor, reference, load_rail, has_styles, ratings)),
         "values": MappingProxyType(read_fitted(request)),
+        "replacement": MappingProxyType(read_replacement(request)),
         "roles": MappingProxyType(roles),
         "assumed": (*(request.assumed[path] for path in KEYS if path in request.assumed), *request.notes),
         "warnings": tuple(request.warnings),

@@ -9,7 +9,7 @@ from typing import Any, Literal
 
 from synth import catalogue
 from synth.catalogue import Derating, TransistorRow
-from synth.quantities import RestpointError, Spread, format_exact, format_quantity, format_spread, parse
+from synth.quantities import Interval, RestpointError, Spread, format_exact, format_quantity, format_spread, parse
 from synth.stage_keys import KEYS, nearest
 from synth.stage_resolve.request import Assumption, Request, StageWarning
 from synth.stress import TransistorRatings, transistor_ratings
@@ -179,6 +179,17 @@ def read_ratings(request: Request) -> TransistorRatings:
     if (hottest := given.get("tj_max", found.tj_max)) is not None and hottest <= T0:
         raise request.refusal("transistor.tj_max", "which is no more than 25 °C", "a temperature above that", "150 °C")
     return dataclasses.replace(found, **given)
+
+
+def read_replacement(request: Request) -> dict[str, Any]:
+    """What is given of the transistor that is to take its place, by key; a refit gives it meaning."""
+    found: dict[str, Any] = {}
+    for path, text in request.given.items():
+        if KEYS[path].table == "replacement":
+            least = text.strip().replace("≥", ">=").removeprefix(">=")
+            is_open = KEYS[path].leaf == "hfe" and least != text.strip()
+            found[KEYS[path].leaf] = Interval(parse(least, "gain", path), math.inf) if is_open else request.value(path)
+    return found
 
 
 def read_policy(request: Request, is_needed: bool) -> Derating:
