@@ -141,6 +141,26 @@ def _share(worst: float, allowed: float | None) -> float | None:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Readings:
+    """What a meter reads: least, nominal and greatest voltage over the box [V].
+
+    `nodes` against 0 V with their sign, `drops` across each resistor.
+    """
+
+    nodes: Mapping[str, tuple[float, float, float]]
+    drops: Mapping[str, tuple[float, float, float]]
+
+
+@dataclass(frozen=True, kw_only=True)
+class LoadLine:
+    """The nominal static load line: VCE with no current [V] and IC with no VCE [A]; and VCE(sat) [V]."""
+
+    vce: float
+    ic: float
+    vce_sat: float
+
+
+@dataclass(frozen=True, kw_only=True)
 class Load:
     """What the transistor carries at worst: power [W], the rail across it once cut off [V], IC [A].
 
@@ -238,6 +258,8 @@ class Candidate:
     stress: Mapping[str, Stress] = field(default_factory=dict)
     transistor: Load | None = None
     signal: Mapping[str, tuple[float, float, float]] = field(default_factory=dict)
+    readings: Readings | None = None
+    load_line: LoadLine | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -487,6 +509,8 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         },
         "transistor": None if c.transistor is None else _plain({**vars(c.transistor), "used": c.transistor.used}),
         "signal": _plain(c.signal),
+        "readings": None if c.readings is None else _plain(vars(c.readings)),
+        "load_line": None if c.load_line is None else _plain(vars(c.load_line)),
     }
 
 

@@ -16,6 +16,7 @@ import numpy as np
 from synth.answer import Caution, Compared, Duty, Neighbour, Nominal, Share
 from synth.box import Box, Meter, Values
 from synth.catalogue import transistor
+from synth.measures import ground_voltage
 from synth.networks.form import Array, Network
 from synth.q_point import REGIONS, SATURATED
 from synth.quantities import format_quantity, format_resistance
@@ -77,13 +78,8 @@ def nominal_points(box: Box, ground: str = "negative") -> list[Nominal]:
     values = box.nominal()
     q = box.solve(values)
     branches = box.branches(values, q)
-    low = -float(values["vee"]) if "vee" in box.rails else 0.0
-    rail_ends = {"negative": low, "positive": float(values["vcc"])}
-    # A PNP stage is the mirror image: its emitter side hangs on the positive rail.
     mirror = -1.0 if box.transistor.polarity == "pnp" else 1.0
-    if mirror < 0.0:
-        rail_ends = {"negative": rail_ends["positive"], "positive": rail_ends["negative"]}
-    zero = {**rail_ends, "middle": 0.5 * sum(rail_ends.values()), "common": 0.0}[ground]
+    zero = ground_voltage(box.sources(values), ground, box.transistor.polarity)
 
     def pick(x: object, k: int) -> float:
         return float(np.broadcast_to(np.asarray(x, dtype=float), (box.size,))[k])
@@ -97,7 +93,7 @@ def nominal_points(box: Box, ground: str = "negative") -> list[Nominal]:
             vc=pick(branches.nodes["c"], k),
             ve=pick(branches.voltage.get("re", 0.0), k),
             region=REGIONS[int(np.broadcast_to(q.region, (box.size,))[k])],
-            nodes={node: mirror * (pick(v, k) - zero) for node, v in branches.nodes.items()},
+            nodes={node: mirror * (pick(v, k) - pick(zero, k)) for node, v in branches.nodes.items()},
             rails={rail: pick(i, k) for rail, i in branches.rail.items()},
             forced_gain=pick(q.ic / q.ib, k) if np.broadcast_to(q.region, (box.size,))[k] == SATURATED else None,
         )

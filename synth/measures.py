@@ -3,7 +3,8 @@
 Names are ``ic ib vce vbe``; ``vc``, the collector against 0 V, and ``ve``, the drop of re; ``i_<role>``, ``u_<role>`` and
 ``p_<role>`` for the current, voltage and power of a resistor; ``i_ref`` for the reference element; ``rail_<rail>`` for what
 is drawn from a rail; ``span`` for the voltage that stands across the transistor once it is cut off; ``p_q`` for what the
-transistor dissipates; and the small-signal parameters ``gm r_pi r_intrinsic`` and figures of `synth.signal`.
+transistor dissipates; ``v_<node>_<ground>`` for a node against what is 0 V, in NPN signs; and the small-signal
+parameters ``gm r_pi r_intrinsic`` and figures of `synth.signal`.
 """
 
 from __future__ import annotations
@@ -12,7 +13,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from synth.networks.form import Array, Branches, Network, QPoint, Rails, Resistances, Sign, common_sign
+from synth.networks.form import Array, Branches, Network, QPoint, Rails, Resistances, Sign, Value, common_sign
 from synth.signal import FIGURES, Signal, SmallSignal, signs
 from synth.transistor import Transistor
 
@@ -138,6 +139,9 @@ def measure(
     kind, _, what = name.partition("_")
     if kind == "rail":
         return np.asarray(branches.rail[what])
+    if kind == "v":
+        node, _, ground = what.partition("_")
+        return np.asarray(branches.nodes[node] - ground_voltage(sources, ground, setting.transistor.polarity) + 0.0 * q.ic)
     if kind == "p":
         return np.asarray(branches.voltage[what] * branches.current[what])
     return np.asarray(branches.voltage[what] if kind == "u" else branches.current[what])
@@ -180,6 +184,9 @@ def sign(name: str, axis: str, setting: Setting) -> Sign:
     if is_figure(name):
         return signs(network, name, setting.signal.bypass, roles=setting.roles).get(axis)
     kind, _, role = name.partition("_")
+    if kind == "v":
+        node, _, ground = role.partition("_")
+        return _node_sign(node, ground, axis, setting)
     if kind in ("i", "u", "p") and role in setting.roles:
         current = current_sign(network, role, axis)
         if kind == "i" or axis != role:
@@ -188,6 +195,59 @@ def sign(name: str, axis: str, setting: Setting) -> Sign:
             return network.sign("ve", "re")
         return 1 if current == 0 else None
     return network.sign(name, axis)
+
+
+def ground_voltage(sources: Rails, ground: str, polarity: str) -> Value:
+    """Voltage of what is 0 V to a meter, against the node ``0`` of the network, in NPN signs.
+
+    Parameters
+    ----------
+    sources : mapping of str to array_like
+        Rails, magnitudes [V].
+    ground : {"negative", "positive", "middle", "common"}
+        A rail, half-way between the two, or the common point of two supplies.
+    polarity : {"npn", "pnp"}
+        A PNP stage is the mirror image: its emitter side hangs on the positive rail.
+
+    Returns
+    -------
+    array_like
+        Of the shape of the rails [V].
+    """
+    return sum((share * sources[rail] for rail, share in _ground_shares("vee" in sources, ground, polarity).items()), 0.0)
+
+
+def _ground_shares(two_rails: bool, ground: str, polarity: str) -> dict[str, float]:
+    """What is 0 V as a sum of rails, each with its factor [-]."""
+    emitter_side, collector_side = ({"vee": -1.0} if two_rails else {}), {"vcc": 1.0}
+    if ground == "common":
+        return {}
+    if ground == "middle":
+        return {rail: 0.5 * share for rail, share in (emitter_side | collector_side).items()}
+    return collector_side if (ground == "positive") != (polarity == "pnp") else emitter_side
+
+
+def _node_sign(node: str, ground: str, axis: str, setting: Setting) -> Sign:
+    """Proved sign of a node's voltage: that of a rail and of the one resistor between the two, wherever both agree."""
+    network = setting.network
+    zero = _ground_shares("vee" in network.rails, ground, setting.transistor.polarity)
+    for role in network.roles:
+        if node not in role.nodes:
+            continue
+        first = role.nodes[0] == node
+        other = role.nodes[1] if first else role.nodes[0]
+        absent = role.name not in setting.roles
+        if other in ("b", "c", "e", "m") or (absent and role.absent == "open"):
+            continue
+        # An optional rail that is not given stands for vcc: a claim has to hold for both.
+        stands_for = (other, "vcc") if other in network.optional_rails else (other,)
+        levels = [float(axis == rail and rail != "0") * (-1.0 if rail == "vee" else 1.0) for rail in stands_for]
+        drop = 0 if absent else sign(f"u_{role.name}", axis, setting)
+        moving = [round(float(np.sign(level - zero.get(axis, 0.0)))) for level in levels]
+        found = common_sign([*moving, drop if first or drop is None else -drop])
+        if found is not None:
+            return found
+    return None
 
 
 def current_sign(network: Network, role: str, axis: str) -> Sign:

@@ -29,6 +29,7 @@ from synth.limits import Judgement, Requirement, judge
 from synth.networks.form import Array
 from synth.q_point import REGIONS
 from synth.ranking import alternatives, order_key
+from synth.readings import load_lines, readings
 from synth.search import Outcome, search
 from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_of, spaces_of
 from synth.stage import Assumption, Stage, StageError
@@ -195,6 +196,7 @@ def _reviewed(candidates: Sequence[Candidate], space: Space, stage: Stage) -> li
     active = all(candidate.regions == ("active",) for candidate in candidates)
     law = box.extreme if active else partial(extreme_in_any_region, box)
     stress, load = stresses(box, space.styles, space.derating, law), loads(box, stage.ratings, space.derating, law)
+    read, lines = readings(box, space.ground, law), load_lines(box)
     found = []
     for k, candidate in enumerate(candidates):
         limits = (*candidate.limits, *_junction_verdict(load[k], stage))
@@ -202,7 +204,16 @@ def _reviewed(candidates: Sequence[Candidate], space: Space, stage: Stage) -> li
         figures = signals(box.take([k]), stage.corner)[0] if active and candidate.rank == 1 else {}
         verdict: Pass = "pass" if all(v.verdict == "pass" for v in limits) else "fail"
         found.append(
-            replace(candidate, stress=stress[k], transistor=load[k], signal=figures, limits=limits, verdict=verdict)
+            replace(
+                candidate,
+                stress=stress[k],
+                transistor=load[k],
+                signal=figures,
+                limits=limits,
+                verdict=verdict,
+                readings=read[k],
+                load_line=lines[k],
+            )
         )
     return found
 

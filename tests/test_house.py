@@ -38,6 +38,7 @@ ROOMS = (
     "ranking",
     "explain",
     "facts",
+    "readings",
     "advice",
     "solve",
     "present",

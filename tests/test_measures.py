@@ -26,7 +26,10 @@ every_network = pytest.mark.parametrize("network", NETWORKS)
 
 def names_of(box: Box) -> list[str]:
     stress = [f"{kind}_{role}" for role in box.parts for kind in ("p", "u", "i")]
-    return [*stress, "p_q", "span", *(FIGURES if box.network.takes_signal else ())]
+    # A node that is wired to a rail differs from it by rounding only.
+    nodes = [n for n in ("bcem" if box.network.reference == "needed" else "bce") if n not in box.network.tied]
+    seen = [f"v_{node}_{ground}" for node in nodes for ground in ("negative", "positive", "middle", "common")]
+    return [*stress, *seen, "p_q", "span", *(FIGURES if box.network.takes_signal else ())]
 
 
 def is_sound(box: Box, p: dict[str, np.ndarray]) -> np.ndarray:
