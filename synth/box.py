@@ -21,8 +21,9 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.measures import Setting, measure, sign
+from synth.measures import Setting, measure, power_of, sign
 from synth.networks.form import Array, Branches, Network, QPoint, Sign, common_sign
+from synth.parts import HALVES, Parts
 from synth.q_point import solve, solve_active
 from synth.quantities import Spread
 from synth.reference import Reference
@@ -44,64 +45,6 @@ NEAR = 0.02
 HEAT_STEPS = 8
 """Secant steps towards the junction temperature; far from runaway four do."""
 GOLDEN = (5.0**0.5 - 1.0) / 2.0
-
-
-@dataclass(frozen=True, kw_only=True, eq=False)
-class Parts:
-    """The resistors of one role, one element for each candidate.
-
-    Parameters
-    ----------
-    nominal : ndarray, shape (n,)
-        Nominal resistance [ohm].
-    band : ndarray, shape (n,)
-        Tolerance plus change over life [-].
-    tcr_low, tcr_high : ndarray, shape (n,)
-        Ends of the temperature coefficient [1/K].
-    """
-
-    nominal: Array
-    band: Array
-    tcr_low: Array
-    tcr_high: Array
-
-    def ends(self, temperature: Array | float) -> tuple[Array, Array]:
-        """Least and greatest resistance at a temperature.
-
-        Parameters
-        ----------
-        temperature : array_like
-            Ambient temperature [K], broadcast against (n,).
-
-        Returns
-        -------
-        low, high : ndarray
-            R·(1 ∓ band + TCR·(T − 25 °C)) with the TCR at its worse end [ohm].
-        """
-        rise = np.asarray(temperature) - T0
-        one, two = self.tcr_low * rise, self.tcr_high * rise
-        return (
-            np.asarray(self.nominal * (1.0 - self.band + np.minimum(one, two))),
-            np.asarray(self.nominal * (1.0 + self.band + np.maximum(one, two))),
-        )
-
-    def take(self, index: NDArray[np.integer] | Sequence[int]) -> Parts:
-        """The parts of some candidates.
-
-        Parameters
-        ----------
-        index : array_like of int
-            Which candidates.
-
-        Returns
-        -------
-        Parts
-            Theirs, in that order.
-        """
-        i = np.asarray(index)
-        return Parts(
-            nominal=self.nominal[i], band=self.band[i], tcr_low=self.tcr_low[i], tcr_high=self.tcr_high[i]
-        )
 
 
 @dataclass
@@ -145,6 +88,25 @@ class Extreme:
         """
         return {axis: float(x[k]) for axis, x in self.where.items() if not np.isnan(x[k])}
 
+    def pick(self, index: NDArray[np.integer]) -> Extreme:
+        """The extremes of some candidates.
+
+        Parameters
+        ----------
+        index : ndarray of int
+            Which candidates.
+
+        Returns
+        -------
+        Extreme
+            Theirs, in that order.
+        """
+        return Extreme(
+            self.value[index],
+            {name: v[index] for name, v in self.at.items()},
+            {name: v[index] for name, v in self.where.items()},
+        )
+
     def take(self, k: int) -> Extreme:
         """The extreme of one candidate.
 
@@ -158,12 +120,7 @@ class Extreme:
         Extreme
             With arrays of shape (1,).
         """
-        pick = slice(k, k + 1)
-        return Extreme(
-            self.value[pick],
-            {name: v[pick] for name, v in self.at.items()},
-            {name: v[pick] for name, v in self.where.items()},
-        )
+        return self.pick(np.array([k]))
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -452,6 +409,7 @@ class Box:
             transistor=self.transistor,
             roles=tuple(self.parts),
             signal=self.signal,
+            parts=self.parts,
         )
 
     @cached_property
@@ -485,6 +443,13 @@ class Box:
         Extreme
             Value and deciding point, shape (n,).
         """
+        if len(names) == 1 and direction > 0 and names[0].startswith(("pmax_", "umax_")):
+            # The larger of two has a peak for each of them, so each is looked for by itself.
+            found, *others = (self.extreme((f"{names[0][0]}_{names[0][5:]}{half}",), 1, thorough=thorough) for half in HALVES)
+            for other in others:
+                index = np.flatnonzero(other.value > found.value)
+                _overwrite(found, index, other.pick(index))
+            return found
         if self.heat is not None:
             # The proofs hold at one temperature of the transistor: with its own heat every axis is searched.
             return _Climb(self, tuple(names), direction, {}, self.axes, thorough, premise=False).run()
@@ -493,7 +458,7 @@ class Box:
         free = tuple(axis for axis, s in known.items() if s is None)
         search = _Climb(self, tuple(names), direction, fixed, free, thorough)
         found = search.run()
-        for role in (name[2:] for name in names if name.startswith("p_") and name[2:] in self.parts):
+        for role in filter(None, (power_of(name, self.setting.roles) for name in names)):
             # A power has the signs of its current only while that does not turn round.
             search.doubtful |= self.extreme((f"i_{role}",), -1, thorough=False).value < 0.0
         if search.doubtful.any():

@@ -45,6 +45,8 @@ class Surroundings:
         Hottest ambient [K].
     styles : mapping of str to ResistorStyle
         Style of each role that has one.
+    paired : collection of str
+        Roles that may have two parts, of which each has to bear its own share.
     ratings : TransistorRatings
         What is known of the transistor.
     derating : Derating, optional
@@ -57,6 +59,7 @@ class Surroundings:
     vce_sat: float = 0.0
     hot: float = T0
     styles: Mapping[str, ResistorStyle] = field(default_factory=dict)
+    paired: Collection[str] = ()
     ratings: TransistorRatings = field(default_factory=TransistorRatings)
     derating: Derating | None = None
 
@@ -118,10 +121,11 @@ def _resistor_ratings(network: Network, around: Surroundings) -> tuple[Rating, .
         style = around.styles.get(role)
         if role in around.roles and style is not None and policy is not None:
             power, whole = (float(allowed_power(style, around.hot, p)) for p in (policy, derating("none")))
-            found.append(Rating(f"{role}.power", "power", (f"p_{role}",), power, whole))
+            of = ("pmax", "umax") if role in around.paired else ("p", "u")
+            found.append(Rating(f"{role}.power", "power", (f"{of[0]}_{role}",), power, whole))
             # What the root of power times resistance allows is a limit on power, and a laxer one than that.
             volts = policy.resistor_voltage * style.max_working_voltage_v
-            found.append(Rating(f"{role}.voltage", "voltage", (f"u_{role}",), volts, style.max_working_voltage_v))
+            found.append(Rating(f"{role}.voltage", "voltage", (f"{of[1]}_{role}",), volts, style.max_working_voltage_v))
     return tuple(found)
 
 

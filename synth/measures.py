@@ -1,7 +1,8 @@
 """Every quantity that a limit can ask for: its value at a solved point, and what is proved of its slopes.
 
 Names are ``ic ib vce vbe``; ``vc``, the collector against 0 V, and ``ve``, the drop of re; ``i_<role>``, ``u_<role>`` and
-``p_<role>`` for the current, voltage and power of a resistor; ``i_ref`` for the reference element; ``rail_<rail>`` for what
+``p_<role>`` for the current, voltage and power of a resistor; ``u_<role>a``, ``p_<role>b`` and so on for one part of a pair,
+``umax_<role>`` and ``pmax_<role>`` for the more loaded one; ``i_ref`` for the reference element; ``rail_<rail>`` for what
 is drawn from a rail; ``span`` for the voltage that stands across the transistor once it is cut off; ``p_q`` for what the
 transistor dissipates; ``v_<node>_<ground>`` for a node against what is 0 V, in NPN signs; and the small-signal
 parameters ``gm r_pi r_intrinsic`` and figures of `synth.signal`.
@@ -9,11 +10,13 @@ parameters ``gm r_pi r_intrinsic`` and figures of `synth.signal`.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
 
 import numpy as np
 
 from synth.networks.form import Array, Branches, Network, QPoint, Rails, Resistances, Sign, Value, common_sign
+from synth.parts import HALVES, Parts
 from synth.signal import FIGURES, Signal, SmallSignal, signs
 from synth.transistor import Transistor
 
@@ -38,12 +41,15 @@ class Setting:
         Roles used.
     signal : Signal
         What the signal meets.
+    parts : mapping of str to Parts
+        The resistors of each role; needed for what one part of a pair carries.
     """
 
     network: Network
     transistor: Transistor
     roles: tuple[str, ...]
     signal: Signal
+    parts: Mapping[str, Parts] = field(default_factory=dict)
 
 
 def is_figure(name: str) -> bool:
@@ -60,6 +66,48 @@ def is_figure(name: str) -> bool:
         True for those of `synth.signal`.
     """
     return name in FIGURES
+
+
+def share_of(name: str, roles: Sequence[str]) -> tuple[str, str, tuple[int, ...]] | None:
+    """What a quantity of one part of a pair is a share of.
+
+    Parameters
+    ----------
+    name : str
+        Name of a quantity.
+    roles : sequence of str
+        Roles used; no unit matters.
+
+    Returns
+    -------
+    tuple of (str, str, tuple of int) or None
+        ``p`` or ``u``, the role, and which parts, of which the more loaded one counts; None for any other quantity.
+    """
+    kind, _, what = name.partition("_")
+    if kind in ("pmax", "umax") and what in roles:
+        return kind[0], what, (0, 1)
+    if kind in ("p", "u") and what not in roles and what[:-1] in roles and what[-1:] in HALVES:
+        return kind, what[:-1], (HALVES.index(what[-1]),)
+    return None
+
+
+def power_of(name: str, roles: Sequence[str]) -> str | None:
+    """The resistor whose power a quantity is, or is a share of.
+
+    Parameters
+    ----------
+    name : str
+        Name of a quantity.
+    roles : sequence of str
+        Roles used; no unit matters.
+
+    Returns
+    -------
+    str or None
+        Its role; None for a quantity that is no power of a resistor.
+    """
+    kind, role, _ = share_of(name, roles) or (*name.partition("_")[::2], ())
+    return role if kind == "p" and role in roles else None
 
 
 def small_signal(
@@ -136,6 +184,12 @@ def measure(
         return np.asarray(sources.get("vload", sources["vcc"]) + sources.get("vee", 0.0) + 0.0 * q.ic)
     if is_figure(name) or name in (*PARAMETERS_OF_SIGNAL, BYPASS):
         return np.asarray(getattr(small_signal(setting, sources, r, q, gain, temperature), name))
+    shared = share_of(name, setting.roles)
+    if shared is not None:
+        of, role, halves = shared
+        whole = measure(f"{of}_{role}", setting, sources, r, q, branches, gain, temperature)
+        shares = [setting.parts[role].shares(half, np.asarray(r[role]), temperature) for half in halves]
+        return np.asarray(np.maximum.reduce([power if of == "p" else voltage for power, voltage in shares]) * whole)
     kind, _, what = name.partition("_")
     if kind == "rail":
         return np.asarray(branches.rail[what])
@@ -183,6 +237,10 @@ def sign(name: str, axis: str, setting: Setting) -> Sign:
         return 1 if name == "r_pi" and axis == "hfe" else -current
     if is_figure(name):
         return signs(network, name, setting.signal.bypass, roles=setting.roles).get(axis)
+    shared = share_of(name, setting.roles)
+    if shared is not None:
+        # The share depends on the total and the temperature alone.
+        return None if axis == shared[1] else current_sign(network, shared[1], axis)
     kind, _, role = name.partition("_")
     if kind == "v":
         node, _, ground = role.partition("_")

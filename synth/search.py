@@ -154,7 +154,7 @@ class _Corners:
         if behind:
             for name in behind:
                 uses |= np.stack(self.uses(name, direction))
-            if (role := quantity[2:]) in self.roles:
+            if (role := quantity.partition("_")[2]) in self.roles:
                 uses[0, self.roles.index(role)] = True
             return uses[0], uses[1]
         for j, role in enumerate(self.roles):
@@ -176,7 +176,7 @@ class _Corners:
         kind, _, role = quantity.partition("_")
         if quantity == POWER_OF_TRANSISTOR:
             return ("ic", "vce")
-        if role in self.roles and kind in ("u", "p"):
+        if role in self.roles and kind in ("u", "p", "umax", "pmax"):
             return (f"i_{role}",)
         if role in self.roles and kind == "i" and quantity not in self.space.network.signs:
             return parts_of_current(self.space.network, role)
@@ -197,7 +197,9 @@ class _Corners:
             # Where leakage flows out of the base it takes back this much of VBE·IB at most.
             return np.asarray(parts[0] * parts[1] - MOST_VBE * self.icbo * (1.0 + 1.0 / self.hfe))
         ohms = self.low[role][self.lo[:, self.roles.index(role)]]
-        return np.asarray(parts[0] * ohms if kind == "u" else parts[0] ** 2 * ohms)
+        # Of two parts the more loaded one carries half at least.
+        share = 0.5 if kind.endswith("max") else 1.0
+        return np.asarray(share * parts[0] * ohms if kind[0] == "u" else share * parts[0] ** 2 * ohms)
 
     def _least_figure(self, figure: str, direction: int) -> Array:
         """Bound of a small-signal figure, with every resistance and IC each at its own favourable end.

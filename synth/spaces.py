@@ -4,18 +4,19 @@ from __future__ import annotations
 
 import math
 from collections.abc import Collection, Mapping, Sequence
-from dataclasses import dataclass, field, fields, replace
+from dataclasses import dataclass, field, replace
 from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.box import Box, Extreme, Meter, Parts, Values
+from synth.box import Box, Extreme, Meter, Values
 from synth.catalogue import Derating, ResistorStyle, derating, resistor_style
 from synth.limits import Requirement, Surroundings, judge, requirements
 from synth.measures import POWER_OF_TRANSISTOR, is_figure
 from synth.networks import NETWORKS
 from synth.networks.form import Array, Network
+from synth.parts import Parts
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
 from synth.signal import Signal
@@ -306,11 +307,10 @@ def among_values(stage: Stage, space: Space) -> tuple[Space, Index]:
     """
     lists, index = {}, []
     for role in space.roles:
-        own, other = space.lists[role], _parts(stage, role)
-        both = [np.concatenate([getattr(p, f.name) for p in (own, other)]) for f in fields(Parts)]
+        both = space.lists[role].joined(_parts(stage, role))
         # Of equal values the fitted one comes first and stays.
-        _, first = np.unique(both[0], return_index=True)
-        lists[role] = Parts(**{f.name: column[first] for f, column in zip(fields(Parts), both, strict=True)})
+        _, first = np.unique(both.nominal, return_index=True)
+        lists[role] = both.take(first)
         index.append(int(np.flatnonzero(first == 0)[0]))
     return replace(space, lists=lists), np.array([index], dtype=np.int32)
 
@@ -331,6 +331,7 @@ def _space(
         vce_sat=stage.transistor.vce_sat,
         hot=stage.temperature.high,
         styles=styles,
+        paired={role for role in roles if lists[role].paired},
         ratings=stage.ratings,
         derating=stage.derating,
     )

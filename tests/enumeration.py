@@ -18,10 +18,11 @@ import nodal
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.box import Box, Meter, Parts
+from synth.box import Box, Meter
 from synth.catalogue import ResistorStyle, derating, deratings, resistor_style
 from synth.limits import Surroundings, judge, requirements
 from synth.networks import NETWORKS, Network
+from synth.parts import Parts
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
 from synth.signal import Signal

@@ -16,8 +16,9 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize
 
-from synth.box import Box, Parts
+from synth.box import Box
 from synth.networks import NETWORKS
+from synth.parts import Parts
 from synth.quantities import Spread
 from synth.reference import Reference
 from synth.transistor import Transistor

@@ -38,9 +38,10 @@ from stages import (
     vertices,
 )
 
-from synth.box import Box, Extreme, Parts
+from synth.box import Box, Extreme
 from synth.limits import Requirement
 from synth.networks import NETWORKS
+from synth.parts import Parts
 from synth.q_point import SATURATED
 from synth.quantities import Interval, Spread
 from synth.straddle import extreme_in_any_region

@@ -18,9 +18,10 @@ from stages import circuit
 
 import synth
 from synth.answer import Share
-from synth.box import Box, Meter, Parts
+from synth.box import Box, Meter
 from synth.explain import budgets, cause_words, cautions, duties, neighbours, nominal_points, percent, point_words, sentences
 from synth.networks import NETWORKS
+from synth.parts import Parts
 from synth.quantities import Spread
 from synth.spaces import fitted, goal_of, spaces_of
 from synth.stage import Stage

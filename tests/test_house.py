@@ -22,6 +22,7 @@ ROOMS = (
     "catalogue",
     "preferred",
     "transistor",
+    "parts",
     "stress",
     "reference",
     "networks",

@@ -14,9 +14,10 @@ import pytest
 from numpy.testing import assert_allclose, assert_array_equal
 from stages import SOLVED, Numbers, active, point, random_box, samples, total, vertices
 
-from synth.box import Box, Parts, Values
+from synth.box import Box, Values
 from synth.limits import RULES, Judgement, LimitRule, Requirement, Surroundings, applies, judge, requirements
 from synth.networks import NETWORKS
+from synth.parts import Parts
 from synth.quantities import Interval, Spread
 from synth.transistor import Transistor
 

@@ -17,9 +17,10 @@ from numpy.testing import assert_allclose
 from numpy.typing import NDArray
 
 import synth
-from synth.box import Box, Meter, Parts
+from synth.box import Box, Meter
 from synth.limits import Requirement, judge
 from synth.networks import NETWORKS
+from synth.parts import Parts
 from synth.quantities import Interval, Spread
 from synth.search import Outcome, _Blocks, _Corners, _Room, search
 from synth.spaces import Goal, Space, goal_of, spaces_of, wanted

@@ -19,8 +19,9 @@ import numpy as np
 from numpy.testing import assert_allclose
 from scipy.optimize import brentq
 
-from synth.box import Box, Parts
+from synth.box import Box
 from synth.networks import NETWORKS
+from synth.parts import Parts
 from synth.q_point import SATURATED, solve
 from synth.quantities import Spread
 from synth.transistor import T0, Transistor
