@@ -32,6 +32,7 @@ ROOMS = (
     "box",
     "straddle",
     "limits",
+    "statistics",
     "stage",
     "answer",
     "spaces",
