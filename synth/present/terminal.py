@@ -414,7 +414,7 @@ def _infeasible(answer: Answer) -> str:
             change = ", ".join(f"{key} = \"{text}\"" for key, text in r.change.items())
             lines.append(f"  {change}: best drift {percent(r.drift)}")
     else:
-        lines.append("No change of one limit alone would do.")
+        lines.append("No single change would do: of a limit, the supply, the gain, the resistors, the ambient or the network.")
     return "\n".join(_wrapped(line, "    ") for line in lines)
 
 

@@ -13,7 +13,17 @@ from synth.stage_keys import KEYS
 from synth.stage_resolve.limits import read_limits
 from synth.stage_resolve.reference import read_reference
 from synth.stage_resolve.request import Assumption, Request, StageWarning
-from synth.stage_resolve.resistors import RoleSetting, band, needing, no_role, read_fitted, read_roles, read_stock, rival
+from synth.stage_resolve.resistors import (
+    RoleSetting,
+    band,
+    check_drops,
+    needing,
+    no_role,
+    read_fitted,
+    read_roles,
+    read_stock,
+    rival,
+)
 from synth.stage_resolve.signal import read_corner, read_signal
 from synth.stage_resolve.transistor import check_junction, read_policy, read_ratings, read_replacement, read_transistor
 from synth.stage_resolve.wanted import read_networks, read_rails, read_targets, read_temperature
@@ -59,6 +69,7 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
     reference = read_reference(request, networks, transistor, current, rails)
     load_rail = rails.get("vload", rails["vcc"]) if any(NETWORKS[name].sinks for name in networks) else None
     roles = read_roles(request, networks, any_network, temperature)
+    check_drops(request, networks, current, voltages, rails, roles)
     ratings = read_ratings(request)
     has_styles = any(setting.style for setting in roles.values())
     return {

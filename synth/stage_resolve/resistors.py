@@ -12,7 +12,7 @@ from typing import Any, Literal
 from synth import catalogue
 from synth.networks import NETWORKS
 from synth.preferred import ValueList
-from synth.quantities import Interval, RestpointError, Spread, format_exact, format_resistance
+from synth.quantities import Interval, RestpointError, Spread, Target, format_exact, format_quantity, format_resistance
 from synth.stage_keys import KEYS, ROLES, StageError, nearest
 from synth.stage_resolve.request import Request
 from synth.transistor import T0
@@ -162,6 +162,35 @@ def read_roles(request: Request, networks: Sequence[str], any_network: bool, tem
             )
         settings[role] = setting
     return settings
+
+
+def check_drops(
+    request: Request,
+    networks: Sequence[str],
+    current: float,
+    voltages: Mapping[str, Target],
+    rails: Mapping[str, Spread],
+    roles: Mapping[str, RoleSetting],
+) -> None:
+    """Refuse values of rc and re that with the wanted current [A] and VCE need more than the rails of any network."""
+    target = voltages.get("vce")
+    vce = 0.0 if target is None else target.low if target.nominal is None else target.nominal
+    excess = {}
+    for name in networks:
+        network = NETWORKS[name]
+        span = sum(rails[rail].nominal for rail in network.rails)
+        named = {r: min(roles[r].values) for r in ("rc", "re") if r in network.role_names and r in roles and roles[r].values}
+        drop = current * sum(named.values())
+        if not named or vce + drop < span:
+            return
+        excess[max(named, key=lambda role: named[role])] = (drop, span)
+    role, (drop, span) = next(iter(excess.items()))
+    of = " and ".join(r for r in ("rc", "re") if r in roles and roles[r].values)
+    texts = [format_quantity(voltage, "voltage") for voltage in (drop, vce, span)]
+    at = format_quantity(current, "current")
+    reason = f"with which {of} would drop {texts[0]} at {at}: with VCE of {texts[1]} not below the {texts[2]} between the rails"
+    most = format_resistance((span - vce) / current)
+    raise request.refusal(f"resistors.{role}.values", reason, f"less than {most} for {of} together, or a higher supply")
 
 
 def read_fitted(request: Request) -> dict[str, float]:

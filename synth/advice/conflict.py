@@ -1,36 +1,34 @@
-"""What binds when nothing qualifies, and which single change would do; every statement is backed by a search."""
+"""What binds when nothing qualifies, and which single changes would do; every statement is backed by a search."""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
-from dataclasses import replace
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 
+from synth.advice.levers import chosen_value, free_value, levers
+from synth.advice.purse import LOOK, Grade, Purse, least
 from synth.answer import Infeasible, Relaxation
 from synth.box import Box, Meter
 from synth.facts import stresses
 from synth.limits import Judgement, Requirement, judge
-from synth.quantities import Interval, Target, format_exact, format_limit, format_quantity, format_target
-from synth.search import Outcome, search
+from synth.quantities import Interval, Spread, Target, format_exact, format_limit, format_quantity, format_target
 from synth.spaces import Exact, Found, goal_of, spaces_of
 from synth.stage import Stage
+from synth.stage_keys import Given
 
 ACTIVE = "vce"
 """The limit that keeps the transistor active."""
 FIGURES = 3
 """Significant figures of a relaxed limit."""
-EFFORT = 5e6
-"""Q-point solves that one search for advice may take, about a second; what it leaves open is not claimed."""
 WIDE = 0.95
 """Half-width from which a window is written by its ends [-]."""
-GAP = 0.005
-"""Relative gap left in the drifts that advice quotes [-]; they are drifts of real candidates all the same."""
-BUDGET = 1.2e7
-"""Q-point solves for all of the advice together, some seconds; what is left then is not looked at."""
-STEPS = 7
-"""Bisections of a relaxation: below one per cent of the way."""
+STEPS = 100
+"""Degrees of a relaxation: one per cent of the way each."""
+DEFAULT, DEFAULT_CONDITION, CONDITION, TARGET = range(4)
+"""What is given up first: limits that nobody asked for, other assumptions, what was asked for, what the request is for."""
 
 
 def why_nothing_qualifies(stage: Stage) -> Infeasible:
@@ -54,18 +52,18 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
     needs = {need.limit: need for space in spaces_of(stage) for need in space.requirements}
     given = {name for name in needs if name.startswith("target.") or name in stage.limits_given}
     # Staying active is physics, not a request; and what the user did not ask for is named, and given up, first.
-    purse = _Purse()
+    purse = Purse()
     names = sorted((n for n in needs if n != ACTIVE or n in given), key=lambda n: n in given)
     dropped: set[str] = set()
     for name in sorted(names, key=lambda n: (n in given, n == "collector_share")):
         # Only what is proved infeasible without a limit makes it superfluous.
-        if purse.search(stage, dropped | {name}, first=True).status == "infeasible":
+        if purse.search(stage, dropped | {name}, first=True, most=LOOK).status == "infeasible":
             dropped.add(name)
     binding = tuple(name for name in names if name not in dropped) or (ACTIVE,)
     best_without: dict[str, float | None] = {}
     notes: dict[str, str] = {}
     unsettled: list[str] = []
-    ranked: list[tuple[bool, float, Relaxation]] = []
+    offers: list[_Offer] = []
     for name in binding:
         outcome = purse.search(stage, {name})
         best_without[name] = outcome.found[0].drift if outcome.found else None
@@ -74,34 +72,74 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
             continue
         found = outcome.found[0]
         judged = _judged(stage, name, found)
-        relaxed = _relax(stage, name, found, judged, purse)
         if note := _note(name, found, judged):
             notes[name] = note
-        if relaxed is not None:
-            ranked.append((name in given, *relaxed))
-    ranked.sort(key=lambda entry: entry[:2])
+        grades = _grades(name, found, judged)
+        grade = least(grades, stage, purse, bad=_too_narrow(grades, name, stage, outcome.bound))
+        if grade is not None:
+            # A target is what the request is for: it is the last to be given up.
+            rank = TARGET if name.startswith("target.") else CONDITION if name in given else DEFAULT
+            offers.append(_Offer(rank, grade))
+    if any(name.startswith("target.") for name in binding) and _bands_conflict(stage, purse):
+        notes["resistors"] = "with everything else at its nominal value, tolerance and life alone break the limits"
+    for role in stage.roles:
+        if (grade := _other_value(stage, role, purse)) is not None:
+            offers.append(_Offer(CONDITION, grade))
+    for lever in levers(stage):
+        if (grade := least(lever.grades, stage, purse)) is not None:
+            is_asked = any(key in stage.given for key in grade.change)
+            offers.append(_Offer(CONDITION if is_asked else DEFAULT_CONDITION, grade))
+    offers.sort(key=lambda offer: (offer.rank, offer.grade.size))
+    relaxations = []
+    for offer in offers:
+        best = purse.drift(stage.with_keys(dict(offer.grade.change)))
+        drift = offer.grade.drift if best is None else best
+        if drift is not None:
+            relaxations.append(Relaxation(change=offer.grade.change, drift=drift))
     return Infeasible(
         binding=binding,
         best_without=best_without,
-        relaxations=tuple(r for _, _, r in ranked),
+        relaxations=tuple(relaxations),
         notes=notes,
         unsettled=tuple(unsettled),
     )
 
 
-class _Purse:
-    """The solves that are left for advice."""
+@dataclass(frozen=True)
+class _Offer:
+    """A verified change, with what kind of thing it gives up."""
 
-    def __init__(self) -> None:
-        self.left = BUDGET
+    rank: int
+    grade: Grade
 
-    def search(self, stage: Stage, without: set[str], *, first: bool = False) -> Outcome:
-        """Search for one candidate without some limits; 'unknown' once the purse is empty."""
-        most = min(EFFORT, max(self.left, 0.0))
-        gap = 0.0 if first else GAP
-        outcome = search(spaces_of(stage, without), goal_of(stage), top=1, gap=gap, first=first, most=most)
-        self.left -= outcome.evaluated
-        return outcome
+
+def _bands_conflict(stage: Stage, purse: Purse) -> bool:
+    """Whether nothing qualifies even where the resistors are all that spreads, at the same limits."""
+    exact: dict[str, Given] = {f"supply.{rail}": Spread.exact(s.nominal) for rail, s in stage.rails.items()}
+    exact |= {f"limits.{name}": limit for name, limit in stage.limits.items()}
+    device = stage.transistor
+    exact |= {f"transistor.{leaf}": Spread.exact(getattr(device, leaf).nominal) for leaf in ("hfe", "vbe", "icbo")}
+    exact |= {"transistor.vbe_ic": device.vbe_ic, "ambient.temperature": Spread.exact(stage.temperature.nominal)}
+    if stage.reference is not None:
+        count = int(stage.given.get("reference.number", "1"))
+        for leaf in ("voltage", "tc", "slope"):
+            exact[f"reference.{leaf}"] = Spread.exact(getattr(stage.reference, leaf).nominal / count)
+    return purse.search(stage.with_keys(exact), first=True, most=LOOK).status == "infeasible"
+
+
+def _other_value(stage: Stage, role: str, purse: Purse) -> Grade | None:
+    """A value that a list or drawer lacks for one role, and that would do."""
+    freed = free_value(stage, role)
+    if freed is None:
+        return None
+    outcome = purse.search(freed)
+    for found in outcome.found:
+        if role in found.space.roles:
+            ohm = float(found.space.lists[role].nominal[found.index[found.space.roles.index(role)]])
+            change = chosen_value(role, ohm)
+            if (drift := purse.does(stage, change)) is not None:
+                return Grade(change=change, size=1.0, drift=drift)
+    return None
 
 
 def _box(found: Found) -> Box:
@@ -132,36 +170,44 @@ def _note(name: str, found: Found, judged: Sequence[Judgement]) -> str:
     return "; ".join(broken)
 
 
-def _relax(
-    stage: Stage, name: str, found: Found, judged: Sequence[Judgement], purse: _Purse
-) -> tuple[float, Relaxation] | None:
-    """Least relaxation of one limit that lets a candidate qualify, with how far it moves the limit."""
+def _grades(name: str, found: Found, judged: Sequence[Judgement]) -> list[Grade]:
+    """The way from one limit to what the best candidate without it reaches, in steps of one per cent."""
     worst = min(judged, key=lambda j: float(j.margin[0]))
     need, reached = worst.requirement, float(worst.worst[0])
     if (rated := need.rated) is not None:
         # Of a limit on used shares the share counts, whichever part uses most of its own.
         # What exceeds the maker's own rating is no advice.
         if rated <= 0.0 or any(j.requirement.whole is not None and j.worst[0] > j.requirement.whole for j in judged):
-            return None
+            return []
         low, high = (end / rated if math.isfinite(end) else end for end in (need.interval.low, need.interval.high))
         need, reached = replace(need, name=name, kind="ratio", interval=Interval(low, high), rated=None), reached / rated
     if need.name == ACTIVE and reached < found.space.transistor.vce_sat:
-        return None
+        return []
     start = need.interval.low if reached < need.interval.low else need.interval.high
-    good, bad, best = 1.0, 0.0, None
-    for step in range(STEPS + 1):
-        share = good if step == 0 else 0.5 * (good + bad)
-        change = _change(need, start + share * (reached - start), outward=1 if reached > start else -1)
-        drift = _drift_with(stage, change, purse)
-        if drift is None and step == 0:
-            return None
-        if drift is None:
-            bad = share
-        else:
-            good, best = share, Relaxation(change=change, drift=drift)
-    if best is None:
-        return None
-    return good * abs(reached / start - 1.0 if start else 1.0), best
+    outward = 1 if reached > start else -1
+    grades: dict[str, Grade] = {}
+    for step in range(1, STEPS + 1):
+        share = step / STEPS
+        change = _change(need, start + share * (reached - start), outward)
+        size = share * abs(reached / start - 1.0 if start else 1.0)
+        grades.setdefault(str(change), Grade(change=change, size=size))
+    return list(grades.values())
+
+
+def _too_narrow(grades: Sequence[Grade], name: str, stage: Stage, bound: float) -> int:
+    """Last grade of a window that is narrower than the least drift proved without it; -1 if none is known to be."""
+    goals = goal_of(stage).aims
+    if len(goals) > 1 or name.removeprefix("target.") not in goals:
+        return -1
+    (target,) = goals.values()
+    last = -1
+    for k, grade in enumerate(grades):
+        after = stage.with_keys(dict(grade.change))
+        window = after.ic if name == "target.ic" else after.voltages[name.removeprefix("target.")]
+        # Whichever way a candidate drifts by the bound or more, it leaves a window that is narrower on both sides.
+        if max(window.high / target - 1.0, 1.0 - window.low / target) < bound:
+            last = k
+    return last
 
 
 def _change(need: Requirement, limit: float, outward: int) -> dict[str, str]:
@@ -194,8 +240,3 @@ def _round(value: float, direction: int) -> float:
     steps = value * scale
     rounded = math.ceil(steps - 1e-9) if direction > 0 else math.floor(steps + 1e-9)
     return float(f"{rounded / scale:.{FIGURES}g}")
-
-
-def _drift_with(stage: Stage, change: Mapping[str, str], purse: _Purse) -> float | None:
-    outcome = purse.search(Stage.from_keys({**stage.given, **change}, stage.folder), set())
-    return outcome.found[0].drift if outcome.found else None

@@ -1,0 +1,7 @@
+"""Advice: what conflicts when nothing qualifies, and what would make a good answer better; searches again."""
+
+from __future__ import annotations
+
+from synth.advice.conflict import why_nothing_qualifies
+
+__all__ = ["why_nothing_qualifies"]
