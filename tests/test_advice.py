@@ -339,11 +339,13 @@ def test_a_follower_is_no_advice_for_a_stage_with_its_output_at_the_collector() 
 
 
 def test_values_that_leave_no_room_for_vce_are_refused() -> None:
-    with pytest.raises(StageError, match=r"resistors\.re\.values: read '10k', with which re would drop 20 V at 2 mA"):
+    """10 kilohm drop 10 V at half the target of 2 mA; a window of 15 % asks for 1.7 mA at least."""
+    with pytest.raises(StageError, match=r"resistors\.re\.values: read '10k', with which re would drop 10 V at only 1 mA"):
         stage(resistors_re_values="10k", resistors_re_range=None)
+    with pytest.raises(StageError, match="accepted is less than 5K59 for rc and re together"):
+        stage(ic="2 mA ± 15 %", vce="5 V ± 50 %", resistors_re_values="2k7", resistors_rc_values="3k3")
 
 
-def test_values_that_leave_room_in_one_network_are_not_refused() -> None:
-    assert stage(resistors_re_values="3k3", vce="5 V").role("re").values
-    with pytest.raises(StageError, match="accepted is less than 3K5 for re together"):
-        stage(resistors_re_values="3k6", vce="5 V")
+def test_values_that_leave_room_are_not_refused() -> None:
+    assert stage(resistors_re_values="3k3").role("re").values
+    assert stage(resistors_re_values="10k", network=["divider", "fixed_base"], vce="5 V", supply="24 V").role("re").values

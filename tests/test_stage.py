@@ -925,8 +925,8 @@ def test_any_saved_request_reads_back_to_an_equal_stage(tmp_path, keys):
     try:
         made = Stage(**keys)
     except StageError as error:
-        # The two contradictions that the strategy can make: a junction near IS(T), a VCE below VCE(sat).
-        assume("saturation current" not in str(error) and "saturated switch" not in str(error))
+        # The contradictions that the strategy can make: a junction near IS(T), VCE below VCE(sat), resistors that leave it none.
+        assume(not any(reason in str(error) for reason in ("saturation current", "saturated switch", "would drop")))
         raise
     back = from_file(tmp_path, made.to_toml())
     assert back == made

@@ -69,7 +69,7 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
     reference = read_reference(request, networks, transistor, current, rails)
     load_rail = rails.get("vload", rails["vcc"]) if any(NETWORKS[name].sinks for name in networks) else None
     roles = read_roles(request, networks, any_network, temperature)
-    check_drops(request, networks, current, voltages, rails, roles)
+    check_drops(request, networks, ic, voltages, rails, roles)
     ratings = read_ratings(request)
     has_styles = any(setting.style for setting in roles.values())
     return {

@@ -167,18 +167,17 @@ def read_roles(request: Request, networks: Sequence[str], any_network: bool, tem
 def check_drops(
     request: Request,
     networks: Sequence[str],
-    current: float,
+    ic: Target,
     voltages: Mapping[str, Target],
     rails: Mapping[str, Spread],
     roles: Mapping[str, RoleSetting],
 ) -> None:
-    """Refuse values of rc and re that with the wanted current [A] and VCE need more than the rails of any network."""
-    target = voltages.get("vce")
-    vce = 0.0 if target is None else target.low if target.nominal is None else target.nominal
+    """Refuse values of rc and re that leave less than the least VCE at the least current, in every network."""
+    current, vce = _least_wanted(ic), _least_wanted(voltages.get("vce", Target(0.0, 0.0, 0.0)))
     excess = {}
     for name in networks:
         network = NETWORKS[name]
-        span = sum(rails[rail].nominal for rail in network.rails)
+        span = sum(rails[rail].high for rail in network.rails)
         named = {r: min(roles[r].values) for r in ("rc", "re") if r in network.role_names and r in roles and roles[r].values}
         drop = current * sum(named.values())
         if not named or vce + drop < span:
@@ -188,9 +187,14 @@ def check_drops(
     of = " and ".join(r for r in ("rc", "re") if r in roles and roles[r].values)
     texts = [format_quantity(voltage, "voltage") for voltage in (drop, vce, span)]
     at = format_quantity(current, "current")
-    reason = f"with which {of} would drop {texts[0]} at {at}: with VCE of {texts[1]} not below the {texts[2]} between the rails"
-    most = format_resistance((span - vce) / current)
+    reason = f"with which {of} would drop {texts[0]} at only {at}, with VCE of {texts[1]} not below the supply of {texts[2]}"
+    most = format_resistance(float(f"{(span - vce) / current:.3g}"))
     raise request.refusal(f"resistors.{role}.values", reason, f"less than {most} for {of} together, or a higher supply")
+
+
+def _least_wanted(target: Target) -> float:
+    """Lower end of a window; without a window half the target, since a Q-point that misses half of it is none."""
+    return target.low if target.low > -math.inf else 0.5 * (target.nominal or 0.0)
 
 
 def read_fitted(request: Request) -> dict[str, float]:
