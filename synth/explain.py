@@ -1,4 +1,4 @@
-"""Facts behind an answer: what each resistor does, what drives the drift, what the next value would do, and why to be careful.
+"""Facts behind an answer: what each resistor does, what drives the drift, and what the next value would do.
 
 The budget of a drift is the Shapley value of each cause: its mean effect over every order of moving the parameters from
 nominal to the deciding point. It treats the causes alike, needs no order of moving and adds up exactly, interactions
@@ -13,9 +13,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from synth.answer import Caution, Compared, Duty, Neighbour, Nominal, Share
+from synth.answer import Compared, Duty, Neighbour, Nominal, Share
 from synth.box import Box, Meter, Values
-from synth.catalogue import transistor
 from synth.measures import ground_voltage
 from synth.networks.form import Array, Network
 from synth.q_point import REGIONS, SATURATED
@@ -35,10 +34,6 @@ CAUSES = {
 }
 """Names of the device axes as causes; rails and roles keep their own."""
 
-OFF_TARGET = 0.3
-"""Centring above which a candidate that no window forbids gets a caution [-]: as wide as the widest usual window."""
-VCEO_SHARE = 0.8
-"""Share of VCEO from which the rail gets a caution [-]: common practice leaves a fifth."""
 WORTH_TELLING = 0.1
 """Share of a drift from which the difference of one cause explains it [-]."""
 NEGLIGIBLE = 0.005
@@ -458,89 +453,6 @@ def compared_words(compared: Compared) -> str:
     return f"{cause_words(compared.cause)} takes {percent(compared.there)} there and {percent(compared.here)} here"
 
 
-def cautions(candidate: Candidate, box: Box) -> tuple[Caution, ...]:
-    """Named warnings that a candidate deserves, with the physical reason.
-
-    Parameters
-    ----------
-    candidate : Candidate
-        Any candidate.
-    box : Box
-        Its box, of one candidate.
-
-    Returns
-    -------
-    tuple of Caution
-        In a fixed order.
-
-    Notes
-    -----
-    Thresholds are common practice: a gain spread above 1.5 with the emitter grounded; a VBE spread above a fifth of VE;
-    a bleeder below five base currents; total dissipation above 100 mW without a thermal resistance; rails above 50 V.
-    """
-    found = []
-    device = box.transistor
-    ve = candidate.roles["re"].drop if "re" in candidate.roles else 0.0
-    ratio = device.hfe.high / device.hfe.low
-    if candidate.network == "fixed_base" and "re" not in candidate.roles and ratio > 1.5:
-        found.append(
-            Caution(
-                name="fixed_base_gain",
-                text=f"IB is fixed and the emitter grounded, so IC follows hFE from unit to unit: {ratio:.3g} to 1 over its "
-                "range; a network with re holds IC.",
-            )
-        )
-    half = max(device.vbe.high - device.vbe.nominal, device.vbe.nominal - device.vbe.low)
-    if ve > 0.0 and half > 0.2 * ve and candidate.nominal.region == "active":
-        found.append(
-            Caution(
-                name="emitter_voltage_small",
-                text=f"VE is only {format_quantity(ve, 'voltage')}: the VBE spread of {format_quantity(half, 'voltage')} "
-                f"is {percent(half / ve)} of it, and IC moves by about as much while that is small (ΔIC/IC ≈ ΔVBE/VE).",
-            )
-        )
-    bleeder = candidate.roles.get(box.network.bleeder or "")
-    if bleeder is not None:
-        current = bleeder.current
-        worst = candidate.nominal.ic / device.hfe.low
-        if current < 5.0 * worst:
-            found.append(
-                Caution(
-                    name="bleeder_feeble",
-                    text=f"The bleeder carries {format_quantity(current, 'current')}, less than five base currents of "
-                    f"{format_quantity(worst, 'current')} at the least hFE: the base voltage sags with gain.",
-                )
-            )
-    found += _ratings(candidate, box)
-    if candidate.centring > OFF_TARGET:
-        found.append(
-            Caution(
-                name="off_target",
-                text=f"The nominal Q-point is {percent(candidate.centring)} off target, and no window forbids it: finer "
-                "series, other limits or another network may come nearer; a window on ic or vce would refuse this.",
-            )
-        )
-    rail = max(spread.high for spread in box.rails.values())
-    if rail > 50.0:
-        found.append(
-            Caution(
-                name="high_voltage",
-                text=f"A rail of {format_quantity(rail, 'voltage')} can injure: follow the local electrical code, have it "
-                "checked by a licensed person, and discharge capacitors before touching.",
-            )
-        )
-    power = dissipation(candidate)
-    if power > 0.1:
-        found.append(
-            Caution(
-                name="dissipation",
-                text=f"The transistor may dissipate up to {format_quantity(power, 'power')}: check its rating at the hot "
-                "ambient in the data sheet; hot parts burn.",
-            )
-        )
-    return tuple(found)
-
-
 def dissipation(candidate: Candidate) -> float:
     """Greatest dissipation of the transistor.
 
@@ -557,39 +469,3 @@ def dissipation(candidate: Candidate) -> float:
     if candidate.transistor is not None:
         return candidate.transistor.power
     return candidate.worst.ic[1] * candidate.worst.vce[1]
-
-
-def _ratings(candidate: Candidate, box: Box) -> list[Caution]:
-    """What the table of transistors says against the stage: VCEO against the whole rail, IC max, dissipation."""
-    if not box.transistor.type:
-        return []
-    row = transistor(box.transistor.type)
-    span = box.rails["vcc"].high + (box.rails["vee"].high if "vee" in box.rails else 0.0)
-    found = []
-    if row.vceo_v is not None and span > VCEO_SHARE * row.vceo_v:
-        found.append(
-            Caution(
-                name="vceo",
-                text=f"At cut-off the whole rail of {format_quantity(span, 'voltage')} stands across {row.type}, whose VCEO "
-                f"is {format_quantity(row.vceo_v, 'voltage')}: more than {percent(VCEO_SHARE)} of it; choose a type with more.",
-            )
-        )
-    most = candidate.worst.ic[1]
-    if row.ic_max_a is not None and most > row.ic_max_a:
-        found.append(
-            Caution(
-                name="ic_max",
-                text=f"IC reaches {format_quantity(most, 'current')}, above the {format_quantity(row.ic_max_a, 'current')} "
-                f"that {row.type} may carry.",
-            )
-        )
-    power = dissipation(candidate)
-    if row.ptot_w is not None and power > 0.5 * row.ptot_w:
-        found.append(
-            Caution(
-                name="ptot",
-                text=f"The transistor may dissipate up to {format_quantity(power, 'power')}, more than half of the "
-                f"{format_quantity(row.ptot_w, 'power')} that {row.type} is rated for at 25 °C ({row.ptot_ref}).",
-            )
-        )
-    return found

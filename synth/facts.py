@@ -7,13 +7,11 @@ from dataclasses import replace
 
 import numpy as np
 
-from synth.answer import Candidate, Caution, Load, Stress
+from synth.answer import Load, Stress
 from synth.box import Box, Extreme, Heat, Values
 from synth.catalogue import Derating, ResistorStyle, resistor_styles
-from synth.explain import percent
 from synth.measures import BYPASS, POWER_OF_TRANSISTOR
 from synth.networks.form import Array
-from synth.quantities import format_quantity, format_resistance
 from synth.signal import corner_capacitance
 from synth.stress import (
     JUNCTION_STATES,
@@ -28,17 +26,12 @@ from synth.stress import (
     junction_temperature,
     smallest_style,
     string_length,
-    temperature_rise,
 )
 
 SHOWN = ("gm", "r_pi", "r_intrinsic", "input_resistance", "output_resistance", "gain", "swing")
 """Small-signal figures of an answer: [S], [ohm], [ohm], [ohm], [ohm], [-], [V]."""
 HOTTEST = 473.15
 """Junction temperature at which the laws end where no TJ max is known, 200 °C [K]."""
-GAIN_TO_TELL, SHIFT_TO_TELL = 0.5, 0.01
-"""Thermal loop gain, and shift of the nominal IC by self-heating, from which they are worth a caution [-]."""
-WARM = 10.0
-"""Rise of a resistor's own temperature from which it is worth a caution [K]."""
 
 
 Law = Callable[[Sequence[str], int], Extreme]
@@ -229,121 +222,4 @@ def signals(box: Box, corner: float | None = None) -> list[dict[str, tuple[float
         sizes = [np.broadcast_to(corner_capacitance(r, corner), (box.size,)) for r in ohms]
         for k in range(box.size):
             found[k]["bypass_capacitor"] = (float(sizes[0][k]), float(sizes[1][k]), float(sizes[2][k]))
-    return found
-
-
-def stress_cautions(
-    candidate: Candidate, box: Box, styles: Mapping[str, ResistorStyle], policy: Derating
-) -> tuple[Caution, ...]:
-    """Cautions about resistors: what they carry when the transistor fails, and how warm they make themselves.
-
-    Parameters
-    ----------
-    candidate : Candidate
-        With its stress.
-    box : Box
-        Its box, of one candidate.
-    styles : mapping of str to ResistorStyle
-        Style of each role that has one.
-    policy : Derating
-        Derating policy.
-
-    Returns
-    -------
-    tuple of Caution
-        In the order of the roles.
-    """
-    found = _thermal_cautions(candidate)
-    hot = box.temperature.high
-    # With the transistor shorted, or saturated, the rails stand across rc and re alone.
-    chain = [role for role in ("rc", "re") if role in box.parts and not box.network.sinks]
-    span = box.rails["vcc"].high + (box.rails["vee"].high if "vee" in box.rails else 0.0)
-    total = sum(candidate.resistors[role] for role in chain)
-    for role in chain:
-        style = styles.get(role)
-        if style is None:
-            continue
-        ohms = candidate.resistors[role]
-        power, volts = (span / total) ** 2 * ohms, span * ohms / total
-        if not bool(carries(style, power, volts, ohms, hot, policy)):
-            least = format_quantity(float(allowed_power(style, hot, policy)), "power")
-            found.append(
-                Caution(
-                    name="resistor_when_shorted",
-                    text=f"With the transistor shorted or saturated {role.upper()} {format_resistance(ohms)} carries "
-                    f"{format_quantity(power, 'power')} at {format_quantity(volts, 'voltage')}, more than the {least} that "
-                    f"style {style.name} may have here: it gets hot or burns open.",
-                )
-            )
-    for role, stress in candidate.stress.items():
-        style = styles.get(role)
-        rise = 0.0 if style is None else float(temperature_rise(style, stress.power))
-        if rise > WARM:
-            part = box.parts[role]
-            more = rise * max(abs(float(part.tcr_low[0])), abs(float(part.tcr_high[0])))
-            found.append(
-                Caution(
-                    name="resistor_self_heating",
-                    text=f"{role.upper()} heats itself by up to {rise:.0f} K, which with its temperature coefficient adds "
-                    f"{percent(more)} to its band; the worst case counts the ambient only.",
-                )
-            )
-    return tuple(found)
-
-
-def _thermal_cautions(candidate: Candidate) -> list[Caution]:
-    """What self-heating does, where a thermal resistance is known."""
-    load = candidate.transistor
-    if load is None or load.thermal_resistance is None:
-        return []
-    at = format_quantity(load.thermal_resistance, "thermal_resistance")
-    if load.state != JUNCTION_STATES[0] and load.too_hot:
-        return [
-            Caution(
-                name="junction_too_hot",
-                text=f"With {at} to the ambient {format_quantity(load.power, 'power')} take the junction beyond its limit: "
-                "cool it better, or let the transistor dissipate less.",
-            )
-        ]
-    if load.state != JUNCTION_STATES[0]:
-        return [
-            Caution(
-                name="thermal_runaway",
-                text=f"With {at} to the ambient the junction finds no rest below its limit at the point of most power: heat "
-                "raises IC and IC raises heat. Cool it better, or let the resistors limit the power.",
-            )
-        ]
-    found = []
-    if load.loop_gain is not None and load.loop_gain > GAIN_TO_TELL:
-        found.append(
-            Caution(
-                name="thermal_loop_gain",
-                text=f"The thermal loop gain is {load.loop_gain:.2f} at the point of most power, where 1 is runaway.",
-            )
-        )
-    if load.heating is not None and abs(load.heating) > SHIFT_TO_TELL:
-        ends = [format_quantity(end, "current") for end in load.worst.get("ic", ())]
-        with_it = f"with it IC spans {ends[0]} to {ends[1]}" if ends else "with it some corner does not settle"
-        found.append(
-            Caution(
-                name="self_heating",
-                text=f"Self-heating with {at} moves the nominal IC by {percent(load.heating)}; the worst case above counts the "
-                f"ambient alone, {with_it}.",
-            )
-        )
-    for verdict in candidate.limits:
-        quantity = verdict.name.partition(".")[2]
-        if verdict.verdict == "pass" and verdict.name.startswith("target.") and quantity in load.worst:
-            low, high = verdict.limit if isinstance(verdict.limit, tuple) else (
-                (-np.inf, verdict.limit) if verdict.sense == "<=" else (verdict.limit, np.inf)
-            )  # fmt: skip
-            if load.worst[quantity][0] < low or load.worst[quantity][1] > high:
-                ends = [format_quantity(end, verdict.kind) for end in load.worst[quantity]]
-                found.append(
-                    Caution(
-                        name="self_heating_window",
-                        text=f"With self-heating {quantity.upper()} spans {ends[0]} to {ends[1]} and leaves its window: cool "
-                        "the transistor better, or narrow the window by as much and search again.",
-                    )
-                )
     return found

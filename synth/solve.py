@@ -12,10 +12,10 @@ from synth import __version__
 from synth.advice import why_nothing_qualifies
 from synth.answer import Answer, Candidate, Caution, Drift, Load, NetworkResult, Pass, Search, Verdict, Worst
 from synth.box import Box, Extreme, Meter, Values
+from synth.cautions import cautions, request_cautions
 from synth.explain import (
     budgets,
     cause_words,
-    cautions,
     compared_words,
     comparison,
     duties,
@@ -24,7 +24,7 @@ from synth.explain import (
     percent,
     sentences,
 )
-from synth.facts import heated, loads, signals, stress_cautions, stresses
+from synth.facts import heated, loads, signals, stresses
 from synth.limits import Judgement, Requirement, judge
 from synth.networks.form import Array
 from synth.q_point import REGIONS
@@ -81,13 +81,13 @@ def find(
     if rivals:
         candidates = (_before_rival(candidates[0], rivals[0]), *candidates[1:])
     infeasible = why_nothing_qualifies(stage) if outcome.status == "infeasible" else None
-    warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
+    warnings = request_cautions(stage)
     if candidates:
         space = next(s for s in spaces if _is_of(candidates[0], s))
         box = space.box(_index(space, candidates[0]), Meter())
         first = _with_heat(candidates[0], box, stage)
         candidates = (first, *candidates[1:])
-        warnings += cautions(first, box) + stress_cautions(first, box, space.styles, space.derating)
+        warnings += cautions(first, box, space, stage)
     return Answer(
         kind="find",
         version=__version__,
@@ -135,10 +135,10 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
     (around,) = neighbours(*among_values(stage, space), goal)
     (candidate,) = _reviewed([replace(candidate, rank=1, neighbours=around)], space, stage)
     candidate = replace(candidate, explanation=sentences(candidate, network))
-    warnings = tuple(Caution(name=w.name, text=w.text) for w in stage.warnings)
+    warnings = request_cautions(stage)
     box = space.box(index, Meter())
     candidate = _with_heat(candidate, box, stage)
-    warnings += cautions(candidate, box) + stress_cautions(candidate, box, space.styles, space.derating)
+    warnings += cautions(candidate, box, space, stage)
     failed = [v.name for v in candidate.limits if v.verdict == "fail"]
     why = f"fails {', '.join(failed)}" if failed else "passes every verdict"
     return Answer(

@@ -1,4 +1,4 @@
-"""Budget, neighbours, duties, node voltages, cautions and sentences against computations of their own.
+"""Budget, neighbours, duties, node voltages and sentences against computations of their own.
 
 The budget is compared with the mean over every order of moving the causes (the definition of the Shapley value: Shapley,
 A value for n-person games, 1953), each Q-point of it solved by nodal analysis and Newton's method in `enumeration`.
@@ -19,7 +19,7 @@ from stages import circuit
 import synth
 from synth.answer import Share
 from synth.box import Box, Meter
-from synth.explain import budgets, cause_words, cautions, duties, neighbours, nominal_points, percent, point_words, sentences
+from synth.explain import budgets, cause_words, duties, neighbours, nominal_points, percent, point_words, sentences
 from synth.networks import NETWORKS
 from synth.parts import Parts
 from synth.quantities import Spread
@@ -353,60 +353,6 @@ def test_two_supplies_have_their_common_point_as_ground() -> None:
     low = synth.check(given.replace(ground="negative"), rb="10k", rc="3k3", re="5k6").best
     assert low is not None
     assert_allclose(low.nominal.nodes["b"], best.nominal.nodes["b"] + 12.0, rtol=1e-12, atol=0.0)
-
-
-# --- Cautions -----------------------------------------------------------------------------------------------------
-
-FIXED = {"rb": "1M", "rc": "3k3"}
-HOT = {"supply": "24 V", "ic": "20 mA", "vce": "10 V"}
-CAUTIONS = [
-    # name; stage and resistors that deserve it; stage and resistors that do not
-    (
-        "fixed_base_gain",
-        ({"network": "fixed_base", "hfe": "100 : 151"}, FIXED),
-        ({"network": "fixed_base", "hfe": "100 : 150"}, FIXED),
-    ),
-    (
-        "fixed_base_gain",
-        ({"network": "fixed_base"}, FIXED),
-        ({"network": "fixed_base", "resistors_re_use": "yes"}, {**FIXED, "re": "1k"}),
-    ),
-    # The default VBE spread of 50 mV is a fifth of VE = 0.25 V; open-circuit base voltages 0.86 V and 1 V less about 0.64 V.
-    (
-        "emitter_voltage_small",
-        ({}, {"r1": "43k", "r2": "3k3", "rc": "1k8", "re": "200 ohm"}),
-        ({}, {"r1": "43k", "r2": "3k9", "rc": "1k8", "re": "200 ohm"}),
-    ),
-    # IC/hFE min = 18 uA: five of them are 90 uA; the contract's bleeder carries 173 uA, less than five of 39 uA.
-    ("bleeder_feeble", ({}, {"r1": "130k", "r2": "75k", "rc": "1k8", "re": "1k8"}), ({}, CONTRACT)),
-    ("bleeder_feeble", ({"hfe": "50 : 450"}, CONTRACT), ({"hfe": "60 : 450"}, CONTRACT)),
-    ("high_voltage", ({"supply": "50 V ± 1 %"}, {**CONTRACT, "rc": "18k"}), ({"supply": "50 V"}, {**CONTRACT, "rc": "18k"})),
-    # 100 mW: about 20 mA times 11 V, against 2.1 mA times 5.7 V.
-    ("dissipation", (HOT, {"r1": "4k3", "r2": "2k4", "rc": "270 ohm", "re": "390 ohm"}), ({}, CONTRACT)),
-]
-Fitted = tuple[dict[str, object], dict[str, str]]
-
-
-def names(fitted_stage: Fitted) -> set[str]:
-    changes, resistors = fitted_stage
-    return {w.name for w in synth.check(stage(**changes), **resistors).warnings}
-
-
-@pytest.mark.parametrize(("name", "does", "does_not"), CAUTIONS, ids=[f"{c[0]}-{k}" for k, c in enumerate(CAUTIONS)])
-def test_cautions_are_given_where_they_are_due_and_nowhere_else(name: str, does: Fitted, does_not: Fitted) -> None:
-    assert name in names(does)
-    assert name not in names(does_not)
-
-
-def test_a_network_without_bleeder_has_no_feeble_one() -> None:
-    assert "bleeder_feeble" not in names(({"network": "two_supply", "vee": "12 V"}, {"rb": "10k", "rc": "3k3", "re": "5k6"}))
-
-
-def test_a_quiet_stage_has_no_cautions() -> None:
-    given = stage(**{f"values_{role}": value for role, value in CONTRACT.items()})
-    best = synth.check(given).best
-    assert best is not None
-    assert cautions(best, fitted(given).box(np.zeros((1, 4), dtype=np.int32), Meter())) == ()
 
 
 # --- Words --------------------------------------------------------------------------------------------------------

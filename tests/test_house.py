@@ -41,6 +41,7 @@ ROOMS = (
     "explain",
     "facts",
     "readings",
+    "cautions",
     "advice",
     "solve",
     "present",

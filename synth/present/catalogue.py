@@ -17,6 +17,7 @@ from synth.catalogue import (
     tolerance_codes,
     transistors,
 )
+from synth.cautions import RULES
 from synth.present.terminal import table
 from synth.quantities import format_quantity
 
@@ -132,6 +133,13 @@ def _deratings() -> list[list[str]]:
     return rows
 
 
+def _warnings() -> list[list[str]]:
+    rows = [["name", "given when, and why"]]
+    for rule in RULES.values():
+        rows.append([rule.name, f"{rule.threshold[0].upper()}{rule.threshold[1:]}. {rule.reason}"])
+    return rows
+
+
 TABLES: dict[str, _Table] = {
     "series": _Table("Preferred numbers", "IEC 60063, E3 to E192", _series),
     "tolerances": _Table("Tolerance letters", "IEC 60062", _tolerances),
@@ -146,6 +154,7 @@ TABLES: dict[str, _Table] = {
         _deratings,
         (1, 2, 3, 4, 5),
     ),
+    "warnings": _Table("Named warnings", "common practice and the laws of the parts", _warnings),
     "gains": _Table("hFE at other currents", "makers' sheets; – where no limit is printed", _gains, (1, 2)),
 }
 """The tables by name."""

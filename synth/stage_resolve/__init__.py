@@ -8,8 +8,8 @@ from types import MappingProxyType
 from typing import Any
 
 from synth.networks import NETWORKS
-from synth.quantities import format_quantity
-from synth.stage_keys import KEYS
+from synth.quantities import Spread, format_quantity
+from synth.stage_keys import KEYS, StageError
 from synth.stage_resolve.limits import read_limits
 from synth.stage_resolve.reference import read_reference
 from synth.stage_resolve.request import Assumption, Request, StageWarning
@@ -28,8 +28,12 @@ from synth.stage_resolve.signal import read_corner, read_signal
 from synth.stage_resolve.transistor import check_junction, read_policy, read_ratings, read_replacement, read_transistor
 from synth.stage_resolve.wanted import read_networks, read_rails, read_targets, read_temperature
 from synth.stress import TransistorRatings
+from synth.transistor import Transistor
 
 __all__ = ["Assumption", "RoleSetting", "StageWarning", "band", "needing", "no_role", "resolve", "rival"]
+
+FORCED_GAIN = 10.0
+"""IC/IB of a saturated switch [-]: common practice, and the test condition of most data sheets."""
 
 
 def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
@@ -63,9 +67,7 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
     check_junction(request, transistor, current, temperature.high)
     vce = voltages.get("vce")
     if vce is not None and vce.nominal is not None and vce.nominal <= transistor.vce_sat:
-        least = format_quantity(transistor.vce_sat, "voltage")
-        reason = f"which is no more than VCE(sat) = {least}: a saturated switch is set by forced gain, not by a Q-point"
-        raise request.refusal("target.vce", reason, f"more than {least}")
+        raise _switch(request, rails, transistor, current)
     reference = read_reference(request, networks, transistor, current, rails)
     load_rail = rails.get("vload", rails["vcc"]) if any(NETWORKS[name].sinks for name in networks) else None
     roles = read_roles(request, networks, any_network, temperature)
@@ -97,3 +99,19 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
         "folder": request.folder,
         "_stock": MappingProxyType(read_stock(request, roles)),
     }
+
+
+def _switch(request: Request, rails: Mapping[str, Spread], transistor: Transistor, current: float) -> StageError:
+    """The refusal of a saturated switch, with the request that would be meant."""
+    least = format_quantity(transistor.vce_sat, "voltage")
+    base = current / FORCED_GAIN
+    feed = rails.get("vbb", rails["vcc"]).low
+    drive = f"IB = {format_quantity(base, 'current')}"
+    if feed > transistor.vbe.high:
+        ohms = (feed - transistor.vbe.high) / base
+        drive += f", about {format_quantity(ohms, 'resistance')} from {format_quantity(feed, 'voltage')} to the base"
+    reason = (
+        f"which is no more than VCE(sat) = {least}: a saturated switch is set by forced gain, not by a Q-point;"
+        f" with IC/IB = {FORCED_GAIN:g} that is {drive}"
+    )
+    return request.refusal("target.vce", reason, f"more than {least}, the Q-point of an amplifier")
