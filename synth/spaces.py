@@ -19,6 +19,7 @@ from synth.networks.form import Array, Network
 from synth.parts import Parts
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
+from synth.rss import root_sum_square
 from synth.signal import Signal
 from synth.stage import Stage, StageError
 from synth.transistor import Transistor
@@ -57,6 +58,8 @@ class Space:
         Policy that ratings are judged by.
     ground : {"negative", "positive", "middle", "common"}
         What is 0 V, see `synth.explain.nominal_points`.
+    prices : mapping of str to ndarray
+        Price of each value of a role, where every role has a list with prices [-].
     """
 
     network: Network
@@ -70,6 +73,7 @@ class Space:
     styles: Mapping[str, ResistorStyle] = field(default_factory=dict)
     derating: Derating = field(default_factory=partial(derating, "none"))
     ground: str = "negative"
+    prices: Mapping[str, Array] = field(default_factory=dict)
 
     @property
     def roles(self) -> tuple[str, ...]:
@@ -96,6 +100,23 @@ class Space:
         """
         feeds = (box.parts[role].nominal for role in self.network.base_side if role in box.parts)
         return 1.0 / sum((1.0 / r for r in feeds), np.zeros(box.size))
+
+    def thinned(self, positions: Mapping[str, Index]) -> Space:
+        """The same space with some of its values.
+
+        Parameters
+        ----------
+        positions : mapping of str to ndarray of int
+            List positions to keep, by role, ascending.
+
+        Returns
+        -------
+        Space
+            Whose lists are that short.
+        """
+        lists = {role: self.lists[role].take(at) for role, at in positions.items()}
+        prices = {role: row[positions[role]] for role, row in self.prices.items()}
+        return replace(self, lists=lists, prices=prices)
 
     def fitted(self, index: Index) -> list[dict[str, float]]:
         """Resistors of candidates.
@@ -143,12 +164,49 @@ class Space:
 
 @dataclass(frozen=True, kw_only=True)
 class Goal:
-    """What drift is measured from: IC [A], and of VCE, VC and VE [V] the one that has a target, the others None."""
+    """What drift is measured from: IC [A], and of VCE, VC and VE [V] the one that has a target, the others None.
+
+    Candidates are ranked by their score: the largest drift over the box, each times its weight [-] where `weights` are given;
+    with `rss` the largest root sum square of `synth.rss` in its place.
+    """
 
     ic: float
     vce: float | None = None
     vc: float | None = None
     ve: float | None = None
+    weights: Mapping[str, float] | None = None
+    rss: bool = False
+
+    def weight(self, quantity: str) -> float:
+        """How much the drift of a quantity counts.
+
+        Parameters
+        ----------
+        quantity : str
+            One of `aims`.
+
+        Returns
+        -------
+        float
+            1 where no weights are given, 0 of a quantity that they do not name [-].
+        """
+        return 1.0 if self.weights is None else self.weights.get(quantity, 0.0)
+
+    def score(self, drifts: Mapping[str, Array]) -> Array:
+        """What candidates are ranked by.
+
+        Parameters
+        ----------
+        drifts : mapping of str to ndarray
+            Drift of each quantity that has a target [-].
+
+        Returns
+        -------
+        ndarray
+            The largest of them, each times its weight [-].
+        """
+        counted = [(self.weight(quantity), drift) for quantity, drift in drifts.items()]
+        return np.asarray(np.maximum.reduce([w * drift for w, drift in counted if w > 0.0]))
 
     @property
     def aims(self) -> dict[str, float]:
@@ -161,13 +219,15 @@ class Goal:
 class Found:
     """One qualifying candidate with its worst case.
 
-    `index` are the list positions, `drifts` those of each quantity that has a target [-], `extremes` the deciding points.
+    `index` are the list positions, `drifts` those of each quantity that has a target [-], `extremes` the deciding points,
+    `score` is what it is ranked by [-].
     """
 
     space: Space
     index: tuple[int, ...]
     drifts: Mapping[str, float]
     extremes: Mapping[str, Extreme]
+    score: float
 
     @property
     def drift(self) -> float:
@@ -223,7 +283,8 @@ def goal_of(stage: Stage) -> Goal:
         Its targets.
     """
     assert stage.ic.nominal is not None
-    return Goal(ic=stage.ic.nominal, **{quantity: t.nominal for quantity, t in stage.voltages.items()})
+    aims = {quantity: target.nominal for quantity, target in stage.voltages.items()}
+    return Goal(ic=stage.ic.nominal, vce=aims.get("vce"), vc=aims.get("vc"), ve=aims.get("ve"))
 
 
 def spaces_of(stage: Stage, without: Collection[str] = ()) -> list[Space]:
@@ -364,7 +425,7 @@ def _parts(stage: Stage, role: str, values: Sequence[float] = ()) -> Parts:
 
 
 def assess(
-    space: Space, index: Index, goal: Goal, meter: Meter, limit: float = np.inf
+    space: Space, index: Index, goal: Goal, meter: Meter, limit: Array | float = np.inf
 ) -> tuple[list[Found], float]:
     """Worst case of some candidates, and which of them qualify.
 
@@ -378,24 +439,28 @@ def assess(
         What drift is measured from.
     meter : Meter
         Where solves are counted.
-    limit : float
-        Drift above which a candidate is of no interest [-].
+    limit : array_like
+        Score above which a candidate is of no interest [-], broadcast against (n,).
 
     Returns
     -------
     found : list of Found
         Those that satisfy every requirement and stay within `limit`.
     beyond : float
-        Least drift, or lower bound of it, among those dropped for `limit` [-]; infinite if none.
+        Least score, or lower bound of it, among those dropped for `limit` [-]; infinite if none.
     """
     found: list[Found] = []
     beyond = np.inf
+    if not len(index):
+        return found, beyond
+    most = np.broadcast_to(limit, len(index))
     box = space.box(index, meter)
+    squares = root_sum_square(box, goal.aims) if goal.rss else None
     rough = {key: box.extreme((key[0],), key[1], thorough=False).value for key in wanted(goal)}
-    drift = drift_of(rough, goal)[1]
-    over = drift > limit
+    score = goal.score(drift_of(rough, goal)[0] if squares is None else squares)
+    over = score > most
     if over.any():
-        beyond = float(drift[over].min())
+        beyond = float(score[over].min())
     alive: NDArray[np.bool_] = ~over
     for need in space.requirements:
         for names in need.sums:
@@ -405,21 +470,21 @@ def assess(
     keep = np.flatnonzero(alive)
     if not keep.size:
         return found, beyond
-    box = box.take(keep)
+    box, most = box.take(keep), most[keep]
     exact = Exact(box, goal)
-    drift = exact.drift
+    score = goal.score(exact.drifts) if squares is None else score[keep]
     passed = np.ones(box.size, dtype=bool)
     late = [need for need in space.requirements if is_dear(need)]
     for need in space.requirements:
         if need not in late:
             passed &= judge(box, need, exact.worst).passed
-    far = passed & (drift > limit)
+    far = passed & (score > most)
     # What is dear to judge is judged last, and of a candidate beyond the limit a bound is all that counts.
     for need in late:
         asked = np.flatnonzero(passed & ~far)
         passed[asked] = passes(exact, need, asked)
     if far.any():
-        beyond = min(beyond, float(drift[far].min()))
+        beyond = min(beyond, float(score[far].min()))
     for k in np.flatnonzero(passed & ~far):
         found.append(
             Found(
@@ -427,6 +492,7 @@ def assess(
                 index=tuple(int(i) for i in index[keep[k]]),
                 drifts={quantity: float(x[k]) for quantity, x in exact.drifts.items()},
                 extremes={f"{q} {'max' if side > 0 else 'min'}": e.take(int(k)) for (q, side), e in exact.extremes.items()},
+                score=float(score[k]),
             )
         )
     return found, beyond

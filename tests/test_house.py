@@ -32,6 +32,7 @@ ROOMS = (
     "box",
     "straddle",
     "limits",
+    "rss",
     "statistics",
     "stage",
     "answer",

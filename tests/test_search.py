@@ -22,14 +22,15 @@ from synth.limits import Requirement, judge
 from synth.networks import NETWORKS
 from synth.parts import Parts
 from synth.quantities import Interval, Spread
-from synth.search import Outcome, _Blocks, _Corners, _Room, search
+from synth.search import Outcome, best_first, pools, search
+from synth.search.blocks import Room
+from synth.search.corners import Corners
 from synth.spaces import Goal, Space, goal_of, spaces_of, wanted
 from synth.stage import Stage
 from synth.transistor import Transistor
 
 Array = NDArray[np.float64]
 home = importlib.import_module(synth.find.__module__)
-room = importlib.import_module(search.__module__)
 
 ROUNDING = 1e-12
 """Search and enumeration ask the same worst case of unlike batches, whose last bits may differ: some tens of ulps."""
@@ -67,7 +68,7 @@ def solved(network: str, number: int) -> Outcome:
 def small_steps(monkeypatch: pytest.MonkeyPatch, number: int) -> None:
     """Let a small space go through what only large ones do: many batches, a coarse pass, assessment in portions."""
     for name, sizes in {"BATCH": (3, 8, 32), "COARSE": (2, 3, 5), "FIRST": (1, 2, 16), "ASSESS": (2, 8, 128)}.items():
-        monkeypatch.setattr(room, name, sizes[number % 3])
+        monkeypatch.setattr(best_first, name, sizes[number % 3])
 
 
 def places(outcome: Outcome, spaces: list[Space]) -> list[tuple[int, tuple[int, ...]]]:
@@ -106,7 +107,7 @@ def check_complete(outcome: Outcome, spaces: list[Space], rows: list[Row], top: 
         assert outcome.bound == np.inf
     else:
         assert outcome.bound >= rows[top - 1].drift * (1.0 - ROUNDING)
-        assert all(f.drift <= rows[top - 1].drift * (1.0 + 2.0 * room.TIE) for f in outcome.found)
+        assert all(f.drift <= rows[top - 1].drift * (1.0 + 2.0 * pools.TIE) for f in outcome.found)
 
 
 # --- Exactness ----------------------------------------------------------------------------------------------------
@@ -352,7 +353,7 @@ def members(space: Space, lo: NDArray[np.int32], hi: NDArray[np.int32]) -> list[
 
 def check_corners(space: Space, point: dict[str, float], lo: NDArray[np.int32], hi: NDArray[np.int32]) -> bool:
     """Bound of every quantity against its value at every member; True where some member is leakage-dominated."""
-    corners = _Corners(space, point, Meter())
+    corners = Corners(space, point, Meter())
     box = space.box(every_index(space), Meter())
     values = box.values(point)
     q = box.solve(values, active_law=True)
@@ -422,7 +423,7 @@ def test_bound_of_a_single_member_is_its_own_value(network: str, quantity: str) 
             index = index[conducts]
             box = space.box(index, Meter())
             q = box.solve(box.nominal(), active_law=True)
-        corners = _Corners(space, {}, Meter())
+        corners = Corners(space, {}, Meter())
         for direction in (1, -1):
             corners.begin(index, index)
             least = corners.least(quantity, direction)
@@ -504,8 +505,8 @@ def bounds(
     hi: NDArray[np.int32],
 ) -> Array:
     """Bounds of blocks on drift; the weights steer only what is split first."""
-    work = _Room(space, goal, Meter(), anchors, [1.0] * len(space.roles))
-    blocks = _Blocks(lo, hi, np.zeros(len(lo)), np.full((len(lo), len(work.tests)), np.nan))
+    work = Room(space, goal, Meter(), anchors, [1.0] * len(space.roles))
+    blocks = work.fresh(lo, hi)
     work.raise_bounds(blocks, np.inf)
     return blocks.bound
 

@@ -23,8 +23,9 @@ from typing import Literal, NamedTuple
 
 import numpy as np
 
-from synth.box import Box, Parts, Values
+from synth.box import Box, Values
 from synth.networks.form import Array
+from synth.parts import Parts
 from synth.quantities import Interval
 from synth.statistics.distribution import SIGMAS
 from synth.statistics.stability import gradients
