@@ -48,6 +48,8 @@ class Reference:
         Temperature coefficient of the voltage [V/K].
     slope : Spread
         Slope resistance dV/dI [ohm].
+    number : int
+        Equal elements in series, which `voltage`, `tc` and `slope` count together [-].
     """
 
     kind: Kind
@@ -55,6 +57,7 @@ class Reference:
     current: float
     tc: Spread
     slope: Spread
+    number: int = 1
 
     def nominal(self, temperature: Array | float) -> Array:
         """Nominal voltage at the test current.

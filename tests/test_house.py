@@ -54,7 +54,7 @@ SHARED = {"stage_keys": "stage", "stage_file": "stage", "stage_resolve": "stage"
 DOORS = ("__init__", "__main__")
 
 LONGEST_MODULE = 800
-HEAVY = ("pandas", "ortools", "matplotlib", "scipy.optimize", "scipy.stats")
+HEAVY = ("pandas", "ortools", "matplotlib", "schemdraw", "scipy.optimize", "scipy.stats")
 TOP_LEVEL = {"README.md", "DEVELOPERS.md", "pyproject.toml", "synth", "tables", "tests", "examples"}
 
 MODULES = sorted(HOUSE.rglob("*.py"))

@@ -48,4 +48,5 @@ def read_reference(
         current=at,
         tc=Spread(*(count * end for end in (tc.low, tc.nominal, tc.high))),
         slope=Spread(*(count * end for end in (slope.low, slope.nominal, slope.high))),
+        number=count,
     )
