@@ -317,6 +317,33 @@ class Infeasible:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Floor:
+    """Best drift with the values of a series in every free role, or with any value, the bands as they are [-]."""
+
+    values: str
+    drift: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class Alternate:
+    """A change of the request in words and in stage-file keys; best drift after it [-], None if nothing qualifies."""
+
+    name: str
+    change: Mapping[str, str]
+    drift: float | None
+
+
+@dataclass(frozen=True, kw_only=True)
+class Outlook:
+    """Levers on the best drift [-]: finer values, single upgrades, single savings, the most useful first."""
+
+    drift: float
+    floors: tuple[Floor, ...]
+    upgrades: tuple[Alternate, ...]
+    savings: tuple[Alternate, ...]
+
+
+@dataclass(frozen=True, kw_only=True)
 class Alternative:
     """A listed candidate worth a look for another reason than drift."""
 
@@ -345,6 +372,8 @@ class Answer:
         Results, best first.
     infeasible : Infeasible or None
         Why nothing qualifies.
+    outlook : Outlook or None
+        What would make the best answer better or cheaper, where that was asked for.
     """
 
     kind: str
@@ -358,6 +387,7 @@ class Answer:
     candidates: tuple[Candidate, ...] = ()
     alternatives: tuple[Alternative, ...] = ()
     infeasible: Infeasible | None = None
+    outlook: Outlook | None = None
 
     @property
     def best(self) -> Candidate | None:
@@ -466,6 +496,13 @@ class Answer:
                 "relaxations": [_plain(vars(r)) for r in self.infeasible.relaxations],
                 "notes": dict(self.infeasible.notes),
                 "unsettled": list(self.infeasible.unsettled),
+            }
+        if self.outlook is not None:
+            body["outlook"] = {
+                "drift": _plain(self.outlook.drift),
+                "floors": [_plain(vars(row)) for row in self.outlook.floors],
+                "upgrades": [_plain(vars(row)) for row in self.outlook.upgrades],
+                "savings": [_plain(vars(row)) for row in self.outlook.savings],
             }
         return body
 

@@ -9,7 +9,7 @@ from functools import partial
 import numpy as np
 
 from synth import __version__
-from synth.advice import why_nothing_qualifies
+from synth.advice import outlook, why_nothing_qualifies
 from synth.answer import Answer, Candidate, Caution, Drift, Load, NetworkResult, Pass, Search, Verdict, Worst
 from synth.box import Box, Extreme, Meter, Values
 from synth.cautions import cautions, request_cautions
@@ -45,7 +45,7 @@ SHORT = 3e4
 
 
 def find(
-    stage: Stage, *, top: int = 10, progress: Progress | None = None, command: str = ""
+    stage: Stage, *, top: int = 10, advise: bool = False, progress: Progress | None = None, command: str = ""
 ) -> Answer:
     """Find the networks whose Q-point drifts least, proved, ranked and explained.
 
@@ -55,6 +55,8 @@ def find(
         The request.
     top : int
         How many candidates to list and prove [-].
+    advise : bool
+        Whether to search for what would make the best answer better or cheaper, which takes some seconds.
     progress : callable, optional
         See `synth.search.search`.
     command : str
@@ -100,6 +102,7 @@ def find(
         candidates=candidates,
         alternatives=alternatives(candidates),
         infeasible=infeasible,
+        outlook=outlook(stage, candidates[0].drift.q_point) if advise and candidates and outcome.complete else None,
     )
 
 

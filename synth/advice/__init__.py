@@ -3,5 +3,6 @@
 from __future__ import annotations
 
 from synth.advice.conflict import why_nothing_qualifies
+from synth.advice.outlook import outlook
 
-__all__ = ["why_nothing_qualifies"]
+__all__ = ["outlook", "why_nothing_qualifies"]

@@ -54,9 +54,9 @@ def levers(stage: Stage) -> list[Lever]:
         Those with at least one grade.
     """
     found = [
-        *(Lever(name=f"a steadier supply {rail}", grades=_narrowed(f"supply.{rail}", s)) for rail, s in stage.rails.items()),
+        *(Lever(name=f"a steadier supply {rail}", grades=narrowed(f"supply.{rail}", s)) for rail, s in stage.rails.items()),
         Lever(name="the base fed from a regulated rail", grades=_regulated_feed(stage)),
-        Lever(name="a narrower gain", grades=_narrowed("transistor.hfe", stage.transistor.hfe)),
+        Lever(name="a narrower gain", grades=narrowed("transistor.hfe", stage.transistor.hfe)),
         Lever(name="a finer resistor class", grades=finer_tolerance(stage)),
         Lever(name="a lower temperature coefficient", grades=lower_coefficient(stage)),
         Lever(name="a narrower ambient", grades=_narrowed_ambient(stage)),
@@ -108,17 +108,20 @@ def lower_coefficient(stage: Stage) -> tuple[Grade, ...]:
     )
 
 
-def _narrowed(path: str, spread: Spread) -> tuple[Grade, ...]:
+def narrowed(path: str, spread: Spread) -> tuple[Grade, ...]:
     """A spread drawn together towards its nominal value, four per cent of the way at a time, ends in three figures."""
     if spread.width == 0.0:
         return ()
+    key = KEYS[path]
     grades: dict[str, Grade] = {}
     for step in range(1, STEPS + 1):
         # In ratio, as gains spread; of a narrow supply that is the same as in difference.
         share = 1.0 - step / STEPS
         ends = [spread.nominal * (end / spread.nominal) ** share for end in (spread.low, spread.high)]
         low, high = min(_rounded(ends[0], 1), spread.nominal), max(_rounded(ends[1], -1), spread.nominal)
-        text = KEYS[path].write(Spread(low, spread.nominal, high))
+        # A nominal value that follows from the ends is not written.
+        is_derived = key.rule == "geometric" and key.write(spread).count(":") == 1
+        text = f"{low:g} : {high:g}" if is_derived else key.write(Spread(low, spread.nominal, high))
         size = max(abs(low / spread.low - 1.0), abs(high / spread.high - 1.0))
         if size > 0.0:
             grades.setdefault(text, Grade(change={path: text}, size=size))

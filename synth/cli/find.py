@@ -14,7 +14,7 @@ from synth.cli.options import FORMATS, Count, WrongInput, command_line, key_opti
 def command(meaning: str) -> click.Command:
     """The command, with what it is for in one sentence."""
 
-    def run(stage_file: Path | None, top: int, explain: tuple[int, ...], every: bool, **options: Any) -> int:
+    def run(stage_file: Path | None, top: int, explain: tuple[int, ...], every: bool, advise: bool, **options: Any) -> int:
         from synth.solve import find
 
         for key, value in options.items():
@@ -24,7 +24,7 @@ def command(meaning: str) -> click.Command:
                 raise WrongInput(f"--{role}: find chooses values itself, accepted is {pin!r} to pin one, or the command check")
         files(options)
         stage = read_stage(stage_file, options)
-        answer = find(stage, top=top, progress=progress(), command=command_line())
+        answer = find(stage, top=top, advise=advise, progress=progress(), command=command_line())
         ranks = [c.rank for c in answer.candidates] if every else list(explain)
         return deliver(answer, stage, ranks, options)
 
@@ -40,6 +40,8 @@ def command(meaning: str) -> click.Command:
                          help="How many candidates to list and prove."),
             click.Option(["--explain"], type=Count(1), metavar="N", multiple=True,
                          help="Explain candidate N as well."),
+            click.Option(["--advise"], is_flag=True,
+                         help="Search again for what would buy or save most: finer values, better parts, cheaper parts."),
             click.Option(["--all", "every"], is_flag=True, help="Explain every candidate listed."),
             *output_options(FORMATS),
         ],

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from math import inf
 
-from synth.answer import Answer, Candidate, Verdict
+from synth.answer import Answer, Candidate, Outlook, Verdict
 from synth.explain import cause_words, percent, point_words
 from synth.quantities import format_quantity, format_resistance
 from synth.stage_keys import KEYS
@@ -49,6 +49,8 @@ def render(answer: Answer) -> str:
     if len(answer.networks) > 1:
         rows = [[n.network, "–" if n.best is None else percent(n.best), n.why] for n in answer.networks]
         blocks.append(_section("Networks", rows))
+    if answer.outlook is not None:
+        blocks.append(_outlook(answer.outlook))
     if answer.warnings:
         blocks.append("\n".join(["Cautions", *(_wrapped(f"  {w.name}: {w.text}", "    ") for w in answer.warnings)]))
     if answer.assumed:
@@ -418,9 +420,24 @@ def _infeasible(answer: Answer) -> str:
     return "\n".join(_wrapped(line, "    ") for line in lines)
 
 
+def _outlook(outlook: Outlook) -> str:
+    """Levers on the best drift, each from a search of its own."""
+    floors = [f"{floor.values} {percent(floor.drift)}" for floor in outlook.floors]
+    title = f"What would change the best drift of {percent(outlook.drift)} (each from a search of its own)"
+    lines = [f"  with the bands as they are, the values of {', '.join(floors)}"] if floors else []
+    rows = []
+    for kind, changes in (("better", outlook.upgrades), ("cheaper", outlook.savings)):
+        for row in changes:
+            change = ", ".join(f'{key} = "{text}"' for key, text in row.change.items())
+            rows.append([kind, row.name, "nothing qualifies" if row.drift is None else percent(row.drift), change])
+    if rows:
+        lines.append(table(rows, (2,)))
+    return "\n".join([title, *lines])
+
+
 def _next(answer: Answer) -> str:
     if answer.kind == "find" and answer.candidates:
-        return "Next: --explain 1 shows the reasons; --save stage.toml keeps the request with every assumed value."
+        return "Next: --explain 1 shows the reasons, --advise what would buy or save most; --save stage.toml keeps the request."
     if answer.infeasible is not None and answer.infeasible.relaxations:
         change = answer.infeasible.relaxations[0].change
         options = " ".join(f"{KEYS[key].options[0]} '{text}'" for key, text in change.items())
