@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from synth.advice.levers import chosen_value, free_value, levers
-from synth.advice.purse import LOOK, Grade, Purse, least
+from synth.advice.purse import BUDGET, EFFORT, LOOK, Grade, Purse, least
 from synth.answer import Infeasible, Relaxation
 from synth.box import Box, Meter
 from synth.facts import stresses
@@ -25,6 +25,8 @@ FIGURES = 3
 """Significant figures of a relaxed limit."""
 WIDE = 0.95
 """Half-width from which a window is written by its ends [-]."""
+KEPT = BUDGET / 2.0
+"""Q-point solves that the search for the conflict leaves to that for a way out."""
 STEPS = 100
 """Degrees of a relaxation: one per cent of the way each."""
 DEFAULT, DEFAULT_CONDITION, CONDITION, TARGET = range(4)
@@ -57,7 +59,7 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
     dropped: set[str] = set()
     for name in sorted(names, key=lambda n: (n in given, n == "collector_share")):
         # Only what is proved infeasible without a limit makes it superfluous.
-        if purse.search(stage, dropped | {name}, first=True, most=LOOK).status == "infeasible":
+        if purse.search(stage, dropped | {name}, first=True, most=min(EFFORT, purse.left - KEPT)).status == "infeasible":
             dropped.add(name)
     binding = tuple(name for name in names if name not in dropped) or (ACTIVE,)
     best_without: dict[str, float | None] = {}

@@ -63,7 +63,7 @@ class Purse:
         """
         rooms = spaces_of(stage, without) if spaces is None else spaces
         gap = 0.0 if first else GAP
-        outcome = search(rooms, goal_of(stage), top=1, gap=gap, first=first, most=min(most, max(self.left, 0.0)))
+        outcome = search(rooms, goal_of(stage), top=1, gap=gap, first=first, most=max(min(most, self.left), 0.0))
         self.left -= outcome.evaluated
         return outcome
 
