@@ -8,7 +8,7 @@ from typing import Any
 import click
 
 from synth.cli.delivery import deliver, files
-from synth.cli.options import FORMATS, Count, command_line, key_options, output_options, read_stage
+from synth.cli.options import FORMATS, Count, command_line, key_options, output_options, read_stage, report_option
 
 
 def command(meaning: str) -> click.Command:
@@ -32,5 +32,6 @@ def command(meaning: str) -> click.Command:
             click.Option(["--explain"], type=Count(1), is_flag=False, flag_value=1, metavar="[1]",
                          help="Explain the verdict."),
             *output_options(FORMATS),
+            report_option(),
         ],
     )

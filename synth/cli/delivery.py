@@ -24,9 +24,23 @@ def files(options: dict[str, Any]) -> dict[str, Path]:
     """Files that the options name; refused before the work if they cannot be written."""
     from synth.present.files import refuse
 
-    files = {f"--{name}": options[name] for name in ("output", "save") if options[name] is not None}
+    names = ("output", "save", "report")
+    files: dict[str, Path] = {f"--{name}": options[name] for name in names if options.get(name) is not None}
+    report = files.get("--report")
+    if report is not None and report.suffix.lower() not in REPORTS:
+        raise WrongInput(f"--report: read {str(report)!r}, accepted is a file name that ends in {' or '.join(REPORTS)}")
     refuse(files, options["force"])
     return files
+
+
+def _page(answer: Answer) -> str:
+    from synth.present.page import to_html
+
+    return to_html(answer)
+
+
+REPORTS: dict[str, Callable[[Answer], str]] = {".html": _page}
+"""Who makes a report, by the ending of its file."""
 
 
 def deliver(answer: Answer, stage: Stage, explain: Sequence[int], options: dict[str, Any]) -> int:
@@ -48,8 +62,12 @@ def deliver(answer: Answer, stage: Stage, explain: Sequence[int], options: dict[
             if rank > count:
                 raise WrongInput(f"--explain: read {rank}, accepted is 1 to {count}")
             text += "\n" + explanation(answer, rank)
-    content = {"--output": text, "--save": stage.to_toml(options["save"].parent) if options["save"] else ""}
-    write({option: (path, content[option]) for option, path in files(options).items()})
+    content: dict[str, Callable[[Path], str]] = {
+        "--output": lambda path: text,
+        "--save": lambda path: stage.to_toml(path.parent),
+        "--report": lambda path: REPORTS[path.suffix.lower()](answer),
+    }
+    write({option: (path, content[option](path)) for option, path in files(options).items()})
     if options["output"] is None:
         click.echo(text, nl=False)
     return FOUND if answer.passed else NOT_FOUND

@@ -8,7 +8,7 @@ from typing import Any
 import click
 
 from synth.cli.delivery import deliver, files, progress
-from synth.cli.options import FORMATS, Count, WrongInput, command_line, key_options, output_options, read_stage
+from synth.cli.options import FORMATS, Count, WrongInput, command_line, key_options, output_options, read_stage, report_option
 
 
 def command(meaning: str) -> click.Command:
@@ -44,5 +44,6 @@ def command(meaning: str) -> click.Command:
                          help="Search again for what would buy or save most: finer values, better parts, cheaper parts."),
             click.Option(["--all", "every"], is_flag=True, help="Explain every candidate listed."),
             *output_options(FORMATS),
+            report_option(),
         ],
     )

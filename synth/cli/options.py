@@ -99,6 +99,12 @@ def output_options(formats: Sequence[str]) -> list[click.Parameter]:
     ]
 
 
+def report_option() -> click.Parameter:
+    """Option of a command whose answer can be written as a report."""
+    return click.Option(["--report"], type=click.Path(path_type=Path), metavar="FILE.html",
+                        help="Write the answer as a page that needs nothing but itself.")  # fmt: skip
+
+
 def read_stage(path: Path | None, options: dict[str, Any], command: str = "") -> Stage:
     """The stage of a file, its keys overridden by options; those that only another command uses are refused."""
     from synth.stage import Stage

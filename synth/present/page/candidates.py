@@ -1,0 +1,276 @@
+"""The list of candidates, and everything that the page shows of one."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from math import inf
+
+from synth.answer import Answer, Candidate, Load
+from synth.explain import cause_words, percent, point_words
+from synth.present.page.load_line import Picture, picture
+from synth.present.page.parts import Cell, Table, bars, number, used, words
+from synth.present.terminal import SIGNAL_WORDS, figure, limit_words, resistors, span
+from synth.quantities import format_quantity, format_resistance
+
+METER = 10e6
+"""Input resistance of a usual digital voltmeter [ohm] (common practice)."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class View:
+    """One candidate: its heading, verdict, picture and tables."""
+
+    rank: int
+    name: str
+    network: str
+    resistors: str
+    verdict: str
+    drift: str
+    picture: Picture | None
+    q_point: Table
+    roles: Table
+    readings: Table | None
+    budgets: Sequence[Table]
+    limits: Table
+    stress: Table | None
+    signal: Table | None
+    neighbours: Table | None
+    explanation: Sequence[str]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Listing:
+    """The table of candidates, with the rank that each row chooses, and the networks that it can be filtered by."""
+
+    table: Table
+    ranks: Sequence[int]
+    networks: Sequence[str]
+
+
+def listing(answer: Answer) -> Listing | None:
+    """One row a candidate, each cell with the number it sorts by.
+
+    Parameters
+    ----------
+    answer : Answer
+        Any answer.
+
+    Returns
+    -------
+    Listing or None
+        None where there is no candidate.
+    """
+    found = answer.candidates
+    if not found:
+        return None
+    networks = list(dict.fromkeys(c.network for c in found))
+    roles = list(dict.fromkeys(role for c in found for role in c.resistors))
+    volts = list(found[0].worst)[-1]
+    head = ["rank", *(["network"] if len(networks) > 1 else []), *map(str.upper, roles)]
+    head += ["IC over the box", f"{volts.upper()} over the box", "drift", "centring", "supply", "verdict"]
+    rows = []
+    for c in found:
+        row = [number(str(c.rank), c.rank), *([words(c.network)] if len(networks) > 1 else [])]
+        row += [
+            number(format_resistance(c.resistors[r]), c.resistors[r]) if r in c.resistors else number("–", inf) for r in roles
+        ]
+        ends = c.worst[volts]
+        row += [number(span(*c.worst.ic, "current"), c.worst.ic[0]), number(span(*ends, "voltage"), ends[0])]
+        row += [number(percent(c.drift.q_point), c.drift.q_point), number(percent(c.centring), c.centring)]
+        row += [number(figure(c.supply_current, "current"), c.supply_current), words(c.verdict, mark=c.verdict)]
+        rows.append(row)
+    table = Table(title="Candidates, least drift first" if answer.kind == "find" else "Fitted", head=head, rows=rows)
+    return Listing(table=table, ranks=[c.rank for c in found], networks=networks)
+
+
+def candidate_view(answer: Answer, c: Candidate) -> View:
+    """Everything that the page shows of a candidate.
+
+    Parameters
+    ----------
+    answer : Answer
+        Where it comes from.
+    c : Candidate
+        One of its candidates.
+
+    Returns
+    -------
+    View
+        Texts and places, nothing left to compute.
+    """
+    name = f"Candidate {c.rank}" if answer.kind == "find" else "Fitted"
+    return View(
+        rank=c.rank,
+        name=name,
+        network=c.network,
+        resistors=resistors(c),
+        verdict=c.verdict,
+        drift=percent(c.drift.q_point),
+        picture=picture(answer, c),
+        q_point=_q_point(answer, c),
+        roles=_roles(c),
+        readings=_readings(c),
+        budgets=_budgets(c),
+        limits=_limits(c),
+        stress=_stress(answer, c),
+        signal=_signal(c),
+        neighbours=_neighbours(c),
+        explanation=c.explanation,
+    )
+
+
+def _q_point(answer: Answer, c: Candidate) -> Table:
+    target = answer.stage.get("target", {})
+    rows = []
+    for quantity in c.worst:
+        kind = "current" if quantity == "ic" else "voltage"
+        drift, aim = c.drift.of().get(quantity), (target.get(quantity) or [None, None, None])[1]
+        low, high = c.worst[quantity]
+        cells = [figure(getattr(c.nominal, quantity), kind), figure(low, kind), figure(high, kind)]
+        cells += ["–" if aim is None else format_quantity(aim, kind), "–" if drift is None else percent(drift)]
+        rows.append([words(quantity.upper()), *map(number, cells)])
+    regions = ", ".join(c.regions)
+    return Table(
+        title="Q-point",
+        head=("", "nominal", "least", "greatest", "target", "drift"),
+        rows=rows,
+        note=f"Least and greatest over the whole box; region: {regions}. Nominal Q-point {percent(c.centring)} off target.",
+    )
+
+
+def _roles(c: Candidate) -> Table:
+    rows = []
+    for role, duty in c.roles.items():
+        value = format_resistance(c.resistors[role])
+        drop, current = figure(duty.drop, "voltage"), figure(duty.current, "current")
+        between = f"{duty.between[0]} to {duty.between[1]}"
+        rows.append([words(role.upper()), number(value), words(between), number(drop), number(current), words(duty.meaning)])
+    return Table(title="Resistors", head=("", "value", "between", "drop", "current", "purpose"), rows=rows)
+
+
+def _readings(c: Candidate) -> Table | None:
+    if c.readings is None:
+        return None
+    names = {"b": "VB, base to 0 V", "c": "VC, collector to 0 V", "e": "VE, emitter to 0 V", "m": "VM, reference to 0 V"}
+    rows = [
+        [words(names.get(node, node)), *(number(figure(volts, "voltage")) for volts in (middle, low, high))]
+        for node, (low, middle, high) in c.readings.nodes.items()
+    ]
+    rows += [
+        [words(f"across {role.upper()}"), *(number(figure(volts, "voltage")) for volts in (middle, low, high))]
+        for role, (low, middle, high) in c.readings.drops.items()
+    ]
+    least = percent(c.base_feed / (c.base_feed + METER))
+    return Table(
+        title="Meter readings",
+        head=("", "nominal", "least", "greatest"),
+        rows=rows,
+        note="A sound unit reads between least and greatest anywhere in the box. "
+        f"A meter of 10 MΩ lowers the reading at the base by at most {least}.",
+    )
+
+
+def _budgets(c: Candidate) -> list[Table]:
+    tables = []
+    for quantity, shares in c.budget.items():
+        total = c.drift.of().get(quantity)
+        if not shares or total is None:
+            continue
+        drawn = bars([s.share for s in shares])
+        rows = [
+            [words(cause_words(s.cause)), number(percent(s.share), s.share, bar)]
+            for s, bar in zip(shares, drawn, strict=True)
+        ]
+        title = f"Budget of {quantity.upper()}: {percent(total)}"
+        tables.append(Table(title=title, head=("cause", "share of the drift"), rows=rows))
+    return tables
+
+
+def _limits(c: Candidate) -> Table:
+    rows = []
+    for v in c.limits:
+        if v.worst != v.worst:
+            cells = [words(v.name), words(limit_words(v)), number("none"), number("–"), words(v.verdict, mark=v.verdict)]
+            rows.append([*cells, words("no temperature at which it settles")])
+            continue
+        at = point_words(v.at, skip=tuple(c.resistors)) if v.at and v.name != "bleeder_current" else "nominal"
+        saturates = v.name == "vce" and v.verdict == "fail" and v.worst == v.limit
+        margin = "saturates" if saturates else percent(v.margin) if abs(v.margin) < inf else "–"
+        cells = [words(v.name), words(limit_words(v)), number(figure(v.worst, v.kind)), number(margin)]
+        rows.append([*cells, words(v.verdict, mark=v.verdict), words(at)])
+    head = ("limit", "allowed", "worst", "margin", "verdict", "decided at")
+    return Table(title="Limits and windows", head=head, rows=rows)
+
+
+def _stress(answer: Answer, c: Candidate) -> Table | None:
+    if not c.stress and c.transistor is None:
+        return None
+    rows = []
+    for role, s in c.stress.items():
+        part = words(f"{role.upper()} {format_resistance(c.resistors[role])}")
+        smallest = s.smallest or "none in the table"
+        if s.string is not None:
+            smallest += f"; or {s.string} x {s.style} in series"
+        rows.append([part, words("power"), *_against(s.power, s.power_allowed, "power"), words(smallest)])
+        rows.append([part, words("voltage"), *_against(s.voltage, s.voltage_allowed, "voltage"), words("")])
+    if c.transistor is not None:
+        rows += _transistor(c.transistor)
+    hot = format_quantity(answer.stage["ambient"]["temperature"][2], "temperature")
+    policy = str(answer.stage.get("derating", "none")).replace("_", " ")
+    return Table(
+        title="Stress of every part at its own worst point",
+        head=("part", "what", "worst", "allowed", "used", "smallest style that does"),
+        rows=rows,
+        note=f"Derating {policy}, ambient up to {hot}. Parts near their rating get hot; the data sheet of the part decides.",
+    )
+
+
+def _against(worst: float, allowed: float | None, kind: str) -> list[Cell]:
+    """What is carried, what may be, and the share as a number with a bar."""
+    if allowed is None:
+        return [number(figure(worst, kind)), number("–"), number("–")]
+    share = worst / allowed if allowed > 0.0 else inf
+    text = percent(share) if share < inf else "none allowed"
+    limit = format_quantity(allowed, kind)
+    return [number(figure(worst, kind)), number(limit), number(text, share, used(share), "fail" if share > 1.0 else "")]
+
+
+def _transistor(load: Load) -> list[list[Cell]]:
+    part = words("transistor")
+    labels = {"power": ("dissipates", "power"), "vceo": ("holds cut off", "voltage"), "ic": ("carries", "current")}
+    rows = [
+        [part, words(what), *_against(getattr(load, name), load.allowed.get(name), kind), words("")]
+        for name, (what, kind) in labels.items()
+    ]
+    if load.junction is not None and load.thermal_resistance is not None:
+        at = f"with {format_quantity(load.thermal_resistance, 'thermal_resistance')} to the ambient"
+        settled = number(format_quantity(load.junction, "temperature"))
+        rows.append([part, words("junction"), settled, number("–"), number("–"), words(at)])
+    elif load.state is not None:
+        state = "beyond its limit" if load.too_hot else load.state
+        rows.append([part, words("junction"), words(state, mark="fail"), number("–"), number("–"), words("")])
+    return rows
+
+
+def _signal(c: Candidate) -> Table | None:
+    if not c.signal:
+        return None
+    rows = []
+    for name, (low, middle, high) in c.signal.items():
+        what, kind = SIGNAL_WORDS[name]
+        most = "–" if high != high else figure(high, kind)
+        rows.append([words(what), number(figure(middle, kind)), number(figure(low, kind)), number(most)])
+    return Table(title="Signal", head=("", "nominal", "least", "greatest"), rows=rows)
+
+
+def _neighbours(c: Candidate) -> Table | None:
+    if not c.neighbours:
+        return None
+    rows = []
+    for n in c.neighbours:
+        drift = "saturates" if n.drift is None else percent(n.drift)
+        fails = ", ".join(n.fails) or "–"
+        cells = [words(n.role.upper()), number(format_resistance(n.value)), number(drift)]
+        rows.append([*cells, words(n.verdict, mark=n.verdict), words(fails)])
+    return Table(title="One value up or down", head=("", "value", "drift", "verdict", "what fails"), rows=rows)

@@ -1,0 +1,216 @@
+"""The three lines on top of a page, and what stands below its candidates."""
+
+from __future__ import annotations
+
+from synth.answer import Answer, Candidate
+from synth.explain import cause_words, percent
+from synth.networks import NETWORKS
+from synth.present.page.parts import Note, Table, number, words
+from synth.present.terminal import resistors, span
+from synth.quantities import format_quantity
+
+RAISED = str.maketrans("0123456789", "⁰¹²³⁴⁵⁶⁷⁸⁹")
+WORDS = (
+    ("over the box", "worst case over every spread at once: gain, VBE, temperature, supply, resistors"),
+    ("drift", "largest excursion from target over the box, relative to the target"),
+    ("centring", "how far the nominal Q-point is off target"),
+    ("margin", "distance to the limit, relative to it"),
+)
+
+
+def count_words(count: int) -> str:
+    """A large whole number for reading.
+
+    Parameters
+    ----------
+    count : int
+        0 or more [-].
+
+    Returns
+    -------
+    str
+        ``129 257``, from ten million on ``1.01·10⁸``.
+    """
+    if count < 10**7:
+        return f"{count:,}".replace(",", "\u00a0")
+    digits, _, power = f"{count:.2e}".partition("e")
+    return f"{digits}·10{str(int(power)).translate(RAISED)}"
+
+
+def title(answer: Answer) -> str:
+    """What the page is about.
+
+    Parameters
+    ----------
+    answer : Answer
+        Any answer.
+
+    Returns
+    -------
+    str
+        The name of the stage.
+    """
+    return str(answer.stage.get("name") or "stage")
+
+
+def lead(answer: Answer) -> tuple[str, list[str]]:
+    """The answer in three lines: the verdict and its proof, the values, and what they depend on.
+
+    Parameters
+    ----------
+    answer : Answer
+        Of `find` or `check`.
+
+    Returns
+    -------
+    verdict : str
+        ``pass``, ``fail`` or ``open``.
+    lines : list of str
+        Three sentences.
+    """
+    best, why = answer.best, answer.infeasible
+    if best is not None:
+        return ("pass" if answer.passed else "fail"), [_proof(answer, best), _values(best), _decides(best)]
+    lines = [_proof(answer, None)]
+    if why is None:
+        return "open", [*lines, "No candidate was found so far.", "A longer search, or fewer networks, may settle it."]
+    one = len(why.binding) == 1
+    lines.append(f"{'This limit cannot be met' if one else 'These limits cannot be met together'}: {', '.join(why.binding)}.")
+    if why.relaxations:
+        first = why.relaxations[0]
+        change = ", ".join(f"{key} = {text}" for key, text in first.change.items())
+        lines.append(f"One change that would do: {change}, with a drift of {percent(first.drift)}.")
+    else:
+        lines.append("No change of one limit alone would do.")
+    return "fail", lines
+
+
+def _proof(answer: Answer, best: Candidate | None) -> str:
+    search = answer.search
+    if search is None:
+        failed = [] if best is None else [v.name for v in best.limits if v.verdict == "fail"]
+        if failed:
+            return f"The fitted resistors fail {', '.join(failed)}."
+        return "The fitted resistors pass every limit and window over the whole box."
+    space = f"{count_words(search.combinations)} combinations"
+    if search.status == "infeasible":
+        return f"None of {space} meets every limit, proved."
+    if search.status != "optimal":
+        bound = f"; nothing can drift less than {percent(search.bound)}" if search.bound else ""
+        return f"The search was stopped among {space}{bound}."
+    count = len(answer.candidates)
+    listed = "The best" if count == 1 else f"The best {count}"
+    beyond = "; there is no other" if search.bound is None else f"; every other drifts {percent(search.bound)} or more"
+    return f"{listed} of {space}, proved{beyond}."
+
+
+def _values(c: Candidate) -> str:
+    volts = list(c.worst)[-1]
+    return (
+        f"{NETWORKS[c.network].title.capitalize()} with {resistors(c)}: IC {span(*c.worst['ic'], 'current')}, {volts.upper()} "
+        f"{span(*c.worst[volts], 'voltage')} over the whole box."
+    )
+
+
+def _decides(c: Candidate) -> str:
+    quantity = c.drift.decides
+    shares = [s for s in c.budget.get(quantity, ()) if s.share > 0.0]
+    cause = f", most of all by {cause_words(shares[0].cause)} ({percent(shares[0].share)})" if shares else ""
+    text = f"{quantity.upper()} drifts most, {percent(c.drift.q_point)} at worst{cause}"
+    judged = [v for v in c.limits if abs(v.margin) < float("inf")]
+    if judged:
+        tight = min(judged, key=lambda v: v.margin)
+        text += f"; the least margin is that of {tight.name}, {percent(tight.margin)}"
+    return f"{text}."
+
+
+def notes(answer: Answer) -> list[Note]:
+    """What stands below the candidates.
+
+    Parameters
+    ----------
+    answer : Answer
+        Any answer.
+
+    Returns
+    -------
+    list of Note
+        Only those that have something to say.
+    """
+    makers = (_infeasible, _cautions, _alternatives, _networks, _assumed, _effort)
+    found = [note for make in makers if (note := make(answer)) is not None]
+    return [*found, Note(key="words", title="Words", facts=WORDS)]
+
+
+def _infeasible(answer: Answer) -> Note | None:
+    why = answer.infeasible
+    if why is None:
+        return None
+    without = []
+    for name, drift in why.best_without.items():
+        effect = "other limits still conflict" if drift is None else f"the best candidate drifts {percent(drift)}"
+        without.append((f"without {name}", "not settled, the search was stopped" if name in why.unsettled else effect))
+    rows = [
+        [words(", ".join(f'{key} = "{text}"' for key, text in r.change.items())), number(percent(r.drift), r.drift)]
+        for r in why.relaxations
+    ]
+    would = Table(title="Any one of these changes would do", head=("change", "best drift"), rows=rows,
+                  note="Each was verified by a search of its own.")  # fmt: skip
+    return Note(
+        key="infeasible",
+        title="Why nothing qualifies",
+        lines=[f"{name}: {note}" for name, note in why.notes.items()],
+        facts=without,
+        tables=(would,) if rows else (),
+    )
+
+
+def _cautions(answer: Answer) -> Note | None:
+    if not answer.warnings:
+        return None
+    facts = [(w.name.replace("_", " "), w.text) for w in answer.warnings]
+    return Note(key="cautions", title="Cautions", facts=facts)
+
+
+def _alternatives(answer: Answer) -> Note | None:
+    if not answer.alternatives:
+        return None
+    table = Table(
+        title="Worth a look",
+        head=("rank", "for its", "which means"),
+        rows=[[number(str(a.rank), a.rank), words(a.reason), words(a.text)] for a in answer.alternatives],
+    )
+    return Note(key="alternatives", title="Worth a look for another reason than drift", tables=(table,))
+
+
+def _networks(answer: Answer) -> Note | None:
+    if len(answer.networks) < 2:
+        return None
+    rows = [
+        [words(n.network), number("–" if n.best is None else percent(n.best), n.best), words(n.why)] for n in answer.networks
+    ]
+    table = Table(title="Best of each network", head=("network", "drift", "why"), rows=rows)
+    return Note(key="networks", title="Networks", tables=(table,))
+
+
+def _assumed(answer: Answer) -> Note | None:
+    if not answer.assumed:
+        return None
+    rows = [[words(n.key), words(n.value), words(n.why)] for n in answer.assumed]
+    table = Table(title="Assumed values", head=("key", "value", "why"), rows=rows)
+    return Note(key="assumed", title="Assumed, since not given", tables=(table,))
+
+
+def _effort(answer: Answer) -> Note | None:
+    search = answer.search
+    if search is None:
+        return None
+    state = "proved: everything not listed was excluded" if search.complete else "not complete: the search was stopped"
+    facts = [
+        ("searched", f"{count_words(search.combinations)} combinations"),
+        ("solved", f"{count_words(search.evaluated)} Q-points in {format_quantity(search.seconds, 'time')}"),
+        ("state", f"{search.status}, {state}"),
+    ]
+    if search.bound is not None:
+        facts.append(("bound", f"no other candidate drifts less than {percent(search.bound)}"))
+    return Note(key="search", title="Search and proof", facts=facts)

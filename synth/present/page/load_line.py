@@ -1,0 +1,141 @@
+"""Geometry of a load line picture: where everything stands; the template draws it.
+
+The picture holds no words but those of its axes, which stand clear of each other whatever the values; what else there is to
+say is in the list beside it.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from math import floor, log10
+
+from synth.answer import Answer, Candidate
+from synth.explain import percent
+from synth.present.terminal import figure, span
+from synth.quantities import format_quantity
+
+WIDTH, HEIGHT = 440.0, 300.0
+LEFT, RIGHT, TOP, BOTTOM = 66.0, 20.0, 24.0, 46.0
+ROOM = 1.04
+"""How far the axes go beyond what is drawn [-]."""
+MOST_TICKS = 6
+
+
+@dataclass(frozen=True, kw_only=True)
+class Tick:
+    """A mark of an axis: where it stands [-], and its number with a unit."""
+
+    at: float
+    text: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class Rect:
+    """A rectangle in the units of the picture [-]."""
+
+    x: float
+    y: float
+    width: float
+    height: float
+
+
+@dataclass(frozen=True, kw_only=True)
+class Picture:
+    """Everything that a load line picture draws, places in its own units [-], and the words beside it as (mark, meaning)."""
+
+    width: float
+    height: float
+    plot: Rect
+    x_ticks: Sequence[Tick]
+    y_ticks: Sequence[Tick]
+    line: tuple[float, float, float, float]
+    box: Rect
+    window: Rect | None
+    q_point: tuple[float, float]
+    saturation: float
+    legend: Sequence[tuple[str, str]]
+    summary: str
+
+
+def picture(answer: Answer, c: Candidate) -> Picture | None:
+    """Load line of a candidate with its Q-point, its box, its window and both ends of the active region.
+
+    Parameters
+    ----------
+    answer : Answer
+        Where it comes from, for its targets.
+    c : Candidate
+        Any candidate.
+
+    Returns
+    -------
+    Picture or None
+        None where the line is not known.
+    """
+    line = c.load_line
+    if line is None:
+        return None
+    target = answer.stage.get("target", {})
+    aim_ic, aim_vce = _window(target.get("ic")), _window(target.get("vce"))
+    (ic_low, ic_high), (vce_low, vce_high) = c.worst.ic, c.worst.vce
+    x_end = ROOM * max(line.vce, vce_high, *([aim_vce[1]] if aim_vce else []))
+    y_end = ROOM * max(line.ic, ic_high)
+    # A line that is steep against the Q-point would leave it on the floor; the window of interest is four times its IC.
+    y_end = min(y_end, max(4.0 * ic_high, ROOM * (aim_ic[1] if aim_ic else 0.0)))
+    plot = Rect(x=LEFT, y=TOP, width=WIDTH - LEFT - RIGHT, height=HEIGHT - TOP - BOTTOM)
+
+    def x(v: float) -> float:
+        return round(plot.x + plot.width * min(max(v / x_end, 0.0), 1.0), 2)
+
+    def y(i: float) -> float:
+        return round(plot.y + plot.height * (1.0 - min(max(i / y_end, 0.0), 1.0)), 2)
+
+    def rect(x0: float, x1: float, y0: float, y1: float) -> Rect:
+        return Rect(x=x(x0), y=y(y1), width=round(x(x1) - x(x0), 2), height=round(y(y0) - y(y1), 2))
+
+    high = min(y_end, line.ic)
+    q = c.nominal
+    legend = [
+        ("line", f"load line, {figure(line.ic, 'current')} at no VCE to {figure(line.vce, 'voltage')} at no current"),
+        ("point", f"nominal Q-point, {figure(q.ic, 'current')} and {figure(q.vce, 'voltage')}"),
+        ("box", f"over the box, {span(ic_low, ic_high, 'current')} and {span(vce_low, vce_high, 'voltage')}"),
+    ]
+    if aim_ic or aim_vce:
+        limits = [f"{span(*ends, kind)}" for ends, kind in ((aim_ic, "current"), (aim_vce, "voltage")) if ends]
+        legend.append(("window", f"window, {' and '.join(limits)}"))
+    room = vce_low - line.vce_sat
+    to_cutoff = percent(ic_low / q.ic) if q.ic > 0.0 else "0 %"
+    saturates = "reached within the box" if room <= 0.0 else f"the least VCE keeps {figure(room, 'voltage')} from it"
+    legend.append(("saturation", f"saturation below {format_quantity(line.vce_sat, 'voltage')}: {saturates}"))
+    legend.append(("cutoff", f"cut-off on the VCE axis: the least IC is {to_cutoff} of the nominal one"))
+    return Picture(
+        width=WIDTH,
+        height=HEIGHT,
+        plot=plot,
+        x_ticks=[Tick(at=x(v), text=text) for v, text in _ticks(x_end, "voltage")],
+        y_ticks=[Tick(at=y(i), text=text) for i, text in _ticks(y_end, "current")],
+        line=(x(line.vce * (1.0 - high / line.ic)), y(high), x(line.vce), y(0.0)),
+        box=rect(vce_low, vce_high, ic_low, ic_high),
+        window=rect(*(aim_vce or (0.0, x_end)), *(aim_ic or (0.0, y_end))) if aim_ic or aim_vce else None,
+        q_point=(x(q.vce), y(q.ic)),
+        saturation=x(line.vce_sat),
+        legend=legend,
+        summary=f"Load line of candidate {c.rank} with its Q-point at {figure(q.ic, 'current')} and {figure(q.vce, 'voltage')}",
+    )
+
+
+def _window(target: Sequence[float | None] | None) -> tuple[float, float] | None:
+    """Both ends of a window; None where there is none or it is open."""
+    if not target or target[0] is None or target[-1] is None or target[0] == target[-1]:
+        return None
+    low, high = float(target[0]), float(target[-1])
+    return (low, high) if high < float("inf") and low >= 0.0 else None
+
+
+def _ticks(end: float, kind: str) -> list[tuple[float, str]]:
+    """Round numbers from 0 to an end, at most MOST_TICKS steps."""
+    raw = end / MOST_TICKS
+    decade = 10.0 ** floor(log10(raw))
+    step = next(m * decade for m in (1.0, 2.0, 2.5, 5.0, 10.0) if m * decade >= raw * (1.0 - 1e-9))
+    return [(k * step, format_quantity(k * step, kind)) for k in range(int(end / step * (1.0 + 1e-9)) + 1)]
