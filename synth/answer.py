@@ -86,8 +86,22 @@ class Share:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Pair:
+    """Two parts in place of one: how they are joined, ``series`` or ``parallel``, and their resistances [ohm].
+
+    The first carries more: the larger one in series, the smaller one in parallel.
+    """
+
+    join: str
+    ohms: tuple[float, float]
+
+
+@dataclass(frozen=True, kw_only=True)
 class Neighbour:
-    """One preferred step up or down in one role: its value [ohm], drift [-] (None once it saturates) and verdict."""
+    """One preferred step up or down in one role: its value [ohm], drift [-] (None once it saturates) and verdict.
+
+    `pair` is what makes up the value, None for a single part.
+    """
 
     role: str
     step: int
@@ -95,6 +109,7 @@ class Neighbour:
     drift: float | None
     verdict: Pass
     fails: tuple[str, ...]
+    pair: Pair | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -232,15 +247,17 @@ class Worst(Mapping[str, tuple[float, float]]):
 class Candidate:
     """A network with a value in every role, judged and explained.
 
-    Resistances of `resistors` and `base_feed` [ohm]; `worst` holds the extremes of IC [A] and VCE [V]; `centring` [-];
-    `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
-    the next best network, for the winner among several; `signal` holds least, nominal and greatest value of each
-    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none.
+    Resistances of `resistors` and `base_feed` [ohm]; `parts` holds the roles that two parts make up; `worst` holds the
+    extremes of IC [A] and VCE [V]; `centring` [-]; `supply_current` of the most loaded rail at nominal values [A];
+    `regions` are those of the deciding points; `rival` is the next best network, for the winner among several; `signal`
+    holds least, nominal and greatest value of each small-signal figure [S, ohm, - or V] of the first candidate, empty where
+    there is none.
     """
 
     rank: int
     network: str
     resistors: Mapping[str, float]
+    parts: Mapping[str, Pair] = field(default_factory=dict)
     nominal: Nominal
     worst: Worst
     regions: tuple[str, ...]
@@ -260,6 +277,18 @@ class Candidate:
     signal: Mapping[str, tuple[float, float, float]] = field(default_factory=dict)
     readings: Readings | None = None
     load_line: LoadLine | None = None
+
+    @property
+    def designators(self) -> dict[str, str]:
+        """Designator of every resistor to its role: the role itself, or with ``a`` and ``b`` behind it the parts of a pair."""
+        halves = {role: (f"{role}a", f"{role}b") if role in self.parts else (role,) for role in self.resistors}
+        return {who: role for role, every in halves.items() for who in every}
+
+    @property
+    def pieces(self) -> dict[str, float]:
+        """Resistance of every resistor by its designator [ohm]."""
+        each = (self.parts[role].ohms if role in self.parts else (whole,) for role, whole in self.resistors.items())
+        return dict(zip(self.designators, (ohms for every in each for ohms in every), strict=True))
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -521,11 +550,20 @@ def _network(n: NetworkResult) -> dict[str, Any]:
     return {**vars(n), "best": _plain(n.best), "against": None if n.against is None else _plain(vars(n.against))}
 
 
+def _neighbour(n: Neighbour) -> dict[str, Any]:
+    return {**_plain({name: x for name, x in vars(n).items() if name != "pair"}), **_pair_of(n.pair)}
+
+
+def _pair_of(pair: Pair | None) -> dict[str, Any]:
+    return {} if pair is None else {"pair": _plain(vars(pair))}
+
+
 def _candidate(c: Candidate) -> dict[str, Any]:
     return {
         "rank": c.rank,
         "network": c.network,
         "resistors": _plain(c.resistors),
+        "parts": {role: _plain(vars(pair)) for role, pair in c.parts.items()},
         "nominal": _plain(vars(c.nominal)),
         "worst": _plain(c.worst),
         "regions": list(c.regions),
@@ -534,7 +572,7 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         "supply_current": _plain(c.supply_current),
         "base_feed": _plain(c.base_feed),
         "budget": {q: [_plain(vars(s)) for s in shares] for q, shares in c.budget.items()},
-        "neighbours": [_plain(vars(n)) for n in c.neighbours],
+        "neighbours": [_neighbour(n) for n in c.neighbours],
         "roles": {role: _plain(vars(duty)) for role, duty in c.roles.items()},
         "limits": [_plain(vars(v)) for v in c.limits],
         "verdict": c.verdict,

@@ -13,10 +13,12 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from synth.answer import Compared, Duty, Neighbour, Nominal, Share
+from synth.answer import Compared, Duty, Neighbour, Nominal, Pair, Share
 from synth.box import Box, Meter, Values
 from synth.measures import ground_voltage
 from synth.networks.form import Array, Network
+from synth.parts import Parts
+from synth.preferred.pairs import JOINS, SERIES
 from synth.q_point import REGIONS, SATURATED
 from synth.quantities import format_quantity, format_resistance
 from synth.spaces import Goal, Index, Space, assess_all
@@ -264,12 +266,52 @@ def neighbours(space: Space, index: Index, goal: Goal) -> list[tuple[Neighbour, 
                 role=role,
                 step=step,
                 value=float(space.lists[role].nominal[row[j]]),
+                pair=pair_of(space.lists[role], int(row[j])),
                 drift=result.drift,
                 verdict="fail" if result.fails else "pass",
                 fails=result.fails,
             )
         )
     return [tuple(f) for f in found]
+
+
+def pair_of(part: Parts, k: int) -> Pair | None:
+    """The two parts that make up a resistance.
+
+    Parameters
+    ----------
+    part : Parts
+        Resistances of a role [ohm].
+    k : int
+        Which of them.
+
+    Returns
+    -------
+    Pair or None
+        None for a single part.
+    """
+    join, ohms = part.pieces(k)
+    return Pair(join=JOINS[join], ohms=(ohms[0], ohms[1])) if len(ohms) > 1 else None
+
+
+def made_of(ohms: float, pair: Pair | None) -> str:
+    """A resistance in words, with the parts that make it up.
+
+    Parameters
+    ----------
+    ohms : float
+        Resistance [ohm].
+    pair : Pair or None
+        Its two parts.
+
+    Returns
+    -------
+    str
+        ``4K7``; ``33K + 1K5`` in series, ``10K || 22K`` in parallel.
+    """
+    if pair is None:
+        return format_resistance(ohms)
+    return (" + " if pair.join == JOINS[SERIES] else " || ").join(map(format_resistance, pair.ohms))
 
 
 def percent(fraction: float) -> str:
@@ -379,7 +421,7 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
         )
     for role, duty in c.roles.items():
         lines.append(
-            f"{role.upper()} {format_resistance(c.resistors[role])}, {duty.between[0]} to {duty.between[1]}: "
+            f"{role.upper()} {made_of(c.resistors[role], c.parts.get(role))}, {duty.between[0]} to {duty.between[1]}: "
             f"{duty.meaning}; drops "
             f"{format_quantity(duty.drop, 'voltage')} at {format_quantity(duty.current, 'current')}."
         )
@@ -398,7 +440,7 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
         effect = "the transistor saturates" if n.drift is None else f"drift {percent(n.drift)}"
         if n.fails and n.drift is not None:
             effect += f", fails {' and '.join(n.fails)}"
-        steps.append(f"{n.role.upper()} {format_resistance(n.value)}: {effect}")
+        steps.append(f"{n.role.upper()} {made_of(n.value, n.pair)}: {effect}")
     if steps:
         lines.append(f"One value up or down: {'; '.join(steps)}.")
     judged = [v for v in c.limits if np.isfinite(v.margin)]

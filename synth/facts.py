@@ -12,6 +12,8 @@ from synth.box import Box, Extreme, Heat, Values
 from synth.catalogue import Derating, ResistorStyle, resistor_styles
 from synth.measures import BYPASS, POWER_OF_TRANSISTOR
 from synth.networks.form import Array
+from synth.parts import HALVES, Parts
+from synth.preferred.pairs import SINGLE
 from synth.signal import corner_capacitance
 from synth.stress import (
     JUNCTION_STATES,
@@ -56,23 +58,25 @@ def stresses(
     Returns
     -------
     list of dict
-        Role to stress, one mapping for each candidate [W, V].
+        Designator to stress, one mapping for each candidate [W, V]: the role, with ``a`` and ``b`` for the parts of a pair.
     """
     hot, law = box.temperature.high, law or box.extreme
     found: list[dict[str, Stress]] = [{} for _ in range(box.size)]
-    for role, part in box.parts.items():
-        power = law((f"p_{role}",), 1).value
-        volts = np.maximum(law((f"u_{role}",), 1).value, -law((f"u_{role}",), -1).value)
+    for role, who, part in _every_part(box):
+        power = law((f"p_{who}",), 1).value
+        volts = np.maximum(law((f"u_{who}",), 1).value, -law((f"u_{who}",), -1).value)
         style = styles.get(role)
         mounting = "chip" if style is None else style.style
         among = [row for row in resistor_styles().values() if row.style == mounting]
         for k in range(box.size):
             ohms = float(part.nominal[k])
+            if np.isnan(ohms):
+                continue
             needed = smallest_style(power[k], volts[k], ohms, hot, policy, among=among)
             number = None
             if style is not None and not bool(carries(style, power[k], volts[k], ohms, hot, policy)):
                 number = string_length(style, power[k], volts[k], ohms, hot, policy, band=float(part.band[k]))
-            found[k][role] = Stress(
+            found[k][who] = Stress(
                 power=float(power[k]),
                 voltage=float(volts[k]),
                 style=None if style is None else style.name,
@@ -81,6 +85,22 @@ def stresses(
                 smallest=None if needed is None else needed.name,
                 string=number,
             )
+    return found
+
+
+def _every_part(box: Box) -> list[tuple[str, str, Parts]]:
+    """Role, designator and values of every resistor; the value is NaN where a candidate has no such part."""
+    found = []
+    for role, part in box.parts.items():
+        if part.pairs is None:
+            found.append((role, role, part))
+            continue
+        alone = part.pairs.join == SINGLE
+        if alone.any():
+            found.append((role, role, replace(part, nominal=np.where(alone, part.nominal, np.nan))))
+        if not alone.all():
+            for half, one in zip(HALVES, part.pairs.halves, strict=True):
+                found.append((role, f"{role}{half}", replace(one, nominal=np.where(alone, np.nan, one.nominal))))
     return found
 
 

@@ -257,6 +257,26 @@ class Parts:
         every = np.arange(self.nominal.size, dtype=np.int32)
         return Pairs(base=self, join=np.zeros(self.nominal.size, dtype=np.int8), first=every, second=every)
 
+    def position(self, ohms: float, pieces: Sequence[float] = ()) -> int:
+        """Where a resistance is.
+
+        Parameters
+        ----------
+        ohms : float
+            Resistance [ohm].
+        pieces : sequence of float
+            Nominal resistances of its parts, if it is a pair [ohm].
+
+        Returns
+        -------
+        int
+            Position of the nearest resistance, among equal ones of the one with these parts [-].
+        """
+        off = np.abs(self.nominal - ohms)
+        nearest = np.flatnonzero(off == off.min())
+        same = (int(k) for k in nearest if not pieces or self.pieces(int(k))[1] == tuple(pieces))
+        return next(same, int(nearest[0]))
+
     def pieces(self, k: int) -> tuple[int, tuple[float, ...]]:
         """What one element is made up of.
 

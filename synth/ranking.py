@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 
 from synth.answer import Alternative, Candidate
 from synth.networks import NETWORKS
@@ -14,7 +14,7 @@ DIGITS = 12
 """Significant digits of drift that order candidates; beyond them arithmetic noise would."""
 
 
-def order_key(candidate: Candidate, roles: Sequence[str]) -> tuple[object, ...]:
+def order_key(candidate: Candidate, roles: Sequence[str], on_board: Collection[float] = ()) -> tuple[object, ...]:
     """Key that sorts candidates from best to worst.
 
     Parameters
@@ -23,22 +23,28 @@ def order_key(candidate: Candidate, roles: Sequence[str]) -> tuple[object, ...]:
         Any rank.
     roles : sequence of str
         Role order of its network.
+    on_board : collection of float
+        Values that the board has already [ohm].
 
     Returns
     -------
     tuple
-        Drift rounded to 12 significant digits, centring, supply current, number of resistors, number of distinct values,
-        network name, resistor values in role order.
+        Drift rounded to 12 significant digits, number of distinct values that the board does not have, centring, supply
+        current, number of resistors, number of distinct values, network name, resistor values in role order, values of
+        the parts.
     """
     values = [candidate.resistors[role] for role in roles if role in candidate.resistors]
+    pieces = candidate.pieces.values()
     return (
         float(f"{candidate.drift.q_point:.{DIGITS - 1}e}"),
+        len(set(pieces) - set(on_board)) if on_board else 0,
         candidate.centring,
         candidate.supply_current,
-        len(values),
-        len(set(values)),
+        len(pieces),
+        len(set(pieces)),
         candidate.network,
         tuple(values),
+        tuple(pieces),
     )
 
 
@@ -71,8 +77,8 @@ def alternatives(candidates: Sequence[Candidate]) -> tuple[Alternative, ...]:
         text = f"base feed of {format_quantity(light.base_feed, 'resistance')} loads the signal less than "
         text += format_quantity(best.base_feed, "resistance")
         found.append(Alternative(reason="highest base-feed resistance", rank=light.rank, text=text))
-    plain = min(candidates, key=lambda c: (len(set(c.resistors.values())), c.rank))
-    count, first = len(set(plain.resistors.values())), len(set(best.resistors.values()))
+    plain = min(candidates, key=lambda c: (len(set(c.pieces.values())), c.rank))
+    count, first = len(set(plain.pieces.values())), len(set(best.pieces.values()))
     if count < first:
         text = f"{count} different value{'s' if count > 1 else ''} to stock instead of {first}"
         found.append(Alternative(reason="fewest distinct values", rank=plain.rank, text=text))

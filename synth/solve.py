@@ -21,6 +21,7 @@ from synth.explain import (
     duties,
     neighbours,
     nominal_points,
+    pair_of,
     percent,
     sentences,
 )
@@ -188,7 +189,8 @@ def _is_of(candidate: Candidate, space: Space) -> bool:
 
 
 def _index(space: Space, candidate: Candidate) -> Index:
-    position = [int(np.argmin(np.abs(space.lists[r].nominal - candidate.resistors[r]))) for r in space.roles]
+    made = {role: pair.ohms for role, pair in candidate.parts.items()}
+    position = [space.lists[role].position(candidate.resistors[role], made.get(role, ())) for role in space.roles]
     return np.array([position], dtype=np.int32)
 
 
@@ -255,7 +257,7 @@ def _candidates(outcome: Outcome, goal: Goal, top: int, stage: Stage) -> tuple[C
     for space in dict.fromkeys(f.space for f in outcome.found):
         index = np.array([f.index for f in outcome.found if f.space is space], dtype=np.int32)
         built += [(c, space) for c in _build(space, index, goal, any_region=False)]
-    built.sort(key=lambda pair: order_key(pair[0], pair[1].roles))
+    built.sort(key=lambda pair: order_key(pair[0], pair[1].roles, stage.on_board))
     listed = built[:top]
     final: dict[int, Candidate] = {}
     for space in dict.fromkeys(s for _, s in listed):
@@ -371,6 +373,7 @@ def _build(
         for need in space.requirements
     ]
     feed, names = space.base_feed(box), space.fitted(index)
+    made = [{role: pair_of(part, k) for role, part in box.parts.items()} for k in range(box.size)]
     found = []
     for k in range(box.size):
         point = points[k]
@@ -387,6 +390,7 @@ def _build(
                 rank=0,
                 network=space.network.name,
                 resistors=names[k],
+                parts={role: pair for role, pair in made[k].items() if pair is not None},
                 nominal=point,
                 worst=Worst(
                     **{q: (float(ends[q, -1].value[k]), float(ends[q, 1].value[k])) for q in dict.fromkeys(q for q, _ in ends)},

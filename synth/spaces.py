@@ -17,11 +17,12 @@ from synth.measures import POWER_OF_TRANSISTOR, is_figure
 from synth.networks import NETWORKS
 from synth.networks.form import Array, Network
 from synth.parts import Parts
+from synth.preferred import JOINS, pair_up
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
 from synth.rss import root_sum_square
 from synth.signal import Signal
-from synth.stage import Stage, StageError
+from synth.stage import RoleSetting, Stage, StageError
 from synth.transistor import Transistor
 
 MOST_VBE = 2.0
@@ -302,8 +303,9 @@ def spaces_of(stage: Stage, without: Collection[str] = ()) -> list[Space]:
     list of Space
         In the order of the stage's networks.
     """
+    known: dict[RoleSetting, Parts] = {}
     return [
-        _space(stage, network, roles, {role: _parts(stage, role) for role in roles}, without)
+        _space(stage, network, roles, {role: _list_of(stage, role, known) for role in roles}, without)
         for network in stage.networks
         for roles in stage.roles_used(network)
     ]
@@ -368,7 +370,7 @@ def among_values(stage: Stage, space: Space) -> tuple[Space, Index]:
     """
     lists, index = {}, []
     for role in space.roles:
-        both = space.lists[role].joined(_parts(stage, role))
+        both = space.lists[role].joined(_choices(stage, role))
         # Of equal values the fitted one comes first and stays.
         _, first = np.unique(both.nominal, return_index=True)
         lists[role] = both.take(first)
@@ -410,6 +412,26 @@ def _space(
         requirements=tuple(need for need in needs if need.limit not in without),
         ground="common" if "vee" in stage.rails and stage.ground == "middle" else stage.ground,
     )
+
+
+def _list_of(stage: Stage, role: str, known: dict[RoleSetting, Parts]) -> Parts:
+    """Everything that a role may be; roles that may be the same share one list."""
+    setting = replace(stage.role(role), use="yes")
+    if setting not in known:
+        known[setting] = _choices(stage, role)
+    return known[setting]
+
+
+def _choices(stage: Stage, role: str) -> Parts:
+    """Single values of a role, and pairs of them where the stage allows any."""
+    setting, single = stage.role(role), _parts(stage, role)
+    if setting.pairs == "no":
+        return single
+    joins = frozenset(JOINS[1:]) if setting.pairs == "yes" else frozenset({setting.pairs})
+    # The range binds the totals as it does the parts, but not values named one by one.
+    low, high = (0.0, math.inf) if setting.values else (setting.range.low, setting.range.high)
+    rated = setting.style is not None
+    return Parts.of_list(pair_up(stage.value_list(role), joins, low, high, rated=rated, on_board=stage.on_board), single)
 
 
 def _parts(stage: Stage, role: str, values: Sequence[float] = ()) -> Parts:

@@ -95,6 +95,8 @@ class Stage:
         What is given of the transistor that is to take the place of today's, by key, SI units; empty for none.
     roles : mapping of str to RoleSetting
         What each role of the networks may be.
+    on_board : tuple of float
+        Values that the board has already, ascending [ohm].
     assumed : tuple of Assumption
         What was not given, in the order of the stage file.
     warnings : tuple of StageWarning
@@ -134,6 +136,7 @@ class Stage:
     values: Mapping[str, float]
     replacement: Mapping[str, Any]
     roles: Mapping[str, RoleSetting]
+    on_board: tuple[float, ...]
     assumed: tuple[Assumption, ...] = field(compare=False)
     warnings: tuple[StageWarning, ...] = field(compare=False)
     given: Mapping[str, str] = field(compare=False)
@@ -425,6 +428,7 @@ class Stage:
                 role: {f.name: _plain(getattr(setting, f.name)) for f in dataclasses.fields(setting)}
                 for role, setting in self.roles.items()
             },
+            "on_board": list(self.on_board),
             "ambient": {"temperature": _plain(self.temperature)},
             "limits": {name: _plain(interval) for name, interval in self.limits.items()},
             "values": dict(self.values),

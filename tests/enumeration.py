@@ -22,7 +22,7 @@ from synth.box import Box, Meter
 from synth.catalogue import ResistorStyle, derating, deratings, resistor_style
 from synth.limits import Surroundings, judge, requirements
 from synth.networks import NETWORKS, Network
-from synth.parts import Parts
+from synth.parts import Pairs, Parts
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
 from synth.signal import Signal
@@ -81,10 +81,19 @@ def order_figures(space: Space, index: Index, goal: Goal) -> list[tuple[object, 
     every = [np.abs(reached[name] / target - 1.0) for name, target in targets.items() if target is not None]
     off = np.max(np.broadcast_arrays(*every), axis=0)
     ohms = np.stack([box.parts[role].nominal for role in space.roles], axis=1)
+    bought = [[ohm for role in space.roles for ohm in _bought(box.parts[role], k)] for k in range(box.size)]
     return [
-        (float(off[k]), float(supply[k]), len(row), len(set(row)), space.network.name, tuple(row))
+        (float(off[k]), float(supply[k]), len(bought[k]), len(set(bought[k])), space.network.name, tuple(row))
         for k, row in enumerate(ohms.tolist())
     ]
+
+
+def _bought(part: Parts, k: int) -> list[float]:
+    """Resistances of the one or two resistors that a candidate has in a role."""
+    if part.pairs is None:
+        return [float(part.nominal[k])]
+    positions = [part.pairs.first[k], part.pairs.second[k]][: 1 if part.pairs.join[k] == 0 else 2]
+    return [float(part.pairs.base.nominal[at]) for at in positions]
 
 
 def enumerate_all(spaces: Sequence[Space], goal: Goal, *, brute: bool = False) -> list[Row]:
@@ -280,6 +289,28 @@ def _list(rng: np.random.Generator, around: float, length: int) -> Parts:
     return Parts(nominal=nominal, band=rng.choice(BANDS, length), tcr_low=tcr[:, 0], tcr_high=tcr[:, 1])
 
 
+def _paired(rng: np.random.Generator, around: float, length: int) -> Parts:
+    """Single resistors of unlike bands, and some of the series and parallel pairs that they make up."""
+    single = _list(rng, around, int(rng.integers(2, 4)))
+    if rng.random() < 0.5:
+        # As a series has it: one band for all.
+        single = replace(single, **{name: np.full(single.nominal.size, getattr(single, name)[0]) for name in BAND})
+    n = range(single.nominal.size)
+    made = [(0, a, a) for a in n] + [(join, a, b) for join in (1, 2) for a in n for b in n if a <= b]
+    chosen = np.array([made[k] for k in rng.permutation(len(made))[:length]])
+    join, first, second = chosen.T
+    a, b = single.nominal[first], single.nominal[second]
+    total = np.where(join == 0, a, np.where(join == 1, a + b, 1.0 / (1.0 / a + 1.0 / b)))
+    order = np.argsort(total)
+    return Parts.of_pairs(
+        Pairs(base=single, join=join[order].astype(np.int8), first=first[order].astype(np.int32),
+              second=second[order].astype(np.int32))
+    )  # fmt: skip
+
+
+BAND = ("band", "tcr_low", "tcr_high")
+
+
 def _limits(
     rng: np.random.Generator, device: Transistor, goal: Goal, r: Mapping[str, float], vcc: float, stressed: bool
 ) -> dict[str, Interval]:
@@ -328,6 +359,7 @@ def random_spaces(
     most: int = 400,
     leakages: Sequence[str] = LEAKAGES,
     stressed: bool = False,
+    paired: bool = False,
 ) -> tuple[list[Space], Goal]:
     """Spaces of some networks, one for each variant of rails and roles drawn, that share device, goal and windows."""
     ic = 10.0 ** rng.uniform(-5.0, -2.0)
@@ -374,6 +406,10 @@ def random_spaces(
         if reference is not None:
             limits = {**limits, "reference_current": Interval(reference.current * rng.uniform(0.05, 0.6), INF)}
         lengths = _lengths(rng, len(roles), most)
+        lists = {role: _list(rng, r[role], n) for role, n in zip(roles, lengths, strict=True)}
+        if paired:
+            pairs = {role: n for role, n in zip(roles, lengths, strict=True) if rng.random() < 0.7}
+            lists |= {role: _paired(rng, r[role], n) for role, n in pairs.items()}
         styles = {}
         if stressed:
             # A style such that its rating is somewhere near what the resistor has to carry.
@@ -382,14 +418,15 @@ def random_spaces(
         spaces.append(
             Space(
                 network=network,
-                lists={role: _list(rng, r[role], n) for role, n in zip(roles, lengths, strict=True)},
+                lists=lists,
                 transistor=device,
                 rails=own,
                 temperature=ambient,
                 requirements=requirements(
                     network,
                     Surroundings(rails=own, roles=roles, reference=reference, vce_sat=device.vce_sat, hot=ambient.high,
-                                 styles=styles, ratings=ratings, derating=policy),
+                                 styles=styles, ratings=ratings, derating=policy,
+                                 paired=[role for role in roles if lists[role].pairs is not None]),
                     limits,
                     limits if rng.random() < 0.5 else (),
                     windows,
@@ -483,10 +520,23 @@ def place(box: Box, u: Mapping[str, Array]) -> dict[str, Array]:
         low, high = ref.voltage.low + np.minimum(*ends), ref.voltage.high + np.maximum(*ends)
         found["r_ref"], found["vref"] = slope, low + (high - low) * u["delta_ref"] - slope * ref.current
     for role, part in box.parts.items():
-        ends = (part.tcr_low * rise, part.tcr_high * rise)
-        low, high = 1.0 - part.band + np.minimum(*ends), 1.0 + part.band + np.maximum(*ends)
-        found[role] = part.nominal * (low + (high - low) * u[role])
+        low, high = _ends(part, rise)
+        found[role] = low + (high - low) * u[role]
     return found
+
+
+def _ends(part: Parts, rise: Array) -> tuple[Array, Array]:
+    """Least and greatest resistance; of a pair from the conductances or resistances of its parts, each at its own end."""
+    if part.pairs is not None:
+        base = part.pairs.base
+        halves = [_ends(base.take(at), rise) for at in (part.pairs.first, part.pairs.second)]
+        (a, c), (b, d) = halves
+        join = part.pairs.join
+        low = np.where(join == 0, a, np.where(join == 1, a + b, 1.0 / (1.0 / a + 1.0 / b)))
+        return low, np.where(join == 0, c, np.where(join == 1, c + d, 1.0 / (1.0 / c + 1.0 / d)))
+    ends = (part.tcr_low * rise, part.tcr_high * rise)
+    low, high = 1.0 - part.band + np.minimum(*ends), 1.0 + part.band + np.maximum(*ends)
+    return part.nominal * low, part.nominal * high
 
 
 def worst(box: Box, quantity: str, direction: int, temperatures: int = 5, rounds: int = 18) -> Array:

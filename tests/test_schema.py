@@ -67,6 +67,7 @@ FEASIBLE: dict[str, dict[str, Any]] = {
     "no spread at all": PLAIN | {"hfe": "200", "vbe": "0.65 V", "tcr": "0 ppm/K", "temperature": "25 °C"},
     "warnings": PLAIN | {"supply": "60 V", "vce": "30 V", "ic": "20 mA", "type": "BC847B", "hfe": None,
                          "limits_transistor_stress": "none"},
+    "pairs": PLAIN | {"series": "E6", "range": "470 ohm : 47 kohm", "pairs": True, "on_board": "1k, 10k"},
 }
 INFEASIBLE: dict[str, dict[str, Any]] = {
     "window too narrow": PLAIN | {"ic": "2 mA ± 1 %"},

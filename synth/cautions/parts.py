@@ -7,6 +7,7 @@ from functools import partial
 
 import numpy as np
 
+from synth.answer import Candidate
 from synth.catalogue import ResistorStyle, derating, resistor_styles
 from synth.cautions.form import CautionRule, Seen, share
 from synth.explain import dissipation, percent
@@ -95,8 +96,10 @@ def _high_voltage(seen: Seen) -> Iterator[str]:
 
 
 def _styles(seen: Seen) -> Iterator[tuple[str, ResistorStyle | None]]:
-    for role in seen.candidate.stress:
-        yield role, seen.space.styles.get(role)
+    """Designator and style of every resistor that was looked at."""
+    for who, role in seen.candidate.designators.items():
+        if who in seen.candidate.stress:
+            yield who, seen.space.styles.get(role)
 
 
 def _resistor_half(seen: Seen) -> Iterator[str]:
@@ -122,7 +125,7 @@ def _working_voltage(seen: Seen) -> Iterator[str]:
         volts = seen.candidate.stress[role].voltage
         if style is None and volts > LEAST_WORKING:
             yield (
-                f"{role.upper()} {format_resistance(seen.candidate.resistors[role])} holds up to "
+                f"{role.upper()} {format_resistance(seen.candidate.pieces[role])} holds up to "
                 f"{format_quantity(volts, 'voltage')} and no style is given: of high values the working voltage counts, not "
                 "the "
                 f"power, and that of small chips ends at {format_quantity(LEAST_WORKING, 'voltage')}."
@@ -152,22 +155,31 @@ def _resistor_when_shorted(seen: Seen) -> Iterator[str]:
         style, policy = seen.space.styles.get(role), seen.space.derating
         if style is None:
             continue
-        ohms = c.resistors[role]
-        power, volts = (seen.span / total) ** 2 * ohms, seen.span * ohms / total
-        if not bool(carries(style, power, volts, ohms, hot, policy)):
-            least = format_quantity(float(allowed_power(style, hot, policy)), "power")
-            yield (
-                f"With the transistor shorted or saturated {role.upper()} {format_resistance(ohms)} carries "
-                f"{format_quantity(power, 'power')} at {format_quantity(volts, 'voltage')}, more than the {least} that style "
-                f"{style.name} may have here: it gets hot or burns open."
-            )
+        for who, ohms, volts in _drops(c, role, seen.span / total):
+            power = volts**2 / ohms
+            if not bool(carries(style, power, volts, ohms, hot, policy)):
+                least = format_quantity(float(allowed_power(style, hot, policy)), "power")
+                yield (
+                    f"With the transistor shorted or saturated {who.upper()} {format_resistance(ohms)} carries "
+                    f"{format_quantity(power, 'power')} at {format_quantity(volts, 'voltage')}, more than the {least} that "
+                    f"style {style.name} may have here: it gets hot or burns open."
+                )
+
+
+def _drops(candidate: Candidate, role: str, current: float) -> Iterator[tuple[str, float, float]]:
+    """Designator, resistance and voltage of each part of a role that a current flows through, at nominal values."""
+    whole, pair = candidate.resistors[role], candidate.parts.get(role)
+    for who, of in candidate.designators.items():
+        if of == role:
+            ohms = candidate.pieces[who]
+            yield who, ohms, current * (ohms if pair is not None and pair.join == "series" else whole)
 
 
 def _resistor_self_heating(seen: Seen) -> Iterator[str]:
     for role, style in _styles(seen):
         rise = 0.0 if style is None else float(temperature_rise(style, seen.candidate.stress[role].power))
         if rise > WARM_RESISTOR:
-            part = seen.box.parts[role]
+            part = seen.box.parts[seen.candidate.designators[role]]
             more = rise * max(abs(float(part.tcr_low[0])), abs(float(part.tcr_high[0])))
             yield (
                 f"{role.upper()} heats itself by up to {rise:.0f} K, which with its temperature coefficient adds "

@@ -6,9 +6,9 @@ import csv
 import io
 
 from synth.answer import Answer, Candidate
-from synth.explain import percent
+from synth.explain import made_of, percent
 from synth.present.terminal import SIGNAL_WORDS, ends_words, figure, limit_words, span
-from synth.quantities import format_quantity, format_resistance
+from synth.quantities import format_quantity
 
 FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
 """First characters at which a spreadsheet takes a text for a formula."""
@@ -55,7 +55,8 @@ def to_csv(answer: Answer) -> str:
                 writer.writerow(["would do", inert(key), inert(text), r.drift])
         return out.getvalue()
     roles = list(dict.fromkeys(role for c in answer.candidates for role in c.resistors))
-    head = ["rank", "network", "verdict", *(f"{role}_ohm" for role in roles)]
+    paired = [role for role in roles if any(role in c.parts for c in answer.candidates)]
+    head = ["rank", "network", "verdict", *(f"{role}_ohm" for role in roles), *(f"{role}_parts" for role in paired)]
     head += ["ic_a", "ic_min_a", "ic_max_a", "vce_v", "vce_min_v", "vce_max_v"]
     others = [q for q in (answer.candidates[0].worst if answer.candidates else ()) if q not in ("ic", "vce")]
     head += [column for q in others for column in (f"{q}_v", f"{q}_min_v", f"{q}_max_v")]
@@ -64,6 +65,7 @@ def to_csv(answer: Answer) -> str:
     writer.writerow(head)
     for c in answer.candidates:
         row: list[object] = [c.rank, inert(c.network), c.verdict, *(c.resistors.get(role, "") for role in roles)]
+        row += [made_of(c.resistors[role], c.parts.get(role)) if role in c.resistors else "" for role in paired]
         row += [c.nominal.ic, *c.worst["ic"], c.nominal.vce, *c.worst["vce"]]
         row += [figure for q in others for figure in (getattr(c.nominal, q), *c.worst[q])]
         row += [c.drift.ic, "" if c.drift.vce is None else c.drift.vce, *(c.drift.of()[q] for q in others)]
@@ -152,7 +154,7 @@ def to_markdown(answer: Answer) -> str:
         shown = [f"{q.upper()} over the box" for q in best.worst]
         rows = [["rank", "network", *map(str.upper, roles), *shown, "drift", "verdict"]]
         for c in answer.candidates:
-            values = [format_resistance(c.resistors[r]) if r in c.resistors else "–" for r in roles]
+            values = [escaped(made_of(c.resistors[r], c.parts.get(r))) if r in c.resistors else "–" for r in roles]
             ends = [span(*c.worst[q], "current" if q == "ic" else "voltage") for q in best.worst]
             rows.append([str(c.rank), escaped(c.network), *values, *ends, percent(c.drift.q_point), c.verdict])
         parts += ["## Candidates", _table(rows), "## Limits"]

@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from math import inf
 
 from synth.answer import Answer, Candidate, Outlook, Verdict
-from synth.explain import cause_words, percent, point_words
+from synth.explain import cause_words, made_of, percent, point_words
 from synth.quantities import format_quantity, format_resistance
 from synth.stage_keys import KEYS
 
@@ -96,7 +96,8 @@ def resistors(candidate: Candidate) -> str:
     str
         ``R1 38K3, R2 21K, ...``.
     """
-    return ", ".join(f"{role.upper()} {format_resistance(value)}" for role, value in candidate.resistors.items())
+    made = candidate.parts
+    return ", ".join(f"{role.upper()} {made_of(value, made.get(role))}" for role, value in candidate.resistors.items())
 
 
 def table(rows: Sequence[Sequence[str]], right: Sequence[int] = (), indent: str = "  ") -> str:
@@ -219,14 +220,15 @@ def _ranking(candidates: Sequence[Candidate]) -> str:
     same = len({(c.network, tuple(c.resistors)) for c in candidates}) == 1
     roles = list(candidates[0].resistors) if same else []
     head = ["rank", *(["network"] if not same else []), *([r.upper() for r in roles] if same else ["resistors"])]
-    # Beside the names of networks and roles there is no room for the supply current.
+    # Beside the names of networks and roles, or beside pairs, there is no room for the supply current.
     # The voltage that has the target, if another than VCE has it.
     volts = list(candidates[0].worst)[-1]
-    head += ["IC over the box", f"{volts.upper()} over the box", "drift", *(["supply"] if same else [])]
+    slim = same and not any(c.parts for c in candidates)
+    head += ["IC over the box", f"{volts.upper()} over the box", "drift", *(["supply"] if slim else [])]
     rows = [head]
     for c in candidates:
-        values = [format_resistance(c.resistors[r]) for r in roles] if same else [
-            " ".join(f"{r.upper()} {format_resistance(v)}" for r, v in c.resistors.items())
+        values = [made_of(c.resistors[r], c.parts.get(r)) for r in roles] if same else [
+            ("; " if c.parts else " ").join(f"{r.upper()} {made_of(v, c.parts.get(r))}" for r, v in c.resistors.items())
         ]
         rows.append(
             [
@@ -236,7 +238,7 @@ def _ranking(candidates: Sequence[Candidate]) -> str:
                 span(*c.worst["ic"], "current"),
                 span(*c.worst[volts], "voltage"),
                 percent(c.drift.q_point),
-                *([figure(c.supply_current, "current")] if same else []),
+                *([figure(c.supply_current, "current")] if slim else []),
             ]
         )
     return table(rows, right=(0, *(j for j, name in enumerate(head) if name in ("drift", "supply"))))
@@ -328,7 +330,7 @@ def _stress(answer: Answer, c: Candidate) -> str:
         if s.string is not None:
             smallest += f"; or {s.string} x {s.style} in series"
         power, volts = _used(s.power, s.power_allowed, "power"), _used(s.voltage, s.voltage_allowed, "voltage")
-        rows.append([f"{role.upper()} {format_resistance(c.resistors[role])}", s.style or "–", power, volts, smallest])
+        rows.append([f"{role.upper()} {format_resistance(c.pieces[role])}", s.style or "–", power, volts, smallest])
     lines = [table(rows)]
     load = c.transistor
     labels = {"power": ("dissipates", "power"), "vceo": ("cut off it holds", "voltage"), "ic": ("carries", "current")}

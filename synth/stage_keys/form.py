@@ -34,6 +34,9 @@ None counts as not given.
 NONE = "none"
 """Text that switches a limit off."""
 
+SWITCH = {True: "yes", False: "no"}
+"""What a truth value stands for where both words are choices."""
+
 NEAREST_SHOWN = 3
 LONGEST_NUMBER = 1024
 """Length above which a whole number is beyond the floating-point range [bit]."""
@@ -234,6 +237,8 @@ class Key:
         if self.many and self.kind:
             return self._item_text(given)
         if not self.kind:
+            if isinstance(given, bool) and set(SWITCH.values()) <= set(self.choices):
+                return SWITCH[given]
             if isinstance(given, os.PathLike):
                 return str(os.fspath(given))
             raise StageError(self.path, given, "which is no text", self.accepted, [self.example])
@@ -271,6 +276,8 @@ class Key:
     def _toml_item(self, item: object) -> str:
         if isinstance(item, str):
             return item
+        if isinstance(item, bool) and set(SWITCH.values()) <= set(self.choices):
+            return SWITCH[item]
         if isinstance(item, int) and item.bit_length() > LONGEST_NUMBER:
             raise StageError(self.path, None, "is a number beyond every quantity", self.accepted)
         is_number = isinstance(item, int | float) and not isinstance(item, bool)

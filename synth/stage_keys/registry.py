@@ -256,6 +256,17 @@ def _resistors(role: str) -> Iterable[Key]:
         otherwise="no style",
     )  # fmt: skip
     yield key(
+        "pairs", form="choice", choices=("no", "yes", "series", "parallel"), example="yes",
+        meaning=f"Whether two parts{of} in series or parallel may take the place of one; true and false serve too.",
+        otherwise="no pairs",
+    )  # fmt: skip
+    if not role:
+        yield key(
+            "on_board", form="quantities", kind="resistance", example="1k, 10k",
+            meaning="Values that the board has already; of equals the candidate with the fewest others comes first.",
+            otherwise="none",
+        )  # fmt: skip
+    yield key(
         "range", form="limit", kind="resistance", rule=">=", example="10 ohm : 10 Mohm", default="10 ohm : 10 Mohm",
         meaning=f"Range of values{of} that the search may take.",
     )  # fmt: skip

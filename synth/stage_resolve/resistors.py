@@ -21,6 +21,7 @@ LARGEST_TOLERANCE = 0.5
 """Largest tolerance and change over life that is read [-]."""
 
 Use = Literal["yes", "no", "either"]
+Pairing = Literal["no", "yes", "series", "parallel"]
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -45,6 +46,8 @@ class RoleSetting:
         Range of values that a search may take, both ends finite [ohm].
     values : tuple of float
         Only values that the role may have [ohm]; empty for any.
+    pairs : {"no", "yes", "series", "parallel"}
+        Which pairs may take the place of one part.
     """
 
     use: Use
@@ -56,6 +59,7 @@ class RoleSetting:
     style: str | None
     range: Interval
     values: tuple[float, ...]
+    pairs: Pairing
 
 
 def rival(path: str) -> str | None:
@@ -206,6 +210,14 @@ def read_fitted(request: Request) -> dict[str, float]:
     return values
 
 
+def read_on_board(request: Request) -> tuple[float, ...]:
+    """Values that the board has already, ascending [ohm]."""
+    values: tuple[float, ...] = request.value("resistors.on_board") or ()
+    if values and min(values) <= 0.0:
+        raise request.refusal("resistors.on_board", "which goes down to 0 ohm", "resistances above 0 ohm")
+    return tuple(sorted(set(values)))
+
+
 def read_stock(request: Request, roles: Mapping[str, RoleSetting]) -> dict[str, ValueList]:
     """The whole stock list of each role that has one; a list that roles share is read once."""
     read: dict[tuple[Path, float, float, float], ValueList] = {}
@@ -285,6 +297,7 @@ def _resistor(request: Request, role: str, common: RoleSetting | None) -> RoleSe
         style=_style(request, _source(request, role, "style")),
         range=_range(request, setting("range"), _source(request, role, "range")),
         values=(),
+        pairs=request.value(_source(request, role, "pairs")) or "no",
     )
 
 
