@@ -21,6 +21,7 @@ from synth.answer import Answer
 from synth.cli import main
 from synth.explain import percent
 from synth.present.page import to_html
+from synth.present.page.circuit_view import circuit
 from synth.present.page.lead import count_words
 from synth.present.page.load_line import picture
 from synth.present.page.parts import bars, used
@@ -180,6 +181,25 @@ def test_load_line_picture_is_to_scale() -> None:
             # Seven digits of the tick's type are some 50 wide.
             assert b.at - a.at > 50.0
         assert len(p.y_ticks) >= 3
+
+
+def test_circuit_shows_each_value_beside_its_designator_and_nothing_that_is_markup() -> None:
+    answer = ANSWERS["pnp, positive ground"]()
+    for c in answer.candidates:
+        drawn = circuit(answer, c)
+        texts = [t.text for t in drawn.texts]
+        for role, ohm in c.resistors.items():
+            assert texts[texts.index(role.upper()) + 1] == format_resistance(ohm)
+        assert {s.element for s in drawn.shapes} <= {"path", "circle", "polygon"}
+        assert {s.kind for s in drawn.shapes} <= {"wire", "full", "open", "dashed"}
+        assert not any("style" in s.place for s in drawn.shapes)
+        left, top, width, height = map(float, drawn.box.split())
+        assert all(left <= t.x <= left + width and top <= t.y <= top + height for t in drawn.texts)
+
+
+def test_load_lines_of_one_answer_share_their_axes() -> None:
+    answer = found()
+    assert len({tuple((t.at, t.text) for t in (*p.x_ticks, *p.y_ticks)) for c in answer.candidates if (p := picture(answer, c))}) == 1
 
 
 def test_bars_of_a_budget_share_one_scale() -> None:

@@ -8,6 +8,7 @@ from math import inf
 
 from synth.answer import Answer, Candidate, Load
 from synth.explain import cause_words, percent, point_words
+from synth.present.page.circuit_view import Circuit, circuit
 from synth.present.page.load_line import Picture, picture
 from synth.present.page.parts import Cell, Table, bars, number, used, words
 from synth.present.terminal import SIGNAL_WORDS, figure, limit_words, resistors, span
@@ -28,6 +29,7 @@ class View:
     verdict: str
     drift: str
     picture: Picture | None
+    circuit: Circuit
     q_point: Table
     roles: Table
     readings: Table | None
@@ -108,6 +110,7 @@ def candidate_view(answer: Answer, c: Candidate) -> View:
         verdict=c.verdict,
         drift=percent(c.drift.q_point),
         picture=picture(answer, c),
+        circuit=circuit(answer, c),
         q_point=_q_point(answer, c),
         roles=_roles(c),
         readings=_readings(c),

@@ -19,6 +19,8 @@ WIDTH, HEIGHT = 440.0, 300.0
 LEFT, RIGHT, TOP, BOTTOM = 66.0, 20.0, 24.0, 46.0
 ROOM = 1.04
 """How far the axes go beyond what is drawn [-]."""
+STEEP = 4.0
+"""How many times the greatest IC the current axis reaches at most [-]."""
 MOST_TICKS = 6
 
 
@@ -79,10 +81,7 @@ def picture(answer: Answer, c: Candidate) -> Picture | None:
     target = answer.stage.get("target", {})
     aim_ic, aim_vce = _window(target.get("ic")), _window(target.get("vce"))
     (ic_low, ic_high), (vce_low, vce_high) = c.worst.ic, c.worst.vce
-    x_end = ROOM * max(line.vce, vce_high, *([aim_vce[1]] if aim_vce else []))
-    y_end = ROOM * max(line.ic, ic_high)
-    # A line that is steep against the Q-point would leave it on the floor; the window of interest is four times its IC.
-    y_end = min(y_end, max(4.0 * ic_high, ROOM * (aim_ic[1] if aim_ic else 0.0)))
+    x_end, y_end = _ends(answer.candidates, aim_ic, aim_vce)
     plot = Rect(x=LEFT, y=TOP, width=WIDTH - LEFT - RIGHT, height=HEIGHT - TOP - BOTTOM)
 
     def x(v: float) -> float:
@@ -123,6 +122,18 @@ def picture(answer: Answer, c: Candidate) -> Picture | None:
         legend=legend,
         summary=f"Load line of candidate {c.rank} with its Q-point at {figure(q.ic, 'current')} and {figure(q.vce, 'voltage')}",
     )
+
+
+def _ends(
+    candidates: Sequence[Candidate], aim_ic: tuple[float, float] | None, aim_vce: tuple[float, float] | None
+) -> tuple[float, float]:
+    """Ends of both axes, the same for all candidates, so that two of them can be compared by eye [V, A]."""
+    known = [(c, c.load_line) for c in candidates if c.load_line is not None]
+    volts = max(max(line.vce, c.worst.vce[1]) for c, line in known)
+    amps = max(max(line.ic, c.worst.ic[1]) for c, line in known)
+    # A line that is steep against the Q-point would leave it on the floor.
+    amps = min(amps, STEEP * max(c.worst.ic[1] for c, _ in known))
+    return ROOM * max(volts, aim_vce[1] if aim_vce else 0.0), ROOM * max(amps, aim_ic[1] if aim_ic else 0.0)
 
 
 def _window(target: Sequence[float | None] | None) -> tuple[float, float] | None:
