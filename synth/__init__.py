@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from synth.answer import Answer, Candidate
+    from synth.boards import Board, BoardAnswer, BoardStage, board
     from synth.q_point import operating_point
     from synth.quantities import Interval, RestpointError, Spread, Target
     from synth.solve import check, find
@@ -23,12 +24,16 @@ __version__ = "0.1.0"
 
 __all__ = [
     "Answer",
+    "Board",
+    "BoardAnswer",
+    "BoardStage",
     "Candidate",
     "Interval",
     "RestpointError",
     "Spread",
     "Stage",
     "Target",
+    "board",
     "check",
     "find",
     "operating_point",
@@ -37,12 +42,16 @@ __all__ = [
 # Loaded when first asked for: the command line answers --help without numpy.
 _HOMES = {
     "Answer": "answer",
+    "Board": "boards",
+    "BoardAnswer": "boards",
+    "BoardStage": "boards",
     "Candidate": "answer",
     "Interval": "quantities",
     "RestpointError": "quantities",
     "Spread": "quantities",
     "Stage": "stage",
     "Target": "quantities",
+    "board": "boards",
     "check": "solve",
     "find": "solve",
     "operating_point": "q_point",

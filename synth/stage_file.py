@@ -55,10 +55,48 @@ def read_toml(path: Path) -> dict[str, str]:
     StageError
         If the file cannot be read, is no TOML, or has an unknown table or key.
     """
-    return {key: KEYS[key].text_of_toml(value) for key, value in _flattened("", _parsed(path))}
+    return texts(load(path))
 
 
-def _parsed(path: Path) -> dict[str, Any]:
+def texts(content: Mapping[str, Any]) -> dict[str, str]:
+    """Texts of the tables of a stage.
+
+    Parameters
+    ----------
+    content : mapping of str to value
+        Tables and keys as TOML gives them.
+
+    Returns
+    -------
+    dict of str to str
+        Path of each key to its text.
+
+    Raises
+    ------
+    StageError
+        If a table or key is unknown.
+    """
+    return {key: KEYS[key].text_of_toml(value) for key, value in _flattened("", content)}
+
+
+def load(path: Path) -> dict[str, Any]:
+    """Content of a file in TOML.
+
+    Parameters
+    ----------
+    path : Path
+        UTF-8, at most 1 MB.
+
+    Returns
+    -------
+    dict
+        Tables and keys.
+
+    Raises
+    ------
+    StageError
+        If the file cannot be read or is no TOML; names the line.
+    """
     try:
         with path.open("rb") as file:
             content = file.read(LARGEST_FILE + 1)

@@ -45,6 +45,7 @@ ROOMS = (
     "cautions",
     "advice",
     "solve",
+    "boards",
     "present",
     "cli",
 )
