@@ -14,7 +14,7 @@ from synth.measures import BYPASS, POWER_OF_TRANSISTOR
 from synth.networks.form import Array
 from synth.parts import HALVES, Parts
 from synth.preferred.pairs import SINGLE
-from synth.signal import corner_capacitance
+from synth.signal import CORNER, corner_capacitance
 from synth.stress import (
     JUNCTION_STATES,
     Junction,
@@ -237,6 +237,11 @@ def signals(box: Box, corner: float | None = None) -> list[dict[str, tuple[float
             found[k][name] = (float(low[k]), float(middle[k]), float(high[k]))
     # The emitter of a follower is its output.
     has_bypass = box.signal.bypass != "none" and "re" in box.parts and "c" not in box.network.tied
+    if box.signal.capacitor is not None and has_bypass:
+        ends = [box.extreme((CORNER,), side).value for side in (-1, 1)]
+        middle = np.broadcast_to(box.measure((CORNER,), values, q), (box.size,))
+        for k in range(box.size):
+            found[k][CORNER] = (float(ends[0][k]), float(middle[k]), float(ends[1][k]))
     if corner is not None and has_bypass:
         ohms = (box.extreme((BYPASS,), 1).value, box.measure((BYPASS,), values, q), box.extreme((BYPASS,), -1).value)
         sizes = [np.broadcast_to(corner_capacitance(r, corner), (box.size,)) for r in ohms]

@@ -19,6 +19,7 @@ from synth.measures import POWER_OF_TRANSISTOR
 from synth.networks.form import Array, Network, Value
 from synth.quantities import Interval
 from synth.reference import Reference
+from synth.signal import CORNER, Signal
 from synth.stress import TransistorRatings, allowed_dissipation, allowed_ic, allowed_power, allowed_vce
 from synth.transistor import CUT_OFF_CURRENT, T0
 
@@ -51,6 +52,8 @@ class Surroundings:
         What is known of the transistor.
     derating : Derating, optional
         Policy that ratings are judged by; None judges none.
+    signal : Signal
+        What the signal meets.
     """
 
     rails: Collection[str]
@@ -62,6 +65,7 @@ class Surroundings:
     paired: Collection[str] = ()
     ratings: TransistorRatings = field(default_factory=TransistorRatings)
     derating: Derating | None = None
+    signal: Signal = field(default_factory=Signal)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -145,6 +149,12 @@ def _transistor_ratings(network: Network, around: Surroundings) -> tuple[Rating,
 
 def _figure(name: str) -> Callable[[Network, Surroundings], tuple[tuple[str, ...], ...]]:
     return lambda network, around: ((name,),) if network.takes_signal else ()
+
+
+def _corner(network: Network, around: Surroundings) -> tuple[tuple[str, ...], ...]:
+    """Only where a capacitor that is known bypasses re; the emitter of a follower is its output."""
+    has_bypass = around.signal.bypass != "none" and "re" in around.roles and "c" not in network.tied
+    return ((CORNER,),) if network.takes_signal and has_bypass and around.signal.capacitor is not None else ()
 
 
 def _bleeder(network: Network, around: Surroundings) -> tuple[tuple[str, ...], ...]:
@@ -265,6 +275,14 @@ RULES: Mapping[str, LimitRule] = {
             sums=lambda network, around: (
                 (("swing_to_cutoff",), ("swing_to_saturation",)) if network.takes_signal else ()
             ),
+        ),
+        LimitRule(
+            name="lower_corner",
+            meaning="frequency below which the bypass capacitor of re no longer serves",
+            kind="frequency",
+            sense="<=",
+            judged="box",
+            sums=_corner,
         ),
         LimitRule(
             name="resistor_stress",

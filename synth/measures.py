@@ -17,7 +17,7 @@ import numpy as np
 
 from synth.networks.form import Array, Branches, Network, QPoint, Rails, Resistances, Sign, Value, common_sign
 from synth.parts import HALVES, Parts
-from synth.signal import FIGURES, Signal, SmallSignal, signs
+from synth.signal import CORNER, FIGURES, Signal, SmallSignal, signs
 from synth.transistor import Transistor
 
 POWER_OF_TRANSISTOR = "p_q"
@@ -65,7 +65,7 @@ def is_figure(name: str) -> bool:
     bool
         True for those of `synth.signal`.
     """
-    return name in FIGURES
+    return name in FIGURES or name == CORNER
 
 
 def share_of(name: str, roles: Sequence[str]) -> tuple[str, str, tuple[int, ...]] | None:

@@ -41,6 +41,8 @@ FIGURES = (
     "swing_to_saturation",
 )
 """Figures of `SmallSignal` that `signs` knows: [ohm], [ohm], [-], [-], [V], [V], [V]."""
+CORNER = "lower_corner"
+"""One more figure that `signs` knows, of a stage with a bypass capacitor [Hz]."""
 
 TERMINALS = ("b", "c", "e")
 GROUND = "0"
@@ -66,6 +68,8 @@ class Signal:
         Load resistance at the output [ohm]; None for an open output.
     source : float
         Resistance of the signal source [ohm].
+    capacitor : float, optional
+        The capacitor that bypasses re [F]; None where it is not chosen yet.
 
     Raises
     ------
@@ -77,6 +81,7 @@ class Signal:
     unbypassed: float | None = None
     load: float | None = None
     source: float = 0.0
+    capacitor: float | None = None
 
     def __post_init__(self) -> None:
         _known("signal.bypass", self.bypass, BYPASSES)
@@ -89,6 +94,8 @@ class Signal:
         for name, value in (("unbypassed", self.unbypassed), ("load", self.load)):
             if value is not None and not value > 0.0:
                 raise SignalError(f"signal.{name}: read {value:g} ohm, accepted is a resistance above 0")
+        if self.capacitor is not None and not self.capacitor > 0.0:
+            raise SignalError(f"signal.capacitor: read {self.capacitor:g} F, accepted is a capacitance above 0")
         if not 0.0 <= self.source < np.inf:
             raise SignalError(f"signal.source: read {self.source:g} ohm, accepted is a resistance of 0 or more")
 
@@ -485,8 +492,20 @@ class SmallSignal:
         upper = np.asarray(0.0) if self.signal.unbypassed is None else self._resistance("re")
         without = replace(self, signal=replace(self.signal, bypass="none", unbypassed=None))
         circuit = without._fed(without._build(self.signal.load, skip="re"))
-        lower, above = whole - upper, upper + _divide(_output_resistance(circuit, "e", np.asarray(1.0), np.asarray(0.0)))
-        return np.asarray(lower * above / (lower + above))
+        # Without current the emitter shows nothing, and a lower part of no resistance is a short.
+        with np.errstate(divide="ignore"):
+            above = upper + _divide(_output_resistance(circuit, "e", np.asarray(1.0), np.asarray(0.0)))
+            return np.asarray(1.0 / (1.0 / (whole - upper) + 1.0 / above))
+
+
+    @cached_property
+    def lower_corner(self) -> Array | None:
+        """Corner frequency of the bypass capacitor [Hz]; None where there is none, infinite where nothing is left to bypass."""
+        ohms = self.bypass_resistance
+        if ohms is None or self.signal.capacitor is None:
+            return None
+        with np.errstate(divide="ignore"):
+            return corner_frequency(ohms, self.signal.capacitor)
 
 
 def _dissolve(path: dict[frozenset[str], Array], slope: Array) -> None:
@@ -599,13 +618,18 @@ def _own_slopes(
     network: Network, figure: str, bypass: Bypass, used: Collection[str]
 ) -> tuple[_Wiring, dict[str, str], frozenset[str], Mapping[str, Sign]]:
     """Wiring, path of each role, star around m, and the signs of a figure's slope along every path and the transistor."""
-    wiring = _wire(network, used, "none" if bypass == "part" else bypass, network.reference != "no")
+    is_corner = figure == CORNER
+    wiring = _wire(network, used, "none" if bypass == "part" or is_corner else bypass, network.reference != "no")
     role_path, star = _paths(wiring)
     # Source and load may hang where no resistor of the network does.
     paths = frozenset((*role_path.values(), "b", wiring.output)) | star
     grounded = frozenset(node for node in TERMINALS if wiring.home[node] == GROUND)
-    quotient = {"swing_to_cutoff": "cutoff_excursion", "swing_to_saturation": "output_share"}.get(figure, figure)
-    slope = _slopes(quotient, wiring.output, paths, grounded)
+    quotient = {
+        "swing_to_cutoff": "cutoff_excursion", "swing_to_saturation": "output_share", CORNER: "output_resistance",
+    }.get(figure, figure)  # fmt: skip
+    slope = _slopes(quotient, "e" if is_corner else wiring.output, paths, grounded)
+    if is_corner:
+        slope = {name: _times(-1, sign) for name, sign in slope.items()}
     return wiring, role_path, star, slope
 
 
@@ -619,7 +643,7 @@ def signs(
     network : Network
         The bias network.
     figure : str
-        One of `FIGURES`.
+        One of `FIGURES`, or `CORNER` where re is bypassed.
     bypass : {"full", "none", "part"}
         Of re.
     roles : collection of str, optional
@@ -649,6 +673,9 @@ def signs(
       falls wherever IB does.
     - A role is a conductance of one path, so its own part has the opposite sign of the slope along that path. Partly
       bypassed, re carries signal or does not: its part has that sign or is zero.
+    - The corner of the bypass capacitor falls as the resistance that it sees rises: with the whole re bypassed that at the
+      emitter, re included; of a lower part, that part in parallel with the upper one and what the emitter shows, which
+      rises with re and with the resistance at the emitter.
     - IC·Rac is VT·P/Q with the output against the junction voltage; the swing towards saturation is VCE − VCE(sat), whose
       slope is the network's sign of VCE, times the share of the output. `swing`, the smaller of two, has their common sign.
     - Roles left out, a source without resistance and an ideal reference are limits of a path that shorts or opens, and a
@@ -657,7 +684,7 @@ def signs(
     The sum has a sign where no two parts disagree. The premise is the network's (IB ≥ 0, IC above ICBO, VBE above 0); for the
     three swings also a gain above 0 and, but towards cut-off, VCE ≥ VCE(sat), for without them there is no swing.
     """
-    _known("figure", figure, FIGURES)
+    _known("figure", figure, (*FIGURES, CORNER))
     _known("signal.bypass", bypass, BYPASSES)
     if figure == "swing":
         two = [signs(network, side, bypass, roles=roles) for side in ("swing_to_cutoff", "swing_to_saturation")]
@@ -693,7 +720,7 @@ def own_signs(
     network : Network
         The bias network.
     figure : str
-        ``input_resistance``, ``output_resistance``, ``gain``, ``overall_gain`` or ``swing_to_cutoff``.
+        ``input_resistance``, ``output_resistance``, ``gain``, ``overall_gain``, ``swing_to_cutoff`` or ``lower_corner``.
     bypass : {"full", "none", "part"}
         Of re.
     roles : collection of str, optional

@@ -397,6 +397,7 @@ def _space(
         paired={role for role in roles if lists[role].paired},
         ratings=stage.ratings,
         derating=stage.derating,
+        signal=stage.signal,
     )
     needs = requirements(network, around, stage.limits, stage.limits_given, windows)
     return Space(

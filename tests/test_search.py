@@ -18,13 +18,14 @@ from numpy.typing import NDArray
 
 import synth
 from synth.box import Box, Meter
-from synth.limits import Requirement, judge
+from synth.limits import Requirement, Surroundings, judge, requirements
 from synth.networks import NETWORKS
 from synth.parts import Parts
 from synth.quantities import Interval, Spread
 from synth.search import Outcome, best_first, pools, search
 from synth.search.blocks import Room
 from synth.search.corners import Corners
+from synth.signal import CORNER, Signal
 from synth.spaces import Goal, Space, goal_of, spaces_of, wanted
 from synth.stage import Stage
 from synth.transistor import Transistor
@@ -588,3 +589,42 @@ def test_a_search_is_repeated_to_the_last_bit() -> None:
     one, two = (search(spaces, goal, top=top) for _ in range(2))
     assert [(f.index, f.drift) for f in one.found] == [(f.index, f.drift) for f in two.found]
     assert (one.bound, one.evaluated) == (two.bound, two.evaluated)
+
+
+# --- The corner of the bypass capacitor -----------------------------------------------------------------------------
+
+
+CORNERED = ("divider", "fixed_base", "two_supply", "collector_feedback")
+
+
+def with_corner(spaces: list[Space], rng: np.random.Generator) -> list[Space] | None:
+    """The spaces with re bypassed by a capacitor, and a limit on its corner that some candidates fail and others meet."""
+    found = []
+    for space in spaces:
+        if "re" not in space.roles:
+            return None
+        capacitor = 10.0 ** rng.uniform(-6.0, -3.5)
+        signal = Signal(source=float(rng.choice([0.0, 1e3])), capacitor=capacitor)
+        space = replace(space, signal=signal)
+        box = space.box(every_index(space), Meter())
+        nominal = np.broadcast_to(box.measure((CORNER,), box.nominal(), box.solve(box.nominal())), (box.size,))
+        limit = Interval(-np.inf, float(np.quantile(nominal, 0.5)) * 1.1)
+        around = Surroundings(rails=space.rails, roles=space.roles, signal=signal)
+        (need,) = (n for n in requirements(space.network, around, {CORNER: limit}, (CORNER,), {}) if n.name == CORNER)
+        found.append(replace(space, requirements=(*space.requirements, need)))
+    return found
+
+
+@pytest.mark.parametrize("network", CORNERED)
+def test_a_limit_on_the_corner_is_exact(network: str) -> None:
+    deciding = 0
+    for number in range(20):
+        rng = generator("corner", network, number)
+        spaces, goal = random_spaces(rng, [network], most=20)
+        limited = with_corner(spaces, rng)
+        if limited is None:
+            continue
+        rows = enumerate_all(limited, goal)
+        check_complete(search(limited, goal, top=3), limited, rows, 3)
+        deciding += 0 < len(rows) < len(enumerate_all(spaces, goal))
+    assert deciding >= 1

@@ -22,7 +22,17 @@ from synth import signal
 from synth.networks import NETWORKS, Branches, Network, QPoint, Role, TwoPort
 from synth.q_point import solve_active
 from synth.quantities import Spread
-from synth.signal import FIGURES, Signal, SignalError, SmallSignal, corner_capacitance, corner_frequency, signs
+from synth.signal import (
+    CORNER,
+    FIGURES,
+    Signal,
+    SignalError,
+    SmallSignal,
+    corner_capacitance,
+    corner_frequency,
+    own_signs,
+    signs,
+)
 from synth.transistor import Transistor, thermal_voltage
 
 Array = NDArray[np.float64]
@@ -217,7 +227,7 @@ SIGNALS = (
     Signal(bypass="none", load=3.3e3, source=1.5e3),
     Signal(bypass="part", unbypassed=220.0, load=1e4, source=50.0),
     Signal(bypass="none"),
-    Signal(bypass="full", load=1e3, source=1e5),
+    Signal(bypass="full", load=1e3, source=1e5, capacitor=47e-6),
 )
 
 
@@ -654,6 +664,10 @@ def test_bypass_corner_is_the_pole_of_the_transfer_function(variant: Variant, wh
     assert found.bypass_resistance is not None
     capacitance = 4.7e-6
     corner = corner_frequency(found.bypass_resistance, capacitance)
+    chosen = figures(variant, point, q, replace(what, capacitor=capacitance)).lower_corner
+    assert chosen is not None
+    # One division after the other.
+    assert_allclose(chosen, corner, rtol=1e-15, atol=0)
     for k in range(30):
         r = {name: float(v[k]) for name, v in point.items()}
         gm = float(found.gm[k])
@@ -672,6 +686,20 @@ def test_bypass_corner_is_the_pole_of_the_transfer_function(variant: Variant, wh
             assert_allclose(pole, 2.0 * np.pi * f, rtol=1e-6, atol=0)
             exact = Nodal(variant, r, what, 2.0 * np.pi * f * capacitance)
             assert any(kind == "susceptance" for kind, *_ in exact.elements)
+
+
+def test_slopes_of_a_corner_are_known_for_a_divider() -> None:
+    """More current, a stiffer base and a smaller re leave the capacitor less resistance: the corner rises. From memory."""
+    found = signs(NETWORKS["divider"], CORNER, "full")
+    assert found["re"] is None or found["re"] == -1
+    own = own_signs(NETWORKS["divider"], CORNER, "full")
+    assert own == {"r1": -1, "r2": -1, "rc": 0, "re": -1, "ic": 1}
+
+
+def test_without_a_capacitor_there_is_no_corner() -> None:
+    assert replace(Signal(), capacitor=None) == Signal()
+    with pytest.raises(SignalError, match=r"signal\.capacitor: read -1e-06 F"):
+        Signal(capacitor=-1e-6)
 
 
 def test_corner_capacitance_and_frequency_are_each_other() -> None:
@@ -717,7 +745,7 @@ def measured(variant: Variant, point: Point, what: Signal) -> tuple[Point, Point
     if variant.reference:
         holds &= np.asarray(branches.current["ref"]) > 0.0
     found = figures(variant, point, q, what)
-    values = {name: np.asarray(getattr(found, name)) for name in FIGURES}
+    values = {name: np.asarray(getattr(found, name)) for name in (*FIGURES, *corners(variant, what))}
     span = sum(point[name] for name in variant.rails) + sum(np.abs(v) for v in branches.nodes.values())
     small = {name: 1e-11 * np.abs(value) for name, value in values.items()}
     for name in ("gain", "overall_gain"):
@@ -727,6 +755,12 @@ def measured(variant: Variant, point: Point, what: Signal) -> tuple[Point, Point
         small[name] = small[name] + 1e-12 * span
     swings = holds & (found.gain > 1e-3) & (q.vce > 0.2)
     return values, small, holds, swings
+
+
+def corners(variant: Variant, what: Signal) -> tuple[str, ...]:
+    """The corner of the bypass capacitor, where there is one with something to bypass at every point drawn."""
+    has_bypass = "re" in variant.roles and "c" not in variant.network.tied and what.bypass == "full"
+    return (CORNER,) if has_bypass and what.capacitor is not None else ()
 
 
 CLAIMED = tuple(itertools.product(FIGURES, BYPASSES))
@@ -741,7 +775,7 @@ def test_proved_signs_hold_at_ten_thousand_points(variant: Variant, what: Signal
     point = {name: value[meets] for name, value in point.items()}
     here, small, _, swings = measured(variant, point, what)
     network = variant.network
-    claims = {f: (signs(network, f, what.bypass), signs(network, f, what.bypass, roles=variant.roles)) for f in FIGURES}
+    claims = {f: (signs(network, f, what.bypass), signs(network, f, what.bypass, roles=variant.roles)) for f in (*FIGURES, *corners(variant, what))}
     for parameter in parameters(variant):
         # A monotone figure keeps its sign over a finite step: 0.1 %, 1 mV of delta, at least 0.1 nA of leakage.
         moved_name = "vref" if parameter == "delta_ref" else parameter

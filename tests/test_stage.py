@@ -970,3 +970,20 @@ def test_stage_brings_no_heavy_library_along():
     code = f"import sys, synth.stage; print(*(m for m in {heavy!r} if m in sys.modules))"
     done = subprocess.run([sys.executable, "-c", code], cwd=Path(__file__).parents[1], capture_output=True, text=True)
     assert (done.returncode, done.stdout.split(), done.stderr) == (0, [], "")
+
+
+# --- The bypass capacitor -------------------------------------------------------------------------------------------
+
+
+def test_a_limit_on_the_corner_needs_the_capacitor() -> None:
+    with pytest.raises(StageError, match=r"^signal\.capacitor is not given, but limits\.lower_corner needs it"):
+        stage(lower_corner="20 Hz")
+    made = stage(lower_corner="20 Hz", signal_capacitor="220 uF")
+    assert made.signal.capacitor == 220e-6
+    assert made.limits["lower_corner"].high == 20.0
+
+
+@pytest.mark.parametrize("text", ["0 F", "0 uF"])
+def test_a_capacitor_has_a_capacitance(text: str) -> None:
+    with pytest.raises(StageError, match=rf"^signal\.capacitor: read '{text}', which is no capacitance"):
+        stage(signal_capacitor=text)

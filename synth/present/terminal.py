@@ -361,6 +361,7 @@ SIGNAL_WORDS = {
     "output_resistance": ("output resistance", "resistance"),
     "gain": ("voltage gain", "gain"),
     "swing": ("peak output swing", "voltage"),
+    "lower_corner": ("corner of the bypass capacitor", "frequency"),
     "bypass_capacitor": ("bypass capacitor of re", "capacitance"),
 }
 

@@ -44,6 +44,7 @@ _LIMIT_EXAMPLE = {
     "resistance": "15 kohm",
     "voltage": "1 V",
     "gain": "150",
+    "lower_corner": "20 Hz",
 }
 
 
@@ -295,6 +296,10 @@ def _signal() -> Iterable[Key]:
     yield Key(
         path="signal.source", form="quantity", kind="resistance", default="0 ohm", example="1 kohm",
         meaning="Resistance of the source of the signal.",
+    )  # fmt: skip
+    yield Key(
+        path="signal.capacitor", form="quantity", kind="capacitance", example="100 uF",
+        meaning="Capacitor that bypasses re, for limits.lower_corner.", otherwise="not chosen",
     )  # fmt: skip
     yield Key(
         path="signal.corner", form="quantity", kind="frequency", example="20 Hz",
