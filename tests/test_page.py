@@ -167,7 +167,7 @@ def test_load_line_picture_is_to_scale() -> None:
     """The Q-point lies on the line and inside its box, and the box inside the window, as it must on any drawing to scale."""
     answer = found()
     for c in answer.candidates:
-        p = picture(answer, c)
+        p = picture(answer, c, answer.candidates, "it")
         assert p is not None
         (x1, y1, x2, y2), (qx, qy) = p.line, p.q_point
         # Places are rounded to 0.01 of some hundred.
@@ -186,7 +186,7 @@ def test_load_line_picture_is_to_scale() -> None:
 def test_circuit_shows_each_value_beside_its_designator_and_nothing_that_is_markup() -> None:
     answer = ANSWERS["pnp, positive ground"]()
     for c in answer.candidates:
-        drawn = circuit(answer, c)
+        drawn = circuit(answer, c, "it")
         texts = [t.text for t in drawn.texts]
         for role, ohm in c.resistors.items():
             assert texts[texts.index(role.upper()) + 1] == format_resistance(ohm)
@@ -199,7 +199,7 @@ def test_circuit_shows_each_value_beside_its_designator_and_nothing_that_is_mark
 
 def test_load_lines_of_one_answer_share_their_axes() -> None:
     answer = found()
-    assert len({tuple((t.at, t.text) for t in (*p.x_ticks, *p.y_ticks)) for c in answer.candidates if (p := picture(answer, c))}) == 1
+    assert len({tuple((t.at, t.text) for t in (*p.x_ticks, *p.y_ticks)) for c in answer.candidates if (p := picture(answer, c, answer.candidates, "it"))}) == 1
 
 
 def test_bars_of_a_budget_share_one_scale() -> None:

@@ -22,7 +22,7 @@ from synth.solve import check
 from synth.stage import Stage
 
 SHOWN = "return [...document.querySelectorAll('article.candidate')].filter(a => a.getClientRects().length).map(a => a.id)"
-ORDER = "return [...document.querySelectorAll('#candidates tbody tr')].filter(r => !r.hidden).map(r => Number(r.dataset.rank))"
+ORDER = "return [...document.querySelectorAll('#candidates tbody tr')].filter(r => !r.hidden).map(r => Number(r.dataset.key))"
 CONTRAST = (Path(__file__).parent / "contrast.js").read_text(encoding="utf-8")
 POINTS_PER_CM = 72.0 / 2.54
 
@@ -42,7 +42,7 @@ def test_a_page_opens_without_complaint_or_request(browser: Browser, page: Path)
 def test_a_row_switches_every_panel_by_mouse(browser: Browser, page: Path, answer: Answer) -> None:
     browser.open(page)
     for rank in (3, 17):
-        browser.click(f"#candidates tr[data-rank='{rank}'] td:nth-child(4)")
+        browser.click(f"#candidates tr[data-key='{rank}'] td:nth-child(4)")
         assert browser.run(SHOWN) == [f"candidate-{rank}"]
         c = answer.candidate(rank)
         text = text_of(browser, f"#candidate-{rank}")
@@ -50,7 +50,7 @@ def test_a_row_switches_every_panel_by_mouse(browser: Browser, page: Path, answe
         for title in ("Load line", "Q-point", "Meter readings", "Budget of IC", "Limits and windows", "Stress of every part", "Explanation"):
             assert title in text
         assert " ".join(c.explanation[1].split()) in text
-        assert f"candidate {rank} " in browser.run("return document.querySelector('article.shown .load-line svg').ariaLabel")
+        assert f"Candidate {rank} " in browser.run("return document.querySelector('article.shown .load-line svg').ariaLabel")
         assert browser.run("return document.querySelector('input[name=chosen]:checked').id") == f"choose-{rank}"
         assert browser.run("return location.hash") == f"#candidate-{rank}"
     assert browser.logged("browser") == []
@@ -136,7 +136,7 @@ def test_two_candidates_stand_side_by_side(browser: Browser, page: Path) -> None
     )
     assert one[1] <= two[0]
     assert one[2] == two[2]
-    browser.click("#candidates tr[data-rank='2'] td:nth-child(3)")
+    browser.click("#candidates tr[data-key='2'] td:nth-child(3)")
     assert browser.run(SHOWN) == ["candidate-2", "candidate-5"]
 
 

@@ -14,7 +14,7 @@ from importlib.resources import files
 from typing import TYPE_CHECKING, Any
 
 from synth.answer import Answer
-from synth.present.page.candidates import candidate_view, listing
+from synth.present.page.candidates import entries, listing, views
 from synth.present.page.lead import lead, notes, title
 
 if TYPE_CHECKING:
@@ -34,14 +34,17 @@ def to_html(answer: Answer) -> str:
     str
         A whole HTML document that asks for nothing outside of itself.
     """
+    found = entries(answer)
+    finds = answer.kind == "find"
     return render(
         "answer.html.j2",
         {
             "title": title(answer),
-            "kind": answer.kind,
+            "kind": "Bias resistors found" if finds else "Bias resistors judged",
             "lead": lead(answer),
-            "listing": listing(answer),
-            "candidates": [candidate_view(answer, c) for c in answer.candidates],
+            "above": [],
+            "listing": listing("Candidates, least drift first" if finds else "Fitted resistors", "rank", found),
+            "candidates": views(found),
             "notes": notes(answer),
             "command": answer.command,
             "version": answer.version,

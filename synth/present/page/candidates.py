@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
 from math import inf
 
 from synth.answer import Answer, Candidate, Load
@@ -19,10 +19,25 @@ METER = 10e6
 
 
 @dataclass(frozen=True, kw_only=True)
+class Entry:
+    """One candidate of a page: its key, what its row and its heading call it, the answer that it stands in, more cells.
+
+    `more` are cells of its row by the name of their column; every entry of a page has the same columns.
+    """
+
+    key: str
+    label: str
+    name: str
+    answer: Answer
+    candidate: Candidate
+    more: Mapping[str, Cell] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, kw_only=True)
 class View:
     """One candidate: its heading, verdict, picture and tables."""
 
-    rank: int
+    key: str
     name: str
     network: str
     resistors: str
@@ -43,74 +58,117 @@ class View:
 
 @dataclass(frozen=True, kw_only=True)
 class Listing:
-    """The table of candidates, with the rank that each row chooses, and the networks that it can be filtered by."""
+    """The table of candidates, the key that each row chooses, the networks to filter by, and what is shown at first."""
 
     table: Table
-    ranks: Sequence[int]
+    keys: Sequence[str]
     networks: Sequence[str]
+    first: str
+    beside: str = ""
 
 
-def listing(answer: Answer) -> Listing | None:
-    """One row a candidate, each cell with the number it sorts by.
+def entries(answer: Answer) -> list[Entry]:
+    """The candidates of an answer as entries of a page.
 
     Parameters
     ----------
     answer : Answer
-        Any answer.
+        Of `find` or `check`.
+
+    Returns
+    -------
+    list of Entry
+        Best first.
+    """
+    return [
+        Entry(
+            key=str(c.rank),
+            label=str(c.rank),
+            name=f"Candidate {c.rank}" if answer.kind == "find" else "Fitted",
+            answer=answer,
+            candidate=c,
+        )
+        for c in answer.candidates
+    ]
+
+
+def listing(title: str, column: str, found: Sequence[Entry], *, first: str = "", beside: str = "") -> Listing | None:
+    """One row an entry, each cell with the number it sorts by.
+
+    Parameters
+    ----------
+    title : str
+        What the list is of.
+    column : str
+        Head of the first column, where the labels stand.
+    found : sequence of Entry
+        In the order of the list.
+    first, beside : str
+        Keys of the entries that are shown at first, the first of the list and none when not given.
 
     Returns
     -------
     Listing or None
-        None where there is no candidate.
+        None where there is no entry.
     """
-    found = answer.candidates
     if not found:
         return None
-    networks = list(dict.fromkeys(c.network for c in found))
-    roles = list(dict.fromkeys(role for c in found for role in c.resistors))
-    volts = list(found[0].worst)[-1]
-    head = ["rank", *(["network"] if len(networks) > 1 else []), *map(str.upper, roles)]
+    every = [e.candidate for e in found]
+    networks = list(dict.fromkeys(c.network for c in every))
+    roles = list(dict.fromkeys(role for c in every for role in c.resistors))
+    volts = list(every[0].worst)[-1]
+    head = [column, *found[0].more, *(["network"] if len(networks) > 1 else []), *map(str.upper, roles)]
     head += ["IC over the box", f"{volts.upper()} over the box", "drift", "centring", "supply", "verdict"]
     rows = []
-    for c in found:
-        row = [number(str(c.rank), c.rank), *([words(c.network)] if len(networks) > 1 else [])]
+    for place, (entry, c) in enumerate(zip(found, every, strict=True)):
+        # Ranks stand like numbers, names like words.
+        label = number(entry.label, place) if entry.label.isdigit() else words(entry.label, place)
+        row = [label, *entry.more.values(), *([words(c.network)] if len(networks) > 1 else [])]
         row += [
             number(format_resistance(c.resistors[r]), c.resistors[r]) if r in c.resistors else number("–", inf) for r in roles
         ]
-        ends = c.worst[volts]
+        ends = c.worst.get(volts, c.worst.vce)
         row += [number(span(*c.worst.ic, "current"), c.worst.ic[0]), number(span(*ends, "voltage"), ends[0])]
         row += [number(percent(c.drift.q_point), c.drift.q_point), number(percent(c.centring), c.centring)]
         row += [number(figure(c.supply_current, "current"), c.supply_current), words(c.verdict, mark=c.verdict)]
         rows.append(row)
-    table = Table(title="Candidates, least drift first" if answer.kind == "find" else "Fitted", head=head, rows=rows)
-    return Listing(table=table, ranks=[c.rank for c in found], networks=networks)
+    return Listing(
+        table=Table(title=title, head=head, rows=rows),
+        keys=[e.key for e in found],
+        networks=networks,
+        first=first or found[0].key,
+        beside=beside,
+    )
 
 
-def candidate_view(answer: Answer, c: Candidate) -> View:
-    """Everything that the page shows of a candidate.
+def views(found: Sequence[Entry]) -> list[View]:
+    """Everything that the page shows of each candidate.
 
     Parameters
     ----------
-    answer : Answer
-        Where it comes from.
-    c : Candidate
-        One of its candidates.
+    found : sequence of Entry
+        All of one page, since their load lines share their axes.
 
     Returns
     -------
-    View
+    list of View
         Texts and places, nothing left to compute.
     """
-    name = f"Candidate {c.rank}" if answer.kind == "find" else "Fitted"
+    every = [entry.candidate for entry in found]
+    return [_view(entry, every) for entry in found]
+
+
+def _view(entry: Entry, among: Sequence[Candidate]) -> View:
+    answer, c = entry.answer, entry.candidate
     return View(
-        rank=c.rank,
-        name=name,
+        key=entry.key,
+        name=entry.name,
         network=c.network,
         resistors=resistors(c),
         verdict=c.verdict,
         drift=percent(c.drift.q_point),
-        picture=picture(answer, c),
-        circuit=circuit(answer, c),
+        picture=picture(answer, c, among, entry.name),
+        circuit=circuit(answer, c, entry.name),
         q_point=_q_point(answer, c),
         roles=_roles(c),
         readings=_readings(c),

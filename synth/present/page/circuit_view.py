@@ -46,7 +46,7 @@ class Circuit:
     summary: str
 
 
-def circuit(answer: Answer, c: Candidate) -> Circuit:
+def circuit(answer: Answer, c: Candidate, name: str) -> Circuit:
     """The circuit of a candidate with values and node voltages.
 
     Parameters
@@ -55,6 +55,8 @@ def circuit(answer: Answer, c: Candidate) -> Circuit:
         Where it comes from.
     c : Candidate
         One of its candidates.
+    name : str
+        What the page calls it.
 
     Returns
     -------
@@ -88,7 +90,7 @@ def circuit(answer: Answer, c: Candidate) -> Circuit:
         width=round(float(root.attrib["viewBox"].split()[2]), 1),
         shapes=[*drawn, *shapes],
         texts=texts,
-        summary=f"Circuit of candidate {c.rank}: {parts}",
+        summary=f"Circuit of {name}: {parts}",
     )
 
 

@@ -60,7 +60,7 @@ class Picture:
     summary: str
 
 
-def picture(answer: Answer, c: Candidate) -> Picture | None:
+def picture(answer: Answer, c: Candidate, among: Sequence[Candidate], name: str) -> Picture | None:
     """Load line of a candidate with its Q-point, its box, its window and both ends of the active region.
 
     Parameters
@@ -69,6 +69,10 @@ def picture(answer: Answer, c: Candidate) -> Picture | None:
         Where it comes from, for its targets.
     c : Candidate
         Any candidate.
+    among : sequence of Candidate
+        All whose pictures share their axes.
+    name : str
+        What the page calls it.
 
     Returns
     -------
@@ -81,7 +85,7 @@ def picture(answer: Answer, c: Candidate) -> Picture | None:
     target = answer.stage.get("target", {})
     aim_ic, aim_vce = _window(target.get("ic")), _window(target.get("vce"))
     (ic_low, ic_high), (vce_low, vce_high) = c.worst.ic, c.worst.vce
-    x_end, y_end = _ends(answer.candidates, aim_ic, aim_vce)
+    x_end, y_end = _ends(among, aim_ic, aim_vce)
     plot = Rect(x=LEFT, y=TOP, width=WIDTH - LEFT - RIGHT, height=HEIGHT - TOP - BOTTOM)
 
     def x(v: float) -> float:
@@ -120,7 +124,7 @@ def picture(answer: Answer, c: Candidate) -> Picture | None:
         q_point=(x(q.vce), y(q.ic)),
         saturation=x(line.vce_sat),
         legend=legend,
-        summary=f"Load line of candidate {c.rank} with its Q-point at {figure(q.ic, 'current')} and {figure(q.vce, 'voltage')}",
+        summary=f"Load line of {name} with its Q-point at {figure(q.ic, 'current')} and {figure(q.vce, 'voltage')}",
     )
 
 

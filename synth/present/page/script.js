@@ -22,26 +22,26 @@ document.addEventListener("DOMContentLoaded", () => {
   const radios = new Map();
   let shown = "";
 
-  const mark = (element, rank) => {
+  const mark = (element, key) => {
     const other = beside ? beside.value : "";
-    element.classList.toggle("shown", rank === shown);
-    element.classList.toggle("other", rank === other && rank !== shown);
+    element.classList.toggle("shown", key === shown);
+    element.classList.toggle("other", key === other && key !== shown);
   };
   const draw = () => {
-    articles.forEach((article, rank) => mark(article, rank));
-    rows.forEach((row) => mark(row, row.dataset.rank));
+    articles.forEach((article, key) => mark(article, key));
+    rows.forEach((row) => mark(row, row.dataset.key));
     const other = beside ? articles.get(beside.value) : null;
     panels.classList.toggle("two", Boolean(other) && beside.value !== shown);
-    // The chosen one stands first, whatever its rank.
+    // The chosen one stands first, whatever its key.
     panels.prepend(articles.get(shown));
     if (other && beside.value !== shown) articles.get(shown).after(other);
     settle();
   };
-  const choose = (rank, remember = true) => {
-    if (!articles.has(rank)) return;
-    shown = rank;
-    if (radios.has(rank)) radios.get(rank).checked = true;
-    if (remember) history.replaceState(null, "", "#candidate-" + rank);
+  const choose = (key, remember = true) => {
+    if (!articles.has(key)) return;
+    shown = key;
+    if (radios.has(key)) radios.get(key).checked = true;
+    if (remember) history.replaceState(null, "", "#candidate-" + key);
     draw();
   };
 
@@ -51,25 +51,25 @@ document.addEventListener("DOMContentLoaded", () => {
       const label = document.createElement("label");
       radio.type = "radio";
       radio.name = "chosen";
-      radio.id = "choose-" + row.dataset.rank;
+      radio.id = "choose-" + row.dataset.key;
       label.htmlFor = radio.id;
-      label.textContent = row.dataset.rank;
-      radio.setAttribute("aria-controls", "candidate-" + row.dataset.rank);
+      label.textContent = row.cells[0].textContent.trim();
+      radio.setAttribute("aria-controls", "candidate-" + row.dataset.key);
       row.cells[0].append(radio, label);
-      radio.addEventListener("change", () => choose(row.dataset.rank));
+      radio.addEventListener("change", () => choose(row.dataset.key));
       row.addEventListener("click", (event) => {
         if (event.target.closest("a, label, input")) return;
         radio.focus({preventScroll: true});
-        choose(row.dataset.rank);
+        choose(row.dataset.key);
       });
-      radios.set(row.dataset.rank, radio);
+      radios.set(row.dataset.key, radio);
     }
   } else {
-    rows[0].cells[0].append(rows[0].dataset.rank);
+    rows[0].cells[0].append(rows[0].cells[0].textContent.trim());
   }
   if (beside) beside.addEventListener("change", draw);
 
-  const key = (row, column) => {
+  const sorted = (row, column) => {
     const cell = row.cells[column];
     const value = cell.dataset.sort ?? cell.textContent;
     const number = Number(value === "inf" ? Infinity : value);
@@ -84,7 +84,7 @@ document.addEventListener("DOMContentLoaded", () => {
       const down = head.getAttribute("aria-sort") === "ascending";
       for (const other of list.tHead.rows[0].cells) other.removeAttribute("aria-sort");
       head.setAttribute("aria-sort", down ? "descending" : "ascending");
-      const order = rows.map((row) => [key(row, column), Number(row.dataset.rank), row]);
+      const order = rows.map((row) => [sorted(row, column), rows.indexOf(row), row]);
       const compare = (a, b) => (a < b ? -1 : a > b ? 1 : 0);
       order.sort((a, b) => (down ? -1 : 1) * compare(a[0], b[0]) || a[1] - b[1]);
       body.append(...order.map((entry) => entry[2]));
@@ -117,6 +117,6 @@ document.addEventListener("DOMContentLoaded", () => {
 
   const named = () => location.hash.replace("#candidate-", "");
   window.addEventListener("hashchange", () => choose(named(), false));
-  choose(articles.has(named()) ? named() : rows[0].dataset.rank, false);
+  choose(articles.has(named()) ? named() : list.dataset.first, false);
   filter();
 });
