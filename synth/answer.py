@@ -177,9 +177,9 @@ class LoadLine:
 
 @dataclass(frozen=True, kw_only=True)
 class Load:
-    """What the transistor carries at worst: power [W], the rail across it once cut off [V], IC [A].
+    """What the transistor carries at worst: power [W], the rail across it once cut off [V], IC [A], reverse VEB [V].
 
-    `allowed` holds what the ratings and the policy allow of ``power vceo ic`` at the hot ambient, as far as they are known;
+    `allowed` holds what the ratings and the policy allow of ``power vceo veb ic`` at the hot ambient, as far as they are known;
     `junction` is where the junction settles at the point of most power, heating itself [K], and `loop_gain` what a kelvin
     of its temperature gives back [-], with a thermal resistance [K/W]; both None where that is not known, or where it does
     not settle, which `state` says. `heating` is how far self-heating moves the nominal IC [-], None where not known;
@@ -198,6 +198,7 @@ class Load:
     heating: float | None = None
     worst: Mapping[str, tuple[float, float]] = field(default_factory=dict)
     too_hot: bool = False
+    veb: float = 0.0
 
     @property
     def used(self) -> dict[str, float]:

@@ -10,6 +10,7 @@ import numpy as np
 from synth.answer import Load, Stress
 from synth.box import Box, Extreme, Heat, Values
 from synth.catalogue import Derating, ResistorStyle, resistor_styles
+from synth.limits import holds_emitter
 from synth.measures import BYPASS, POWER_OF_TRANSISTOR
 from synth.networks.form import Array
 from synth.parts import HALVES, Parts
@@ -23,6 +24,7 @@ from synth.stress import (
     allowed_ic,
     allowed_power,
     allowed_vce,
+    allowed_veb,
     allowed_voltage,
     carries,
     junction_temperature,
@@ -131,9 +133,11 @@ def loads(box: Box, ratings: TransistorRatings, policy: Derating, law: Law | Non
     known = {
         "power": None if most is None else float(most),
         "vceo": allowed_vce(ratings, policy),
+        "veb": allowed_veb(ratings, policy) if holds_emitter(box.network, box.signal) else None,
         "ic": allowed_ic(ratings, policy),
     }
     allowed = {name: limit for name, limit in known.items() if limit is not None}
+    emitter = law(("ve",), 1).value if "veb" in allowed else np.zeros(box.size)
     settled = None if rth is None else _settled(box, worst.at | {"temperature": np.full(box.size, hot)}, rth, ratings)
     nominal = None if rth is None else _settled(box, box.nominal(), rth, ratings)
     return [
@@ -141,6 +145,7 @@ def loads(box: Box, ratings: TransistorRatings, policy: Derating, law: Law | Non
             power=float(worst.value[k]),
             vceo=float(rail[k]),
             ic=float(ic[k]),
+            veb=float(emitter[k]),
             allowed=allowed,
             thermal_resistance=rth,
             junction=None if settled is None else _known(settled.temperature[k]),

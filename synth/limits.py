@@ -20,7 +20,7 @@ from synth.networks.form import Array, Network, Value
 from synth.quantities import Interval
 from synth.reference import Reference
 from synth.signal import CORNER, Signal
-from synth.stress import TransistorRatings, allowed_dissipation, allowed_ic, allowed_power, allowed_vce
+from synth.stress import TransistorRatings, allowed_dissipation, allowed_ic, allowed_power, allowed_vce, allowed_veb
 from synth.transistor import CUT_OFF_CURRENT, T0
 
 Sense = Literal[">=", "<="]
@@ -141,10 +141,31 @@ def _transistor_ratings(network: Network, around: Surroundings) -> tuple[Rating,
     watts = (math.nan, math.nan) if power is None or whole is None else (float(power), float(whole))
     every = (
         Rating("vceo", "voltage", ("span",), allowed_vce(ratings, policy) or math.nan, ratings.vceo or math.nan),
+        Rating("veb", "voltage", ("ve",), (holds_emitter(network, around.signal) and allowed_veb(ratings, policy)) or math.nan,
+               ratings.vebo or math.nan),
         Rating("ic", "current", ("ic",), allowed_ic(ratings, policy) or math.nan, ratings.ic_max or math.nan),
         Rating("power", "power", (POWER_OF_TRANSISTOR,), *watts),
     )
     return tuple(rating for rating in every if not math.isnan(rating.allowed))
+
+
+def holds_emitter(network: Network, signal: Signal) -> bool:
+    """Whether a capacitor keeps the emitter where it was when at switch-off the base falls with its rail: then VEB is VE.
+
+    Parameters
+    ----------
+    network : Network
+        The network.
+    signal : Signal
+        What bypasses re.
+
+    Returns
+    -------
+    bool
+        True where re leads to 0 V and is bypassed.
+    """
+    to_ground = any(role.name == "re" and set(role.nodes) == {"e", "0"} for role in network.roles)
+    return network.takes_signal and signal.bypass != "none" and "c" not in network.tied and to_ground
 
 
 def _figure(name: str) -> Callable[[Network, Surroundings], tuple[tuple[str, ...], ...]]:

@@ -346,6 +346,8 @@ class TransistorRatings:
     ----------
     vceo : float or None
         Largest collector-emitter voltage with the base open [V].
+    vebo : float or None
+        Largest reverse voltage of the emitter against the base [V].
     ic_max : float or None
         Largest collector current [A].
     ptot : float or None
@@ -365,6 +367,7 @@ class TransistorRatings:
     """
 
     vceo: float | None = None
+    vebo: float | None = None
     ic_max: float | None = None
     ptot: float | None = None
     ptot_ambient: float | None = None
@@ -446,6 +449,24 @@ def allowed_vce(ratings: TransistorRatings, policy: Derating) -> float | None:
         Voltage [V]; None where VCEO is not known.
     """
     return None if ratings.vceo is None else policy.transistor_voltage * ratings.vceo
+
+
+def allowed_veb(ratings: TransistorRatings, policy: Derating) -> float | None:
+    """Reverse voltage that the emitter may have against the base.
+
+    Parameters
+    ----------
+    ratings : TransistorRatings
+        The transistor.
+    policy : Derating
+        The policy.
+
+    Returns
+    -------
+    float or None
+        Voltage [V]; None where VEBO is not known.
+    """
+    return None if ratings.vebo is None else policy.transistor_voltage * ratings.vebo
 
 
 def allowed_ic(ratings: TransistorRatings, policy: Derating) -> float | None:

@@ -73,6 +73,26 @@ def test_whole_rail_counts_against_vceo() -> None:
     assert_allclose(verdict.limit, 0.75 * 16.9, rtol=HAND, atol=0)
 
 
+def test_a_bypassed_emitter_is_held_against_the_falling_base() -> None:
+    """At switch-off the base is at 0 V and the capacitor keeps VE: 0.75 of VEBO against the greatest drop of re. From memory."""
+    drop = synth.check(stage(), **CONTRACT).candidates[0].roles["re"].drop
+    fitted = checked(vebo="5 V")
+    verdict = next(v for v in fitted.limits if v.name == "transistor_stress.veb")
+    assert_allclose(verdict.limit, 3.75, rtol=HAND, atol=0)
+    # The greatest drop is above the nominal one by less than the drift.
+    assert drop < verdict.worst < drop * 1.15
+    assert fitted.transistor is not None
+    assert_allclose(fitted.transistor.veb, verdict.worst, rtol=HAND, atol=0)
+    for vebo, passes in ((verdict.worst / 0.76, False), (verdict.worst / 0.74, True)):
+        (again,) = (v for v in checked(vebo=f"{vebo!r} V").limits if v.name == "transistor_stress.veb")
+        assert (again.verdict == "pass") is passes
+
+
+def test_without_a_capacitor_nothing_holds_the_emitter() -> None:
+    assert not [v for v in checked(vebo="5 V", bypass="none").limits if v.name == "transistor_stress.veb"]
+    assert stage(vebo="5 V").ratings.vebo == 5.0
+
+
 def test_two_supplies_add_up_against_vceo() -> None:
     given = stage(network="two_supply", vee="12 V ± 5 %", vceo="45 V", r1=None)
     best = synth.check(given, rb="10k", rc="3k3", re="5k6").candidates[0]

@@ -333,7 +333,10 @@ def _stress(answer: Answer, c: Candidate) -> str:
         rows.append([f"{role.upper()} {format_resistance(c.pieces[role])}", s.style or "–", power, volts, smallest])
     lines = [table(rows)]
     load = c.transistor
-    labels = {"power": ("dissipates", "power"), "vceo": ("cut off it holds", "voltage"), "ic": ("carries", "current")}
+    labels = {
+        "power": ("dissipates", "power"), "vceo": ("cut off it holds", "voltage"),
+        "veb": ("reverse VEB at switch-off", "voltage"), "ic": ("carries", "current"),
+    }  # fmt: skip
     parts = [
         f"{words} {_used(getattr(load, name), load.allowed.get(name), kind)}"
         for name, (words, kind) in labels.items()

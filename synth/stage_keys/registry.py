@@ -157,6 +157,11 @@ def _transistor() -> Iterable[Key]:
         otherwise="the type's; no verdict",
     )  # fmt: skip
     yield Key(
+        path="transistor.vebo", form="quantity", kind="voltage", example="5 V",
+        meaning="Largest reverse emitter-base voltage: at switch-off the base falls, a bypassed emitter stays.",
+        otherwise="no verdict",
+    )  # fmt: skip
+    yield Key(
         path="transistor.ic_max", form="quantity", kind="current", example="100 mA",
         meaning="Largest collector current.", otherwise="the type's; no verdict",
     )  # fmt: skip

@@ -25,7 +25,7 @@ FAR_CURRENT = 10.0
 """Ratio of currents from which a printed gain says little about the gain at the stage's own current [-]."""
 
 _GERMANIUM = {"vbe": "0.15 V ± 50 mV", "vbe_ic": "1 mA", "vce_sat": "0.1 V"}
-_RATINGS = ("vceo", "ic_max", "ptot", "tj_max", "rth_ja")
+_RATINGS = ("vceo", "vebo", "ic_max", "ptot", "tj_max", "rth_ja")
 
 
 def read_transistor(request: Request, current: float) -> Transistor:
