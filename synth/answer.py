@@ -249,10 +249,10 @@ class Candidate:
     """A network with a value in every role, judged and explained.
 
     Resistances of `resistors` and `base_feed` [ohm]; `parts` holds the roles that two parts make up; `worst` holds the
-    extremes of IC [A] and VCE [V]; `centring` [-]; `supply_current` of the most loaded rail at nominal values [A];
-    `regions` are those of the deciding points; `rival` is the next best network, for the winner among several; `signal`
-    holds least, nominal and greatest value of each small-signal figure [S, ohm, - or V] of the first candidate, empty where
-    there is none.
+    extremes of IC [A] and VCE [V]; `centring` [-]; `score` is what it is ranked by where that is not its drift [-];
+    `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
+    the next best network, for the winner among several; `signal` holds least, nominal and greatest value of each
+    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none.
     """
 
     rank: int
@@ -272,6 +272,7 @@ class Candidate:
     limits: tuple[Verdict, ...]
     verdict: Pass
     explanation: tuple[str, ...]
+    score: float | None = None
     rival: NetworkResult | None = None
     stress: Mapping[str, Stress] = field(default_factory=dict)
     transistor: Load | None = None
@@ -294,7 +295,11 @@ class Candidate:
 
 @dataclass(frozen=True, kw_only=True)
 class Search:
-    """What was searched and what is proved; `bound` is the least drift of anything not listed [-], None if none is left."""
+    """What was searched and what is proved.
+
+    `bound` is the least drift of anything not listed [-], None if none is left; by another `metric` than ``corners`` it is
+    the least of that.
+    """
 
     status: str
     bound: float | None
@@ -302,6 +307,7 @@ class Search:
     evaluated: int
     complete: bool
     seconds: float
+    metric: str = "corners"
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -375,11 +381,41 @@ class Outlook:
 
 @dataclass(frozen=True, kw_only=True)
 class Alternative:
-    """A listed candidate worth a look for another reason than drift."""
+    """A candidate worth a look for another reason than drift; of one on the frontier that is not listed the rank is None."""
 
     reason: str
-    rank: int
+    rank: int | None
     text: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class Point:
+    """A candidate that no other beats: resistors [ohm], what it is ranked by and its drift [-], its figures by axis (SI).
+
+    `parts` holds the roles that two parts make up.
+    """
+
+    network: str
+    resistors: Mapping[str, float]
+    score: float
+    drift: float
+    figures: Mapping[str, float]
+    parts: Mapping[str, Pair] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Tradeoff:
+    """A frontier: its further axes, its points ascending in score, whether they are all.
+
+    Below `bound` they are all there are [-], None if everywhere; `evaluated` and `seconds` [s] are what it took.
+    """
+
+    axes: tuple[str, ...]
+    points: tuple[Point, ...]
+    complete: bool
+    bound: float | None
+    evaluated: int
+    seconds: float
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -404,6 +440,8 @@ class Answer:
         Why nothing qualifies.
     outlook : Outlook or None
         What would make the best answer better or cheaper, where that was asked for.
+    frontier : Tradeoff or None
+        What nothing beats along several axes at once, where that was asked for.
     """
 
     kind: str
@@ -418,6 +456,7 @@ class Answer:
     alternatives: tuple[Alternative, ...] = ()
     infeasible: Infeasible | None = None
     outlook: Outlook | None = None
+    frontier: Tradeoff | None = None
 
     @property
     def best(self) -> Candidate | None:
@@ -534,6 +573,10 @@ class Answer:
                 "upgrades": [_plain(vars(row)) for row in self.outlook.upgrades],
                 "savings": [_plain(vars(row)) for row in self.outlook.savings],
             }
+        if self.frontier is not None:
+            front = self.frontier
+            rest = {name: value for name, value in vars(front).items() if name != "points"}
+            body["frontier"] = {**_plain(rest), "points": [_point(point) for point in front.points]}
         return body
 
     def to_json(self) -> str:
@@ -545,6 +588,11 @@ class Answer:
             Indented, one trailing newline; numbers with the digits that reproduce them.
         """
         return json.dumps(self.as_dict(), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def _point(point: Point) -> dict[str, Any]:
+    made = {role: _plain(vars(pair)) for role, pair in point.parts.items()}
+    return {**_plain({name: x for name, x in vars(point).items() if name != "parts"}), "parts": made}
 
 
 def _network(n: NetworkResult) -> dict[str, Any]:
@@ -569,6 +617,7 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         "worst": _plain(c.worst),
         "regions": list(c.regions),
         "drift": {k: x for k, x in _plain(vars(c.drift)).items() if x is not None or k == "vce"},
+        **({} if c.score is None else {"score": _plain(c.score)}),
         "centring": _plain(c.centring),
         "supply_current": _plain(c.supply_current),
         "base_feed": _plain(c.base_feed),

@@ -63,6 +63,26 @@ def lone_moves(box: Box) -> dict[str, tuple[tuple[Spot, Spot], ...]]:
     return found | {"temperature": tuple(({"temperature": t}, start) for t in ambients(box)[1:])}
 
 
+class _Reached:
+    """Quantities of candidates at points of the box, each point solved once."""
+
+    def __init__(self, box: Box, aims: Mapping[str, float]) -> None:
+        self.box, self.aims = box, aims
+        self.known: dict[tuple[tuple[str, float], ...], dict[str, Array]] = {}
+
+    def at(self, spot: Spot) -> dict[str, Array]:
+        key = tuple(sorted(spot.items()))
+        if key not in self.known:
+            box = self.box
+            values = box.values(spot)
+            q = box.solve(values, active_law=True)
+            self.known[key] = {name: np.broadcast_to(box.measure((name,), values, q), (box.size,)) for name in self.aims}
+        return self.known[key]
+
+    def move(self, quantity: str, there: Spot, here: Spot) -> Array:
+        return np.asarray(np.abs(self.at(there)[quantity] - self.at(here)[quantity]))
+
+
 def root_sum_square(box: Box, aims: Mapping[str, float]) -> dict[str, Array]:
     """Root sum square of every quantity that has a target.
 
@@ -78,25 +98,39 @@ def root_sum_square(box: Box, aims: Mapping[str, float]) -> dict[str, Array]:
     dict of str to ndarray
         Shape (n,), relative to the target [-].
     """
-    known: dict[tuple[tuple[str, float], ...], dict[str, Array]] = {}
-
-    def at(spot: Spot) -> dict[str, Array]:
-        key = tuple(sorted(spot.items()))
-        if key not in known:
-            values = box.values(spot)
-            q = box.solve(values, active_law=True)
-            known[key] = {name: np.broadcast_to(box.measure((name,), values, q), (box.size,)) for name in aims}
-        return known[key]
-
-    moves = lone_moves(box)
-    found = {}
+    reached, moves, found = _Reached(box, aims), lone_moves(box), {}
+    nothing = np.zeros(box.size)
     for quantity, aim in aims.items():
-        start = at({"temperature": box.temperature.nominal})[quantity]
         alone = {
-            cause: np.maximum.reduce([np.abs(at(there)[quantity] - at(here)[quantity]) for there, here in pairs])
+            cause: np.maximum.reduce([nothing, *(reached.move(quantity, *pair) for pair in pairs)])
+            for cause, pairs in moves.items()
+        }
+        steady = np.abs(reached.at({"temperature": box.temperature.nominal})[quantity] - aim) + alone.pop("temperature")
+        found[quantity] = (steady + np.sqrt(sum((e**2 for e in alone.values()), nothing))) / aim
+    return found
+
+
+def deciding_moves(box: Box, aims: Mapping[str, float]) -> dict[str, dict[str, tuple[Spot, Spot]]]:
+    """The largest lone move of each cause for the first candidate.
+
+    Parameters
+    ----------
+    box : Box
+        At least one candidate.
+    aims : mapping of str to float
+        Targets [A, V].
+
+    Returns
+    -------
+    dict of str to dict
+        By quantity and cause: the point moved to, and the point moved from.
+    """
+    reached, moves = _Reached(box, aims), lone_moves(box)
+    return {
+        quantity: {
+            cause: max(pairs, key=lambda pair, quantity=quantity: float(reached.move(quantity, *pair)[0]))  # type: ignore[misc]
             for cause, pairs in moves.items()
             if pairs
         }
-        steady = np.abs(start - aim) + alone.pop("temperature", np.zeros(box.size))
-        found[quantity] = (steady + np.sqrt(sum((e**2 for e in alone.values()), np.zeros(box.size)))) / aim
-    return found
+        for quantity in aims
+    }

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from functools import partial
 
@@ -29,15 +29,15 @@ from synth.facts import heated, loads, signals, stresses
 from synth.limits import Judgement, Requirement, judge
 from synth.networks.form import Array
 from synth.q_point import REGIONS
-from synth.ranking import alternatives, order_key
+from synth.ranking import alternatives, order_key, read_axes, read_goal
 from synth.readings import load_lines, readings
-from synth.search import Outcome, search
+from synth.search import Outcome, Progress, Stop, search
+from synth.search import frontier as find_frontier
 from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_of, spaces_of
 from synth.stage import Assumption, Stage, StageError
 from synth.straddle import extreme_in_any_region
 from synth.stress import junction_limit
-
-Progress = Callable[[float, float, int], bool]
+from synth.tradeoff import along_frontier, tradeoff
 
 HEAT_TO_LOOK = 0.005
 """Shift of the nominal IC by self-heating from which its worst case is looked for unasked [-]."""
@@ -46,7 +46,15 @@ SHORT = 3e4
 
 
 def find(
-    stage: Stage, *, top: int = 10, advise: bool = False, progress: Progress | None = None, command: str = ""
+    stage: Stage,
+    *,
+    top: int = 10,
+    metric: str = "corners",
+    frontier: str = "",
+    advise: bool = False,
+    progress: Progress | None = None,
+    stop: Stop | None = None,
+    command: str = "",
 ) -> Answer:
     """Find the networks whose Q-point drifts least, proved, ranked and explained.
 
@@ -56,9 +64,13 @@ def find(
         The request.
     top : int
         How many candidates to list and prove [-].
+    metric : str
+        What ranks, see `synth.ranking.read_goal`.
+    frontier : str
+        Further axes of a frontier, see `synth.ranking.read_axes`; "" looks for none.
     advise : bool
         Whether to search for what would make the best answer better or cheaper, which takes some seconds.
-    progress : callable, optional
+    progress, stop : callable, optional
         See `synth.search.search`.
     command : str
         The command that asked, for the record.
@@ -71,19 +83,23 @@ def find(
     Raises
     ------
     StageError
-        If `top` is no whole number above 0.
+        If `top` is no whole number above 0, or metric or frontier name nothing that this stage has.
     """
     if isinstance(top, bool) or not isinstance(top, int) or top < 1:
         raise StageError("top", top, "which is no number of candidates", "a whole number of 1 or more", ("10",))
-    goal = goal_of(stage)
+    goal = read_goal(stage, metric)
     spaces = spaces_of(stage)
-    outcome = search(spaces, goal, top=top, progress=progress)
+    axes = read_axes(frontier, spaces) if frontier else ()
+    outcome = search(spaces, goal, top=top, progress=progress, stop=stop)
     candidates = _candidates(outcome, goal, top, stage)
-    best_of = _best_of_each(spaces, goal, candidates, outcome, progress)
+    best_of = _best_of_each(spaces, goal, candidates, outcome, progress, stop)
+    front = tradeoff(find_frontier(spaces, goal, axes, progress=progress, stop=stop), axes) if axes else None
     rivals = [n for n in best_of if candidates and n.best is not None and n.network != candidates[0].network]
     if rivals:
         candidates = (_before_rival(candidates[0], rivals[0]), *candidates[1:])
-    infeasible = why_nothing_qualifies(stage) if outcome.status == "infeasible" else None
+    # By another metric the first candidate is not the one that the levers start from.
+    proved = bool(candidates) and outcome.complete and goal.plain
+    infeasible = why_nothing_qualifies(stage, stop) if outcome.status == "infeasible" else None
     warnings = request_cautions(stage)
     if candidates:
         space = next(s for s in spaces if _is_of(candidates[0], s))
@@ -98,12 +114,13 @@ def find(
         stage=stage.as_dict(),
         assumed=_assumed(stage, spaces),
         warnings=warnings + _not_applicable(stage, spaces),
-        search=_record(outcome),
+        search=_record(outcome, metric),
         networks=best_of,
         candidates=candidates,
-        alternatives=alternatives(candidates),
+        alternatives=alternatives(candidates) if front is None else along_frontier(front),
         infeasible=infeasible,
-        outlook=outlook(stage, candidates[0].drift.q_point) if advise and candidates and outcome.complete else None,
+        outlook=outlook(stage, candidates[0].drift.q_point) if advise and proved else None,
+        frontier=front,
     )
 
 
@@ -173,7 +190,7 @@ def _not_applicable(stage: Stage, spaces: Sequence[Space]) -> tuple[Caution, ...
     )
 
 
-def _record(outcome: Outcome) -> Search:
+def _record(outcome: Outcome, metric: str) -> Search:
     return Search(
         status=outcome.status,
         bound=float(outcome.bound) if np.isfinite(outcome.bound) else None,
@@ -181,6 +198,7 @@ def _record(outcome: Outcome) -> Search:
         evaluated=outcome.evaluated,
         complete=outcome.complete,
         seconds=outcome.seconds,
+        metric=metric,
     )
 
 
@@ -255,8 +273,11 @@ def _with_heat(candidate: Candidate, box: Box, stage: Stage) -> Candidate:
 def _candidates(outcome: Outcome, goal: Goal, top: int, stage: Stage) -> tuple[Candidate, ...]:
     built: list[tuple[Candidate, Space]] = []
     for space in dict.fromkeys(f.space for f in outcome.found):
-        index = np.array([f.index for f in outcome.found if f.space is space], dtype=np.int32)
-        built += [(c, space) for c in _build(space, index, goal, any_region=False)]
+        own = [f for f in outcome.found if f.space is space]
+        index = np.array([f.index for f in own], dtype=np.int32)
+        for f, c in zip(own, _build(space, index, goal, any_region=False), strict=True):
+            # The largest drift of all ranks by itself; any other score is carried along.
+            built.append((c if goal.plain else replace(c, score=f.score), space))
     built.sort(key=lambda pair: order_key(pair[0], pair[1].roles, stage.on_board))
     listed = built[:top]
     final: dict[int, Candidate] = {}
@@ -264,8 +285,8 @@ def _candidates(outcome: Outcome, goal: Goal, top: int, stage: Stage) -> tuple[C
         ranks = [k for k, (_, s) in enumerate(listed) if s is space]
         index = np.concatenate([_index(space, listed[k][0]) for k in ranks])
         around = neighbours(space, index, goal)
-        own = [replace(listed[k][0], rank=k + 1, neighbours=near) for k, near in zip(ranks, around, strict=True)]
-        for k, full in zip(ranks, _reviewed(own, space, stage), strict=True):
+        ranked = [replace(listed[k][0], rank=k + 1, neighbours=near) for k, near in zip(ranks, around, strict=True)]
+        for k, full in zip(ranks, _reviewed(ranked, space, stage), strict=True):
             final[k] = replace(full, explanation=sentences(full, space.network))
     return tuple(final[k] for k in sorted(final))
 
@@ -276,6 +297,7 @@ def _best_of_each(
     candidates: Sequence[Candidate],
     outcome: Outcome,
     progress: Progress | None,
+    stop: Stop | None,
 ) -> tuple[NetworkResult, ...]:
     """Best drift of each network, by a search of its own where the list does not show it."""
     results = []
@@ -284,7 +306,7 @@ def _best_of_each(
         alone = outcome
         own = [s for s in spaces if s.network.name == name]
         if best is None and candidates and outcome.complete:
-            alone = search(own, goal, top=1, progress=progress)
+            alone = search(own, goal, top=1, progress=progress, stop=stop)
             if alone.found:
                 index = np.array([alone.found[0].index], dtype=np.int32)
                 (best,) = _build(alone.found[0].space, index, goal, any_region=False)
@@ -293,7 +315,7 @@ def _best_of_each(
         elif not alone.complete:
             results.append(NetworkResult(network=name, best=None, why="not settled: the search was stopped"))
         else:
-            culprits = _obstacles(own, goal) if candidates else []
+            culprits = _obstacles(own, goal, stop) if candidates else []
             some = f"; without {' or without '.join(culprits)} some would" if culprits else ""
             results.append(NetworkResult(network=name, best=None, why=f"no combination meets every limit{some}"))
     order = sorted(results, key=lambda r: np.inf if r.best is None else r.best)
@@ -303,26 +325,27 @@ def _best_of_each(
 def _standing(candidate: Candidate, candidates: Sequence[Candidate]) -> NetworkResult:
     """Why the best candidate of a network stands where it does."""
     against = comparison(candidates[0], candidate) if candidate.rank != 1 else None
-    notes = ["least drift: " * (candidate.rank == 1) + _drifts(candidate)]
+    notes = ["least drift: " * (candidate.rank == 1 and candidate.score is None) + _drifts(candidate)]
     notes += [compared_words(against)] if against else []
     notes += [f"rank {candidate.rank}"] if candidate.rank > 1 else []
     return NetworkResult(network=candidate.network, best=candidate.drift.q_point, why="; ".join(notes), against=against)
 
 
-def _obstacles(spaces: Sequence[Space], goal: Goal) -> list[str]:
+def _obstacles(spaces: Sequence[Space], goal: Goal, stop: Stop | None) -> list[str]:
     """Limits and windows without which a network would have a candidate, as far as a short search tells."""
     names = dict.fromkeys(need.limit for space in spaces for need in space.requirements if need.limit != "vce")
     found = []
     for name in names:
         freed = [replace(s, requirements=tuple(need for need in s.requirements if need.limit != name)) for s in spaces]
-        if search(freed, goal, top=1, first=True, most=SHORT).found:
+        if search(freed, goal, top=1, first=True, most=SHORT, stop=stop).found:
             found.append(name)
     return found
 
 
 def _before_rival(winner: Candidate, rival: NetworkResult) -> Candidate:
     """The winner among several networks, with why it suits the stage better than the next."""
-    text = f"Of all networks that meet every limit this one drifts least, {percent(winner.drift.q_point)}"
+    least = "drifts least," if winner.score is None else "ranks first by the metric asked for, with a drift of"
+    text = f"Of all networks that meet every limit this one {least} {percent(winner.drift.q_point)}"
     text += f"; next is {rival.network} with {percent(rival.best or 0.0)}"
     text += f", where {compared_words(rival.against)}." if rival.against else "."
     title, *rest = winner.explanation

@@ -18,6 +18,7 @@ from synth.networks import NETWORKS
 from synth.networks.form import Array, Network
 from synth.parts import Parts
 from synth.preferred import JOINS, pair_up
+from synth.preferred.pairs import SINGLE
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
 from synth.rss import root_sum_square
@@ -178,6 +179,11 @@ class Goal:
     weights: Mapping[str, float] | None = None
     rss: bool = False
 
+    @property
+    def plain(self) -> bool:
+        """Whether the largest drift itself ranks."""
+        return self.weights is None and not self.rss
+
     def weight(self, quantity: str) -> float:
         """How much the drift of a quantity counts.
 
@@ -270,13 +276,17 @@ class Exact:
         return self._cache[key].value, self._cache[key].at
 
 
-def goal_of(stage: Stage) -> Goal:
+def goal_of(stage: Stage, weights: Mapping[str, float] | None = None, rss: bool = False) -> Goal:
     """What the drift of a stage is measured from.
 
     Parameters
     ----------
     stage : Stage
         The request.
+    weights : mapping of str to float, optional
+        How much the drift of each quantity counts in the ranking [-].
+    rss : bool
+        Whether the root sum square ranks.
 
     Returns
     -------
@@ -285,7 +295,8 @@ def goal_of(stage: Stage) -> Goal:
     """
     assert stage.ic.nominal is not None
     aims = {quantity: target.nominal for quantity, target in stage.voltages.items()}
-    return Goal(ic=stage.ic.nominal, vce=aims.get("vce"), vc=aims.get("vc"), ve=aims.get("ve"))
+    volts = (aims.get("vce"), aims.get("vc"), aims.get("ve"))
+    return Goal(ic=stage.ic.nominal, vce=volts[0], vc=volts[1], ve=volts[2], weights=weights, rss=rss)
 
 
 def spaces_of(stage: Stage, without: Collection[str] = ()) -> list[Space]:
@@ -411,6 +422,7 @@ def _space(
         styles=styles,
         derating=stage.derating,
         requirements=tuple(need for need in needs if need.limit not in without),
+        prices=_prices(stage, lists),
         ground="common" if "vee" in stage.rails and stage.ground == "middle" else stage.ground,
     )
 
@@ -433,6 +445,23 @@ def _choices(stage: Stage, role: str) -> Parts:
     low, high = (0.0, math.inf) if setting.values else (setting.range.low, setting.range.high)
     rated = setting.style is not None
     return Parts.of_list(pair_up(stage.value_list(role), joins, low, high, rated=rated, on_board=stage.on_board), single)
+
+
+def _prices(stage: Stage, lists: Mapping[str, Parts]) -> dict[str, Array]:
+    """Price of each value of every role, if the stock lists give them all."""
+    found = {}
+    for role, part in lists.items():
+        each = stage.value_list(role).prices if stage.role(role).stock is not None else None
+        if each is None or None in each:
+            return {}
+        row = np.array(each, dtype=float)
+        if part.pairs is not None:
+            row = row[part.pairs.first] + np.where(part.pairs.join == SINGLE, 0.0, row[part.pairs.second])
+        if row.size != part.nominal.size:
+            # Values fitted by the user need not lie in the drawer.
+            return {}
+        found[role] = row
+    return found
 
 
 def _parts(stage: Stage, role: str, values: Sequence[float] = ()) -> Parts:

@@ -41,6 +41,7 @@ ROOMS = (
     "ranking",
     "explain",
     "facts",
+    "tradeoff",
     "readings",
     "cautions",
     "advice",

@@ -15,6 +15,7 @@ from synth.box import Box, Meter
 from synth.facts import stresses
 from synth.limits import Judgement, Requirement, judge
 from synth.quantities import Interval, Spread, Target, format_exact, format_limit, format_quantity, format_target
+from synth.search import Stop
 from synth.spaces import Exact, Found, goal_of, spaces_of
 from synth.stage import Stage
 from synth.stage_keys import Given
@@ -33,13 +34,15 @@ DEFAULT, DEFAULT_CONDITION, CONDITION, TARGET = range(4)
 """What is given up first: limits that nobody asked for, other assumptions, what was asked for, what the request is for."""
 
 
-def why_nothing_qualifies(stage: Stage) -> Infeasible:
+def why_nothing_qualifies(stage: Stage, stop: Stop | None = None) -> Infeasible:
     """Find the limits that conflict and the single relaxations that would do.
 
     Parameters
     ----------
     stage : Stage
         A request for which no network qualifies.
+    stop : callable, optional
+        Asked often; from True on nothing more is looked at.
 
     Returns
     -------
@@ -54,7 +57,7 @@ def why_nothing_qualifies(stage: Stage) -> Infeasible:
     needs = {need.limit: need for space in spaces_of(stage) for need in space.requirements}
     given = {name for name in needs if name.startswith("target.") or name in stage.limits_given}
     # Staying active is physics, not a request; and what the user did not ask for is named, and given up, first.
-    purse = Purse()
+    purse = Purse(stop=stop)
     names = sorted((n for n in needs if n != ACTIVE or n in given), key=lambda n: n in given)
     dropped: set[str] = set()
     for name in sorted(names, key=lambda n: (n in given, n == "collector_share")):

@@ -6,7 +6,7 @@ from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 from synth.quantities import RestpointError
-from synth.search import Outcome, search
+from synth.search import Outcome, Stop, search
 from synth.spaces import Space, goal_of, spaces_of
 from synth.stage import Stage
 
@@ -27,10 +27,13 @@ class Purse:
     ----------
     left : float
         Q-point solves [-].
+    stop : callable, optional
+        Asked often; from True on nothing is searched any more.
     """
 
-    def __init__(self, left: float = BUDGET) -> None:
+    def __init__(self, left: float = BUDGET, stop: Stop | None = None) -> None:
         self.left = left
+        self.stop = stop
 
     def search(
         self,
@@ -63,7 +66,8 @@ class Purse:
         """
         rooms = spaces_of(stage, without) if spaces is None else spaces
         gap = 0.0 if first else GAP
-        outcome = search(rooms, goal_of(stage), top=1, gap=gap, first=first, most=max(min(most, self.left), 0.0))
+        most = min(most, max(self.left, 0.0))
+        outcome = search(rooms, goal_of(stage), top=1, gap=gap, first=first, most=most, stop=self.stop)
         self.left -= outcome.evaluated
         return outcome
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sys
+import threading
 import time
 from collections.abc import Callable, Sequence
 from pathlib import Path
@@ -73,6 +74,29 @@ def deliver(answer: Answer, stage: Stage, explain: Sequence[int], options: dict[
     return FOUND if answer.passed else NOT_FOUND
 
 
+def stopper(budget: str | None) -> Callable[[], bool]:
+    """Asked by a search whether to stop: the time is up, or the user pressed Ctrl-C, which a second time ends the program."""
+    import signal
+
+    from synth.quantities import parse
+
+    seconds = float("inf") if budget is None else parse(budget, "time", "budget")
+    end = time.monotonic() + seconds
+    asked = False
+
+    def note(number: int, frame: object) -> None:
+        nonlocal asked
+        if asked:
+            raise KeyboardInterrupt
+        asked = True
+
+    # Only the main thread may listen; elsewhere, as in a test runner of threads, the time alone counts.
+    if threading.current_thread() is threading.main_thread():
+        before = signal.signal(signal.SIGINT, note)
+        click.get_current_context().call_on_close(lambda: signal.signal(signal.SIGINT, before))
+    return lambda: asked or time.monotonic() > end
+
+
 def progress() -> Callable[[float, float, int], bool] | None:
     """A bar on stderr that shows how near the proof is, if stderr is a terminal and the search takes long."""
     if not sys.stderr.isatty():
@@ -87,7 +111,7 @@ def progress() -> Callable[[float, float, int], bool] | None:
             last, shown = now, True
             share = min(bound / best, 1.0) if 0.0 < best < float("inf") else 0.0
             bar = "█" * round(30 * share) + "·" * (30 - round(30 * share))
-            best_text = f"best {100 * best:.1f} %" if best < float("inf") else "no candidate yet"
+            best_text = f"best {100 * best:.1f} %, gap {100 * (1.0 - share):.1f} %" if best < float("inf") else "none yet"
             text = f"\r{bar} {best_text}, nothing below {100 * bound:.1f} %, {blocks} blocks open   "
             click.echo(text, err=True, nl=False)
         return True

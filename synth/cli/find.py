@@ -7,14 +7,24 @@ from typing import Any
 
 import click
 
-from synth.cli.delivery import deliver, files, progress
+from synth.cli.delivery import deliver, files, progress, stopper
 from synth.cli.options import FORMATS, Count, WrongInput, command_line, key_options, output_options, read_stage, report_option
 
 
 def command(meaning: str) -> click.Command:
     """The command, with what it is for in one sentence."""
 
-    def run(stage_file: Path | None, top: int, explain: tuple[int, ...], every: bool, advise: bool, **options: Any) -> int:
+    def run(
+        stage_file: Path | None,
+        top: int,
+        metric: str,
+        frontier: str | None,
+        budget: str | None,
+        explain: tuple[int, ...],
+        every: bool,
+        advise: bool,
+        **options: Any,
+    ) -> int:
         from synth.solve import find
 
         for key, value in options.items():
@@ -24,7 +34,16 @@ def command(meaning: str) -> click.Command:
                 raise WrongInput(f"--{role}: find chooses values itself, accepted is {pin!r} to pin one, or the command check")
         files(options)
         stage = read_stage(stage_file, options)
-        answer = find(stage, top=top, advise=advise, progress=progress(), command=command_line())
+        answer = find(
+            stage,
+            top=top,
+            metric=metric,
+            frontier=frontier or "",
+            advise=advise,
+            progress=progress(),
+            stop=stopper(budget),
+            command=command_line(),
+        )
         ranks = [c.rank for c in answer.candidates] if every else list(explain)
         return deliver(answer, stage, ranks, options)
 
@@ -38,6 +57,12 @@ def command(meaning: str) -> click.Command:
             *key_options(),
             click.Option(["--top"], type=Count(1, 1000), default=10, show_default=True, metavar="N",
                          help="How many candidates to list and prove."),
+            click.Option(["--metric"], default="corners", show_default=True, metavar="TEXT",
+                         help="What ranks: corners, rss, ic, vce, or weights such as 'ic=1, vce=0.5'."),
+            click.Option(["--frontier"], metavar="AXES",
+                         help="Find what no candidate beats in drift and in supply_current, input_resistance, gain, swing,"
+                         " distinct_values, parts or price; several with commas."),
+            click.Option(["--budget"], metavar="TIME", help="Stop after this time, such as 2s, with the best so far."),
             click.Option(["--explain"], type=Count(1), metavar="N", multiple=True,
                          help="Explain candidate N as well."),
             click.Option(["--advise"], is_flag=True,

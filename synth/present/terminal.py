@@ -5,13 +5,17 @@ from __future__ import annotations
 from collections.abc import Sequence
 from math import inf
 
-from synth.answer import Answer, Candidate, Outlook, Verdict
+from synth.answer import Answer, Candidate, Outlook, Tradeoff, Verdict
 from synth.explain import cause_words, made_of, percent, point_words
 from synth.quantities import format_quantity, format_resistance
+from synth.search import AXES
 from synth.stage_keys import KEYS
+from synth.tradeoff import figure_text, made_up
 
 WIDTH = 100
 FIGURES = 3
+ROWS = 20
+"""Rows of a frontier that the table shows."""
 STRESS = ("resistor_stress.", "transistor_stress.")
 LEGEND = """Words
   over the box  worst case over every spread at once: gain, VBE, temperature, supply, resistors
@@ -44,8 +48,13 @@ def render(answer: Answer) -> str:
         blocks += [_first(answer, best), _causes(best), _limits(best), _stress(answer, best), _signal(answer, best)]
     if answer.alternatives:
         blocks.append(
-            _section("Worth a look", [[f"rank {a.rank}", a.reason, a.text] for a in answer.alternatives])
+            _section(
+                "Worth a look",
+                [[f"rank {a.rank}" if a.rank else "frontier", a.reason, a.text] for a in answer.alternatives],
+            )
         )
+    if answer.frontier is not None:
+        blocks.append(_frontier(answer.frontier))
     if len(answer.networks) > 1:
         rows = [[n.network, "–" if n.best is None else percent(n.best), n.why] for n in answer.networks]
         blocks.append(_section("Networks", rows))
@@ -162,15 +171,32 @@ def _headline(answer: Answer) -> str:
         count = len(answer.candidates)
         only = "the only candidate" if search.bound is None else "the best"
         listed = only if count == 1 else f"the best {count}"
-        beyond = "" if search.bound is None else f"; every other drifts {percent(search.bound)} or more"
+        does = "drifts" if search.metric == "corners" else f"by {search.metric} comes to"
+        beyond = "" if search.bound is None else f"; every other {does} {percent(search.bound)} or more"
         # A junction that does not settle is found out when the candidates are reviewed.
         verdict = "PASS" if answer.passed else "FAIL"
         return _wrapped(f"{verdict}  {name}: {listed} of {space}, proved{beyond} ({effort})", "      ")
     if search.status == "infeasible":
         return _wrapped(f"FAIL  {name}: none of {space} meets every limit, proved ({effort})", "      ")
-    bound = f"; nothing can drift less than {percent(search.bound)}" if search.bound else ""
-    state = "PASS" if answer.candidates else "OPEN"
-    return _wrapped(f"{state}  {name}: stopped early among {space}{bound} ({effort})", "      ")
+    if not answer.candidates:
+        does = "drifts" if search.metric == "corners" else f"by {search.metric} comes to"
+        bound = f", and what is left {does} {percent(search.bound)} or more" if search.bound else ""
+        text = f"stopped before any of {space} was found to meet every limit; it is open whether one does{bound}"
+        return _wrapped(f"OPEN  {name}: {text} ({effort})", "      ")
+    first, least = _measure(answer.candidates[0]), search.bound
+    if least is None or least >= first:
+        text = "none is better than the first, but the rest of the list may change"
+    elif least > 0.0:
+        does = "drift" if search.metric == "corners" else f"by {search.metric} come to"
+        text = f"nothing can {does} less than {percent(least)}, a gap of {percent(1.0 - least / first)} of the best so far"
+    else:
+        text = "of the rest nothing is known yet"
+    verdict = "PASS" if answer.passed else "FAIL"
+    return _wrapped(f"{verdict}  {name}: stopped early, the best so far of {space}; {text} ({effort})", "      ")
+
+
+def _measure(c: Candidate) -> float:
+    return c.drift.q_point if c.score is None else c.score
 
 
 def figure(value: float, kind: str) -> str:
@@ -224,12 +250,14 @@ def _ranking(candidates: Sequence[Candidate]) -> str:
     # The voltage that has the target, if another than VCE has it.
     volts = list(candidates[0].worst)[-1]
     slim = same and not any(c.parts for c in candidates)
-    head += ["IC over the box", f"{volts.upper()} over the box", "drift", *(["supply"] if slim else [])]
+    head += ["IC over the box", f"{volts.upper()} over the box", "drift"]
+    head += ["metric"] if candidates[0].score is not None else ["supply"] if slim else []
     rows = [head]
     for c in candidates:
         values = [made_of(c.resistors[r], c.parts.get(r)) for r in roles] if same else [
             ("; " if c.parts else " ").join(f"{r.upper()} {made_of(v, c.parts.get(r))}" for r, v in c.resistors.items())
         ]
+        last = [figure(c.supply_current, "current")] if slim else []
         rows.append(
             [
                 str(c.rank),
@@ -238,10 +266,28 @@ def _ranking(candidates: Sequence[Candidate]) -> str:
                 span(*c.worst["ic"], "current"),
                 span(*c.worst[volts], "voltage"),
                 percent(c.drift.q_point),
-                *([figure(c.supply_current, "current")] if slim else []),
+                *(last if c.score is None else [percent(c.score)]),
             ]
         )
-    return table(rows, right=(0, *(j for j, name in enumerate(head) if name in ("drift", "supply"))))
+    return table(rows, right=(0, *(j for j, name in enumerate(head) if name in ("drift", "supply", "metric"))))
+
+
+def _frontier(front: Tradeoff) -> str:
+    """The points that nothing beats, thinned out evenly where there are many."""
+    axes = [AXES[name] for name in front.axes]
+    count = len(front.points)
+    rows = min(count, ROWS)
+    shown = [round(k * (count - 1) / max(rows - 1, 1)) for k in range(rows)]
+    names = [axis.name.replace("_", " ") for axis in axes]
+    cells = [["drift", *names, "network", "resistors"]]
+    for point in (front.points[k] for k in shown):
+        figures = [figure_text(axis, point.figures[axis.name]) for axis in axes]
+        cells.append([percent(point.drift), *figures, point.network, made_up(point)])
+    title = f"Frontier of drift and {', '.join(names)}: {count} candidates that none beats"
+    if not front.complete:
+        title += ", not all" if front.bound is None else f", all there are below {percent(front.bound)}"
+    title += f" ({len(shown)} shown; --format json has all)" if len(shown) < count else ""
+    return _wrapped(title, "  ") + ("\n" + table(cells, right=range(1 + len(axes))) if count else "")
 
 
 def _first(answer: Answer, c: Candidate) -> str:
@@ -421,6 +467,8 @@ def _infeasible(answer: Answer) -> str:
         for r in why.relaxations:
             change = ", ".join(f"{key} = \"{text}\"" for key, text in r.change.items())
             lines.append(f"  {change}: best drift {percent(r.drift)}")
+    elif why.unsettled:
+        lines.append("Whether a single change would do is not known: the search for advice was stopped.")
     else:
         lines.append("No single change would do: of a limit, the supply, the gain, the resistors, the ambient or the network.")
     return "\n".join(_wrapped(line, "    ") for line in lines)

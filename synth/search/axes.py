@@ -28,7 +28,7 @@ class Axis:
     Parameters
     ----------
     name, kind : str
-        What the user calls it; kind of quantity, as `synth.quantities` names it.
+        What the user calls it; kind of quantity, as `synth.quantities` names it, or ``count`` or ``price``.
     words : str
         What is best along it, in words.
     most : bool
@@ -37,6 +37,8 @@ class Axis:
         ``value(space, index, meter)``: of candidates, shape (n,).
     bound : callable
         ``bound(space, corners)``: lower bound over the blocks that `corners` has taken up, at nominal values, shape (n,).
+    of_signal : bool
+        Whether it means nothing for a network that takes no signal.
     """
 
     name: str
@@ -45,6 +47,7 @@ class Axis:
     most: bool
     value: Callable[[Space, Index, Meter], Array]
     bound: Callable[[Space, Corners], Array]
+    of_signal: bool = False
 
 
 def _measured(space: Space, index: Index, meter: Meter, sums: tuple[tuple[str, ...], ...]) -> Array:
@@ -72,7 +75,7 @@ def _figure(name: str, words: str, kind: str, sides: tuple[str, ...]) -> Axis:
             return np.full(len(corners.lo), NOTHING)
         return np.asarray(np.maximum.reduce([corners.least(side, -1) for side in sides]))
 
-    return Axis(name=name, kind=kind, words=words, most=True, value=value, bound=bound)
+    return Axis(name=name, kind=kind, words=words, most=True, value=value, bound=bound, of_signal=True)
 
 
 def _ends(space: Space, lo: Index, hi: Index) -> tuple[Array, Array]:

@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from synth.box import Meter
 from synth.limits import Requirement
 from synth.networks.form import Array
+from synth.rss import Spot, deciding_moves
 from synth.search.axes import Axis
 from synth.search.blocks import Blocks, Room
 from synth.search.pools import Best, Front, Member, Pool, sift
@@ -257,7 +258,7 @@ def _coarse(room: Room, pool: Pool, most: float, stop: Stop) -> list[Found]:
         return []
     thin = space.thinned(positions)
     own: Best | Front = Best(pool.top) if isinstance(pool, Best) else Front(MOST_MEMBERS)
-    few = Room(thin, room.goal, room.meter, room.anchors, room.weights, room.asleep, room.axes)
+    few = Room(thin, room.goal, room.meter, room.anchors, room.weights, room.asleep, room.moves, room.axes)
     _Work([few], own, None, stop, False, most).run()
     kept = own.found.values() if isinstance(own, Best) else [member.found for member in own.members]
     return [
@@ -368,12 +369,13 @@ def _thin(size: int, count: int) -> Index:
 
 def _bearings(
     space: Space, index: Index, goal: Goal, meter: Meter
-) -> tuple[dict[tuple[str, int], dict[str, float]], list[float], list[Requirement]]:
+) -> tuple[dict[tuple[str, int], dict[str, float]], list[float], list[Requirement], dict[str, dict[str, tuple[Spot, Spot]]]]:
     """What one candidate tells about its surroundings.
 
     The points of the box that decide its extremes, which serve as the points of every bound; the weight of each role: how far
-    IC, and VCE where it has a target, move with it, in ratio; and the limits on stress and signal that are far from binding
-    here, on which no block is worth a test. No choice touches what is proved.
+    IC, and VCE where it has a target, move with it, in ratio; the limits on stress and signal that are far from binding
+    here, on which no block is worth a test; and where the root sum square ranks the lone moves that count. No choice touches
+    what is proved.
     """
     box = space.box(index, meter)
     anchors = {(name, side): box.extreme((name,), side, thorough=False).anchor(0) for name, side in wanted(goal)}
@@ -392,4 +394,5 @@ def _bearings(
         if need.rated is not None or is_dear(need):
             margins = [float(need.margin(box.measure(names, start, nominal)).min()) for names in need.sums]
             idle += [need] if min(margins) > FAR else []
-    return anchors, [max(float(e) / STEP, LEAST_WEIGHT) for e in effect[1:]], idle
+    squares = deciding_moves(box, goal.aims) if goal.rss else {}
+    return anchors, [max(float(e) / STEP, LEAST_WEIGHT) for e in effect[1:]], idle, squares

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Collection, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property, partial
 from typing import NamedTuple
 
@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from synth.box import Meter
 from synth.limits import Requirement
 from synth.networks.form import Array
+from synth.rss import Spot
 from synth.search.axes import Axis
 from synth.search.corners import Corners
 from synth.spaces import Goal, Index, Space
@@ -73,6 +74,7 @@ class Room:
     anchors: Mapping[tuple[str, int], Mapping[str, float]]
     weights: Sequence[float]
     asleep: Collection[Requirement] = ()
+    moves: Mapping[str, Mapping[str, tuple[Spot, Spot]]] = field(default_factory=dict)
     axes: Sequence[Axis] = ()
 
     def __post_init__(self) -> None:
@@ -138,6 +140,9 @@ class Room:
             own = [n for n in rest if n.judged == "box" and n.sums == ((quantity,),) and side in n.sides]
             run = partial(self._excursion, quantity, side, point, own)
             tests.append(Probe(run, *self.corners(point).uses(quantity, side)))
+        for quantity in self.moves:
+            every = np.ones(len(self.space.roles), dtype=bool)
+            tests.append(Probe(partial(self._squares, quantity), every, every))
         for need in rest:
             if need in self.asleep:
                 continue
@@ -175,6 +180,33 @@ class Room:
         for need in needs:
             bound = np.where(need.side(side).passes(side * value), bound, np.inf)
         return bound
+
+    def _squares(self, quantity: str, lo: Index, hi: Index) -> Array:
+        """Least root sum square: each move is at least what two intervals leave between them, and no move exceeds the whole."""
+        aim, least = self.goal.aims[quantity], {}
+        moves = dict(self.moves[quantity])
+        start = {"temperature": self.space.temperature.nominal}
+        nothing = np.zeros(len(lo))
+
+        def ends(spot: Spot) -> dict[int, Array]:
+            key = tuple(sorted(spot.items()))
+            if key not in least:
+                corner = self.at(spot, lo, hi)
+                least[key] = {side: corner.least(quantity, side) for side in (1, -1)}
+            return least[key]
+
+        def off(spot: Spot) -> Array:
+            return np.asarray(np.maximum.reduce([nothing, *(ends(spot)[side] - side * aim for side in (1, -1))]))
+
+        def move(there: Spot, here: Spot) -> Array:
+            return np.asarray(np.maximum.reduce([nothing, *(ends(there)[side] + ends(here)[-side] for side in (1, -1))]))
+
+        # No one move takes the quantity further from its target than centring, temperature and itself together.
+        alone = np.maximum.reduce([off(there) for there, _ in moves.values()])
+        steady = off(start) + (move(*moves.pop("temperature")) if "temperature" in moves else nothing)
+        squares = sum((move(there, here) ** 2 for there, here in moves.values()), nothing)
+        weight = self.goal.weight(quantity)
+        return np.asarray(weight * np.maximum(alone, steady + np.sqrt(squares)) / aim)
 
     def _static(self, need: Requirement, signs: Mapping[str, int], lo: Index, hi: Index) -> Array:
         """A limit on resistances alone, at its favourable corner."""
