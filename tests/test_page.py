@@ -17,10 +17,13 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
+import synth
 from synth.answer import Answer
+from synth.boards import Board, BoardAnswer
+from synth.boards.file import BoardStage
 from synth.cli import main
 from synth.explain import percent
-from synth.present.page import to_html
+from synth.present.page import board_to_html, to_html
 from synth.present.page.circuit_view import circuit
 from synth.present.page.lead import count_words
 from synth.present.page.load_line import picture
@@ -29,7 +32,7 @@ from synth.quantities import format_resistance
 from synth.solve import check, find
 from synth.stage import Stage
 
-BUOY = {"supply": "12 V ± 5 %", "ic": "1 mA ± 25 %", "vce": "5 V", "type": "BC847B", "tolerance": "1 %", "series": "E24"}
+BUOY = {"supply": "12 V ± 5 %", "ic": "1 mA ± 25 %", "vce": "5 V", "hfe": "200 : 450", "tolerance": "1 %", "series": "E12"}
 VALUES = {"r1": "56k", "r2": "18k", "rc": "4k7", "re": "2k2"}
 HOSTILE = '<script>alert(1)</script><img src=x onerror=alert(2)> & "quoted" \'single\''
 VOID = {"meta", "input", "br", "img", "link", "rect", "line", "circle", "path"}
@@ -77,9 +80,9 @@ ANSWERS = {
     "check": lambda: check(Stage(**BUOY, **VALUES)),  # type: ignore[arg-type]
     "check that saturates": lambda: check(Stage(**BUOY, **{**VALUES, "rc": "12k"})),  # type: ignore[arg-type]
     "nothing qualifies": lambda: find(Stage(**{**BUOY, "ic": "1 mA ± 1 %"})),  # type: ignore[arg-type]
-    "every network": lambda: find(Stage(**{**BUOY, "network": "any"}), top=12),  # type: ignore[arg-type]
+    "every network": lambda: find(Stage(**{**BUOY, "network": "any", "series": "E6"}), top=12),  # type: ignore[arg-type]
     "pnp, positive ground": lambda: find(
-        Stage(**{**BUOY, "type": "BC857B"}, supply_ground="positive"), top=2  # type: ignore[arg-type]
+        Stage(**{**BUOY, "transistor_polarity": "pnp"}, supply_ground="positive"), top=2  # type: ignore[arg-type]
     ),
 }
 
@@ -214,6 +217,42 @@ def test_bars_of_a_budget_share_one_scale() -> None:
 def test_large_counts_are_written_in_powers_of_ten() -> None:
     assert count_words(129257) == "129\u00a0257"
     assert count_words(100604625) == "1.01·10⁸"
+
+
+@cache
+def board_answer() -> BoardAnswer:
+    """Two stages of the buoy, one of them built twice; values as the program chooses them."""
+    small = {**BUOY, "series": "E6", "ic": "1 mA ± 35 %"}
+    stages = (BoardStage(stage=Stage(**small, name="level"), count=2, allowance=0.05), BoardStage(stage=Stage(**small, name=HOSTILE), allowance=0.05))  # type: ignore[arg-type]
+    return synth.board(Board(name="buoy <b>board</b>", stages=stages), most=200)
+
+
+def test_page_of_a_board_shows_its_bom_and_every_stage() -> None:
+    answer = board_answer()
+    html = board_to_html(answer)
+    page = Reader(html)
+    names = [attrs["id"] for _, attrs in page.elements if "id" in attrs]
+    assert len(names) == len(set(names))
+    assert "<b>" not in html
+    assert "<img" not in html
+    for line in answer.bom:
+        assert f"{line.value} " in page.text
+        assert all(number in page.text for number in line.designators)
+        assert " ".join(line.rationale.replace(" | ", "; ").split()) in page.text
+    for result in answer.stages:
+        assert result.name.split("<")[0] in page.text
+        assert percent(result.drift) in page.text
+    assert "buoy <b>board</b>" in page.text
+
+
+def test_page_of_a_board_that_has_no_choice_says_why() -> None:
+    """Windows of 1 % cannot be met with 5 % resistors: every one of them alone moves IC or VCE further."""
+    stage = Stage(**{**BUOY, "ic": "1 mA ± 1 %", "tolerance": "5 %"}, name="level")  # type: ignore[arg-type]
+    answer = synth.board(Board(stages=(BoardStage(stage=stage),)))
+    assert not answer.passed
+    page = Reader(board_to_html(answer))
+    assert "FAIL" in page.text
+    assert " ".join(answer.infeasible[0].split()) in page.text
 
 
 def run(capsys: pytest.CaptureFixture[str], *words: str) -> tuple[int, str, str]:

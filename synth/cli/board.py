@@ -8,20 +8,25 @@ from pathlib import Path
 
 import click
 
-from synth.cli.options import FORMATS, FOUND, NOT_FOUND, Choice, Count, command_line
+from synth.cli.delivery import is_report
+from synth.cli.options import FORMATS, FOUND, NOT_FOUND, Choice, Count, command_line, report_option
 
 
 def command(meaning: str) -> click.Command:
     """The command, with what it is for in one sentence."""
 
     def run(
-        board_file: Path, form: str, output: Path | None, force: bool, most: int, seconds: int, jobs: int
+        board_file: Path, form: str, output: Path | None, report: Path | None, force: bool, most: int, seconds: int, jobs: int
     ) -> int:
         from synth.boards import Board, BoardAnswer, board
         from synth.present.board import render, to_csv, to_markdown
         from synth.present.files import refuse, write
+        from synth.present.page import board_to_html
 
-        files = {} if output is None else {"--output": output}
+        named = {"--output": output, "--report": report}
+        files = {option: path for option, path in named.items() if path is not None}
+        if report is not None:
+            is_report(report, (".html",))
         refuse(files, force)
         request = Board.read(board_file)
         answer = board(
@@ -31,7 +36,8 @@ def command(meaning: str) -> click.Command:
             "table": render, "json": BoardAnswer.to_json, "csv": to_csv, "markdown": to_markdown,
         }
         text = makers[form](answer)
-        write({option: (path, text) for option, path in files.items()})
+        content: dict[str, Callable[[], str]] = {"--output": lambda: text, "--report": lambda: board_to_html(answer)}
+        write({option: (path, content[option]()) for option, path in files.items()})
         if output is None:
             click.echo(text, nl=False)
         return FOUND if answer.passed else NOT_FOUND
@@ -41,6 +47,7 @@ def command(meaning: str) -> click.Command:
         click.Option(["--format", "form"], type=Choice(FORMATS), default=FORMATS[0],
                      help="Form of the answer; csv is the BOM alone."),
         click.Option(["--output"], type=click.Path(path_type=Path), metavar="FILE", help="Write the answer to a file."),
+        report_option(),
         click.Option(["--force"], is_flag=True, help="Allow an existing file to be replaced."),
         click.Option(["--most"], type=Count(1, 100_000), default=5000, show_default=True, metavar="N",
                      help="Candidates of one stage after which its list ends; the proof counts what is left out."),

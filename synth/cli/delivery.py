@@ -27,11 +27,16 @@ def files(options: dict[str, Any]) -> dict[str, Path]:
 
     names = ("output", "save", "report")
     files: dict[str, Path] = {f"--{name}": options[name] for name in names if options.get(name) is not None}
-    report = files.get("--report")
-    if report is not None and report.suffix.lower() not in REPORTS:
-        raise WrongInput(f"--report: read {str(report)!r}, accepted is a file name that ends in {' or '.join(REPORTS)}")
+    if "--report" in files:
+        is_report(files["--report"], tuple(REPORTS))
     refuse(files, options["force"])
     return files
+
+
+def is_report(path: Path, endings: Sequence[str]) -> None:
+    """Refuse the file of a report whose ending names no form that there is."""
+    if path.suffix.lower() not in endings:
+        raise WrongInput(f"--report: read {str(path)!r}, accepted is a file name that ends in {' or '.join(endings)}")
 
 
 def _page(answer: Answer) -> str:

@@ -68,7 +68,7 @@ def _headline(answer: BoardAnswer) -> str:
     text = f"PASS  {answer.name}: {_many(len(answer.stages), 'stage')}, {_many(pieces, 'resistor')} on "
     text += f"{_many(len(answer.bom), 'line')} ({new} new)"
     if answer.cost is not None:
-        text += f", {_money(answer.cost)} to order"
+        text += f", {money(answer.cost)} to order"
     state = "proved the best choice" if search.complete else "not proved the best"
     effort = f"{search.candidates} candidates of {search.combinations:.3g} combinations, {search.seconds:.1f} s"
     return f"{text}; {state}\n      ({effort})"
@@ -82,7 +82,7 @@ def _proof(answer: BoardAnswer) -> str:
         elif bound.name == "new_lines":
             rows.append(["new line items", f"{bound.value:.0f}", f"{bound.bound:.0f}"])
         elif answer.cost is not None:
-            rows.append(["cost of what is ordered", _money(bound.value), _money(bound.bound)])
+            rows.append(["cost of what is ordered", money(bound.value), money(bound.bound)])
     return table(rows)
 
 
@@ -117,7 +117,7 @@ def _bom_rows(answer: BoardAnswer) -> list[list[str]]:
         cells += [format_exact(line.tcr, "temperature_coefficient"), line.style or "–", line.part or "–"]
         if priced:
             cells += ["any" if line.on_hand is None else str(line.on_hand), str(line.buy)]
-            cells.append("–" if line.cost is None else _money(line.cost))
+            cells.append("–" if line.cost is None else money(line.cost))
         rows.append([*cells, ", ".join(line.designators) + ("" if line.new else " (on the board already)")])
     return rows
 
@@ -196,7 +196,19 @@ def _table(rows: Sequence[Sequence[str]]) -> str:
     return "\n".join([lines[0], "|" + "---|" * len(rows[0]), *lines[1:]])
 
 
-def _money(amount: float) -> str:
+def money(amount: float) -> str:
+    """An amount in the currency of the stock list.
+
+    Parameters
+    ----------
+    amount : float
+        Any [currency of the list].
+
+    Returns
+    -------
+    str
+        With two decimals, or as many as it needs.
+    """
     return f"{amount:.6f}".rstrip("0").rstrip(".") if round(amount, 2) != amount else f"{amount:.2f}"
 
 

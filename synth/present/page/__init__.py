@@ -20,6 +20,8 @@ from synth.present.page.lead import lead, notes, title
 if TYPE_CHECKING:
     import jinja2
 
+    from synth.boards import BoardAnswer
+
 
 def to_html(answer: Answer) -> str:
     """The answer as a page.
@@ -50,6 +52,24 @@ def to_html(answer: Answer) -> str:
             "version": answer.version,
         },
     )
+
+
+def board_to_html(answer: BoardAnswer) -> str:
+    """The answer for a board as a page.
+
+    Parameters
+    ----------
+    answer : BoardAnswer
+        Of `synth.board`.
+
+    Returns
+    -------
+    str
+        As `to_html`.
+    """
+    from synth.present.page.boards_view import board_page
+
+    return render("answer.html.j2", board_page(answer))
 
 
 def render(template: str, content: Mapping[str, Any]) -> str:

@@ -22,7 +22,8 @@ METER = 10e6
 class Entry:
     """One candidate of a page: its key, what its row and its heading call it, the answer that it stands in, more cells.
 
-    `more` are cells of its row by the name of their column; every entry of a page has the same columns.
+    `more` are cells of its row by the name of their column; every entry of a page has the same columns. `designators` name
+    the part of each role, one for each copy that is built, where they are not made from the role.
     """
 
     key: str
@@ -31,6 +32,7 @@ class Entry:
     answer: Answer
     candidate: Candidate
     more: Mapping[str, Cell] = field(default_factory=dict)
+    designators: Sequence[Mapping[str, str]] = ()
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -141,13 +143,15 @@ def listing(title: str, column: str, found: Sequence[Entry], *, first: str = "",
     )
 
 
-def views(found: Sequence[Entry]) -> list[View]:
+def views(found: Sequence[Entry], *, alike: bool = True) -> list[View]:
     """Everything that the page shows of each candidate.
 
     Parameters
     ----------
     found : sequence of Entry
-        All of one page, since their load lines share their axes.
+        All of one page.
+    alike : bool
+        Whether they answer one request, so that their load lines share their axes.
 
     Returns
     -------
@@ -155,7 +159,7 @@ def views(found: Sequence[Entry]) -> list[View]:
         Texts and places, nothing left to compute.
     """
     every = [entry.candidate for entry in found]
-    return [_view(entry, every) for entry in found]
+    return [_view(entry, every if alike else [entry.candidate]) for entry in found]
 
 
 def _view(entry: Entry, among: Sequence[Candidate]) -> View:
@@ -168,9 +172,9 @@ def _view(entry: Entry, among: Sequence[Candidate]) -> View:
         verdict=c.verdict,
         drift=percent(c.drift.q_point),
         picture=picture(answer, c, among, entry.name),
-        circuit=circuit(answer, c, entry.name),
+        circuit=circuit(answer, c, entry.name, entry.designators[0] if entry.designators else {}),
         q_point=_q_point(answer, c),
-        roles=_roles(c),
+        roles=_roles(entry),
         readings=_readings(c),
         budgets=_budgets(c),
         limits=_limits(c),
@@ -200,13 +204,15 @@ def _q_point(answer: Answer, c: Candidate) -> Table:
     )
 
 
-def _roles(c: Candidate) -> Table:
-    rows = []
+def _roles(entry: Entry) -> Table:
+    rows, c = [], entry.candidate
     for role, duty in c.roles.items():
         value = format_resistance(c.resistors[role])
         drop, current = figure(duty.drop, "voltage"), figure(duty.current, "current")
         between = f"{duty.between[0]} to {duty.between[1]}"
-        rows.append([words(role.upper()), number(value), words(between), number(drop), number(current), words(duty.meaning)])
+        numbers = ", ".join(names[role] for names in entry.designators if role in names)
+        part = words(f"{role.upper()} ({numbers})" if numbers else role.upper())
+        rows.append([part, number(value), words(between), number(drop), number(current), words(duty.meaning)])
     return Table(title="Resistors", head=("", "value", "between", "drop", "current", "purpose"), rows=rows)
 
 

@@ -46,7 +46,7 @@ class Circuit:
     summary: str
 
 
-def circuit(answer: Answer, c: Candidate, name: str) -> Circuit:
+def circuit(answer: Answer, c: Candidate, name: str, designators: Mapping[str, str] | None = None) -> Circuit:
     """The circuit of a candidate with values and node voltages.
 
     Parameters
@@ -57,6 +57,8 @@ def circuit(answer: Answer, c: Candidate, name: str) -> Circuit:
         One of its candidates.
     name : str
         What the page calls it.
+    designators : mapping of str to str, optional
+        Name of the part in each role.
 
     Returns
     -------
@@ -65,7 +67,7 @@ def circuit(answer: Answer, c: Candidate, name: str) -> Circuit:
     """
     from synth.present.circuit import to_svg
 
-    root = ElementTree.fromstring(to_svg(answer, c))
+    root = ElementTree.fromstring(to_svg(answer, c, designators=designators))
     lines: dict[str, list[str]] = {}
     shapes, texts = [], []
     for element in root:
