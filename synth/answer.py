@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import html
 import json
 import math
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, Literal
 
+from synth.quantities import format_quantity, format_resistance
 from synth.stage import Assumption
 
 if TYPE_CHECKING:
@@ -537,6 +539,25 @@ class Answer:
         """
         return "\n".join(self.candidate(rank).explanation)
 
+    def _repr_html_(self) -> str:
+        """The candidates as an HTML table, as a notebook shows it; every text of the stage is escaped."""
+        name = html.escape(str(self.stage.get("name") or "stage"))
+        verdict = "PASS" if self.passed else "FAIL"
+        if not self.candidates:
+            binding = ", ".join(self.infeasible.binding) if self.infeasible else ""
+            return f"<p><strong>{verdict}</strong> {name}: nothing qualifies; {html.escape(binding)} cannot be met.</p>"
+        volts = list(self.candidates[0].worst)[-1]
+        head = ["rank", "network", "resistors", "IC over the box", f"{volts.upper()} over the box", "drift", "verdict"]
+        titles = "".join(f'<th scope="col">{html.escape(cell)}</th>' for cell in head)
+        rows = []
+        for c in self.candidates:
+            fitted = ", ".join(f"{role.upper()} {format_resistance(value)}" for role, value in c.resistors.items())
+            spans = (_span(c.worst.ic, "current"), _span(c.worst[volts], "voltage"))
+            cells = [str(c.rank), c.network, fitted, *spans, format_quantity(c.drift.q_point, "ratio"), c.verdict]
+            rows.append(f"<tr>{''.join(f'<td>{html.escape(cell)}</td>' for cell in cells)}</tr>")
+        caption = f"<caption><strong>{verdict}</strong> {name}</caption>"
+        return f"<table>{caption}<thead><tr>{titles}</tr></thead><tbody>{''.join(rows)}</tbody></table>"
+
     def as_dict(self) -> dict[str, Any]:
         """The answer as plain data in the layout of the JSON contract.
 
@@ -593,6 +614,10 @@ class Answer:
 def _point(point: Point) -> dict[str, Any]:
     made = {role: _plain(vars(pair)) for role, pair in point.parts.items()}
     return {**_plain({name: x for name, x in vars(point).items() if name != "parts"}), "parts": made}
+
+
+def _span(ends: tuple[float, float], kind: str) -> str:
+    return " to ".join(format_quantity(end, kind) for end in ends)
 
 
 def _network(n: NetworkResult) -> dict[str, Any]:

@@ -362,6 +362,27 @@ def fitted(stage: Stage) -> Space:
     return _space(stage, matching[0], roles, {role: _parts(stage, role, (stage.values[role],)) for role in roles}, ())
 
 
+def space_of(stage: Stage, network: str, resistors: Mapping[str, float]) -> Space:
+    """One candidate of a stage as a space of its own.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request that it answers.
+    network : str
+        Its network.
+    resistors : mapping of str to float
+        Role to nominal resistance [ohm].
+
+    Returns
+    -------
+    Space
+        Of one candidate, with the bands that its values have in the stage.
+    """
+    roles = tuple(role for role in NETWORKS[network].role_names if role in resistors)
+    return _space(stage, network, roles, {role: _parts(stage, role, (resistors[role],)) for role in roles}, ())
+
+
 def among_values(stage: Stage, space: Space) -> tuple[Space, Index]:
     """The resistors fitted, placed among the values that the stage allows, so that they have neighbours.
 

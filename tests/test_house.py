@@ -47,6 +47,7 @@ ROOMS = (
     "advice",
     "solve",
     "boards",
+    "views",
     "present",
     "cli",
 )

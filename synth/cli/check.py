@@ -8,7 +8,16 @@ from typing import Any
 import click
 
 from synth.cli.delivery import deliver, files
-from synth.cli.options import FORMATS, Count, command_line, key_options, output_options, read_stage, report_option
+from synth.cli.options import (
+    FORMATS,
+    Count,
+    command_line,
+    key_options,
+    output_options,
+    picture_options,
+    read_stage,
+    report_option,
+)
 
 
 def command(meaning: str) -> click.Command:
@@ -31,6 +40,7 @@ def command(meaning: str) -> click.Command:
             *key_options(),
             click.Option(["--explain"], type=Count(1), is_flag=False, flag_value=1, metavar="[1]",
                          help="Explain the verdict."),
+            *picture_options(),
             *output_options(FORMATS),
             report_option(),
         ],

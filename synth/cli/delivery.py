@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 
 import click
 
+from synth.cli import pictures
 from synth.cli.options import FOUND, NOT_FOUND, WrongInput
 
 if TYPE_CHECKING:
@@ -29,6 +30,7 @@ def files(options: dict[str, Any]) -> dict[str, Path]:
     files: dict[str, Path] = {f"--{name}": options[name] for name in names if options.get(name) is not None}
     if "--report" in files:
         is_report(files["--report"], tuple(REPORTS))
+    pictures.refuse(options)
     refuse(files, options["force"])
     return files
 
@@ -53,7 +55,6 @@ def deliver(answer: Answer, stage: Stage, explain: Sequence[int], options: dict[
     """Write the answer and the request where they were asked for; the exit status."""
     from synth.answer import Answer
     from synth.present.export import to_csv, to_markdown
-    from synth.present.files import write
     from synth.present.terminal import explanation, render
 
     makers: dict[str, Callable[[Answer], str]] = {
@@ -68,12 +69,16 @@ def deliver(answer: Answer, stage: Stage, explain: Sequence[int], options: dict[
             if rank > count:
                 raise WrongInput(f"--explain: read {rank}, accepted is 1 to {count}")
             text += "\n" + explanation(answer, rank)
+    text += pictures.drawing(answer, options)
     content: dict[str, Callable[[Path], str]] = {
         "--output": lambda path: text,
         "--save": lambda path: stage.to_toml(path.parent),
         "--report": lambda path: REPORTS[path.suffix.lower()](answer),
     }
-    write({option: (path, content[option](path)) for option, path in files(options).items()})
+    named: dict[str, tuple[Path, str | bytes]] = {
+        option: (path, content[option](path)) for option, path in files(options).items()
+    }
+    pictures.write({**named, **pictures.files(answer, stage, options)}, options)
     if options["output"] is None:
         click.echo(text, nl=False)
     return FOUND if answer.passed else NOT_FOUND

@@ -8,7 +8,17 @@ from typing import Any
 import click
 
 from synth.cli.delivery import deliver, files, progress, stopper
-from synth.cli.options import FORMATS, Count, WrongInput, command_line, key_options, output_options, read_stage, report_option
+from synth.cli.options import (
+    FORMATS,
+    Count,
+    WrongInput,
+    command_line,
+    key_options,
+    output_options,
+    picture_options,
+    read_stage,
+    report_option,
+)
 
 
 def command(meaning: str) -> click.Command:
@@ -68,6 +78,7 @@ def command(meaning: str) -> click.Command:
             click.Option(["--advise"], is_flag=True,
                          help="Search again for what would buy or save most: finer values, better parts, cheaper parts."),
             click.Option(["--all", "every"], is_flag=True, help="Explain every candidate listed."),
+            *picture_options(),
             *output_options(FORMATS),
             report_option(),
         ],

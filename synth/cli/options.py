@@ -105,6 +105,17 @@ def report_option() -> click.Parameter:
                         help="Write the answer as a page that needs nothing but itself.")  # fmt: skip
 
 
+def picture_options() -> list[click.Parameter]:
+    """Options of a command that can show its answer in pictures."""
+    return [
+        click.Option(["--draw"], is_flag=True, help="Draw load line and budget of the first candidate in the terminal."),
+        click.Option(["--figures"], type=click.Path(path_type=Path), metavar="DIR",
+                     help="Write circuit, load line, budget, curves, yield and stress of the first candidate as SVG and PNG."),
+        click.Option(["--symbols"], type=Choice(("rectangle", "zigzag")), default="rectangle",
+                     help="Resistors in the circuit: rectangles of IEC 60617, or zigzag lines."),
+    ]
+
+
 def read_stage(path: Path | None, options: dict[str, Any], command: str = "") -> Stage:
     """The stage of a file, its keys overridden by options; those that only another command uses are refused."""
     from synth.stage import Stage

@@ -44,13 +44,35 @@ def refuse(paths: Mapping[str, Path], force: bool) -> None:
             raise FileRefused(f"{option}: {str(path)!r} exists already, accepted is a new file name, or add --force")
 
 
-def write(texts: Mapping[str, tuple[Path, str]]) -> None:
+def refuse_folder(option: str, folder: Path) -> None:
+    """Refuse a folder that cannot be used; one that is missing will be made.
+
+    Parameters
+    ----------
+    option : str
+        The option that names it.
+    folder : Path
+        Where files are to be written.
+
+    Raises
+    ------
+    FileRefused
+        If it is a file, or the folder that it would lie in is missing.
+    """
+    place = folder.absolute()
+    if place.exists() and not place.is_dir():
+        raise FileRefused(f"{option}: read {str(folder)!r}, which is a file, accepted is a folder")
+    if not place.parent.is_dir():
+        raise FileRefused(f"{option}: read {str(folder)!r}, accepted is a folder in one that exists")
+
+
+def write(texts: Mapping[str, tuple[Path, str | bytes]]) -> None:
     """Write files, all of them or none.
 
     Parameters
     ----------
-    texts : mapping of str to (Path, str)
-        Path and content by the option that names the file.
+    texts : mapping of str to (Path, str or bytes)
+        Path and content by the option that names the file; text is written as UTF-8.
 
     Raises
     ------
@@ -63,8 +85,8 @@ def write(texts: Mapping[str, tuple[Path, str]]) -> None:
         for option, (path, text) in texts.items():  # noqa: B007  the error below names it
             handle, name = tempfile.mkstemp(dir=path.absolute().parent, prefix=f".{path.name[:50]}.")
             scratch.append((name, path))
-            with os.fdopen(handle, "w", encoding="utf-8") as file:
-                file.write(text)
+            with os.fdopen(handle, "wb") as file:
+                file.write(text if isinstance(text, bytes) else text.encode("utf-8"))
                 file.flush()
                 os.fsync(file.fileno())
             os.chmod(name, 0o644)
