@@ -9,8 +9,10 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, Literal
 
+from synth.faults import Fault
 from synth.quantities import format_quantity, format_resistance
 from synth.stage import Assumption
+from synth.statistics import MonteCarlo, Rss, Sensitivity, Stability
 
 if TYPE_CHECKING:
     import pandas
@@ -115,13 +117,42 @@ class Neighbour:
 
 
 @dataclass(frozen=True, kw_only=True)
+class OtherClass:
+    """What a resistor of another tolerance [-] would do: drift [-], None once the transistor saturates, and verdict."""
+
+    tolerance: float
+    drift: float | None
+    verdict: Pass
+    fails: tuple[str, ...]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Rationale:
+    """Why a resistor is what it is: worst power [W], smallest style, other tolerance classes, and the whole in words.
+
+    `replaceable` are the ends of the values, the others as they are, with which every verdict still passes [ohm]; None where
+    a verdict fails already.
+    """
+
+    power: float
+    smallest: str | None
+    classes: tuple[OtherClass, ...]
+    replaceable: tuple[float, float] | None
+    text: tuple[str, ...]
+
+
+@dataclass(frozen=True, kw_only=True)
 class Duty:
-    """What a resistor does at the nominal Q-point: drop [V], current [A], and the two places it hangs between."""
+    """What a resistor does at the nominal Q-point: drop [V], current [A], and the two places it hangs between.
+
+    `record` is the rationale of a resistor of the first candidate, None of any other.
+    """
 
     drop: float
     current: float
     meaning: str
     between: tuple[str, str]
+    record: Rationale | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -166,6 +197,37 @@ class Readings:
 
     nodes: Mapping[str, tuple[float, float, float]]
     drops: Mapping[str, tuple[float, float, float]]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Bench:
+    """What a meter should read at given conditions, least, nominal and greatest over every unit [V].
+
+    `conditions` are the rails [V] and ``temperature`` [K] as (low, nominal, high).
+    """
+
+    conditions: Mapping[str, tuple[float, float, float]]
+    nodes: Mapping[str, tuple[float, float, float]]
+    drops: Mapping[str, tuple[float, float, float]]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Comparison:
+    """A node voltage that was measured beside what was expected, each as (low, nominal, high) [V]; `off` is their gap [V]."""
+
+    reading: str
+    expected: tuple[float, float, float]
+    measured: tuple[float, float, float]
+    off: float
+    verdict: Literal["agrees", "differs"]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Statistics:
+    """Root-sum-square of each quantity of the Q-point, and the lot of units that Monte Carlo drew."""
+
+    rss: tuple[Rss, ...]
+    monte_carlo: MonteCarlo
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -254,7 +316,8 @@ class Candidate:
     extremes of IC [A] and VCE [V]; `centring` [-]; `score` is what it is ranked by where that is not its drift [-];
     `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
     the next best network, for the winner among several; `signal` holds least, nominal and greatest value of each
-    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none.
+    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none. `stability` has the factors with VBE held and with VBE
+    following IC, `statistics` is None unless it was asked for; these and what follows `load_line` are of the first alone.
     """
 
     rank: int
@@ -281,6 +344,12 @@ class Candidate:
     signal: Mapping[str, tuple[float, float, float]] = field(default_factory=dict)
     readings: Readings | None = None
     load_line: LoadLine | None = None
+    stability: Mapping[str, Stability] = field(default_factory=dict)
+    sensitivities: tuple[Sensitivity, ...] = ()
+    faults: tuple[Fault, ...] = ()
+    bench: Bench | None = None
+    comparisons: tuple[Comparison, ...] = ()
+    statistics: Statistics | None = None
 
     @property
     def designators(self) -> dict[str, str]:
@@ -648,7 +717,7 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         "base_feed": _plain(c.base_feed),
         "budget": {q: [_plain(vars(s)) for s in shares] for q, shares in c.budget.items()},
         "neighbours": [_neighbour(n) for n in c.neighbours],
-        "roles": {role: _plain(vars(duty)) for role, duty in c.roles.items()},
+        "roles": {role: _duty(duty) for role, duty in c.roles.items()},
         "limits": [_plain(vars(v)) for v in c.limits],
         "verdict": c.verdict,
         "explanation": list(c.explanation),
@@ -661,7 +730,36 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         "signal": _plain(c.signal),
         "readings": None if c.readings is None else _plain(vars(c.readings)),
         "load_line": None if c.load_line is None else _plain(vars(c.load_line)),
+        "stability": {name: _plain(vars(factors)) for name, factors in c.stability.items()},
+        "sensitivities": [_plain(vars(row)) for row in c.sensitivities],
+        "faults": [_plain(vars(fault)) for fault in c.faults],
+        "bench": None if c.bench is None else _plain(vars(c.bench)),
+        "comparisons": [_plain(vars(row)) for row in c.comparisons],
+        "statistics": None if c.statistics is None else _statistics(c.statistics),
     }
+
+
+def _duty(duty: Duty) -> dict[str, Any]:
+    """A resistor's duty; what its record says stands beside it."""
+    plain = {name: _plain(value) for name, value in vars(duty).items() if name != "record"}
+    if duty.record is not None:
+        plain |= {name: _plain(value) for name, value in vars(duty.record).items() if name not in ("classes", "text")}
+        plain["classes"] = [_plain(vars(row)) for row in duty.record.classes]
+        plain["rationale"] = list(duty.record.text)
+    return plain
+
+
+def _statistics(statistics: Statistics) -> dict[str, Any]:
+    sums = []
+    for row in statistics.rss:
+        sides = {
+            name: _plain({**vars(side), "terms": None}) | {"terms": [_plain(vars(term)) for term in side.terms]}
+            for name, side in (("low", row.low), ("high", row.high))
+        }
+        sums.append(_plain({"quantity": row.quantity, "nominal": row.nominal, "sigma": row.sigma}) | sides)
+    lot = statistics.monte_carlo
+    rows = {"samples": [_plain(vars(s)) for s in lot.samples], "yields": [_plain(vars(y)) for y in lot.yields]}
+    return {"rss": sums, "monte_carlo": _plain({k: v for k, v in vars(lot).items() if k not in rows}) | rows}
 
 
 def _plain(value: Any) -> Any:

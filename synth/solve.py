@@ -31,6 +31,7 @@ from synth.networks.form import Array
 from synth.q_point import REGIONS
 from synth.ranking import alternatives, order_key, read_axes, read_goal
 from synth.readings import load_lines, readings
+from synth.review import reviewed, statistics_of
 from synth.search import Outcome, Progress, Stop, search
 from synth.search import frontier as find_frontier
 from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_of, spaces_of
@@ -51,6 +52,7 @@ def find(
     top: int = 10,
     metric: str = "corners",
     frontier: str = "",
+    statistics: bool = False,
     advise: bool = False,
     progress: Progress | None = None,
     stop: Stop | None = None,
@@ -68,6 +70,8 @@ def find(
         What ranks, see `synth.ranking.read_goal`.
     frontier : str
         Further axes of a frontier, see `synth.ranking.read_axes`; "" looks for none.
+    statistics : bool
+        Whether root-sum-square and Monte Carlo of the first candidate are wanted.
     advise : bool
         Whether to search for what would make the best answer better or cheaper, which takes some seconds.
     progress, stop : callable, optional
@@ -104,7 +108,9 @@ def find(
     if candidates:
         space = next(s for s in spaces if _is_of(candidates[0], s))
         box = space.box(_index(space, candidates[0]), Meter())
-        first = _with_heat(candidates[0], box, stage)
+        first = reviewed(_with_heat(candidates[0], box, stage), space, stage, goal)
+        if statistics:
+            first = replace(first, statistics=statistics_of(first, space, stage))
         candidates = (first, *candidates[1:])
         warnings += cautions(first, box, space, stage)
     return Answer(
@@ -124,13 +130,15 @@ def find(
     )
 
 
-def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answer:
+def check(stage: Stage, *, statistics: bool = False, command: str = "", **resistors: str | float) -> Answer:
     """Judge the resistors that are fitted.
 
     Parameters
     ----------
     stage : Stage
         The request; its ``[values]`` are the resistors fitted.
+    statistics : bool
+        Whether root-sum-square and Monte Carlo are wanted.
     command : str
         The command that asked, for the record.
     **resistors : str or float
@@ -158,7 +166,9 @@ def check(stage: Stage, *, command: str = "", **resistors: str | float) -> Answe
     candidate = replace(candidate, explanation=sentences(candidate, network))
     warnings = request_cautions(stage)
     box = space.box(index, Meter())
-    candidate = _with_heat(candidate, box, stage)
+    candidate = reviewed(_with_heat(candidate, box, stage), space, stage, goal)
+    if statistics:
+        candidate = replace(candidate, statistics=statistics_of(candidate, space, stage))
     warnings += cautions(candidate, box, space, stage)
     failed = [v.name for v in candidate.limits if v.verdict == "fail"]
     why = f"fails {', '.join(failed)}" if failed else "passes every verdict"

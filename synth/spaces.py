@@ -17,7 +17,7 @@ from synth.measures import POWER_OF_TRANSISTOR, is_figure
 from synth.networks import NETWORKS
 from synth.networks.form import Array, Network
 from synth.parts import Parts
-from synth.preferred import JOINS, pair_up
+from synth.preferred import JOINS, ValueList, pair_up
 from synth.preferred.pairs import SINGLE
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
@@ -486,15 +486,23 @@ def _prices(stage: Stage, lists: Mapping[str, Parts]) -> dict[str, Array]:
 
 
 def _parts(stage: Stage, role: str, values: Sequence[float] = ()) -> Parts:
-    setting, found = stage.role(role), stage.value_list(role, values)
+    measured = stage.measured.get(role)
+    setting, found = stage.role(role), stage.value_list(role, values if measured is None else (measured.nominal,))
     # A stock list states a symmetric coefficient for each row; a setting may be one-sided.
     own = setting.stock is not None
     return Parts(
         nominal=found.values,
-        band=np.maximum(found.tolerance_low, found.tolerance_high) + found.life,
+        band=_tolerance(found, measured) + found.life,
         tcr_low=-found.tcr if own else np.full(len(found), setting.tcr.low),
         tcr_high=found.tcr if own else np.full(len(found), setting.tcr.high),
     )
+
+
+def _tolerance(found: ValueList, measured: Spread | None) -> Array:
+    """Tolerance of each value, or the uncertainty of a measured one [-]; the larger side counts for both."""
+    if measured is None:
+        return np.maximum(found.tolerance_low, found.tolerance_high)
+    return np.full(len(found), max(measured.high / measured.nominal - 1.0, 1.0 - measured.low / measured.nominal))
 
 
 def assess(

@@ -39,6 +39,7 @@ from synth.stage_keys import (
     nearest,
 )
 from synth.stage_resolve import Assumption, RoleSetting, StageWarning, band, needing, no_role, resolve, rival
+from synth.statistics import Lot
 from synth.stress import TransistorRatings
 from synth.transistor import Transistor
 
@@ -93,6 +94,10 @@ class Stage:
         Resistors fitted today [ohm].
     replacement : mapping of str to Spread, float or str
         What is given of the transistor that is to take the place of today's, by key, SI units; empty for none.
+    lot : Lot
+        The units that Monte Carlo draws.
+    measured : mapping of str to Spread
+        Parts measured, conditions of the bench and readings of a meter there [ohm, -, V, K].
     roles : mapping of str to RoleSetting
         What each role of the networks may be.
     on_board : tuple of float
@@ -135,6 +140,8 @@ class Stage:
     limits: Mapping[str, Interval]
     values: Mapping[str, float]
     replacement: Mapping[str, Any]
+    lot: Lot
+    measured: Mapping[str, Spread]
     roles: Mapping[str, RoleSetting]
     on_board: tuple[float, ...]
     assumed: tuple[Assumption, ...] = field(compare=False)
@@ -432,6 +439,13 @@ class Stage:
             "ambient": {"temperature": _plain(self.temperature)},
             "limits": {name: _plain(interval) for name, interval in self.limits.items()},
             "values": dict(self.values),
+            "distribution": {
+                "units": self.lot.units,
+                "seed": self.lot.seed,
+                "points": self.lot.points,
+                **{name: law.values or law.shape for name, law in self.lot.laws.items()},
+            },
+            "measured": {name: _plain(spread) for name, spread in self.measured.items()},
             "replacement": {leaf: _plain(value) for leaf, value in self.replacement.items()},
         }
 

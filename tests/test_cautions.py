@@ -37,6 +37,10 @@ CASES: list[tuple[str, Fitted, Fitted]] = [
     ("gain_test_current", ({**TYPE, "ic": "0.19 mA"}, CONTRACT), ({**TYPE, "ic": "0.21 mA"}, CONTRACT)),
     # The hot limit of the type is 5 uA at 150 °C.
     ("hot_leakage", ({"type": "BC847B", "icbo": "6 uA"}, CONTRACT), ({"type": "BC847B", "icbo": "4 uA"}, CONTRACT)),
+    # The spread of the stage is 110 to 450.
+    ("measured_outside", ({"measured_hfe": "460 ± 5"}, CONTRACT), ({"measured_hfe": "450 ± 5"}, CONTRACT)),
+    # A sound collector stands at about 8.5 V, and no unit at 25 °C within a volt of the rail.
+    ("reading_differs", ({"measured_vc": "11.9 V"}, CONTRACT), ({"measured_vc": "8.5 V ± 10 mV"}, CONTRACT)),
     ("unused_rail", ({"vbb": "5 V"}, CONTRACT), ({"vbb": "5 V", "network": "fixed_base"}, FIXED)),
     (
         "unused_reference",

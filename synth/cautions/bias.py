@@ -40,6 +40,16 @@ def _fixed_base_gain(seen: Seen) -> Iterator[str]:
         )
 
 
+def _reading_differs(seen: Seen) -> Iterator[str]:
+    for row in seen.candidate.comparisons:
+        if row.verdict == "differs":
+            low, high = (format_quantity(end, "voltage") for end in (row.expected[0], row.expected[2]))
+            yield (
+                f"{row.reading.upper()} was read as {format_quantity(row.measured[1], 'voltage')}, "
+                f"{format_quantity(row.off, 'voltage')} outside the {low} to {high} of a sound stage on the bench."
+            )
+
+
 def _saturated(seen: Seen) -> Iterator[str]:
     if "saturated" in seen.candidate.regions:
         forced = seen.candidate.nominal.forced_gain
@@ -218,6 +228,11 @@ def _sink_compliance(seen: Seen) -> Iterator[str]:
 
 
 RULES = (
+    CautionRule(
+        name="reading_differs", told="candidate", of_candidate=_reading_differs,
+        threshold="a reading and its uncertainty lie wholly outside what every sound unit shows there",
+        reason="A part is faulty, or is not what the stage says; the table of faults may name it.",
+    ),
     CautionRule(
         name="fixed_base_gain", told="candidate", of_candidate=_fixed_base_gain,
         threshold=f"fixed base bias without re and hFE max over hFE min above {GAIN_RATIO:g}",

@@ -84,6 +84,11 @@ RULES = (
         reason="The exponential through both would fall with temperature; leakage is taken to double per 10 K.",
     ),
     CautionRule(
+        name="measured_outside", told="reading",
+        threshold="a measured figure of the transistor lies outside the spread of its type or of the stage",
+        reason="Another part may be fitted, or the measurement is off; the measured figure counts.",
+    ),
+    CautionRule(
         name="unused_rail", told="reading", threshold="a rail is given that no network of the request uses",
         reason="It changes nothing, which may not be what was meant.",
     ),

@@ -10,6 +10,7 @@ from synth.limits import RULES
 from synth.networks import NETWORKS
 from synth.quantities import KINDS
 from synth.stage_keys.form import Key
+from synth.statistics import SPREADS
 
 ROLES: tuple[str, ...] = tuple(sorted({role for network in NETWORKS.values() for role in network.role_names}))
 """Every role of every network."""
@@ -323,6 +324,62 @@ def _limits() -> Iterable[Key]:
         )  # fmt: skip
 
 
+def _distribution() -> Iterable[Key]:
+    for name, what in SPREADS.items():
+        accepted = "uniform, normal or nominal" if name == "reference" else (
+            "uniform, normal, log_uniform, nominal, measured values with commas between, or a CSV file with a column value"
+        )
+        yield Key(
+            path=f"distribution.{name}", form="texts", example="normal",
+            meaning=f"Distribution {what}: {accepted}.", otherwise="log_uniform" if name == "hfe" else "uniform",
+        )  # fmt: skip
+    yield Key(
+        path="distribution.units", form="quantity", kind="gain", short="units", example="65536",
+        meaning="How many units Monte Carlo draws.", otherwise="65536",
+    )  # fmt: skip
+    yield Key(
+        path="distribution.seed", form="quantity", kind="gain", short="seed", example="1",
+        meaning="Seed of the draw; 0 is one like any other.", otherwise="1",
+    )  # fmt: skip
+    yield Key(
+        path="distribution.points", form="choice", choices=("sobol", "random"), example="sobol",
+        meaning="Scrambled Sobol points, which fill the box evenly, or pseudo-random ones.", otherwise="sobol",
+    )  # fmt: skip
+
+
+def _measured() -> Iterable[Key]:
+    for role in ROLES:
+        yield Key(
+            path=f"measured.{role}", form="spread", kind="resistance", example="15.2 kohm ± 0.2 %",
+            meaning=f"Measured resistance of {role} at 25 °C with its uncertainty, in place of its value and tolerance.",
+            otherwise="not measured",
+        )  # fmt: skip
+    yield Key(
+        path="measured.hfe", form="spread", kind="gain", example="312 ± 5",
+        meaning="Measured DC current gain at 25 °C with its uncertainty, in place of the spread of the type.",
+        otherwise="not measured",
+    )  # fmt: skip
+    yield Key(
+        path="measured.vbe", form="spread", kind="voltage", example="0.63 V ± 2 mV",
+        meaning="Measured base-emitter voltage at 25 °C and vbe_ic with its uncertainty.", otherwise="not measured",
+    )  # fmt: skip
+    for rail, of in (("vcc", ""), ("vee", "second "), ("vbb", "base "), ("vload", "load ")):
+        yield Key(
+            path=f"measured.{rail}", form="spread", kind="voltage", example="12.04 V ± 10 mV",
+            meaning=f"Voltage of the {of}supply on the bench; for the readings alone.", otherwise="its nominal value",
+        )  # fmt: skip
+    yield Key(
+        path="measured.temperature", form="spread", kind="temperature", rule="ambient", example="22 : 24 °C",
+        meaning="Temperature on the bench; for the readings alone.", otherwise="25 °C",
+    )  # fmt: skip
+    for node, of in (("vb", "base"), ("ve", "emitter"), ("vc", "collector")):
+        yield Key(
+            path=f"measured.{node}", form="spread", kind="voltage", example="4.12 V ± 10 mV",
+            meaning=f"Voltage of the {of} as a meter reads it against 0 V; compared with what it should be.",
+            otherwise="not read",
+        )  # fmt: skip
+
+
 def _values() -> Iterable[Key]:
     for role in ROLES:
         yield Key(
@@ -379,6 +436,8 @@ KEYS: Mapping[str, Key] = MappingProxyType(
             *_limits(),
             *_values(),
             *_replacement(),
+            *_distribution(),
+            *_measured(),
         ]
     )
 )

@@ -9,8 +9,10 @@ from typing import Any
 
 from synth.networks import NETWORKS
 from synth.quantities import Spread, format_quantity
-from synth.stage_keys import KEYS, StageError
+from synth.stage_keys import KEYS, ROLES, StageError
+from synth.stage_resolve.distribution import read_lot
 from synth.stage_resolve.limits import read_limits
+from synth.stage_resolve.measured import as_measured, read_measured
 from synth.stage_resolve.reference import read_reference
 from synth.stage_resolve.request import Assumption, Request, StageWarning
 from synth.stage_resolve.resistors import (
@@ -64,7 +66,8 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
     # Never 0: `targets` refuses a stage without a target for IC.
     current = ic.nominal or 0.0
     temperature = read_temperature(request)
-    transistor = read_transistor(request, current)
+    measured = read_measured(request)
+    transistor = as_measured(request, read_transistor(request, current), measured)
     check_junction(request, transistor, current, temperature.high)
     vce = voltages.get("vce")
     if vce is not None and vce.nominal is not None and vce.nominal <= transistor.vce_sat:
@@ -91,7 +94,9 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
         "corner": read_corner(request),
         "temperature": temperature,
         "limits": MappingProxyType(read_limits(request, current, transistor, reference, load_rail, has_styles, ratings)),
-        "values": MappingProxyType(read_fitted(request)),
+        "values": MappingProxyType(read_fitted(request) | {r: s.nominal for r, s in measured.items() if r in ROLES}),
+        "lot": read_lot(request, rails, transistor, reference, roles, temperature),
+        "measured": MappingProxyType(measured),
         "replacement": MappingProxyType(read_replacement(request)),
         "roles": MappingProxyType(roles),
         "on_board": read_on_board(request),

@@ -150,7 +150,10 @@ def read_roles(request: Request, networks: Sequence[str], any_network: bool, tem
     settings = {}
     for role in filter(roles.__contains__, ROLES):
         values: tuple[float, ...] = request.value(f"resistors.{role}.values") or ()
-        if values and min(values) <= 0.0:
+        if f"measured.{role}" in request.given:
+            # The one that was measured is the one that is there.
+            values = (request.value(f"measured.{role}").nominal,)
+        elif values and min(values) <= 0.0:
             raise request.refusal(f"resistors.{role}.values", "which goes down to 0 ohm", "resistances above 0 ohm")
         forms = [(NETWORKS[name], part) for name in networks for part in NETWORKS[name].roles if part.name == role]
         optional = any(form.optional(part, request.has_reference) for form, part in forms)

@@ -78,7 +78,7 @@ def _check_roles(request: Request, networks: Sequence[str]) -> None:
     known = {role for name in networks for role in NETWORKS[name].role_names}
     for path in request.given:
         key = KEYS[path]
-        role = key.leaf if key.table == "values" else key.table.removeprefix("resistors.")
+        role = key.leaf if key.table in ("values", "measured") else key.table.removeprefix("resistors.")
         if role in ROLES and role not in known:
             raise no_role(path, role, networks)
 
