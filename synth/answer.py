@@ -316,8 +316,8 @@ class Candidate:
     extremes of IC [A] and VCE [V]; `centring` [-]; `score` is what it is ranked by where that is not its drift [-];
     `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
     the next best network, for the winner among several; `signal` holds least, nominal and greatest value of each
-    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none. `stability` has the factors with VBE held and with VBE
-    following IC, `statistics` is None unless it was asked for; these and what follows `load_line` are of the first alone.
+    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none. `stability` has the factors
+    with VBE held and with VBE following IC, `statistics` is None unless it was asked for; these and what follows `load_line` are of the first alone.
     """
 
     rank: int

@@ -180,10 +180,11 @@ def _records(candidate: Candidate, space: Space, stage: Stage, goal: Goal) -> di
     ranges = _ranges(candidate, space, goal) if candidate.verdict == "pass" else {}
     found = {}
     for role in candidate.resistors:
-        stress = candidate.stress[role]
+        # Of a pair what both dissipate, and the style that the one needs which needs more.
+        stress = [candidate.stress[name] for name, owner in candidate.designators.items() if owner == role]
         found[role] = Rationale(
-            power=stress.power,
-            smallest=stress.smallest,
+            power=sum(s.power for s in stress),
+            smallest=max(stress, key=lambda s: s.power).smallest,
             classes=classes[role],
             replaceable=ranges.get(role),
             text=_sentences(candidate, stage, role, classes[role], ranges.get(role)),
@@ -263,7 +264,7 @@ def _sentences(
     span: tuple[float, float] | None,
 ) -> tuple[str, ...]:
     """The record of a resistor in words."""
-    duty, stress = candidate.roles[role], candidate.stress[role]
+    duty = candidate.roles[role]
     meaning = duty.meaning[0].upper() + duty.meaning[1:]
     lines = [
         f"{meaning}, from {duty.between[0]} to {duty.between[1]}: it drops {format_quantity(duty.drop, 'voltage')} at "
@@ -271,14 +272,14 @@ def _sentences(
     ]
     steps: dict[Literal["down", "up"], str] = {}
     for n in candidate.neighbours:
-        if n.role == role:
+        if n.role == role and n.pair is None:
             effect = "the transistor saturates" if n.drift is None else f"the Q-point drifts {percent(n.drift)}"
             if n.fails and n.drift is not None:
                 effect += f" and fails {', '.join(n.fails)}"
             steps["down" if n.step < 0 else "up"] = f"with {format_resistance(n.value)} {effect}"
     lines.append(
         f"{format_resistance(candidate.resistors[role])} leaves a drift of {percent(candidate.drift.q_point)}"
-        + (f"; {'; '.join(steps.values())}." if steps else "; the list holds no value beside it.")
+        + (f"; {'; '.join(steps.values())}." if steps else ".")
     )
     shares = [
         f"{percent(s.share)} for {quantity.upper()}"
@@ -287,12 +288,14 @@ def _sentences(
         if s.cause == role and percent(s.share) != "0 %"
     ]
     lines.append(f"To the drift its own band adds {' and '.join(shares)}." if shares else "Its own band adds next to no drift.")
-    allowed = ""
-    if stress.power_allowed is not None:
-        used = 0.0 if stress.power_used is None else stress.power_used
-        allowed = f", {percent(used)} of what {stress.style} may carry here"
-    smallest = f"the smallest style that does is {stress.smallest}" if stress.smallest else "no style of the table does"
-    lines.append(f"It dissipates at most {format_quantity(stress.power, 'power')}{allowed}; {smallest}.")
+    for name in (name for name, owner in candidate.designators.items() if owner == role):
+        stress, allowed = candidate.stress[name], ""
+        if stress.power_allowed is not None:
+            used = 0.0 if stress.power_used is None else stress.power_used
+            allowed = f", {percent(used)} of what {stress.style} may carry here"
+        smallest = f"the smallest style that does is {stress.smallest}" if stress.smallest else "no style of the table does"
+        who = "It" if name == role else name.replace(role, role.upper())
+        lines.append(f"{who} dissipates at most {format_quantity(stress.power, 'power')}{allowed}; {smallest}.")
     for other in classes:
         effect = "the transistor saturates" if other.drift is None else f"the drift is {percent(other.drift)}"
         fails = f" and {', '.join(other.fails)} fails" if other.fails and other.drift is not None else ""

@@ -18,9 +18,11 @@ from scipy import stats
 from stages import SOLVED, active, any_region, circuit, edge_box, random_box
 from uncertainties import ufloat
 
-from synth.box import Box, Parts
+from synth.box import Box
 from synth.limits import Requirement
 from synth.networks import NETWORKS
+from synth.parts import Pairs, Parts
+from synth.preferred.pairs import SERIES
 from synth.quantities import Interval, Spread
 from synth.statistics import (
     SPREADS,
@@ -394,6 +396,32 @@ def test_spread_alone_gives_its_own_extreme() -> None:
         assert_allclose(side.value, box.extreme(("ic",), direction).value[0], rtol=1e-14, atol=0)
         assert_allclose(side.total, side.value, rtol=1e-14, atol=0)
         assert [term.cause for term in side.terms] == ["hfe"]
+
+
+def test_pair_of_equal_resistors_strays_by_less_than_one() -> None:
+    """Two of 500 Ω ± 5 % in series against one of 1 kΩ ± 5 %: each moves the whole by 2.5 %, both in squares by 5 %/√2."""
+    single = fixed_box()
+    none = np.zeros(1)
+    base = Parts(nominal=np.array([500.0]), band=np.array([0.05]), tcr_low=none, tcr_high=none)
+    one = np.zeros(1, dtype=np.int32)
+    pair = Parts.of_pairs(Pairs(base=base, join=np.array([SERIES], dtype=np.int8), first=one, second=one))
+    paired = replace(single, parts={**single.parts, "re": pair})
+    terms = {term.cause: term.change for term in rss(paired, "vce", life={}).low.terms}
+    whole = {term.cause: term.change for term in rss(single, "vce", life={}).low.terms}["re"]
+    assert terms["rea"] == terms["reb"]
+    # VCE bends with re: a quarter of the way from 2.5 % to 5 %.
+    assert_allclose(math.hypot(terms["rea"], terms["reb"]), whole / math.sqrt(2.0), rtol=0.03, atol=0)
+    ohms = next(draws(paired, Lot(units=16384), {}))["re"]
+    # Sigma of an even law of half-width 5 % is 5 %/√3; of the mean of two such 1/√2 of that.
+    assert_allclose(ohms.std() / 1e3, 0.05 / math.sqrt(6.0), rtol=2e-3, atol=0)
+    # By linear propagation, re alone: 1/√2 of the single one.
+    alone = [
+        replace(box, parts={k: p if k == "re" else replace(p, band=none) for k, p in box.parts.items()}, rails={"vcc": Spread.exact(12.0)},
+                transistor=Transistor(hfe=Spread.exact(200.0), vbe=Spread.exact(0.65), vbe_ic=1e-3, vbe_model="fixed"))
+        for box in (single, paired)
+    ]  # fmt: skip
+    sigmas = [linear_sigma(box, "ic", life={}) for box in alone]
+    assert_allclose(sigmas[1], sigmas[0] / math.sqrt(2.0), rtol=1e-12, atol=0)
 
 
 # --- Monte Carlo ------------------------------------------------------------------------------------------------------

@@ -21,6 +21,7 @@ from synth.measures import PARAMETERS_OF_SIGNAL, is_figure
 from synth.networks.form import Array
 from synth.q_point import ACTIVE, REGIONS
 from synth.statistics.distribution import Lot
+from synth.statistics.pieces import pieces_of, whole_of
 from synth.transistor import T0
 
 CHUNK = 16384
@@ -113,13 +114,14 @@ def draws(box: Box, lot: Lot, life: Mapping[str, float]) -> Iterator[Values]:
     -------
     iterator of dict
         See `synth.box.Values`; arrays of at most `CHUNK` units. Tolerance, change over life and temperature coefficient of
-        every resistor are drawn apart.
+        every resistor, of a pair of both, are drawn apart.
     """
     spreads = {name: s for name, s in box.spreads.items() if name != "delta_ref"}
     reference = box.reference
     wide = [name for name, s in spreads.items() if s.width > 0.0]
     wide += ["temperature"] * (box.temperature.width > 0.0)
-    wide += [f"{role}.{what}" for role in box.parts for what in ("tolerance", "life", "tcr")]
+    names = [f"{role}{ending}" for role, part in box.parts.items() for ending, _ in pieces_of(part)]
+    wide += [f"{name}.{what}" for name in names for what in ("tolerance", "life", "tcr")]
     wide += ["reference.voltage", "reference.tc"] if reference is not None else []
     for u in _points(lot, len(wide)):
         column = dict(zip(wide, u.T, strict=True))
@@ -147,14 +149,18 @@ def draws(box: Box, lot: Lot, life: Mapping[str, float]) -> Iterator[Values]:
             off = off + (pick("reference.tc", "reference", tc.low, tc.nominal, tc.high) - tc.nominal) * rise
             found["delta_ref"] = np.clip(off, *reference.deviation(found["temperature"]))
         for role, part in box.parts.items():
-            drift = min(life.get(role, 0.0), float(part.band[0]))
-            tolerance = float(part.band[0]) - drift
-            low, high = float(part.tcr_low[0]), float(part.tcr_high[0])
-            factor = 1.0 + pick(f"{role}.tolerance", "tolerance", -tolerance, 0.0, tolerance)
-            factor = factor + pick(f"{role}.life", "life", -drift, 0.0, drift)
-            factor = factor + pick(f"{role}.tcr", "tcr", low, min(max(0.0, low), high), high) * rise
+            ohms = []
+            for ending, piece in pieces_of(part):
+                name, band = f"{role}{ending}", float(piece.band[0])
+                drift = min(life.get(role, 0.0), band)
+                tolerance = band - drift
+                low, high = float(piece.tcr_low[0]), float(piece.tcr_high[0])
+                factor = 1.0 + pick(f"{name}.tolerance", "tolerance", -tolerance, 0.0, tolerance)
+                factor = factor + pick(f"{name}.life", "life", -drift, 0.0, drift)
+                factor = factor + pick(f"{name}.tcr", "tcr", low, min(max(0.0, low), high), high) * rise
+                ohms.append(piece.nominal * factor)
             # The box holds every unit; the last bit of a sum may not say otherwise.
-            found[role] = np.clip(part.nominal * factor, *part.ends(found["temperature"]))
+            found[role] = np.clip(whole_of(part, ohms), *part.ends(found["temperature"]))
         yield found
 
 

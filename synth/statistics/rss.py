@@ -28,6 +28,7 @@ from synth.networks.form import Array
 from synth.parts import Parts
 from synth.quantities import Interval
 from synth.statistics.distribution import SIGMAS
+from synth.statistics.pieces import pieces_of, whole_of
 from synth.statistics.stability import gradients
 from synth.transistor import T0
 
@@ -184,13 +185,25 @@ def _causes(box: Box, t: Array, life: Mapping[str, float]) -> Iterator[_Cause]:
             low, high = (end - spread.nominal + flat for end in (spread.low, spread.high))
             yield _Cause(name, "random", name, low, high)
     for role, part in box.parts.items():
-        r, drift = float(part.nominal[0]), min(life.get(role, 0.0), float(part.band[0]))
-        tolerance = r * (float(part.band[0]) - drift)
-        low, high = _warmed(part, t)
-        least = np.clip(0.0, low, high)
-        yield _Cause(role, "random", role, flat - tolerance, flat + tolerance)
-        yield _Cause(f"{role} life", "one-way", role, flat - r * drift, flat + r * drift)
-        yield _Cause(f"{role} coefficient", "one-way", role, r * (low - least), r * (high - least))
+        pieces = pieces_of(part)
+        nominal = [piece.nominal + flat for _, piece in pieces]
+        whole = whole_of(part, nominal)
+        for k, (half, piece) in enumerate(pieces):
+            drift = min(life.get(role, 0.0), float(piece.band[0]))
+            tolerance = float(piece.band[0]) - drift
+            low, high = _warmed(piece, t)
+            least = np.clip(0.0, low, high)
+            rows: tuple[tuple[str, Kind, Array, Array], ...] = (
+                ("", "random", flat - tolerance, flat + tolerance),
+                (" life", "one-way", flat - drift, flat + drift),
+                (" coefficient", "one-way", low - least, high - least),
+            )
+            for ending, kind, one, two in rows:
+                # What one resistor of a pair does to the whole, the other nominal.
+                ends = [
+                    whole_of(part, [*nominal[:k], nominal[k] * (1.0 + end), *nominal[k + 1 :]]) - whole for end in (one, two)
+                ]
+                yield _Cause(f"{role}{half}{ending}", kind, role, *ends)
 
 
 def _change(box: Box, quantity: str, direction: int, centre: Values, base: Array, cause: _Cause) -> _Change:
@@ -233,7 +246,17 @@ def linear_sigma(box: Box, quantity: str, *, life: Mapping[str, float]) -> float
     half = {name: 0.5 * spread.width for name, spread in box.spreads.items()}
     if box.reference is not None:
         half["delta_ref"] = 0.5 * box.reference.voltage.width
-    half |= {role: float(p.nominal[0]) * (float(p.band[0]) - life.get(role, 0.0)) for role, p in box.parts.items()}
+    half |= {role: _half_width(part, life.get(role, 0.0)) for role, part in box.parts.items()}
     which = ("ic", "vce").index(quantity)
     parts: Sequence[float] = [float(np.ravel(d[which])[0]) * half[name] / SIGMAS for name, d in found.items()]
     return float(np.sqrt(sum(part**2 for part in parts)))
+
+
+def _half_width(part: Parts, life: float) -> float:
+    """What tolerance alone moves a resistance [ohm]; the two of a pair add in squares."""
+    pieces = [piece for _, piece in pieces_of(part)]
+    whole, squares = whole_of(part, [p.nominal for p in pieces]), 0.0
+    for k in range(len(pieces)):
+        raised = [p.nominal * (1.0 + (float(p.band[0]) - life) * (j == k)) for j, p in enumerate(pieces)]
+        squares += float(np.ravel(whole_of(part, raised) - whole)[0]) ** 2
+    return float(np.sqrt(squares))
