@@ -467,3 +467,38 @@ def test_a_notebook_shows_a_table_and_runs_nothing() -> None:
     nothing = synth.find(synth.Stage(**options))._repr_html_()
     assert "nothing qualifies" in nothing
     assert "target.ic" in nothing
+
+
+# --- README ---------------------------------------------------------------------------------------------------------
+
+ROOT = Path(__file__).resolve().parents[1]
+
+
+def spoken(path: Path) -> list[str]:
+    return ["".join(e.itertext()) for e in ElementTree.parse(path).getroot().iter("{http://www.w3.org/2000/svg}text")]
+
+
+def test_pictures_of_the_readme_are_those_of_today(tmp_path: Path) -> None:
+    """What they say is compared, not how a version of a library writes it down; the circuit to a hundredth of a point."""
+    import re as regex
+    import runpy
+
+    runpy.run_path(str(ROOT / "examples" / "pictures.py"))["main"]([str(tmp_path)])
+    readme = (ROOT / "README.md").read_text(encoding="utf-8")
+    for name in ("circuit.svg", "load_line.svg"):
+        kept = ROOT / "examples" / "pictures" / name
+        assert f"(examples/pictures/{name})" in readme
+        assert spoken(tmp_path / name) == spoken(kept), "run python examples/pictures.py"
+        assert len(spoken(kept)) > 10
+    now, then = (
+        [float(x) for x in regex.findall(r"-?\d+\.?\d*", (folder / "circuit.svg").read_text(encoding="utf-8"))]
+        for folder in (tmp_path, ROOT / "examples" / "pictures")
+    )
+    assert_allclose(now, then, rtol=0, atol=0.01)
+
+
+def test_the_readme_is_told_when_its_pictures_are_stale(tmp_path: Path) -> None:
+    """The check above would notice another resistor."""
+    kept = (ROOT / "examples" / "pictures" / "circuit.svg").read_text(encoding="utf-8")
+    (tmp_path / "circuit.svg").write_text(kept.replace("160K", "150K"), encoding="utf-8")
+    assert spoken(tmp_path / "circuit.svg") != spoken(ROOT / "examples" / "pictures" / "circuit.svg")

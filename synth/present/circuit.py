@@ -129,7 +129,12 @@ class Plan:
 
 
 def to_svg(
-    answer: Answer, candidate: Candidate, *, zigzag: bool = False, designators: Mapping[str, str] | None = None
+    answer: Answer,
+    candidate: Candidate,
+    *,
+    zigzag: bool = False,
+    designators: Mapping[str, str] | None = None,
+    on_white: bool = False,
 ) -> str:
     """The circuit as SVG, its texts as text; lines and texts have the colour of the text around.
 
@@ -143,13 +148,18 @@ def to_svg(
         Zigzag lines for resistors in place of the rectangles of IEC 60617.
     designators : mapping of str to str, optional
         Name of the part in each role; ``R1``, ``RE``... by its role when not given.
+    on_white : bool
+        Black on white, for where there is no text around.
 
     Returns
     -------
     str
         An ``svg`` element, the same for the same candidate.
     """
-    sheet = _sheet(plan_of(answer, candidate, designators or {}), _is_pnp(answer), zigzag, "currentColor", FONTS)
+    color = "black" if on_white else "currentColor"
+    sheet = _sheet(plan_of(answer, candidate, designators or {}), _is_pnp(answer), zigzag, color, FONTS)
+    if on_white:
+        sheet.config(bgcolor="white")
     from schemdraw.backends import svg
 
     before = svg.config._text
