@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from synth.answer import Answer, Candidate
+    from synth.batch import find_many
     from synth.boards import Board, BoardAnswer, BoardStage, board
     from synth.q_point import operating_point
     from synth.quantities import Interval, RestpointError, Spread, Target
@@ -36,6 +37,7 @@ __all__ = [
     "board",
     "check",
     "find",
+    "find_many",
     "operating_point",
 ]
 
@@ -54,6 +56,7 @@ _HOMES = {
     "board": "boards",
     "check": "solve",
     "find": "solve",
+    "find_many": "batch",
     "operating_point": "q_point",
 }
 

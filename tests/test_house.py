@@ -50,6 +50,7 @@ ROOMS = (
     "solve",
     "boards",
     "views",
+    "batch",
     "present",
     "cli",
 )

@@ -7,6 +7,7 @@ from typing import Any
 
 import click
 
+from synth.cli.batch import batch_options, run_batch
 from synth.cli.delivery import deliver, files, progress, stopper
 from synth.cli.options import (
     FORMATS,
@@ -42,6 +43,17 @@ def command(meaning: str) -> click.Command:
             if role != key and value is not None:
                 pin = f"--resistors-{role}-values {value}"
                 raise WrongInput(f"--{role}: find chooses values itself, accepted is {pin!r} to pin one, or the command check")
+        rows, jobs, scheduler = (options.pop(name) for name in ("batch", "jobs", "scheduler"))
+        if rows is not None:
+            single = {
+                "--metric": metric != "corners", "--frontier": frontier, "--budget": budget, "--explain": explain,
+                "--all": every, "--advise": advise, "--report": options.get("report"),
+            }  # fmt: skip
+            for name in (name for name, given in single.items() if given):
+                raise WrongInput(f"{name}: goes with a single stage, not with --batch")
+            return run_batch(stage_file, rows, jobs, scheduler, options)
+        if jobs > 1 or scheduler is not None:
+            raise WrongInput(f"{'--scheduler' if scheduler else '--jobs'}: goes with --batch, whose rows are shared out")
         files(options)
         stage = read_stage(stage_file, options)
         answer = find(
@@ -81,5 +93,6 @@ def command(meaning: str) -> click.Command:
             *picture_options(),
             *output_options(FORMATS),
             report_option(),
+            *batch_options(),
         ],
     )
