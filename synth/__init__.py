@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from synth.boards import Board, BoardAnswer, BoardStage, board
     from synth.q_point import operating_point
     from synth.quantities import Interval, RestpointError, Spread, Target
+    from synth.replacement import refit
     from synth.solve import check, find
     from synth.stage import Stage
 
@@ -39,6 +40,7 @@ __all__ = [
     "find",
     "find_many",
     "operating_point",
+    "refit",
 ]
 
 # Loaded when first asked for: the command line answers --help without numpy.
@@ -58,6 +60,7 @@ _HOMES = {
     "find": "solve",
     "find_many": "batch",
     "operating_point": "q_point",
+    "refit": "replacement",
 }
 
 

@@ -762,6 +762,22 @@ def _statistics(statistics: Statistics) -> dict[str, Any]:
     return {"rss": sums, "monte_carlo": _plain({k: v for k, v in vars(lot).items() if k not in rows}) | rows}
 
 
+def plain(value: Any) -> Any:
+    """A value as JSON has it.
+
+    Parameters
+    ----------
+    value : Any
+        Mapping, sequence, number, text, truth value or None.
+
+    Returns
+    -------
+    dict, list, float, int, str, bool or None
+        Numbers that are not finite become None.
+    """
+    return _plain(value)
+
+
 def _plain(value: Any) -> Any:
     if isinstance(value, Mapping):
         return {str(k): _plain(v) for k, v in value.items()}

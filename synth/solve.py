@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from functools import partial
 
@@ -42,6 +42,8 @@ from synth.tradeoff import along_frontier, tradeoff
 
 HEAT_TO_LOOK = 0.005
 """Shift of the nominal IC by self-heating from which its worst case is looked for unasked [-]."""
+EQUALS = 4
+"""How many figures of the order of candidates stand before a preference: drift, new pieces, centring, supply current [-]."""
 SHORT = 3e4
 """Q-point solves of a search that only asks whether a limit stands in the way of a network."""
 
@@ -95,7 +97,7 @@ def find(
     spaces = spaces_of(stage)
     axes = read_axes(frontier, spaces) if frontier else ()
     outcome = search(spaces, goal, top=top, progress=progress, stop=stop)
-    candidates = _candidates(outcome, goal, top, stage)
+    candidates = candidates_of(outcome, goal, top, stage)
     best_of = _best_of_each(spaces, goal, candidates, outcome, progress, stop)
     front = tradeoff(find_frontier(spaces, goal, axes, progress=progress, stop=stop), axes) if axes else None
     rivals = [n for n in best_of if candidates and n.best is not None and n.network != candidates[0].network]
@@ -118,9 +120,9 @@ def find(
         version=__version__,
         command=command,
         stage=stage.as_dict(),
-        assumed=_assumed(stage, spaces),
-        warnings=warnings + _not_applicable(stage, spaces),
-        search=_record(outcome, metric),
+        assumed=assumed_of(stage, spaces),
+        warnings=warnings + not_applicable(stage, spaces),
+        search=record_of(outcome, metric),
         networks=best_of,
         candidates=candidates,
         alternatives=alternatives(candidates) if front is None else along_frontier(front),
@@ -177,20 +179,47 @@ def check(stage: Stage, *, statistics: bool = False, command: str = "", **resist
         version=__version__,
         command=command,
         stage=stage.as_dict(),
-        assumed=_assumed(stage, [space]),
-        warnings=warnings + _not_applicable(stage, [space]),
+        assumed=assumed_of(stage, [space]),
+        warnings=warnings + not_applicable(stage, [space]),
         networks=(NetworkResult(network=network.name, best=candidate.drift.q_point, why=why),),
         candidates=(candidate,),
     )
 
 
-def _assumed(stage: Stage, spaces: Sequence[Space]) -> tuple[Assumption, ...]:
-    """What was assumed, without the limits that mean nothing for these networks."""
+def assumed_of(stage: Stage, spaces: Sequence[Space]) -> tuple[Assumption, ...]:
+    """What was assumed, without the limits that mean nothing for these networks.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request.
+    spaces : sequence of Space
+        Its networks.
+
+    Returns
+    -------
+    tuple of Assumption
+        In the order of the stage file.
+    """
     used = {f"limits.{need.limit}" for space in spaces for need in space.requirements}
     return tuple(a for a in stage.assumed if not a.key.startswith("limits.") or a.key in used)
 
 
-def _not_applicable(stage: Stage, spaces: Sequence[Space]) -> tuple[Caution, ...]:
+def not_applicable(stage: Stage, spaces: Sequence[Space]) -> tuple[Caution, ...]:
+    """Warnings of limits given that mean nothing for these networks.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request.
+    spaces : sequence of Space
+        Its networks.
+
+    Returns
+    -------
+    tuple of Caution
+        One for each such limit.
+    """
     used = {need.limit for space in spaces for need in space.requirements}
     networks = " or ".join(dict.fromkeys(space.network.name for space in spaces))
     return tuple(
@@ -200,7 +229,21 @@ def _not_applicable(stage: Stage, spaces: Sequence[Space]) -> tuple[Caution, ...
     )
 
 
-def _record(outcome: Outcome, metric: str) -> Search:
+def record_of(outcome: Outcome, metric: str) -> Search:
+    """What an answer says of a search.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        What it found.
+    metric : str
+        What it ranked by.
+
+    Returns
+    -------
+    Search
+        Its record, without the candidates.
+    """
     return Search(
         status=outcome.status,
         bound=float(outcome.bound) if np.isfinite(outcome.bound) else None,
@@ -280,7 +323,29 @@ def _with_heat(candidate: Candidate, box: Box, stage: Stage) -> Candidate:
     return replace(candidate, transistor=heated(box, load, stage.ratings))
 
 
-def _candidates(outcome: Outcome, goal: Goal, top: int, stage: Stage) -> tuple[Candidate, ...]:
+def candidates_of(
+    outcome: Outcome, goal: Goal, top: int, stage: Stage, prefer: Callable[[Candidate], float] | None = None
+) -> tuple[Candidate, ...]:
+    """The best of a search, judged whole, ranked and explained.
+
+    Parameters
+    ----------
+    outcome : Outcome
+        What a search found.
+    goal : Goal
+        What drift is measured from.
+    top : int
+        How many at most [-].
+    stage : Stage
+        The request.
+    prefer : callable, optional
+        Decides between candidates of equal drift, centring and supply current; the least comes first.
+
+    Returns
+    -------
+    tuple of Candidate
+        In the order of candidates, ranks from 1.
+    """
     built: list[tuple[Candidate, Space]] = []
     for space in dict.fromkeys(f.space for f in outcome.found):
         own = [f for f in outcome.found if f.space is space]
@@ -288,7 +353,12 @@ def _candidates(outcome: Outcome, goal: Goal, top: int, stage: Stage) -> tuple[C
         for f, c in zip(own, _build(space, index, goal, any_region=False), strict=True):
             # The largest drift of all ranks by itself; any other score is carried along.
             built.append((c if goal.plain else replace(c, score=f.score), space))
-    built.sort(key=lambda pair: order_key(pair[0], pair[1].roles, stage.on_board))
+
+    def place(pair: tuple[Candidate, Space]) -> tuple[object, ...]:
+        key = order_key(pair[0], pair[1].roles, stage.on_board)
+        return key if prefer is None else (*key[:EQUALS], prefer(pair[0]), *key[EQUALS:])
+
+    built.sort(key=place)
     listed = built[:top]
     final: dict[int, Candidate] = {}
     for space in dict.fromkeys(s for _, s in listed):

@@ -448,6 +448,24 @@ def _space(
     )
 
 
+def values_of(stage: Stage, role: str) -> Parts:
+    """Everything that a role may be, pairs included where the stage allows any.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request.
+    role : str
+        A role of one of its networks.
+
+    Returns
+    -------
+    Parts
+        Ascending, each with its band.
+    """
+    return _list_of(stage, role, {})
+
+
 def _list_of(stage: Stage, role: str, known: dict[RoleSetting, Parts]) -> Parts:
     """Everything that a role may be; roles that may be the same share one list."""
     setting = replace(stage.role(role), use="yes")

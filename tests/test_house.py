@@ -48,6 +48,7 @@ ROOMS = (
     "cautions",
     "advice",
     "solve",
+    "replacement",
     "boards",
     "views",
     "batch",

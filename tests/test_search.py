@@ -173,7 +173,7 @@ def test_candidates_stand_in_the_order_of_the_written_rule(network: str, number:
     _, goal, top, rows = case(network, number)
     # Of the request itself only ratings matter here, and none are known.
     request = Stage(supply="12 V", ic="2 mA", vce="5 V", hfe="110 : 450")
-    candidates = home._candidates(solved(network, number), goal, top, request)
+    candidates = home.candidates_of(solved(network, number), goal, top, request)
     assert [(c.network, tuple(c.resistors.values())) for c in candidates] == [row.key[5:] for row in rows[:top]]
     assert [c.rank for c in candidates] == list(range(1, len(candidates) + 1))
     assert_allclose([c.centring for c in candidates], [row.key[1] for row in rows[:top]], rtol=1e-9, atol=1e-15)

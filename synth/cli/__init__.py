@@ -21,6 +21,7 @@ __all__ = ["COMMANDS", "main"]
 COMMANDS = {
     "find": "From targets to ranked, proved and explained resistor values.",
     "check": "Judge the resistors of a given network over its whole box.",
+    "refit": "Put another transistor in: both side by side, and the fewest resistors that change.",
     "board": "Choose the resistors of many stages together: the fewest line items, one BOM.",
     "tables": "Show the built-in tables: preferred numbers, codes, resistor styles, transistors.",
     "stage": "Print a commented, empty stage file.",

@@ -40,15 +40,15 @@ def render(answer: Answer) -> str:
     """
     blocks = [_headline(answer)]
     if answer.infeasible is not None:
-        blocks.append(_infeasible(answer))
+        blocks.append(infeasible_words(answer))
     best = answer.best
     if best is not None:
         if answer.kind == "find":
             blocks.append(_ranking(answer.candidates))
-        blocks += [_first(answer, best), _causes(best), _limits(best), _stress(answer, best), _signal(answer, best)]
+        blocks += [_first(answer, best), _causes(best), limits_table(best), _stress(answer, best), _signal(answer, best)]
     if answer.alternatives:
         blocks.append(
-            _section(
+            section(
                 "Worth a look",
                 [[f"rank {a.rank}" if a.rank else "frontier", a.reason, a.text] for a in answer.alternatives],
             )
@@ -57,19 +57,19 @@ def render(answer: Answer) -> str:
         blocks.append(_frontier(answer.frontier))
     if len(answer.networks) > 1:
         rows = [[n.network, "–" if n.best is None else percent(n.best), n.why] for n in answer.networks]
-        blocks.append(_section("Networks", rows))
+        blocks.append(section("Networks", rows))
     if answer.outlook is not None:
         blocks.append(_outlook(answer.outlook))
     if answer.warnings:
-        blocks.append("\n".join(["Cautions", *(_wrapped(f"  {w.name}: {w.text}", "    ") for w in answer.warnings)]))
+        blocks.append("\n".join(["Cautions", *(wrapped(f"  {w.name}: {w.text}", "    ") for w in answer.warnings)]))
     if answer.assumed:
         rows = [[n.key, n.value, n.why] for n in answer.assumed]
-        blocks.append(_section("Assumed, since not given", rows))
+        blocks.append(section("Assumed, since not given", rows))
     if best is not None:
         blocks.append(LEGEND)
     blocks.append(_next(answer))
     text = "\n\n".join(block for block in blocks if block)
-    return "\n".join(_wrapped(line, "    ") for line in text.split("\n")) + "\n"
+    return "\n".join(wrapped(line, "    ") for line in text.split("\n")) + "\n"
 
 
 def explanation(answer: Answer, rank: int) -> str:
@@ -89,7 +89,7 @@ def explanation(answer: Answer, rank: int) -> str:
     """
     c = answer.candidate(rank)
     head = f"Candidate {rank}: {c.network}, {resistors(c)}"
-    return "\n".join([head, *(_wrapped(f"  {line}", "    ") for line in c.explanation)]) + "\n"
+    return "\n".join([head, *(wrapped(f"  {line}", "    ") for line in c.explanation)]) + "\n"
 
 
 def resistors(candidate: Candidate) -> str:
@@ -132,12 +132,25 @@ def table(rows: Sequence[Sequence[str]], right: Sequence[int] = (), indent: str 
         cells = [c.rjust(widths[j]) if j in right else c.ljust(widths[j]) for j, c in enumerate(row[:-1])]
         lead = indent + "".join(cell + "  " for cell in cells)
         last = row[-1].rjust(widths[-1]) if len(row) - 1 in right else row[-1]
-        lines.append(_wrapped(lead + last, " " * len(lead)))
+        lines.append(wrapped(lead + last, " " * len(lead)))
     return "\n".join(lines)
 
 
-def _wrapped(text: str, hang: str) -> str:
-    """Break a long line at spaces; continuation lines start with `hang`."""
+def wrapped(text: str, hang: str) -> str:
+    """A line broken at spaces.
+
+    Parameters
+    ----------
+    text : str
+        The line.
+    hang : str
+        What continuation lines start with.
+
+    Returns
+    -------
+    str
+        Lines of at most 100 columns.
+    """
     if len(hang) > WIDTH // 2:
         hang = "    "
     lines, line = [], text
@@ -150,7 +163,23 @@ def _wrapped(text: str, hang: str) -> str:
     return "\n".join([*lines, line.rstrip()])
 
 
-def _section(title: str, rows: Sequence[Sequence[str]], right: Sequence[int] = ()) -> str:
+def section(title: str, rows: Sequence[Sequence[str]], right: Sequence[int] = ()) -> str:
+    """A title with a table below.
+
+    Parameters
+    ----------
+    title : str
+        The title.
+    rows : sequence of sequence of str
+        Cells.
+    right : sequence of int
+        Columns to align to the right.
+
+    Returns
+    -------
+    str
+        Lines of at most 100 columns.
+    """
     return f"{title}\n{table(rows, right)}"
 
 
@@ -175,14 +204,14 @@ def _headline(answer: Answer) -> str:
         beyond = "" if search.bound is None else f"; every other {does} {percent(search.bound)} or more"
         # A junction that does not settle is found out when the candidates are reviewed.
         verdict = "PASS" if answer.passed else "FAIL"
-        return _wrapped(f"{verdict}  {name}: {listed} of {space}, proved{beyond} ({effort})", "      ")
+        return wrapped(f"{verdict}  {name}: {listed} of {space}, proved{beyond} ({effort})", "      ")
     if search.status == "infeasible":
-        return _wrapped(f"FAIL  {name}: none of {space} meets every limit, proved ({effort})", "      ")
+        return wrapped(f"FAIL  {name}: none of {space} meets every limit, proved ({effort})", "      ")
     if not answer.candidates:
         does = "drifts" if search.metric == "corners" else f"by {search.metric} comes to"
         bound = f", and what is left {does} {percent(search.bound)} or more" if search.bound else ""
         text = f"stopped before any of {space} was found to meet every limit; it is open whether one does{bound}"
-        return _wrapped(f"OPEN  {name}: {text} ({effort})", "      ")
+        return wrapped(f"OPEN  {name}: {text} ({effort})", "      ")
     first, least = _measure(answer.candidates[0]), search.bound
     if least is None or least >= first:
         text = "none is better than the first, but the rest of the list may change"
@@ -192,7 +221,7 @@ def _headline(answer: Answer) -> str:
     else:
         text = "of the rest nothing is known yet"
     verdict = "PASS" if answer.passed else "FAIL"
-    return _wrapped(f"{verdict}  {name}: stopped early, the best so far of {space}; {text} ({effort})", "      ")
+    return wrapped(f"{verdict}  {name}: stopped early, the best so far of {space}; {text} ({effort})", "      ")
 
 
 def _measure(c: Candidate) -> float:
@@ -287,7 +316,7 @@ def _frontier(front: Tradeoff) -> str:
     if not front.complete:
         title += ", not all" if front.bound is None else f", all there are below {percent(front.bound)}"
     title += f" ({len(shown)} shown; --format json has all)" if len(shown) < count else ""
-    return _wrapped(title, "  ") + ("\n" + table(cells, right=range(1 + len(axes))) if count else "")
+    return wrapped(title, "  ") + ("\n" + table(cells, right=range(1 + len(axes))) if count else "")
 
 
 def _first(answer: Answer, c: Candidate) -> str:
@@ -320,7 +349,7 @@ def _causes(c: Candidate) -> str:
         top = [f"{cause_words(s.cause)} {percent(s.share)}" for s in shares[:3] if s.share > 0.0]
         if top and total is not None:
             rows.append([f"{quantity.upper()} {percent(total)}", ", ".join(top)])
-    return _section("Three largest causes of drift", rows) if rows else ""
+    return section("Three largest causes of drift", rows) if rows else ""
 
 
 def limit_words(v: Verdict) -> str:
@@ -341,7 +370,19 @@ def limit_words(v: Verdict) -> str:
     return f"{v.sense} {format_quantity(v.limit, v.kind)}"
 
 
-def _limits(c: Candidate) -> str:
+def limits_table(c: Candidate) -> str:
+    """Every verdict of a candidate that is worth a line: those on stress only where they fail.
+
+    Parameters
+    ----------
+    c : Candidate
+        Any candidate.
+
+    Returns
+    -------
+    str
+        Lines of at most 100 columns; "" where nothing was judged.
+    """
     rows = [["limit", "allowed", "worst", "margin", "", "decided at"]]
     for v in c.limits:
         if v.verdict == "pass" and v.name.startswith(STRESS):
@@ -353,7 +394,7 @@ def _limits(c: Candidate) -> str:
         saturates = v.name == "vce" and v.verdict == "fail" and v.worst == v.limit
         margin = "saturates" if saturates else percent(v.margin) if abs(v.margin) < inf else "–"
         rows.append([v.name, limit_words(v), figure(v.worst, v.kind), margin, v.verdict, decides])
-    return _section("Limits and windows", rows, right=(3,)) if len(rows) > 1 else ""
+    return section("Limits and windows", rows, right=(3,)) if len(rows) > 1 else ""
 
 
 def _used(worst: float, allowed: float | None, kind: str) -> str:
@@ -397,7 +438,7 @@ def _stress(answer: Answer, c: Candidate) -> str:
             parts.append(f"heating itself IC spans {spans[0]}, VCE {spans[-1]}")
     elif load.state is not None:
         parts.append("junction beyond its limit" if load.too_hot else f"junction: {load.state}")
-    lines.append(_wrapped(f"  transistor: {'; '.join(parts)}", "    "))
+    lines.append(wrapped(f"  transistor: {'; '.join(parts)}", "    "))
     title = f"Stress of every part at its own worst point (derating {policy}, ambient up to {hot})"
     return "\n".join([title, *lines])
 
@@ -448,10 +489,22 @@ def _signal(answer: Answer, c: Candidate) -> str:
     for name, (low, middle, high) in c.signal.items():
         words, kind = SIGNAL_WORDS[name]
         rows.append([words, figure(middle, kind), ends_words(low, high, kind)])
-    return _section(f"Signal ({', '.join([*notes, load, f'source {source}'])})", rows)
+    return section(f"Signal ({', '.join([*notes, load, f'source {source}'])})", rows)
 
 
-def _infeasible(answer: Answer) -> str:
+def infeasible_words(answer: Answer) -> str:
+    """Why nothing qualifies, and what would do.
+
+    Parameters
+    ----------
+    answer : Answer
+        One that is infeasible.
+
+    Returns
+    -------
+    str
+        Lines of at most 100 columns.
+    """
     why = answer.infeasible
     assert why is not None
     one = len(why.binding) == 1
@@ -471,7 +524,7 @@ def _infeasible(answer: Answer) -> str:
         lines.append("Whether a single change would do is not known: the search for advice was stopped.")
     else:
         lines.append("No single change would do: of a limit, the supply, the gain, the resistors, the ambient or the network.")
-    return "\n".join(_wrapped(line, "    ") for line in lines)
+    return "\n".join(wrapped(line, "    ") for line in lines)
 
 
 def _outlook(outlook: Outlook) -> str:
