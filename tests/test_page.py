@@ -22,7 +22,7 @@ from synth.answer import Answer
 from synth.boards import Board, BoardAnswer
 from synth.boards.file import BoardStage
 from synth.cli import main
-from synth.explain import percent
+from synth.explain import made_of, percent
 from synth.present.page import board_to_html, to_html
 from synth.present.page.circuit_view import circuit
 from synth.present.page.lead import count_words
@@ -31,6 +31,7 @@ from synth.present.page.parts import bars, used
 from synth.quantities import format_resistance
 from synth.solve import check, find
 from synth.stage import Stage
+from synth.tradeoff import made_up
 
 BUOY = {"supply": "12 V ± 5 %", "ic": "1 mA ± 25 %", "vce": "5 V", "hfe": "200 : 450", "tolerance": "1 %", "series": "E12"}
 VALUES = {"r1": "56k", "r2": "18k", "rc": "4k7", "re": "2k2"}
@@ -198,6 +199,26 @@ def test_circuit_shows_each_value_beside_its_designator_and_nothing_that_is_mark
         assert not any("style" in s.place for s in drawn.shapes)
         left, top, width, height = map(float, drawn.box.split())
         assert all(left <= t.x <= left + width and top <= t.y <= top + height for t in drawn.texts)
+
+
+def test_frontier_advice_and_pairs_stand_in_the_page() -> None:
+    stage = Stage(**{**BUOY, "ic": "1 mA ± 30 %", "series": "E6"}, resistors_re_pairs=True)  # type: ignore[arg-type]
+    answer = find(stage, top=2, frontier="supply_current", metric="rss", advise=True)
+    text = Reader(to_html(answer)).text
+    assert answer.frontier is not None
+    assert f"None of all combinations beats one of these along every axis. {'These are all' if answer.frontier.complete else ''}" in text
+    for point in answer.frontier.points:
+        assert made_up(point) in text
+    assert any(c.parts for c in answer.candidates)
+    for c in answer.candidates:
+        assert all(made_of(ohm, c.parts.get(role)) in text for role, ohm in c.resistors.items())
+        assert c.score is not None
+        assert percent(c.score) in text
+    assert answer.search is not None
+    assert answer.search.bound is not None
+    assert f"every other by rss comes to {percent(answer.search.bound)} or more" in text
+    for row in answer.outlook.upgrades if answer.outlook else ():
+        assert row.name in text
 
 
 def test_load_lines_of_one_answer_share_their_axes() -> None:

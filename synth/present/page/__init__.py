@@ -38,6 +38,7 @@ def to_html(answer: Answer) -> str:
     """
     found = entries(answer)
     finds = answer.kind == "find"
+    least = "drift" if answer.search is None or answer.search.metric == "corners" else answer.search.metric
     return render(
         "answer.html.j2",
         {
@@ -45,7 +46,7 @@ def to_html(answer: Answer) -> str:
             "kind": "Bias resistors found" if finds else "Bias resistors judged",
             "lead": lead(answer),
             "above": [],
-            "listing": listing("Candidates, least drift first" if finds else "Fitted resistors", "rank", found),
+            "listing": listing(f"Candidates, least {least} first" if finds else "Fitted resistors", "rank", found),
             "candidates": views(found),
             "notes": notes(answer),
             "command": answer.command,

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 from math import inf
 
 from synth.answer import Answer, Candidate, Load
-from synth.explain import cause_words, percent, point_words
+from synth.explain import cause_words, made_of, percent, point_words
 from synth.present.page.circuit_view import Circuit, circuit
 from synth.present.page.load_line import Picture, picture
 from synth.present.page.parts import Cell, Table, bars, number, used, words
@@ -120,18 +120,24 @@ def listing(title: str, column: str, found: Sequence[Entry], *, first: str = "",
     roles = list(dict.fromkeys(role for c in every for role in c.resistors))
     volts = list(every[0].worst)[-1]
     head = [column, *found[0].more, *(["network"] if len(networks) > 1 else []), *map(str.upper, roles)]
-    head += ["IC over the box", f"{volts.upper()} over the box", "drift", "centring", "supply", "verdict"]
+    scored = any(c.score is not None for c in every)
+    head += ["IC over the box", f"{volts.upper()} over the box", "drift", *(["metric"] if scored else [])]
+    head += ["centring", "supply", "verdict"]
     rows = []
     for place, (entry, c) in enumerate(zip(found, every, strict=True)):
         # Ranks stand like numbers, names like words.
         label = number(entry.label, place) if entry.label.isdigit() else words(entry.label, place)
         row = [label, *entry.more.values(), *([words(c.network)] if len(networks) > 1 else [])]
         row += [
-            number(format_resistance(c.resistors[r]), c.resistors[r]) if r in c.resistors else number("–", inf) for r in roles
+            number(made_of(c.resistors[r], c.parts.get(r)), c.resistors[r]) if r in c.resistors else number("–", inf)
+            for r in roles
         ]
         ends = c.worst.get(volts, c.worst.vce)
         row += [number(span(*c.worst.ic, "current"), c.worst.ic[0]), number(span(*ends, "voltage"), ends[0])]
-        row += [number(percent(c.drift.q_point), c.drift.q_point), number(percent(c.centring), c.centring)]
+        row.append(number(percent(c.drift.q_point), c.drift.q_point))
+        if scored:
+            row.append(number("–", inf) if c.score is None else number(percent(c.score), c.score))
+        row.append(number(percent(c.centring), c.centring))
         row += [number(figure(c.supply_current, "current"), c.supply_current), words(c.verdict, mark=c.verdict)]
         rows.append(row)
     return Listing(
@@ -207,7 +213,7 @@ def _q_point(answer: Answer, c: Candidate) -> Table:
 def _roles(entry: Entry) -> Table:
     rows, c = [], entry.candidate
     for role, duty in c.roles.items():
-        value = format_resistance(c.resistors[role])
+        value = made_of(c.resistors[role], c.parts.get(role))
         drop, current = figure(duty.drop, "voltage"), figure(duty.current, "current")
         between = f"{duty.between[0]} to {duty.between[1]}"
         numbers = ", ".join(names[role] for names in entry.designators if role in names)
@@ -275,7 +281,7 @@ def _stress(answer: Answer, c: Candidate) -> Table | None:
         return None
     rows = []
     for role, s in c.stress.items():
-        part = words(f"{role.upper()} {format_resistance(c.resistors[role])}")
+        part = words(f"{role.upper()} {format_resistance(c.pieces[role])}")
         smallest = s.smallest or "none in the table"
         if s.string is not None:
             smallest += f"; or {s.string} x {s.style} in series"
@@ -305,10 +311,16 @@ def _against(worst: float, allowed: float | None, kind: str) -> list[Cell]:
 
 def _transistor(load: Load) -> list[list[Cell]]:
     part = words("transistor")
-    labels = {"power": ("dissipates", "power"), "vceo": ("holds cut off", "voltage"), "ic": ("carries", "current")}
+    labels = {
+        "power": ("dissipates", "power"),
+        "vceo": ("holds cut off", "voltage"),
+        "veb": ("reverse VEB at switch-off", "voltage"),
+        "ic": ("carries", "current"),
+    }
     rows = [
         [part, words(what), *_against(getattr(load, name), load.allowed.get(name), kind), words("")]
         for name, (what, kind) in labels.items()
+        if name == "power" or name in load.allowed
     ]
     if load.junction is not None and load.thermal_resistance is not None:
         at = f"with {format_quantity(load.thermal_resistance, 'thermal_resistance')} to the ambient"
@@ -338,6 +350,6 @@ def _neighbours(c: Candidate) -> Table | None:
     for n in c.neighbours:
         drift = "saturates" if n.drift is None else percent(n.drift)
         fails = ", ".join(n.fails) or "–"
-        cells = [words(n.role.upper()), number(format_resistance(n.value)), number(drift)]
+        cells = [words(n.role.upper()), number(made_of(n.value, n.pair)), number(drift)]
         rows.append([*cells, words(n.verdict, mark=n.verdict), words(fails)])
     return Table(title="One value up or down", head=("", "value", "drift", "verdict", "what fails"), rows=rows)

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
-from synth.answer import Answer, Candidate
+from synth.answer import Answer, Candidate, Search
 from synth.explain import cause_words, percent
 from synth.networks import NETWORKS
 from synth.present.page.parts import Note, Table, number, words
 from synth.present.terminal import resistors, span
 from synth.quantities import format_quantity
+from synth.search import AXES
+from synth.tradeoff import figure_text, made_up
 
 RAISED = str.maketrans("0123456789", "⁰¹²³⁴⁵⁶⁷⁸⁹")
 WORDS = (
@@ -95,13 +97,20 @@ def _proof(answer: Answer, best: Candidate | None) -> str:
     space = f"{count_words(search.combinations)} combinations"
     if search.status == "infeasible":
         return f"None of {space} meets every limit, proved."
+    does = _measured(search)
     if search.status != "optimal":
-        bound = f"; nothing can drift less than {percent(search.bound)}" if search.bound else ""
-        return f"The search was stopped among {space}{bound}."
+        state = "its best so far are listed" if answer.candidates else "none that meets every limit was found so far"
+        bound = f"; of the rest none {does} less than {percent(search.bound)}" if search.bound else ""
+        return f"The search was stopped among {space}: {state}{bound}."
     count = len(answer.candidates)
     listed = "The best" if count == 1 else f"The best {count}"
-    beyond = "; there is no other" if search.bound is None else f"; every other drifts {percent(search.bound)} or more"
+    beyond = "; there is no other" if search.bound is None else f"; every other {does} {percent(search.bound)} or more"
     return f"{listed} of {space}, proved{beyond}."
+
+
+def _measured(search: Search) -> str:
+    """What a candidate does in the metric that ranks it."""
+    return "drifts" if search.metric == "corners" else f"by {search.metric} comes to"
 
 
 def _values(c: Candidate) -> str:
@@ -137,7 +146,7 @@ def notes(answer: Answer) -> list[Note]:
     list of Note
         Only those that have something to say.
     """
-    makers = (_infeasible, _cautions, _alternatives, _networks, _assumed, _effort)
+    makers = (_infeasible, _cautions, _alternatives, _frontier, _networks, _outlook, _assumed, _effort)
     found = [note for make in makers if (note := make(answer)) is not None]
     return [*found, Note(key="words", title="Words", facts=WORDS)]
 
@@ -178,9 +187,62 @@ def _alternatives(answer: Answer) -> Note | None:
     table = Table(
         title="Worth a look",
         head=("rank", "for its", "which means"),
-        rows=[[number(str(a.rank), a.rank), words(a.reason), words(a.text)] for a in answer.alternatives],
+        rows=[
+            [number(str(a.rank), a.rank) if a.rank else number("frontier"), words(a.reason), words(a.text)]
+            for a in answer.alternatives
+        ],
     )
     return Note(key="alternatives", title="Worth a look for another reason than drift", tables=(table,))
+
+
+def _frontier(answer: Answer) -> Note | None:
+    front = answer.frontier
+    if front is None:
+        return None
+    axes = [AXES[name] for name in front.axes]
+    names = [axis.name.replace("_", " ") for axis in axes]
+    metric = "" if answer.search is None or answer.search.metric == "corners" else answer.search.metric
+    rows = [
+        [
+            *([number(percent(point.score), point.score)] if metric else []),
+            number(percent(point.drift), point.drift),
+            *(number(figure_text(axis, point.figures[axis.name])) for axis in axes),
+            words(point.network),
+            words(made_up(point)),
+        ]
+        for point in front.points
+    ]
+    whole = "These are all there are."
+    if not front.complete:
+        whole = "These are not all." if front.bound is None else f"Below {percent(front.bound)} these are all there are."
+    table = Table(
+        title=f"Frontier of drift and {', '.join(names)}",
+        head=(*([f"by {metric}"] if metric else []), "drift", *names, "network", "resistors"),
+        rows=rows,
+        note=f"None of all combinations beats one of these along every axis. {whole}",
+    )
+    return Note(key="frontier", title="Frontier", tables=(table,))
+
+
+def _outlook(answer: Answer) -> Note | None:
+    outlook = answer.outlook
+    if outlook is None:
+        return None
+    rows = []
+    for kind, changes in (("better", outlook.upgrades), ("cheaper", outlook.savings)):
+        for row in changes:
+            change = ", ".join(f'{key} = "{text}"' for key, text in row.change.items())
+            drift = number("nothing qualifies") if row.drift is None else number(percent(row.drift), row.drift)
+            rows.append([words(kind), words(row.name), drift, words(change)])
+    head = ("which way", "what", "best drift", "change")
+    table = Table(title="Changes of the request", head=head, rows=rows, note="Each comes from a search of its own.")
+    return Note(
+        key="outlook",
+        title="What would change the best drift",
+        lines=[f"The best drift is {percent(outlook.drift)}."],
+        facts=[(f"values of {floor.values}", f"{percent(floor.drift)} with the bands as they are") for floor in outlook.floors],
+        tables=(table,) if rows else (),
+    )
 
 
 def _networks(answer: Answer) -> Note | None:
@@ -212,5 +274,5 @@ def _effort(answer: Answer) -> Note | None:
         ("state", f"{search.status}, {state}"),
     ]
     if search.bound is not None:
-        facts.append(("bound", f"no other candidate drifts less than {percent(search.bound)}"))
+        facts.append(("bound", f"no other candidate {_measured(search)} less than {percent(search.bound)}"))
     return Note(key="search", title="Search and proof", facts=facts)
