@@ -16,7 +16,7 @@ from synth.limits import Requirement, Surroundings, judge, requirements
 from synth.measures import POWER_OF_TRANSISTOR, is_figure
 from synth.networks import NETWORKS
 from synth.networks.form import Array, Network
-from synth.parts import Parts
+from synth.parts import Pairs, Parts
 from synth.preferred import JOINS, ValueList, pair_up
 from synth.preferred.pairs import SINGLE
 from synth.quantities import Interval, Spread
@@ -359,7 +359,18 @@ def fitted(stage: Stage) -> Space:
             f"a value for each role of {wanted_roles}",
         )
     roles = tuple(role for role in NETWORKS[matching[0]].role_names if role in names)
-    return _space(stage, matching[0], roles, {role: _parts(stage, role, (stage.values[role],)) for role in roles}, ())
+    return _space(stage, matching[0], roles, {role: _fitted(stage, role) for role in roles}, ())
+
+
+def _fitted(stage: Stage, role: str) -> Parts:
+    """The resistor or the pair of resistors fitted in a role."""
+    join, ohms = stage.fitted_pairs.get(role, (SINGLE, (stage.values[role],)))
+    base = _parts(stage, role, ohms)
+    # What was measured is the role as a whole.
+    if join == SINGLE or role in stage.measured:
+        return base
+    first, second = (np.array([base.position(ohm)], dtype=np.int32) for ohm in ohms)
+    return Parts.of_pairs(Pairs(base=base, join=np.array([join], dtype=np.int8), first=first, second=second))
 
 
 def space_of(stage: Stage, network: str, resistors: Mapping[str, float]) -> Space:
@@ -477,7 +488,7 @@ def _list_of(stage: Stage, role: str, known: dict[RoleSetting, Parts]) -> Parts:
 def _choices(stage: Stage, role: str) -> Parts:
     """Single values of a role, and pairs of them where the stage allows any."""
     setting, single = stage.role(role), _parts(stage, role)
-    if setting.pairs == "no":
+    if setting.pairs == "no" or role in stage.measured:
         return single
     joins = frozenset(JOINS[1:]) if setting.pairs == "yes" else frozenset({setting.pairs})
     # The range binds the totals as it does the parts, but not values named one by one.

@@ -91,7 +91,9 @@ class Stage:
     limits : mapping of str to Interval
         Limits given and limits by default, SI units; whether one applies is a matter of the network.
     values : mapping of str to float
-        Resistors fitted today [ohm].
+        Resistors fitted today, of a pair the total [ohm].
+    fitted_pairs : mapping of str to (int, tuple of float)
+        The pairs among them: code of `synth.preferred.pairs.JOINS`, and the parts [ohm].
     replacement : mapping of str to Spread, float or str
         What is given of the transistor that is to take the place of today's, by key, SI units; empty for none.
     lot : Lot
@@ -139,6 +141,7 @@ class Stage:
     temperature: Spread
     limits: Mapping[str, Interval]
     values: Mapping[str, float]
+    fitted_pairs: Mapping[str, tuple[int, tuple[float, ...]]]
     replacement: Mapping[str, Any]
     lot: Lot
     measured: Mapping[str, Spread]

@@ -5,6 +5,7 @@ searches with full enumeration. A pair of equal bands keeps that band: arithmeti
 """
 
 import csv
+import html
 import io
 import itertools
 import json
@@ -22,11 +23,12 @@ import synth
 from synth.box import Box
 from synth.networks import NETWORKS
 from synth.parts import HALVES, Pairs, Parts
-from synth.preferred import JOINS, ValueList, pair_up
-from synth.preferred.pairs import PARALLEL, SERIES, SINGLE
+from synth.preferred import JOINS, PreferredError, ValueList, pair_up
+from synth.preferred.pairs import PARALLEL, SERIES, SINGLE, read_parts
+from synth.present.circuit import to_svg
 from synth.present.export import to_csv, to_markdown
 from synth.present.terminal import explanation, render
-from synth.quantities import Spread, format_resistance, parse
+from synth.quantities import QuantityError, Spread, format_resistance, parse
 from synth.search import search
 from synth.spaces import Goal, Space, goal_of, spaces_of
 from synth.stage import Stage, StageError
@@ -468,6 +470,58 @@ def test_neighbours_of_a_pair_tell_their_parts() -> None:
         assert n.pair is not None
         a, b = n.pair.ohms
         assert_allclose(n.value, a + b if n.pair.join == "series" else a * b / (a + b), rtol=ROUNDING, atol=0.0)
+
+
+@pytest.mark.parametrize(
+    ("text", "join", "ohms"),
+    [
+        ("34k5", SINGLE, (34500.0,)),
+        ("33k + 1k5", SERIES, (33000.0, 1500.0)),
+        ("1k5+33k", SERIES, (33000.0, 1500.0)),
+        ("22k || 10 kohm", PARALLEL, (10000.0, 22000.0)),
+        ("1e+3 ohm", SINGLE, (1000.0,)),
+        ("1e+3 ohm + 2.2e3 ohm", SERIES, (2200.0, 1000.0)),
+    ],
+)
+def test_a_fitted_pair_is_read(text: str, join: int, ohms: tuple[float, ...]) -> None:
+    assert read_parts(text, "values.r1") == (join, ohms)
+
+
+@pytest.mark.parametrize(
+    ("text", "error", "match"),
+    [
+        ("1k + 2k + 3k", PreferredError, r"values\.r1: read '1k \+ 2k \+ 3k', accepted is one resistance, or two above 0 ohm"),
+        ("1k || 0 ohm", PreferredError, r"values\.r1: read '1k \|\| 0 ohm', accepted is one resistance, or two above 0 ohm"),
+        ("1k + 2 mA", QuantityError, r"values\.r1: read '2 mA'"),
+    ],
+)
+def test_what_is_no_pair_is_refused(text: str, error: type[Exception], match: str) -> None:
+    with pytest.raises(error, match=match):
+        request(r1=text)
+
+
+def test_a_check_of_a_pair_that_was_found_gives_the_same_figures() -> None:
+    for found in paired_answer().candidates[:3]:
+        words = {role: " + " if pair.join == "series" else " || " for role, pair in found.parts.items()}
+        texts = {
+            role: words[role].join(f"{ohm} ohm" for ohm in found.parts[role].ohms) if role in words else f"{ohms} ohm"
+            for role, ohms in found.resistors.items()
+        }
+        best = synth.check(request(), **texts).best
+        assert best is not None
+        assert (best.resistors, best.parts) == (found.resistors, found.parts)
+        assert best.drift == found.drift
+        for who, stress in found.stress.items():
+            assert_allclose(best.stress[who].power, stress.power, rtol=1e-12, atol=0.0)
+        assert best.neighbours
+
+
+def test_the_circuit_shows_both_parts() -> None:
+    found = paired_answer()
+    role, pair = next(iter(found.candidates[0].parts.items()))
+    words = (" + " if pair.join == "series" else " || ").join(map(format_resistance, pair.ohms))
+    assert role in found.candidates[0].parts
+    assert words in html.unescape(to_svg(found, found.candidates[0]))
 
 
 def test_pairs_of_e24_in_every_role_are_proved() -> None:

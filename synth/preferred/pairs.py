@@ -8,8 +8,10 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
+from synth.catalogue.reading import quoted
 from synth.preferred.lists import ValueList
-from synth.preferred.series import FloatArray, read_only
+from synth.preferred.series import FloatArray, PreferredError, read_only
+from synth.quantities import parse
 
 Index = NDArray[np.int32]
 
@@ -65,6 +67,62 @@ def resistance(join: NDArray[np.int8], first: FloatArray, second: FloatArray) ->
     """
     whole = first + second
     return np.where(join == SINGLE, first, np.where(join == SERIES, whole, first * second / whole))
+
+
+def read_parts(text: str, field: str) -> tuple[int, tuple[float, ...]]:
+    """One resistance, or the two parts of a pair.
+
+    Parameters
+    ----------
+    text : str
+        ``34k5``, ``33k + 1k5`` for a series pair, ``10k || 22k`` for a parallel one.
+    field : str
+        Name of the field, for messages.
+
+    Returns
+    -------
+    join : int
+        Code of `JOINS` [-].
+    ohms : tuple of float
+        The one that carries more first [ohm].
+
+    Raises
+    ------
+    QuantityError
+        If a part is no resistance.
+    PreferredError
+        If there are more than two parts, or one of a pair is 0 ohm.
+    """
+    sign = "||" if "||" in text else "+"
+    # The sign of a power of ten joins nothing.
+    items = text.replace("e+", "e").replace("E+", "E").split(sign)
+    ohms = [parse(item.strip(), "resistance", field) for item in items]
+    if len(ohms) == 1:
+        return SINGLE, tuple(ohms)
+    if len(ohms) > 2 or min(ohms) <= 0.0:
+        raise PreferredError(
+            f"{field}: read {quoted(text)}, accepted is one resistance, or two above 0 ohm such as '33k + 1k5' or '10k || 22k'"
+        )
+    join = PARALLEL if sign == "||" else SERIES
+    return join, tuple(sorted(ohms, reverse=join == SERIES))
+
+
+def total(join: int, ohms: tuple[float, ...]) -> float:
+    """Resistance of a single part or of a pair.
+
+    Parameters
+    ----------
+    join : int
+        Code of `JOINS` [-].
+    ohms : tuple of float
+        Its parts [ohm].
+
+    Returns
+    -------
+    float
+        The total [ohm].
+    """
+    return ohms[0] if join == SINGLE else sum(ohms) if join == SERIES else ohms[0] * ohms[1] / sum(ohms)
 
 
 def uneven(join: NDArray[np.int8], first: FloatArray, second: FloatArray) -> tuple[FloatArray, FloatArray]:

@@ -16,10 +16,10 @@ from functools import cache
 from typing import TYPE_CHECKING, Any, Literal, NamedTuple
 
 from synth.answer import Answer, Candidate
-from synth.explain import place
+from synth.explain import made_of, place
 from synth.networks import NETWORKS, Network, Role
 from synth.present.terminal import figure, span
-from synth.quantities import format_quantity, format_resistance
+from synth.quantities import format_quantity
 
 if TYPE_CHECKING:
     import schemdraw
@@ -317,7 +317,7 @@ class _Circuit:
     def lines(self, role: Role) -> tuple[str, ...]:
         """What stands beside a resistor."""
         name = self.designators.get(role.name, role.name.upper())
-        return name, format_resistance(self.candidate.resistors[role.name])
+        return name, made_of(self.candidate.resistors[role.name], self.candidate.parts.get(role.name))
 
     def node(self, node: str) -> tuple[str, ...]:
         """What stands beside a node: its voltage and the range of it."""

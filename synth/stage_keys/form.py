@@ -8,6 +8,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import Any, Literal
 
+from synth.preferred.pairs import read_parts, total
 from synth.quantities import (
     KINDS,
     Interval,
@@ -24,7 +25,7 @@ from synth.quantities import (
     parse_target,
 )
 
-Form = Literal["spread", "target", "limit", "quantity", "quantities", "text", "choice", "texts"]
+Form = Literal["spread", "target", "limit", "quantity", "quantities", "resistor", "text", "choice", "texts"]
 Given = str | float | Spread | Interval | Target | os.PathLike[str] | Sequence[str | float] | None
 """What `Stage` takes for a key: text, number in SI units, value of `synth.quantities`, path, list of texts or numbers.
 
@@ -84,8 +85,9 @@ class Key:
     ----------
     path : str
         Table and key, as in "supply.vcc".
-    form : {"spread", "target", "limit", "quantity", "quantities", "text", "choice", "texts"}
-        How its value is written; "quantities" and "texts" are lists, "choice" is one of `choices`.
+    form : {"spread", "target", "limit", "quantity", "quantities", "resistor", "text", "choice", "texts"}
+        How its value is written; "quantities" and "texts" are lists, "choice" is one of `choices`, "resistor" is a resistance
+        or a pair, of which the total counts.
     kind : str
         Kind of quantity, a key of `synth.quantities.KINDS`; "" for words.
     rule : str
@@ -178,6 +180,8 @@ class Key:
             return None if is_off else parse_limit(text, self.kind, self.path, self.rule)
         if self.form == "quantity":
             return parse(text, self.kind, self.path)
+        if self.form == "resistor":
+            return total(*read_parts(text, self.path))
         if self.form == "quantities":
             return tuple(parse(item, self.kind, self.path) for item in self.items(text))
         if self.form == "texts":
@@ -204,7 +208,7 @@ class Key:
         if self.form == "limit":
             is_open = value is None or (value.low == -float("inf") and value.high == float("inf"))
             return NONE if is_open else format_limit(value, self.kind)
-        if self.form == "quantity":
+        if self.form in ("quantity", "resistor"):
             return format_exact(value, self.kind)
         if self.form == "quantities":
             return ", ".join(format_exact(item, self.kind) for item in value)
@@ -297,6 +301,8 @@ class Key:
         """What the key accepts, for messages and help."""
         if self.choices:
             return f"one of {', '.join(self.choices)}"
+        if self.form == "resistor":
+            return f"{KINDS[self.kind].accepted}; or two joined, as in '33k + 1k5' or '10k || 22k'"
         return KINDS[self.kind].accepted if self.kind else f"a text such as {self.example!r}"
 
     def _spread(self, text: str) -> Spread:

@@ -383,8 +383,9 @@ def _measured() -> Iterable[Key]:
 def _values() -> Iterable[Key]:
     for role in ROLES:
         yield Key(
-            path=f"values.{role}", form="quantity", kind="resistance", short=role, example="15k8",
-            meaning=f"Value fitted today as {role}: {_ROLE_MEANING[role]}.", otherwise="not fitted",
+            path=f"values.{role}", form="resistor", kind="resistance", short=role, example="15k8",
+            meaning=f"Value fitted today as {role}, or a pair such as 33k + 1k5 or 10k || 22k: {_ROLE_MEANING[role]}.",
+            otherwise="not fitted",
         )  # fmt: skip
 
 

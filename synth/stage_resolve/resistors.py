@@ -12,6 +12,7 @@ from typing import Any, Literal
 from synth import catalogue
 from synth.networks import NETWORKS
 from synth.preferred import ValueList
+from synth.preferred.pairs import read_parts
 from synth.quantities import Interval, RestpointError, Spread, Target, format_exact, format_quantity, format_resistance
 from synth.stage_keys import KEYS, ROLES, StageError, nearest
 from synth.stage_resolve.request import Request
@@ -211,6 +212,13 @@ def read_fitted(request: Request) -> dict[str, float]:
         if ohm <= 0.0:
             raise request.refusal(f"values.{role}", "which is no resistor", "a resistance above 0 ohm")
     return values
+
+
+def read_fitted_pairs(request: Request) -> dict[str, tuple[int, tuple[float, ...]]]:
+    """The pairs among them: how they are joined, and their parts [ohm]."""
+    paths = {role: f"values.{role}" for role in ROLES if f"values.{role}" in request.given}
+    found = {role: read_parts(request.given[path], path) for role, path in paths.items()}
+    return {role: made for role, made in found.items() if len(made[1]) > 1}
 
 
 def read_on_board(request: Request) -> tuple[float, ...]:

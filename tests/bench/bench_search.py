@@ -7,6 +7,7 @@ contract (12 V, 2 mA, 5 V, hFE 110 : 450, four roles from 10 ohm to 10 Mohm, def
 `omega` is the time over that of one Wright omega call for each solve, in the same run: a figure of the bookkeeping that does not
 depend on the machine. `enumeration` is the time of looking at every candidate by the vertices of its box, and at its whole box
 where these do not put it beyond the list: from a sample of them (~) where they are too many. `times` is how many searches that is.
+Seconds are those of the processor, which other work on the machine does not lengthen.
 """
 
 from __future__ import annotations
@@ -115,11 +116,11 @@ def omega_seconds(count: int) -> float:
     """Time of `count` Wright omega calls on arguments like those of a bias stage [s]."""
     arguments = np.linspace(1.0, 120.0, min(count, CHUNK))
     whole, rest = divmod(count, arguments.size)
-    start = time.perf_counter()
+    start = time.process_time()
     for _ in range(whole):
         wrightomega(arguments)
     wrightomega(arguments[:rest])
-    return time.perf_counter() - start
+    return time.process_time() - start
 
 
 def enumerate_some(spaces: Sequence[Space], goal: Goal, limit: float, sample: int = SAMPLE) -> tuple[int, float]:
@@ -132,10 +133,10 @@ def enumerate_some(spaces: Sequence[Space], goal: Goal, limit: float, sample: in
             index = np.stack([axis.ravel() for axis in np.indices(sizes)], axis=1).astype(np.int32)
         else:
             index = np.stack([rng.integers(0, size, sample) for size in sizes], axis=1).astype(np.int32)
-        start = time.perf_counter()
+        start = time.process_time()
         for at in range(0, len(index), 1024):
             assess(space, index[at : at + 1024], goal, Meter(), limit)
-        seconds += time.perf_counter() - start
+        seconds += time.process_time() - start
         count += len(index)
     return count, seconds
 
@@ -144,9 +145,9 @@ def measure(name: str, top: int = 10) -> Row:
     """Search one space and time it, then again to see its memory."""
     stage = request(name)
     spaces, goal = spaces_of(stage), goal_of(stage)
-    start = time.perf_counter()
+    start = time.process_time()
     outcome = search(spaces, goal, top=top)
-    seconds = time.perf_counter() - start
+    seconds = time.process_time() - start
     omega = omega_seconds(outcome.evaluated)
     last = outcome.found[min(top, len(outcome.found)) - 1].drift if outcome.found else np.inf
     judged, took = enumerate_some(spaces, goal, last)

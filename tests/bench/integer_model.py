@@ -307,12 +307,12 @@ def measured(space: Space, goal: Goal, index: Index) -> float | None:
 def compare(series: str, seconds: float = 60.0, **changes: str) -> Row:
     """Prove one space both ways and time it."""
     space, goal = narrow(series, **changes)
-    start = time.perf_counter()
+    start = time.process_time()
     proof = prove(space, goal, partial(measured, space, goal), seconds=seconds)
-    took = time.perf_counter() - start
-    start = time.perf_counter()
+    took = time.process_time() - start
+    start = time.process_time()
     outcome = search([space], goal, top=1)
-    alone = time.perf_counter() - start
+    alone = time.process_time() - start
     return Row(
         series=series,
         combinations=space.combinations,
