@@ -544,7 +544,7 @@ def _outlook(outlook: Outlook) -> str:
 
 def _next(answer: Answer) -> str:
     if answer.kind == "find" and answer.candidates:
-        return "Next: --explain 1 shows the reasons, --advise what would buy or save most; --save stage.toml keeps the request."
+        return "Next: --explain 1 gives the reasons, --advise the levers; --save stage.toml keeps the request."
     if answer.infeasible is not None and answer.infeasible.relaxations:
         change = answer.infeasible.relaxations[0].change
         options = " ".join(f"{KEYS[key].options[0]} '{text}'" for key, text in change.items())
