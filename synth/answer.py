@@ -317,7 +317,8 @@ class Candidate:
     `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
     the next best network, for the winner among several; `signal` holds least, nominal and greatest value of each
     small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none. `stability` has the factors
-    with VBE held and with VBE following IC, `statistics` is None unless it was asked for; these and what follows `load_line` are of the first alone.
+    with VBE held and with VBE following IC, `statistics` is None unless it was asked for; these and what follows `load_line`
+    are of the first alone.
     """
 
     rank: int

@@ -2,16 +2,31 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
 
 from synth.cli.delivery import files, progress
-from synth.cli.options import FOUND, NOT_FOUND, Count, command_line, key_options, output_options, read_stage
+from synth.cli.options import (
+    FORMATS,
+    FOUND,
+    NOT_FOUND,
+    Count,
+    WrongInput,
+    command_line,
+    key_options,
+    nearest_of,
+    output_options,
+    read_stage,
+)
 
 if TYPE_CHECKING:
     from synth.stage import Stage
+
+OWN = ("keep", "also_series", "also_stock", "top", "among", "least_vceo", "least_ic", "least_power", "package", "reason",
+       "designator")  # fmt: skip
 
 
 def _hand_over(text: str, stage: Stage, options: dict[str, Any]) -> None:
@@ -25,29 +40,73 @@ def _hand_over(text: str, stage: Stage, options: dict[str, Any]) -> None:
         click.echo(text, nl=False)
 
 
+def _words(texts: Sequence[str]) -> list[str]:
+    return [word for text in texts for word in text.replace(",", " ").split()]
+
+
+def _designators(texts: Sequence[str]) -> dict[str, str]:
+    """Role to designator, of texts such as ``r1=R17``."""
+    from synth.stage_keys import ROLES
+
+    found = {}
+    for text in texts:
+        role, mark, name = (part.strip() for part in text.partition("="))
+        if not mark or not name or role not in (*ROLES, "q"):
+            accepted = "role=NAME with a role such as r1, or q for the transistor"
+            raise WrongInput(f"--designator: read {text!r}, accepted is {accepted}{nearest_of(role, (*ROLES, 'q'))}")
+        found[role] = name
+    return found
+
+
+def _refit(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool]:
+    """The text of a refit, and whether some change will do."""
+    from synth.present.change_record import to_change_list, to_change_record
+    from synth.present.refit import render_refit
+    from synth.replacement import refit
+
+    designators = _designators(own["designator"])
+    answer = refit(
+        stage, keep=_words(own["keep"]), top=own["top"], also_series=own["also_series"], also_stock=own["also_stock"],
+        progress=progress(), command=command_line(),
+    )
+    if form == "json":
+        return answer.to_json(), answer.passed
+    if form == "table":
+        return render_refit(answer), answer.passed
+    make = to_change_record if form == "markdown" else to_change_list
+    return make(answer, own["reason"] or "", designators), answer.passed
+
+
+def _scan(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool]:
+    """The text of a scan, and whether any transistor will do."""
+    from synth.present.scan import render_scan, scan_csv, scan_json, scan_markdown
+    from synth.replacement import least_ratings, scan
+
+    least = least_ratings({"vceo": own["least_vceo"], "ic_max": own["least_ic"], "ptot": own["least_power"]})
+    found = scan(stage, own["among"], keep=_words(own["keep"]), least=least, packages=own["package"])
+    if form == "json":
+        return scan_json(found, command_line()), found.passed
+    makers = {"table": render_scan, "csv": scan_csv, "markdown": scan_markdown}
+    return makers[form](found), found.passed
+
+
 def command(meaning: str) -> click.Command:
     """The command, with what it is for in one sentence."""
 
-    def run(stage_file: Path | None, top: int, keep: tuple[str, ...], also_series: tuple[str, ...], also_stock: str | None,
-            **options: Any) -> int:
-        from synth.present.refit import render_refit
-        from synth.replacement import refit
-
+    def run(stage_file: Path | None, **options: Any) -> int:
+        own = {name: options.pop(name) for name in OWN}
         files(options)
         stage = read_stage(stage_file, options, "refit")
-        answer = refit(
-            stage, keep=[role for text in keep for role in text.replace(",", " ").split()], top=top,
-            also_series=also_series, also_stock=also_stock, progress=progress(), command=command_line(),
-        )
-        text = answer.to_json() if options["form"] == "json" else render_refit(answer)
+        text, passed = (_refit if own["among"] is None else _scan)(stage, own, options["form"])
         _hand_over(text, stage, options)
-        return FOUND if answer.passed else NOT_FOUND
+        return FOUND if passed else NOT_FOUND
 
     return click.Command(
         "refit",
         callback=run,
         help=meaning + "\n\nThe fitted values come from [values] of the file or from --r1, --r2, ...; the new transistor from"
-        " [replacement] or from --to TYPE, --to-hfe 420:800 and the like.",
+        " [replacement] or from --to TYPE, --to-hfe 420:800 and the like; --among tries every type of a list. --format markdown"
+        " and csv write the change record.",
         params=[
             click.Argument(["stage_file"], required=False, type=click.Path(path_type=Path), metavar="[STAGE.toml]"),
             *key_options("refit"),
@@ -58,6 +117,15 @@ def command(meaning: str) -> click.Command:
                          help="Stock list that a new resistor may come from besides [resistors]."),
             click.Option(["--top"], type=Count(1, 16), default=3, show_default=True, metavar="N",
                          help="How many candidates of each number of changes to list and prove."),
-            *output_options(("table", "json")),
+            click.Option(["--among"], metavar="tables|FILE.csv",
+                         help="Try every type of the built-in table or of a list: which would do with one change or none."),
+            click.Option(["--least-vceo"], metavar="TEXT", help="With --among: least VCEO, such as '40 V'."),
+            click.Option(["--least-ic"], metavar="TEXT", help="With --among: least collector current, such as '100 mA'."),
+            click.Option(["--least-power"], metavar="TEXT", help="With --among: least power, such as '0.25 W'."),
+            click.Option(["--package"], multiple=True, metavar="OUTLINE", help="With --among: outline, such as SOT-23."),
+            click.Option(["--reason"], metavar="TEXT", help="Reason in the change record."),
+            click.Option(["--designator"], multiple=True, metavar="ROLE=NAME",
+                         help="Designator in the change record, such as r1=R17, or q=Q3 for the transistor."),
+            *output_options(FORMATS),
         ],
     )

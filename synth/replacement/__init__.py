@@ -2,5 +2,20 @@
 
 from synth.replacement.answer import Compared, Cost, Device, Refit, Refitted, Single, Step
 from synth.replacement.refitting import changes_words, refit
+from synth.replacement.scanning import Scan, Tried, least_ratings, scan
 
-__all__ = ["Compared", "Cost", "Device", "Refit", "Refitted", "Single", "Step", "changes_words", "refit"]
+__all__ = [
+    "Compared",
+    "Cost",
+    "Device",
+    "Refit",
+    "Refitted",
+    "Scan",
+    "Single",
+    "Step",
+    "Tried",
+    "changes_words",
+    "least_ratings",
+    "refit",
+    "scan",
+]
