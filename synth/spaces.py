@@ -10,6 +10,7 @@ from functools import partial
 import numpy as np
 from numpy.typing import NDArray
 
+from synth.answer import Pair
 from synth.box import Box, Extreme, Meter, Values
 from synth.catalogue import Derating, ResistorStyle, derating, resistor_style
 from synth.limits import Requirement, Surroundings, judge, requirements
@@ -365,6 +366,11 @@ def fitted(stage: Stage) -> Space:
 def _fitted(stage: Stage, role: str) -> Parts:
     """The resistor or the pair of resistors fitted in a role."""
     join, ohms = stage.fitted_pairs.get(role, (SINGLE, (stage.values[role],)))
+    return _made(stage, role, join, ohms)
+
+
+def _made(stage: Stage, role: str, join: int, ohms: Sequence[float]) -> Parts:
+    """A resistor or a pair of them in a role."""
     base = _parts(stage, role, ohms)
     # What was measured is the role as a whole.
     if join == SINGLE or role in stage.measured:
@@ -373,7 +379,7 @@ def _fitted(stage: Stage, role: str) -> Parts:
     return Parts.of_pairs(Pairs(base=base, join=np.array([join], dtype=np.int8), first=first, second=second))
 
 
-def space_of(stage: Stage, network: str, resistors: Mapping[str, float]) -> Space:
+def space_of(stage: Stage, network: str, resistors: Mapping[str, float], pairs: Mapping[str, Pair]) -> Space:
     """One candidate of a stage as a space of its own.
 
     Parameters
@@ -384,14 +390,20 @@ def space_of(stage: Stage, network: str, resistors: Mapping[str, float]) -> Spac
         Its network.
     resistors : mapping of str to float
         Role to nominal resistance [ohm].
+    pairs : mapping of str to Pair
+        Roles that two parts make up.
 
     Returns
     -------
     Space
         Of one candidate, with the bands that its values have in the stage.
     """
-    roles = tuple(role for role in NETWORKS[network].role_names if role in resistors)
-    return _space(stage, network, roles, {role: _parts(stage, role, (resistors[role],)) for role in roles}, ())
+    lists = {}
+    for role in (role for role in NETWORKS[network].role_names if role in resistors):
+        pair = pairs.get(role)
+        join, ohms = (SINGLE, (resistors[role],)) if pair is None else (JOINS.index(pair.join), pair.ohms)
+        lists[role] = _made(stage, role, join, ohms)
+    return _space(stage, network, tuple(lists), lists, ())
 
 
 def among_values(stage: Stage, space: Space) -> tuple[Space, Index]:

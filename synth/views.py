@@ -80,7 +80,7 @@ def box_of(stage: Stage, candidate: Candidate) -> Box:
     Box
         Of this one.
     """
-    space = space_of(stage, candidate.network, candidate.resistors)
+    space = space_of(stage, candidate.network, candidate.resistors, candidate.parts)
     return space.box(np.zeros((1, len(space.roles)), dtype=np.int32), Meter())
 
 
@@ -152,7 +152,7 @@ def units(stage: Stage, candidate: Candidate, quantities: tuple[str, ...], lot: 
     Units
         The same for the same lot.
     """
-    space = space_of(stage, candidate.network, candidate.resistors)
+    space = space_of(stage, candidate.network, candidate.resistors, candidate.parts)
     box = space.box(np.zeros((1, len(space.roles)), dtype=np.int32), Meter())
     life = {role: stage.role(role).life for role in space.roles}
     kept: dict[str, list[Array]] = {name: [] for name in quantities}

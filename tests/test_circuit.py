@@ -19,7 +19,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 import synth
-from synth.answer import Answer, Candidate
+from synth.answer import Answer, Candidate, Pair
 from synth.networks import NETWORKS, Role
 from synth.present import circuit
 from synth.present.circuit import plan_of, to_axes, to_png, to_svg
@@ -290,6 +290,31 @@ def is_rectangle(path: np.ndarray) -> bool:
     along = np.abs(steps[:, 1]) > 1.0
     width, height = np.ptp(points[:, 0]), np.ptp(points[:, 1])
     return len(points) > 5 and not np.any(across & along) and 0.0 < width < height
+
+
+PAIRED = [
+    ("divider", {"r1": "series", "r2": "parallel", "rc": "parallel", "re": "series"}),
+    ("divider", {"r1": "parallel", "r2": "series", "rc": "series", "re": "parallel"}),
+    ("collector_divider, re", {"r1": "parallel", "r2": "parallel"}),
+    ("two_supply", {"rb": "series", "re": "parallel"}),
+    ("sink, Zener", {"r1": "parallel", "re": "series"}),
+    ("fixed_base, re, VBB", {"rb": "series"}),
+]
+
+
+@pytest.mark.parametrize(("case", "joins"), PAIRED, ids=str)
+@both_polarities
+def test_pairs_are_drawn_as_two_parts(case: str, joins: dict[str, Any], polarity: str) -> None:
+    """Two in series stand above one another, two in parallel side by side, each with its own name and value."""
+    answer, candidate = drawn(case, polarity)
+    made = {role: Pair(join=join, ohms=(4.7e6, 3.3e6)) for role, join in joins.items()}
+    paired = replace(longest(candidate), parts=made)
+    plan = plan_of(answer, paired, {})
+    first = [label.lines for label in plan.labels]
+    for role, join in joins.items():
+        assert {(f"{role.upper()}A", "4M7"), (f"{role.upper()}B", "3M3")} <= set(first), join
+    assert sum(kind == "resistor" for kind, *_ in plan.parts) == len(candidate.resistors) + len(joins)
+    no_text_is_hidden(picture(answer, paired))
 
 
 def new_network(*extra: Role) -> Mapping[str, Any]:

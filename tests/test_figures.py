@@ -25,7 +25,20 @@ from synth.answer import Answer, Candidate
 from synth.explain import cause_words
 from synth.networks import NETWORKS
 from synth.present import figures as pictures
-from synth.present.figures import NAMES, budget, figures, files, frontier, histogram, load_line, saved, sheet, stress, styled
+from synth.present.figures import (
+    NAMES,
+    budget,
+    figures,
+    files,
+    frontier,
+    histogram,
+    load_line,
+    offers_of,
+    saved,
+    sheet,
+    stress,
+    styled,
+)
 from synth.present.figures.style import engineering
 from synth.stage import Stage
 from synth.statistics import Lot
@@ -154,7 +167,7 @@ def test_functions_take_and_return_axes() -> None:
         lambda ax: stress(ax, candidate),
         lambda ax: histogram(ax, answer, built, "vce"),
         lambda ax: pictures.over(ax, answer, found, "ic"),
-        lambda ax: frontier(ax, (candidate, candidate), candidate),
+        lambda ax: frontier(ax, offers_of(answer, candidate)),
     ):
         ax = sheet().add_subplot()
         assert make(ax) is ax
@@ -215,6 +228,18 @@ def test_curves_meet_the_worst_case_of_the_answer() -> None:
         assert np.all(found.nominal["ic"] <= found.high["ic"])
 
 
+@pytest.mark.parametrize(("r1", "whole"), [("33k + 10k", 43e3), ("82k || 91k", 82e3 * 91e3 / 173e3)])
+def test_a_pair_is_drawn_from_its_two_parts(r1: str, whole: float) -> None:
+    """By hand: resistances in series add up, in parallel their conductances do."""
+    stage, _, _ = judged("divider, usual")
+    answer = synth.check(stage, r1=r1)
+    assert answer.best is not None
+    box = box_of(stage, answer.best)
+    # A sum, or a product over a sum, of doubles.
+    assert_allclose(box.parts["r1"].nominal, [whole], rtol=1e-12, atol=0)
+    assert_allclose(box.extreme(("ic",), 1).value[0], answer.best.worst.ic[1], rtol=1e-9, atol=0)
+
+
 def test_a_curve_without_width_is_left_out() -> None:
     stage, _, candidate = judged("divider, no spread")
     assert curve(box_of(stage, candidate), "temperature", ("ic",)) is None
@@ -250,17 +275,37 @@ def test_histogram_counts_every_unit() -> None:
     assert "1024 units" in ax.get_title(loc="left") + ax.get_title()
 
 
-def test_frontier_has_nothing_below_its_steps() -> None:
-    stage = synth.Stage(supply="12 V ± 5 %", ic="2 mA", vce="5 V", hfe="110 : 450", series="E12", tolerance="5 %")
-    answer = synth.find(stage, top=8)
-    ax = frontier(sheet().add_subplot(), answer.candidates, answer.candidates[2])
+REQUEST = {"supply": "12 V ± 5 %", "ic": "2 mA", "vce": "5 V", "hfe": "110 : 450", "series": "E12", "tolerance": "5 %"}
+
+
+def test_frontier_of_a_list_has_nothing_below_its_steps() -> None:
+    answer = synth.find(synth.Stage(**REQUEST), top=8)
+    ax = frontier(sheet().add_subplot(), offers_of(answer, answer.candidates[2]))
     points = [(c.supply_current, c.drift.q_point) for c in answer.candidates]
     corners = set(zip(*ax.lines[0].get_data(), strict=True))
     best = {p for p in points if not any(o != p and o[0] <= p[0] and o[1] <= p[1] for o in points)}
     assert best <= corners
+    ring = next(c for c in ax.collections if c.get_label() == "chosen")
+    assert tuple(ring.get_offsets()[0]) == points[2]
     figure = ax.get_figure()
     assert isinstance(figure, Figure)
     no_text_is_hidden(figure)
+
+
+def test_frontier_that_was_asked_for_is_drawn_along_each_axis() -> None:
+    """Every point of an exact frontier is a corner of the steps; where more is better they run the other way."""
+    stage = synth.Stage(**REQUEST)
+    answer = synth.find(stage, top=2, frontier="supply_current,input_resistance")
+    assert answer.frontier is not None
+    assert len(answer.frontier.points) > 3
+    figure = dict(figures(stage, answer, lot=LOT))["frontier"]
+    no_text_is_hidden(figure)
+    assert [ax.get_xlabel() for ax in figure.axes] == ["supply current [mA]", "input resistance [kΩ]"]
+    for ax, axis, sign in zip(figure.axes, answer.frontier.axes, (1.0, -1.0), strict=True):
+        points = {(p.figures[axis], p.drift) for p in answer.frontier.points}
+        corners = set(zip(*ax.lines[0].get_data(), strict=True))
+        best = {p for p in points if not any(o != p and sign * o[0] <= sign * p[0] and o[1] <= p[1] for o in points)}
+        assert best <= corners
 
 
 # --- Axes -----------------------------------------------------------------------------------------------------------

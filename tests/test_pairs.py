@@ -519,9 +519,10 @@ def test_a_check_of_a_pair_that_was_found_gives_the_same_figures() -> None:
 def test_the_circuit_shows_both_parts() -> None:
     found = paired_answer()
     role, pair = next(iter(found.candidates[0].parts.items()))
-    words = (" + " if pair.join == "series" else " || ").join(map(format_resistance, pair.ohms))
-    assert role in found.candidates[0].parts
-    assert words in html.unescape(to_svg(found, found.candidates[0]))
+    svg = html.unescape(to_svg(found, found.candidates[0]))
+    for letter, ohms in zip("AB", pair.ohms, strict=True):
+        assert f">{role.upper()}{letter}<" in svg
+        assert f">{format_resistance(ohms)}<" in svg
 
 
 def test_pairs_of_e24_in_every_role_are_proved() -> None:

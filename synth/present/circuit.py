@@ -16,10 +16,10 @@ from functools import cache
 from typing import TYPE_CHECKING, Any, Literal, NamedTuple
 
 from synth.answer import Answer, Candidate
-from synth.explain import made_of, place
+from synth.explain import place
 from synth.networks import NETWORKS, Network, Role
 from synth.present.terminal import figure, span
-from synth.quantities import format_quantity
+from synth.quantities import format_quantity, format_resistance
 
 if TYPE_CHECKING:
     import schemdraw
@@ -41,6 +41,8 @@ BESIDE = 0.4
 """From the axis of a part to its text."""
 LENGTH = 2.6
 """Room that a resistor asks for between its nodes."""
+SERIES, PARALLEL = 1.6, 0.9
+"""What a second part adds: to the height in series, to the width in parallel."""
 DIODE = 1.3
 """Room that a diode of the reference element asks for."""
 PIN = 1.35
@@ -147,7 +149,8 @@ def to_svg(
     zigzag : bool
         Zigzag lines for resistors in place of the rectangles of IEC 60617.
     designators : mapping of str to str, optional
-        Name of the part in each role; ``R1``, ``RE``... by its role when not given.
+        Name of the part in each role; ``R1``, ``RE``... by its role when not given, ``R1A`` and ``R1B`` of a pair, which
+        go by ``r1a`` and ``r1b`` here.
     on_white : bool
         Black on white, for where there is no text around.
 
@@ -314,10 +317,19 @@ class _Circuit:
         low, high = sorted((self.same[node] for node in role.nodes), key=RANK.__getitem__)
         return low, high
 
-    def lines(self, role: Role) -> tuple[str, ...]:
-        """What stands beside a resistor."""
+    def join(self, role: Role) -> str:
+        """How the parts of a role are joined: ``single``, ``series`` or ``parallel``."""
+        pair = self.candidate.parts.get(role.name)
+        return "single" if pair is None else pair.join
+
+    def lines(self, role: Role) -> list[tuple[str, ...]]:
+        """What stands beside each part of a role."""
         name = self.designators.get(role.name, role.name.upper())
-        return name, made_of(self.candidate.resistors[role.name], self.candidate.parts.get(role.name))
+        pair = self.candidate.parts.get(role.name)
+        if pair is None:
+            return [(name, format_resistance(self.candidate.resistors[role.name]))]
+        halves = [self.designators.get(f"{role.name}{letter}", f"{name}{letter.upper()}") for letter in "ab"]
+        return [(who, format_resistance(ohms)) for who, ohms in zip(halves, pair.ohms, strict=True)]
 
     def node(self, node: str) -> tuple[str, ...]:
         """What stands beside a node: its voltage and the range of it."""
@@ -446,7 +458,7 @@ class _Layout:
         for role in circuit.roles:
             lower, upper = circuit.ends(role)
             if not self._local_ground(lower):
-                room.append((lower, upper, least))
+                room.append((lower, upper, least + self._more(role)))
         self.level = dict.fromkeys(RANK, 0.0)
         for _ in RANK:
             for lower, upper, length in room:
@@ -454,10 +466,18 @@ class _Layout:
             # Rails of the collector's side are drawn at one height.
             self.level |= dict.fromkeys(TOP, max(self.level[node] for node in TOP))
 
+    def _more(self, role: Role) -> float:
+        """Height that a pair in series takes besides that of one resistor."""
+        return SERIES if self.circuit.join(role) == "series" else 0.0
+
+    def _aside(self, role: Role) -> float:
+        """How far out the second part of a pair in parallel stands."""
+        return PARALLEL if self.circuit.join(role) == "parallel" else 0.0
+
     def _span(self, role: Role) -> tuple[float, float]:
         lower, upper = self.circuit.ends(role)
         high = self.level[upper]
-        return (high - LENGTH if self._local_ground(lower) else self.level[lower]), high
+        return (high - LENGTH - self._more(role) if self._local_ground(lower) else self.level[lower]), high
 
     def _columns(self) -> bool:
         """Which resistors stand above one another, and how far apart the columns are; whether there are any on the right."""
@@ -480,13 +500,13 @@ class _Layout:
         x = -COLUMN
         for column in left:
             self.x |= {role.name: x for role in column}
-            x -= BESIDE + max(self._role_label(role, "left").width for role in column) + GAP + 0.3
-        labels = [self._role_label(role, "right").width for role in middle]
+            x -= BESIDE + max(self._reach(role) for role in column) + GAP + 0.3
+        labels = [self._reach(role) for role in middle]
         labels += [max(map(_width, lines)) for lines in (self.circuit.transistor(), *map(self.circuit.node, "ce"))]
         x = BESIDE + max(labels) + GAP + 0.4
         for column in right:
             self.x |= {role.name: x for role in column}
-            x += BESIDE + max(self._role_label(role, "right").width for role in column) + GAP + 0.3
+            x += BESIDE + max(self._reach(role) for role in column) + GAP + 0.3
         return bool(right)
 
     def _meet(self, one: Role, other: Role) -> bool:
@@ -500,8 +520,31 @@ class _Layout:
                 return
         columns.append([role])
 
-    def _role_label(self, role: Role, side: Side, x: float = 0.0, y: float = 0.0) -> Label:
-        return Label(self.circuit.lines(role), x + (BESIDE if side == "right" else -BESIDE), y, side)
+    def _reach(self, role: Role) -> float:
+        """Room that the texts of a role take beside its column, with a second part in between."""
+        return self._aside(role) + max(_width(line) for lines in self.circuit.lines(role) for line in lines)
+
+    def _resistor(self, role: Role) -> None:
+        """The part of a role, or both parts of a pair, each with its name and value."""
+        plan, x, (low, high) = self.plan, self.x[role.name], self._span(role)
+        side: Side = "left" if x < 0.0 else "right"
+        out = -1.0 if side == "left" else 1.0
+        middle, texts, aside = 0.5 * (low + high), self.circuit.lines(role), self._aside(role)
+        if len(texts) == 1:
+            plan.parts.append(("resistor", (x, high), (x, low)))
+            places = [middle]
+        elif aside:
+            # The two stand side by side, the texts of both beyond the outer one.
+            outer, top, bottom = x + out * aside, middle + 0.75, middle - 0.75
+            plan.parts += [("resistor", (x, high), (x, low)), ("resistor", (outer, top), (outer, bottom))]
+            plan.wires += [((x, top), (outer, top)), ((x, bottom), (outer, bottom))]
+            plan.dots += [(x, top), (x, bottom)]
+            places = [middle + PITCH, middle - PITCH]
+        else:
+            plan.parts += [("resistor", (x, high), (x, middle)), ("resistor", (x, middle), (x, low))]
+            places = [0.5 * (high + middle), 0.5 * (middle + low)]
+        for lines, y in zip(texts, places, strict=True):
+            plan.labels.append(Label(lines, x + out * (aside + BESIDE), y, side))
 
     def _parts(self) -> None:
         """Resistors, reference elements and the load of a sink."""
@@ -509,8 +552,7 @@ class _Layout:
         for role in circuit.roles:
             x, (low, high) = self.x[role.name], self._span(role)
             lower, upper = circuit.ends(role)
-            plan.parts.append(("resistor", (x, high), (x, low)))
-            plan.labels.append(self._role_label(role, "left" if x < 0.0 else "right", x, 0.5 * (low + high)))
+            self._resistor(role)
             self._join(upper, (x, high), -1)
             if self._local_ground(lower):
                 self._between((x, low))

@@ -6,13 +6,14 @@ No figure here is one of pyplot's: nothing opens a window, and the settings of m
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from synth.answer import Answer, Candidate
 from synth.present.circuit import to_png, to_svg
 from synth.present.figures.bars import budget, has_ratings, stress
 from synth.present.figures.load_line import load_line
-from synth.present.figures.plots import frontier, histogram, over
+from synth.present.figures.plots import Offer, frontier, histogram, offers_of, over
 from synth.present.figures.style import saved, sheet, styled, width_of
 from synth.present.terminal import resistors
 from synth.stage import Stage
@@ -23,12 +24,14 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 __all__ = [
-    "NAMES", "budget", "figures", "files", "frontier", "has_ratings", "histogram", "load_line", "over", "saved", "sheet",
-    "stress", "styled",
+    "NAMES", "Offer", "budget", "figures", "files", "frontier", "has_ratings", "histogram", "load_line", "offers_of",
+    "over", "saved", "sheet", "stress", "styled",
 ]  # fmt: skip
 
 NAMES = ("circuit", "load_line", "budget", "curves", "yield", "stress", "frontier")
 """Every figure that there may be; one that has nothing to show is left out."""
+MOST_UNITS = 65536
+"""Units in a picture at most [-]: more would not change it."""
 TITLE_SIZE = 9.5
 ROW = 0.24
 """Height of a bar with its distance to the next [inch]."""
@@ -46,7 +49,7 @@ def figures(stage: Stage, answer: Answer, rank: int = 1, lot: Lot | None = None)
     rank : int
         Which candidate; 1 is the best [-].
     lot : Lot, optional
-        The units of cloud and histograms; 65 536 of even distribution, hFE log-uniform, when not given.
+        The units of cloud and histograms; those of the stage, 65 536 at most, when not given.
 
     Returns
     -------
@@ -55,7 +58,7 @@ def figures(stage: Stage, answer: Answer, rank: int = 1, lot: Lot | None = None)
     """
     candidate = answer.candidate(rank)
     title = f"{stage.name}: {candidate.network}, {resistors(candidate)}"
-    built = units(stage, candidate, tuple(candidate.worst), lot or Lot())
+    built = units(stage, candidate, tuple(candidate.worst), lot or replace(stage.lot, units=min(stage.lot.units, MOST_UNITS)))
     makers: dict[str, Callable[[], Figure | None]] = {
         "load_line": lambda: _load_line(answer, candidate, built),
         "budget": lambda: _budget(candidate),
@@ -177,8 +180,13 @@ def _stress(candidate: Candidate) -> Figure | None:
 
 
 def _frontier(answer: Answer, candidate: Candidate) -> Figure | None:
-    if len(answer.candidates) < 2:
+    axes = answer.frontier.axes if answer.frontier is not None else ()
+    drawn = [(axis, offers_of(answer, candidate, axis)) for axis in axes]
+    drawn = [(axis, offers) for axis, offers in drawn if offers]
+    drawn = drawn or [("supply_current", offers_of(answer, candidate))]
+    if len(drawn[0][1]) < 2:
         return None
-    figure = sheet()
-    frontier(figure.add_subplot(), answer.candidates, candidate)
+    figure = sheet(height=0.6 + 3.4 * len(drawn))
+    for ax, (axis, offers) in zip(figure.subplots(len(drawn), 1, squeeze=False)[:, 0], drawn, strict=True):
+        frontier(ax, offers, axis)
     return figure

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -10,6 +13,8 @@ from synth.answer import Answer, Candidate
 from synth.explain import percent
 from synth.present.figures.style import BLUE, GREEN, GREY, ORANGE, RED, engineering, key
 from synth.present.terminal import figure
+from synth.quantities.kinds import KINDS
+from synth.search import AXES as AXES_OF_SEARCH
 from synth.transistor import T0
 from synth.views import Curve, Units
 
@@ -20,6 +25,7 @@ if TYPE_CHECKING:
 AXES = {"temperature": ("ambient temperature", "°C"), "hfe": ("hFE at 25 °C", "")}
 BINS = 48
 MARKERS = "osv^P*Xd"
+COLOURS = (BLUE, GREEN, ORANGE, GREY)
 ZERO_CELSIUS = T0 - 25.0
 
 
@@ -112,51 +118,96 @@ def _share(share: float) -> str:
     return "nearly all" if text == "100 %" else text
 
 
-def frontier(ax: Axes, candidates: tuple[Candidate, ...], chosen: Candidate) -> Axes:
-    """Drift against supply current of candidates, the chosen one marked; none of them lies below the steps.
+@dataclass(frozen=True, kw_only=True)
+class Offer:
+    """A candidate in a frontier: its drift [-], its figure along the other axis (SI) [-], its network, whether it is chosen."""
+
+    drift: float
+    figure: float
+    network: str
+    chosen: bool = False
+
+
+def offers_of(answer: Answer, chosen: Candidate, axis: str = "") -> list[Offer]:
+    """What there is to choose from: a frontier that was asked for, else the candidates listed.
+
+    Parameters
+    ----------
+    answer : Answer
+        Any answer.
+    chosen : Candidate
+        The one that is marked.
+    axis : str
+        Axis of the answer's frontier; "" for the supply current of the candidates listed.
+
+    Returns
+    -------
+    list of Offer
+        The chosen one among them where it has a place there.
+    """
+    if not axis or answer.frontier is None:
+        return [
+            Offer(drift=c.drift.q_point, figure=c.supply_current, network=c.network, chosen=c.rank == chosen.rank)
+            for c in answer.candidates
+        ]
+    return [
+        Offer(
+            drift=p.drift,
+            figure=p.figures[axis],
+            network=p.network,
+            chosen=p.network == chosen.network and p.resistors == chosen.resistors,
+        )
+        for p in answer.frontier.points
+        if math.isfinite(p.figures.get(axis, math.nan))
+    ]
+
+
+def frontier(ax: Axes, offers: Sequence[Offer], axis: str = "supply_current") -> Axes:
+    """Drift against another wish, the chosen candidate marked; of the offers none lies better than the steps.
 
     Parameters
     ----------
     ax : Axes
         Where to draw.
-    candidates : tuple of Candidate
-        Two or more.
-    chosen : Candidate
-        The one that is marked.
+    offers : sequence of Offer
+        One or more.
+    axis : str
+        What `Offer.figure` is, an axis of `synth.search.AXES`.
 
     Returns
     -------
     Axes
         The same.
     """
+    known = AXES_OF_SEARCH[axis]
     handles: list[Artist] = []
-    colours = (BLUE, GREEN, ORANGE, GREY)
-    for k, network in enumerate(dict.fromkeys(c.network for c in candidates)):
-        own = [c for c in candidates if c.network == network]
-        handles.append(
-            ax.scatter(
-                [c.supply_current for c in own], [c.drift.q_point for c in own], s=26.0, marker=MARKERS[k % len(MARKERS)],
-                color=colours[k % len(colours)], edgecolors="black", linewidths=0.6, zorder=3, label=network,
-            )
-        )
-    best = sorted(candidates, key=lambda c: (c.supply_current, c.drift.q_point))
-    steps: list[Candidate] = []
-    for c in best:
-        if not steps or c.drift.q_point < steps[-1].drift.q_point:
-            steps.append(c)
-    x, y = [c.supply_current for c in candidates], [c.drift.q_point for c in candidates]
-    room_x, room_y = 0.08 * (max(x) - min(x)) or 0.05 * max(x), 0.08 * (max(y) - min(y)) or 0.05 * max(y)
-    left, right, low, high = min(x) - room_x, max(x) + room_x, min(y) - room_y, max(y) + room_y
+    for k, network in enumerate(dict.fromkeys(offer.network for offer in offers)):
+        own = [offer for offer in offers if offer.network == network]
+        look: dict[str, Any] = {"marker": MARKERS[k % len(MARKERS)], "color": COLOURS[k % len(COLOURS)], "edgecolors": "black"}
+        x, y = [offer.figure for offer in own], [offer.drift for offer in own]
+        handles.append(ax.scatter(x, y, s=26.0, linewidths=0.6, zorder=3, label=network, **look))
+    x, y = [offer.figure for offer in offers], [offer.drift for offer in offers]
+    room_x = 0.08 * (max(x) - min(x)) or 0.05 * abs(max(x)) or 1.0
+    room_y = 0.08 * (max(y) - min(y)) or 0.05 * max(y) or 0.01
+    left, right, low, high = min(x) - room_x, max(x) + room_x, max(min(y) - room_y, 0.0), max(y) + room_y
+    # From the best along the axis on, each step is one that drifts less than all before it.
+    steps: list[Offer] = []
+    for offer in sorted(offers, key=lambda offer: (-offer.figure if known.most else offer.figure, offer.drift)):
+        if not steps or offer.drift < steps[-1].drift:
+            steps.append(offer)
+    far = left if known.most else right
     (edge,) = ax.step(
-        [steps[0].supply_current, *(c.supply_current for c in steps), right],
-        [high, *(c.drift.q_point for c in steps), steps[-1].drift.q_point],
-        where="post", color="black", linewidth=1.0, linestyle="--", zorder=2, label="none listed is better in both",
+        [steps[0].figure, *(step.figure for step in steps), far],
+        [high, *(step.drift for step in steps), steps[-1].drift],
+        where="post", color="black", linewidth=1.0, linestyle="--", zorder=2, label="none shown is better in both",
     )  # fmt: skip
-    ring = ax.scatter(
-        [chosen.supply_current], [chosen.drift.q_point], s=150.0, marker="o", facecolors="none", edgecolors=RED,
-        linewidths=1.8, zorder=4, label=f"chosen: rank {chosen.rank}",
-    )  # fmt: skip
-    engineering(ax, "x", left, right, "supply current", "A")
+    handles.append(edge)
+    chosen = next((offer for offer in offers if offer.chosen), None)
+    if chosen is not None:
+        ring: dict[str, Any] = {"facecolors": "none", "edgecolors": RED, "linewidths": 1.8}
+        handles.append(ax.scatter([chosen.figure], [chosen.drift], s=150.0, marker="o", zorder=4, label="chosen", **ring))
+    unit = {"count": "", "price": ""}.get(known.kind, KINDS[known.kind].unit if known.kind in KINDS else "")
+    engineering(ax, "x", left, right, axis.replace("_", " "), unit)
     engineering(ax, "y", low, high, "drift of the Q-point", "%")
-    key(ax, [*handles, edge, ring])
+    key(ax, handles)
     return ax
