@@ -20,16 +20,20 @@ from pathlib import Path
 import numpy as np
 
 from synth import __version__
+from synth.box import Box, Meter
+from synth.facts import loads
 from synth.quantities import RestpointError, format_resistance
 from synth.ranking import DIGITS
 from synth.search import search
-from synth.solve import check, find
-from synth.spaces import goal_of, spaces_of
+from synth.solve import find
+from synth.spaces import Found, goal_of, spaces_of
 from synth.stage import Stage, StageError
 from synth.stage_file import load, texts
 from synth.stage_keys import KEYS, NAMES, ROLES, nearest
 from synth.stage_resolve import rival
+from synth.stress import junction_limit
 
+SIDES = (("min", -1), ("max", 1))
 AHEAD = 64
 """Rows that are worked on or wait for their turn at a time."""
 
@@ -184,26 +188,41 @@ def _best(stage: Stage) -> dict[str, object]:
     if len(alike) > 1:
         # Equal in drift: the order of `find` decides.
         best = find(stage, top=1).best
-    else:
-        (values,) = first.space.fitted(np.array([first.index], dtype=np.int32))
-        fitted = {f"values.{role}": format_resistance(ohms) for role, ohms in values.items()}
-        best = check(stage.with_keys({"network": first.space.network.name} | fitted)).best
-    assert best is not None
-    failed = [v.name for v in best.limits if v.verdict == "fail"]
+        assert best is not None
+        first = next(f for f in alike if _resistors(f) == (best.network, dict(best.resistors)))
+    network, resistors = _resistors(first)
+    box = first.space.box(np.array([first.index], dtype=np.int32), Meter())
+    point = box.solve(box.nominal())
+    ends = {f"{q}_{end}": float(box.extreme((q,), side).value[0]) for q in ("ic", "vce") for end, side in SIDES}
+    settles = _settles(stage, box)
     return {
-        "status": "none" if failed else "found",
-        "reason": f"the best candidate fails {' and '.join(failed)}" if failed else "",
-        "network": best.network,
-        **{role: format_resistance(ohms) for role, ohms in best.resistors.items()},
-        "drift": best.drift.q_point,
-        "ic_a": best.nominal.ic,
-        "ic_min_a": best.worst.ic[0],
-        "ic_max_a": best.worst.ic[1],
-        "vce_v": best.nominal.vce,
-        "vce_min_v": best.worst.vce[0],
-        "vce_max_v": best.worst.vce[1],
-        "bound": outcome.bound if outcome.bound < float("inf") else "",
+        "status": "found" if settles else "none",
+        "reason": "" if settles else "the junction of the best candidate does not stay below its limit",
+        "network": network,
+        **{role: format_resistance(ohms) for role, ohms in resistors.items()},
+        "drift": first.drift,
+        "ic_a": float(point.ic[0]),
+        "ic_min_a": ends["ic_min"],
+        "ic_max_a": ends["ic_max"],
+        "vce_v": float(point.vce[0]),
+        "vce_min_v": ends["vce_min"],
+        "vce_max_v": ends["vce_max"],
+        "bound": float(outcome.bound) if outcome.bound < float("inf") else "",
     }
+
+
+def _resistors(found: Found) -> tuple[str, dict[str, float]]:
+    (values,) = found.space.fitted(np.array([found.index], dtype=np.int32))
+    return found.space.network.name, values
+
+
+def _settles(stage: Stage, box: Box) -> bool:
+    """Whether the junction, heating itself, stays below its limit: the one verdict that a search leaves to the review."""
+    limit = junction_limit(stage.ratings, stage.derating)
+    if limit is None or stage.ratings.thermal_resistance is None or "transistor_stress" not in stage.limits:
+        return True
+    junction = loads(box, stage.ratings, stage.derating)[0].junction
+    return junction is not None and junction <= limit
 
 
 def find_many(

@@ -36,6 +36,7 @@ from synth.quantities import RestpointError
 from synth.spaces import goal_of, spaces_of
 from synth.stage import Stage, StageError
 
+EXAMPLES = Path(__file__).resolve().parents[1] / "examples"
 ROUNDING = 1e-9
 """Drift is counted in steps of 1e-9, each rounded up; a sum over three stages is at most 3e-9 above the true one."""
 
@@ -113,7 +114,9 @@ def spread_over(pieces: int, among: int) -> Iterator[tuple[int, ...]]:
             yield (first, *rest)
 
 
-def cheapest(rows: Sequence[Row], value: float, demand: tuple[tuple[float, int], ...], new: bool) -> tuple[int, Fraction] | None:
+def cheapest(
+    rows: Sequence[Row], value: float, demand: tuple[tuple[float, int], ...], there: Collection[int]
+) -> tuple[int, Fraction] | None:
     """Fewest new rows, then least cost, that fill a number of places of one value in each tolerance class."""
     own = [row for row in rows if row.value == value and (row.quantity != 0 or row.prices)]
     best: tuple[int, Fraction] | None = None
@@ -125,7 +128,7 @@ def cheapest(rows: Sequence[Row], value: float, demand: tuple[tuple[float, int],
             taken.update({row: n for row, n in way.items() if n})
         costs = [order_cost(row, n) for row, n in taken.items()]
         if all(cost is not None for cost in costs):
-            found = (len(taken) if new else 0, sum((c for c in costs if c is not None), Fraction(0)))
+            found = (sum(row.number not in there for row in taken), sum((c for c in costs if c is not None), Fraction(0)))
             best = found if best is None else min(best, found)
     return best
 
@@ -134,7 +137,7 @@ def cheapest(rows: Sequence[Row], value: float, demand: tuple[tuple[float, int],
 class Case:
     rows: tuple[Row, ...]
     entries: tuple[BoardStage, ...]
-    on_board: tuple[float, ...]
+    on_board: tuple[int, ...]
     most_new: int | None
     sets: tuple[tuple[tuple[float, tuple[tuple[float, float], ...]], ...], ...]
 
@@ -180,7 +183,7 @@ def case(number: int) -> Case:
         else:
             if np.prod([len(s) for s in sets]) <= 4000:
                 break
-    on_board = tuple(sorted({row.value for row in rows if rng.random() < 0.25}))
+    on_board = tuple(row.number for row in rows if rng.random() < 0.25)
     most_new = int(rng.integers(1, 6)) if rng.random() < 0.3 else None
     return Case(tuple(rows), tuple(entries), on_board, most_new, tuple(sets))
 
@@ -190,7 +193,7 @@ def best_of_everything(case: Case) -> tuple[int, Fraction, float] | None:
 
     @cache
     def fill(value: float, demand: tuple[tuple[float, int], ...]) -> tuple[int, Fraction] | None:
-        return cheapest(case.rows, value, demand, value not in case.on_board)
+        return cheapest(case.rows, value, demand, case.on_board)
 
     best: tuple[int, Fraction, float] | None = None
     for choice in itertools.product(*case.sets):
@@ -215,7 +218,7 @@ def best_of_everything(case: Case) -> tuple[int, Fraction, float] | None:
 def solve(case: Case, folder: Path, **options: Any) -> synth.BoardAnswer:
     path = folder / "stock.csv"
     path.write_text(as_csv(case.rows), encoding="utf-8")
-    request = Board.of(case.entries, stock=path, on_board=case.on_board, most_new=case.most_new)
+    request = Board.of(case.entries, stock=path, on_board=[f"X{number}" for number in case.on_board], most_new=case.most_new)
     return synth.board(request, **options)
 
 
@@ -383,6 +386,36 @@ def test_why_there_is_no_bom(board_file: Path, capsys: pytest.CaptureFixture[str
     assert "at most 0 new line items" in text
 
 
+def test_the_board_of_the_buoy_as_its_buyer_reads_it(tmp_path: Path) -> None:
+    """The BOM against the parts list, read here by itself: what is ordered, what it costs, what it may carry."""
+    answer = synth.board(Board.read(EXAMPLES / "buoy_board.toml"))
+    assert answer.search.complete
+    assert len(answer.stages) == 8
+    listed = {row["part"]: row for row in csv.DictReader(io.StringIO((EXAMPLES / "buoy_parts.csv").read_text(encoding="utf-8")))}
+    total = Fraction(0)
+    bom = list(csv.DictReader(io.StringIO(to_csv(answer))))
+    # Every resistor of the stage files but the one that is the sensor, and the twice built stage twice.
+    assert sum(int(row["quantity"]) for row in bom) == 4 + 3 + 4 + 2 + 2 * 4 + 3 + 2 + 3
+    for row in bom:
+        source = listed[row["part"]]
+        assert (row["value"], row["tolerance"], row["style"]) == (source["value"], source["tolerance"], source["style"])
+        missing = int(row["quantity"]) - int(source["quantity"] or 0)
+        breaks = [(int(n), Fraction(p)) for n, _, p in (item.partition(":") for item in source["price"].split())]
+        orders = [n for n in range(max(missing, int(source["minimum"])), 200) if missing > 0]
+        cost = min((n * [p for start, p in breaks if start <= n][-1] for n in orders), default=Fraction(0))
+        assert_allclose(float(row["cost"]), float(cost), rtol=1e-12, atol=0)
+        assert int(row["buy"]) == 0 or int(row["buy"]) >= max(missing, int(source["minimum"]))
+        assert float(row["power_w"]) < float(row["power_rating_w"])
+        assert float(row["voltage_v"]) < float(row["voltage_rating_v"])
+        total += cost
+    assert answer.cost is not None
+    assert_allclose(answer.cost, float(total), rtol=1e-12, atol=0)
+    # The values of the lines judged anew by the stage files themselves, in the coarser class that these ask for or better.
+    for stage in answer.stages:
+        assert stage.candidate.verdict == "pass"
+        assert stage.drift <= stage.allowed
+
+
 @pytest.mark.parametrize(
     ("old", "new", "message"),
     [
@@ -394,6 +427,7 @@ def test_why_there_is_no_bom(board_file: Path, capsys: pytest.CaptureFixture[str
         ("R101-R108", "R101-R108, R101", r"designators: read 'R101', which 'front' has already"),
         ('["rc"]', '["rd"]', r"stage 'driver', outside: read 'rd', which is no role of divider"),
         ('["10K"]', '["11K"]', r"on_board: read '11K', which no row of the stock list has, .* nearest is '10K'"),
+        ('["10K"]', '["10K 5 %"]', r"on_board: read '10K 5 %', which no row of the stock list has"),
         ("transistor.hfe", "transistor.hef", r"stage 1: read 'transistor\.hef', .* nearest is 'transistor\.hfe'"),
         ('stock = "stock.csv"', "stock = 3", r"stock: read '3', which is no text"),
         ('on_board = ["10K"]', "on_board = 10", r"on_board: read '10', which is no list of texts"),
@@ -406,6 +440,15 @@ def test_wrong_boards_are_refused(board_file: Path, old: str, new: str, message:
     board_file.write_text(BOARD.replace(old, new, 1), encoding="utf-8")
     with pytest.raises(RestpointError, match=message):
         Board.read(board_file)
+
+
+def test_a_value_that_the_list_has_twice_is_named_by_more_than_itself(board_file: Path, tmp_path: Path) -> None:
+    (tmp_path / "stock.csv").write_text(STOCK + "10K,0.1 %,,0805,0.2,,T1\n", encoding="utf-8")
+    with pytest.raises(StageError, match=r"on_board: read '10K', which 2 rows .* have, .* nearest is 'T1' or 'A7'"):
+        Board.read(board_file)
+    for text in ("10K 1 %", "A7"):
+        board_file.write_text(BOARD.replace('["10K"]', f'["{text}"]'), encoding="utf-8")
+        assert [part.number for part in Board.read(board_file).parts or () if not part.new] == ["A7"]
 
 
 def test_a_board_needs_stages() -> None:

@@ -369,6 +369,6 @@ def _merge_words(merge: Merge) -> str:
         elif share.cost < NOTHING:
             free.append(share.stage)
         else:
-            costs.append(f"costs {share.stage} {100.0 * share.cost:.{2 if share.cost < 0.00995 else 1}g} points of drift")
+            costs.append(f"costs {share.stage} {percent(share.cost).removesuffix(' %')} points of drift")
     words = "; ".join(costs + ([f"costs {' and '.join(free)} nothing"] if free else []))
     return f"{merge.value} shared by {which}: {words}"

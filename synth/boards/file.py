@@ -26,7 +26,7 @@ LARGEST_COUNT = 10_000
 BOARD_KEYS = {
     "name": "name for reports",
     "stock": "stock list that every resistor is taken from (CSV: value, tolerance, tcr, quantity, style, price, part, minimum)",
-    "on_board": "values that other circuits of the board use already: no new line items",
+    "on_board": "what other circuits of the board use already, as 10K, 10K 1 % or a part number: no new line item",
     "most_new": "largest number of new line items",
     "allowance": "drift beyond its own best that each stage may spend, in points of per cent",
     "tolerance": "tolerance of stock rows that state none",
@@ -112,7 +112,7 @@ class Board:
     stock : str or None
         The stock list as it was named.
     on_board : tuple of float
-        Values on the board already [ohm].
+        Values on the board already, where there is no stock list [ohm].
     most_new : int or None
         Largest number of new line items [-].
     assumed : tuple of (str, str)
@@ -121,7 +121,7 @@ class Board:
     Raises
     ------
     StageError
-        If there is no stage, a number is given twice, or a value on the board is in no stock row.
+        If there is no stage or a number is given twice.
     """
 
     name: str = "board"
@@ -144,13 +144,6 @@ class Board:
                 seen[number] = entry.stage.name
         if self.most_new is not None and (isinstance(self.most_new, bool) or self.most_new < 0):
             raise StageError("most_new", self.most_new, "which is no number of lines", "a whole number of 0 or more")
-        if self.parts is not None:
-            known = {part.value for part in self.parts}
-            for value in self.on_board:
-                if value not in known:
-                    near = [format_resistance(v) for v in sorted(known, key=lambda v: abs(v - value))[:2]]
-                    text = format_resistance(value)
-                    raise StageError("on_board", text, "which no row of the stock list has", "a value of the list", near)
 
     @classmethod
     def read(cls, path: str | os.PathLike[str]) -> Board:
@@ -218,7 +211,8 @@ class Board:
         stock : path, optional
             Stock list that every resistor is taken from.
         on_board : sequence of str or float
-            Values on the board already [ohm].
+            What is on the board already: values [ohm], with a tolerance where the stock list has the value several times,
+            or part numbers of the list.
         most_new : int, optional
             Largest number of new line items [-].
         tolerance, tcr : float, optional
@@ -239,14 +233,18 @@ class Board:
             If the stock list cannot be read, or the parts of the board contradict each other.
         """
         entries = tuple(s if isinstance(s, BoardStage) else BoardStage(stage=s, allowance=allowance) for s in stages)
-        values = tuple(parse(value, "resistance", field="on_board") for value in on_board)
-        parts = None
+        parts: tuple[Part, ...] | None = None
+        values: tuple[float, ...] = ()
         if stock is not None:
             bands = {"tolerance": TOLERANCE if tolerance is None else tolerance, "tcr": TCR if tcr is None else tcr}
             made = (Part.of_row(row) for row in stock_rows(Path(stock), **bands))
-            parts = distinct(Part(**{**vars(part), "new": part.value not in values}) for part in made)
+            parts = distinct(made)
+            there = {_on_board(item, parts) for item in on_board}
+            parts = tuple(Part(**{**vars(part), "new": part not in there}) for part in parts)
             assumed += (("tolerance", format_exact(TOLERANCE, "ratio")),) if tolerance is None else ()
             assumed += (("tcr", format_exact(TCR, "temperature_coefficient")),) if tcr is None else ()
+        else:
+            values = tuple(parse(item, "resistance", field="on_board") for item in on_board)
         return cls(
             name=name,
             stages=entries,
@@ -271,6 +269,25 @@ class Board:
         return tuple(
             entry.designators or tuple(next(rest) for _ in range(entry.count * entry.most_resistors)) for entry in self.stages
         )
+
+
+def _on_board(item: str | float, parts: Sequence[Part]) -> Part:
+    """The part of a stock list that a text names: by its number, or by value and, if need be, tolerance."""
+    named = [part for part in parts if part.number == item]
+    if not named:
+        first, _, rest = str(item).strip().partition(" ") if isinstance(item, str) else (item, "", "")
+        value = parse(first, "resistance", field="on_board")
+        tolerance = parse(rest, "ratio", field="on_board") if rest else None
+        named = [part for part in parts if part.value == value and tolerance in (None, part.tolerance)]
+        if not named:
+            known = sorted({part.value for part in parts}, key=lambda v: abs(v - value))[:2]
+            near = [format_resistance(v) for v in known]
+            raise StageError("on_board", item, "which no row of the stock list has", "a value of the list", near)
+    if len(named) > 1:
+        near = [part.number or part.text for part in named[:3]]
+        reason = f"which {len(named)} rows of the stock list have"
+        raise StageError("on_board", item, reason, "the part number of one, or its value with its tolerance", near)
+    return named[0]
 
 
 def _stage(number: int, table: Mapping[str, Any], folder: Path, allowance: float | None) -> BoardStage:

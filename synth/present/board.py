@@ -42,10 +42,10 @@ def render(answer: BoardAnswer) -> str:
         blocks.append("\n".join(["Why not", *(f"  {reason}" for reason in answer.infeasible)]))
         blocks.append("Next: widen allowance, a window or a limit, or add values to the stock list.")
         return "\n\n".join(blocks) + "\n"
-    blocks += [_proof(answer), "Stages\n" + table(_stage_rows(answer.stages), right=(1, 2, 3, 4))]
+    blocks += [_proof(answer), "Stages\n" + table(_stage_rows(answer.stages), right=(0, 1, 2, 3))]
     blocks.append("Resistors\n" + table(_resistor_rows(answer.stages)))
     blocks.append("BOM\n" + table(_bom_rows(answer), right=(0, 1)))
-    stress = [["item", "value", "at most", "rated", "voltage", "rated", "alternates that would also pass"]]
+    stress = [["item", "value", "TCR", "at most", "rated", "voltage", "rated", "alternates that would also pass"]]
     stress += [_stress_row(line) for line in answer.bom]
     blocks.append("What each line has to stand, and what else would do\n" + table(stress, right=(0,)))
     reasons = [[str(line.item), line.value, reason] for line in answer.bom for reason in line.rationale.split(" | ")]
@@ -67,11 +67,10 @@ def _headline(answer: BoardAnswer) -> str:
     new = sum(line.new for line in answer.bom)
     text = f"PASS  {answer.name}: {_many(len(answer.stages), 'stage')}, {_many(pieces, 'resistor')} on "
     text += f"{_many(len(answer.bom), 'line')} ({new} new)"
-    if answer.cost is not None:
-        text += f", {money(answer.cost)} to order"
+    order = "" if answer.cost is None else f", {money(answer.cost)} to order"
     state = "proved the best choice" if search.complete else "not proved the best"
     effort = f"{search.candidates} candidates of {search.combinations:.3g} combinations, {search.seconds:.1f} s"
-    return f"{text}; {state}\n      ({effort})"
+    return f"{text}{order};\n      {state} ({effort})"
 
 
 def _proof(answer: BoardAnswer) -> str:
@@ -87,11 +86,11 @@ def _proof(answer: BoardAnswer) -> str:
 
 
 def _stage_rows(stages: Sequence[StageResult]) -> list[list[str]]:
-    rows = [["stage", "built", "drift", "own best", "allowed", "candidates", "network"]]
+    rows = [["built", "drift", "own best", "allowed", "candidates", "network", "stage"]]
     for stage in stages:
         drifts = [percent(drift) for drift in (stage.drift, stage.best, stage.allowed)]
         capped = "" if stage.reached is None else f" below {percent(stage.reached)}"
-        rows.append([stage.name, f"{stage.count}×", *drifts, f"{stage.found}{capped}", stage.candidate.network])
+        rows.append([f"{stage.count}×", *drifts, f"{stage.found}{capped}", stage.candidate.network, stage.name])
     return rows
 
 
@@ -111,10 +110,10 @@ def _resistor_rows(stages: Sequence[StageResult]) -> list[list[str]]:
 def _bom_rows(answer: BoardAnswer) -> list[list[str]]:
     priced = any(line.cost is not None or line.on_hand is not None for line in answer.bom)
     order = ["on hand", "buy", "cost"] if priced else []
-    rows = [["item", "qty", "value", "tol.", "TCR", "style", "part", *order, "designators"]]
+    rows = [["item", "qty", "value", "tol.", "style", "part", *order, "designators"]]
     for line in answer.bom:
         cells = [str(line.item), str(line.quantity), line.value, format_exact(line.tolerance, "ratio")]
-        cells += [format_exact(line.tcr, "temperature_coefficient"), line.style or "–", line.part or "–"]
+        cells += [line.style or "–", line.part or "–"]
         if priced:
             cells += ["any" if line.on_hand is None else str(line.on_hand), str(line.buy)]
             cells.append("–" if line.cost is None else money(line.cost))
@@ -126,6 +125,7 @@ def _stress_row(line: Line) -> list[str]:
     return [
         str(line.item),
         line.value,
+        format_exact(line.tcr, "temperature_coefficient"),
         format_quantity(line.power, "power"),
         "–" if line.power_rating is None else format_quantity(line.power_rating, "power"),
         format_quantity(line.voltage, "voltage"),
@@ -183,7 +183,7 @@ def to_markdown(answer: BoardAnswer) -> str:
         return "\n\n".join(parts) + "\n"
     parts += ["## Stages", _table(_stage_rows(answer.stages))]
     parts += [_table([["stage", "resistors"], *_resistor_rows(answer.stages)]), "## BOM", _table(_bom_rows(answer))]
-    head = ["item", "value", "at most", "rated", "voltage", "rated", "alternates that would also pass"]
+    head = ["item", "value", "TCR", "at most", "rated", "voltage", "rated", "alternates that would also pass"]
     parts += ["## Stress and alternates", _table([head, *(_stress_row(line) for line in answer.bom)])]
     parts += ["## Reasons", "\n".join(f"- {escaped(f'{line.value}: {line.rationale}')}" for line in answer.bom)]
     if answer.merges:
