@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import replace
 from functools import partial
 
@@ -32,7 +32,7 @@ from synth.q_point import REGIONS
 from synth.ranking import alternatives, order_key, read_axes, read_goal
 from synth.readings import load_lines, readings
 from synth.review import reviewed, statistics_of
-from synth.search import Outcome, Progress, Stop, search
+from synth.search import Outcome, Progress, Stop, certificate, refuse, search
 from synth.search import frontier as find_frontier
 from synth.spaces import Exact, Goal, Index, Space, among_values, fitted, goal_of, spaces_of
 from synth.stage import Assumption, Stage, StageError
@@ -58,6 +58,7 @@ def find(
     advise: bool = False,
     progress: Progress | None = None,
     stop: Stop | None = None,
+    keep: Callable[[Iterable[str]], object] | None = None,
     command: str = "",
 ) -> Answer:
     """Find the networks whose Q-point drifts least, proved, ranked and explained.
@@ -78,6 +79,8 @@ def find(
         Whether to search for what would make the best answer better or cheaper, which takes some seconds.
     progress, stop : callable, optional
         See `synth.search.search`.
+    keep : callable, optional
+        Takes the lines of a certificate, once the search is complete; see `synth.search.certificate`.
     command : str
         The command that asked, for the record.
 
@@ -90,13 +93,19 @@ def find(
     ------
     StageError
         If `top` is no whole number above 0, or metric or frontier name nothing that this stage has.
+    NoCertificate
+        If none can be made for this request.
     """
     if isinstance(top, bool) or not isinstance(top, int) or top < 1:
         raise StageError("top", top, "which is no number of candidates", "a whole number of 1 or more", ("10",))
     goal = read_goal(stage, metric)
     spaces = spaces_of(stage)
     axes = read_axes(frontier, spaces) if frontier else ()
+    if keep is not None:
+        refuse(spaces, goal)
     outcome = search(spaces, goal, top=top, progress=progress, stop=stop)
+    if keep is not None and outcome.complete:
+        keep(certificate(spaces, goal, outcome, top))
     candidates = candidates_of(outcome, goal, top, stage)
     best_of = _best_of_each(spaces, goal, candidates, outcome, progress, stop)
     front = tradeoff(find_frontier(spaces, goal, axes, progress=progress, stop=stop), axes) if axes else None

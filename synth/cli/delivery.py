@@ -26,7 +26,7 @@ def files(options: dict[str, Any]) -> dict[str, Path]:
     """Files that the options name; refused before the work if they cannot be written."""
     from synth.present.files import refuse
 
-    names = ("output", "save", "report")
+    names = ("output", "save", "report", "certificate")
     files: dict[str, Path] = {f"--{name}": options[name] for name in names if options.get(name) is not None}
     if "--report" in files:
         is_report(files["--report"], tuple(REPORTS))
@@ -72,6 +72,7 @@ def deliver(answer: Answer, stage: Stage, explain: Sequence[int], options: dict[
     text += pictures.drawing(answer, options)
     content: dict[str, Callable[[Path], str]] = {
         "--output": lambda path: text,
+        "--certificate": lambda path: "".join(f"{line}\n" for line in options["proof"]),
         "--save": lambda path: stage.to_toml(path.parent),
         "--report": lambda path: REPORTS[path.suffix.lower()](answer),
     }

@@ -48,6 +48,7 @@ def command(meaning: str) -> click.Command:
             single = {
                 "--metric": metric != "corners", "--frontier": frontier, "--budget": budget, "--explain": explain,
                 "--all": every, "--advise": advise, "--report": options.get("report"),
+                "--certificate": options.get("certificate"),
             }  # fmt: skip
             for name in (name for name, given in single.items() if given):
                 raise WrongInput(f"{name}: goes with a single stage, not with --batch")
@@ -56,6 +57,7 @@ def command(meaning: str) -> click.Command:
             raise WrongInput(f"{'--scheduler' if scheduler else '--jobs'}: goes with --batch, whose rows are shared out")
         files(options)
         stage = read_stage(stage_file, options)
+        proof: list[str] = []
         answer = find(
             stage,
             top=top,
@@ -64,8 +66,13 @@ def command(meaning: str) -> click.Command:
             advise=advise,
             progress=progress(),
             stop=stopper(budget),
+            keep=proof.extend if options["certificate"] else None,
             command=command_line(),
         )
+        if options["certificate"] and not proof:
+            click.echo("certificate: not written, since the search was stopped before its proof was complete", err=True)
+            options["certificate"] = None
+        options["proof"] = proof
         ranks = [c.rank for c in answer.candidates] if every else list(explain)
         return deliver(answer, stage, ranks, options)
 
@@ -85,6 +92,8 @@ def command(meaning: str) -> click.Command:
                          help="Find what no candidate beats in drift and in supply_current, input_resistance, gain, swing,"
                          " distinct_values, parts or price; several with commas."),
             click.Option(["--budget"], metavar="TIME", help="Stop after this time, such as 2s, with the best so far."),
+            click.Option(["--certificate"], type=click.Path(path_type=Path), metavar="FILE",
+                         help="Write what excludes every other combination, for python -m tests.certificate FILE to check."),
             click.Option(["--explain"], type=Count(1), metavar="N", multiple=True,
                          help="Explain candidate N as well."),
             click.Option(["--advise"], is_flag=True,
