@@ -365,7 +365,9 @@ def test_settings_of_matplotlib_stay_as_they_were() -> None:
 
     before = dict(matplotlib.rcParams)
     stage, answer, _ = judged("divider, no spread")
-    for _, figure in figures(stage, answer, lot=LOT):
+    told: list[str] = []
+    for name, figure in figures(stage, answer, lot=LOT, progress=told.append):
+        assert told[-1] == name
         assert dict(matplotlib.rcParams) == before
         saved(figure, "svg")
     assert dict(matplotlib.rcParams) == before
@@ -401,6 +403,17 @@ def test_figures_are_written_to_a_folder(tmp_path: Path, capsys: pytest.CaptureF
     before = (folder / "circuit.svg").read_bytes()
     assert run([*ARGUMENTS, "--figures", str(folder), "--force"], capsys)[0] == 0
     assert (folder / "circuit.svg").read_bytes() != before
+
+
+def test_a_terminal_is_told_what_is_drawn(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    from synth.cli import pictures as command
+
+    stage, answer, _ = judged("divider, no spread")
+    monkeypatch.setattr("sys.stderr.isatty", lambda: True, raising=False)
+    command.files(answer, stage.replace(units=64), {"figures": tmp_path})
+    assert "3 of 7 drawn, now curves" in capsys.readouterr().err
 
 
 def test_a_folder_that_cannot_be_is_refused(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:

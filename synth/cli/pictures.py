@@ -42,9 +42,15 @@ def files(answer: Answer, stage: Stage, options: Mapping[str, Any]) -> dict[str,
     if not answer.candidates:
         click.echo(f"{OPTION}: nothing qualifies, so there is nothing to draw", err=True)
         return {}
-    from synth.present.figures import files
+    from synth.present.figures import NAMES, files
 
-    drawn = files(stage, answer, zigzag=options.get("symbols") == "zigzag")
+    def progress(name: str) -> None:
+        click.echo(f"\r{NAMES.index(name)} of {len(NAMES)} drawn, now {name}          ", err=True, nl=False)
+
+    watched = sys.stderr.isatty()
+    drawn = files(stage, answer, zigzag=options.get("symbols") == "zigzag", progress=progress if watched else None)
+    if watched:
+        click.echo("\r" + " " * 40 + "\r", err=True, nl=False)
     return {f"{OPTION} {name}": (folder / name, content) for name, content in drawn.items()}
 
 

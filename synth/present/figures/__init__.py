@@ -37,7 +37,9 @@ ROW = 0.24
 """Height of a bar with its distance to the next [inch]."""
 
 
-def figures(stage: Stage, answer: Answer, rank: int = 1, lot: Lot | None = None) -> Iterator[tuple[str, Figure]]:
+def figures(
+    stage: Stage, answer: Answer, rank: int = 1, lot: Lot | None = None, progress: Callable[[str], None] | None = None
+) -> Iterator[tuple[str, Figure]]:
     """Every figure of a candidate that has something to show, but for the circuit.
 
     Parameters
@@ -50,6 +52,8 @@ def figures(stage: Stage, answer: Answer, rank: int = 1, lot: Lot | None = None)
         Which candidate; 1 is the best [-].
     lot : Lot, optional
         The units of cloud and histograms; those of the stage, 65 536 at most, when not given.
+    progress : callable, optional
+        ``progress(name)`` is told of every figure before it is drawn.
 
     Returns
     -------
@@ -68,6 +72,8 @@ def figures(stage: Stage, answer: Answer, rank: int = 1, lot: Lot | None = None)
         "frontier": lambda: _frontier(answer, candidate),
     }
     for name, make in makers.items():
+        if progress is not None:
+            progress(name)
         with styled():
             figure = make()
             if figure is not None:
@@ -77,7 +83,13 @@ def figures(stage: Stage, answer: Answer, rank: int = 1, lot: Lot | None = None)
 
 
 def files(
-    stage: Stage, answer: Answer, rank: int = 1, *, zigzag: bool = False, lot: Lot | None = None
+    stage: Stage,
+    answer: Answer,
+    rank: int = 1,
+    *,
+    zigzag: bool = False,
+    lot: Lot | None = None,
+    progress: Callable[[str], None] | None = None,
 ) -> dict[str, bytes]:
     """Every figure of a candidate as SVG and PNG, the circuit among them.
 
@@ -91,7 +103,7 @@ def files(
         Which candidate; 1 is the best [-].
     zigzag : bool
         Zigzag lines for resistors in place of rectangles.
-    lot : Lot, optional
+    lot, progress
         As in `figures`.
 
     Returns
@@ -104,7 +116,7 @@ def files(
         "circuit.svg": to_svg(answer, candidate, zigzag=zigzag).encode("utf-8"),
         "circuit.png": to_png(answer, candidate, zigzag=zigzag),
     }
-    for name, figure in figures(stage, answer, rank, lot):
+    for name, figure in figures(stage, answer, rank, lot, progress):
         found[f"{name}.svg"] = saved(figure, "svg")
         found[f"{name}.png"] = saved(figure, "png")
     return found
