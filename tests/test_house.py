@@ -49,6 +49,7 @@ ROOMS = (
     "advice",
     "solve",
     "replacement",
+    "diagnosis",
     "boards",
     "views",
     "batch",

@@ -26,7 +26,7 @@ if TYPE_CHECKING:
     from synth.stage import Stage
 
 OWN = ("keep", "also_series", "also_stock", "top", "among", "least_vceo", "least_ic", "least_power", "package", "reason",
-       "designator")  # fmt: skip
+       "designator", "diagnose")  # fmt: skip
 
 
 def _hand_over(text: str, stage: Stage, options: dict[str, Any]) -> None:
@@ -90,6 +90,18 @@ def _scan(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool]:
     return makers[form](found), found.passed
 
 
+def _diagnose(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool]:
+    """What the readings of a unit say, and whether it is sound."""
+    from synth.diagnosis import diagnose
+    from synth.present.diagnosis import diagnosis_json, render_diagnosis
+
+    if form not in ("table", "json"):
+        raise WrongInput(f"--diagnose: goes with --format table or json, read {form!r}")
+    found = diagnose(stage)
+    text = diagnosis_json(found, stage.name, command_line()) if form == "json" else render_diagnosis(found, stage.name)
+    return text, found.sound
+
+
 def command(meaning: str) -> click.Command:
     """The command, with what it is for in one sentence."""
 
@@ -97,7 +109,8 @@ def command(meaning: str) -> click.Command:
         own = {name: options.pop(name) for name in OWN}
         files(options)
         stage = read_stage(stage_file, options, "refit")
-        text, passed = (_refit if own["among"] is None else _scan)(stage, own, options["form"])
+        work = _diagnose if own["diagnose"] else _refit if own["among"] is None else _scan
+        text, passed = work(stage, own, options["form"])
         _hand_over(text, stage, options)
         return FOUND if passed else NOT_FOUND
 
@@ -126,6 +139,8 @@ def command(meaning: str) -> click.Command:
             click.Option(["--reason"], metavar="TEXT", help="Reason in the change record."),
             click.Option(["--designator"], multiple=True, metavar="ROLE=NAME",
                          help="Designator in the change record, such as r1=R17, or q=Q3 for the transistor."),
+            click.Option(["--diagnose"], is_flag=True,
+                         help="Tell what readings given as --measured-vb, --measured-ve and --measured-vc say of a unit."),
             *output_options(FORMATS),
         ],
     )

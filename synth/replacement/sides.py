@@ -61,6 +61,8 @@ def sides(stage: Stage) -> tuple[Stage, Stage]:
         dropped = set(_OF_MATERIAL) & set(old)
     keys: dict[str, Given] = {f"transistor.{leaf}": None for leaf in dropped}
     keys |= {f"transistor.{leaf}": text for leaf, text in given.items()}
+    # What was measured of the unit that is taken out says nothing of the one that is put in.
+    keys |= {path: None for path in ("measured.hfe", "measured.vbe") if path in before.given}
     try:
         after = before.with_keys(keys)
     except StageError as error:
