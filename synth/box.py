@@ -32,8 +32,9 @@ from synth.stress import junction_temperature
 from synth.transistor import T0, Transistor
 
 Values = dict[str, Array]
-"""A value of every parameter of the box at some points: rails [V], delta [V], hfe [-] and icbo [A] at 25 °C,
-temperature [K], and the resistance of each role [ohm]; of a reference element delta_ref [V] and r_ref [ohm]."""
+"""A value of every parameter of the box at some points: rails [V], delta [V], hfe [-] and icbo [A] at 25 °C, va [V] where there
+is an Early voltage, temperature [K], and the resistance of each role [ohm]; of a reference element delta_ref [V] and r_ref
+[ohm]."""
 
 SCAN_POINTS = 8
 """Interior temperatures of the scan on each side of 25 °C."""
@@ -175,6 +176,8 @@ class Box:
             "hfe": device.hfe,
             "icbo": device.icbo,
         }
+        if device.va is not None:
+            found["va"] = device.va
         if self.reference is not None:
             ends = [self.reference.deviation(t) for t in (self.temperature.low, self.temperature.high)]
             found["delta_ref"] = Spread(float(min(low for low, _ in ends)), 0.0, float(max(high for _, high in ends)))
@@ -300,6 +303,8 @@ class Box:
             icbo=values["icbo"] * self.transistor.leakage_factor(t),
             delta=values["delta"],
             temperature=t,
+            va=values.get("va"),
+            lift=values.get("lift"),
         )
         self.meter.solves += q.ic.size
         return q
@@ -342,6 +347,23 @@ class Box:
         power = self.solve(values, active_law, junction).power
         return np.asarray(np.maximum(np.broadcast_to(power, junction.shape), 0.0))
 
+    def early_too_strong(self, values: Values) -> NDArray[np.bool_]:
+        """Where the premise of the signs under the Early effect fails, see `synth.measures`.
+
+        Parameters
+        ----------
+        values : dict
+            See `Values`; no unit matters.
+
+        Returns
+        -------
+        ndarray of bool
+            Of the broadcast shape.
+        """
+        port = self.network.two_port(self.sources(values), {role: values[role] for role in self.parts}, values["temperature"])
+        leakage = values["icbo"] * self.transistor.leakage_factor(values["temperature"])
+        return np.asarray(port.z_cb * (port.e_b / port.z_bb + leakage) > values["va"])
+
     def branches(self, values: Values, q: QPoint) -> Branches:
         """Voltages and currents of every resistor and rail.
 
@@ -380,9 +402,32 @@ class Box:
             return np.asarray(sum(getattr(q, name) for name in names))
         r = {role: values[role] for role in self.parts}
         sources, t = self.sources(values), values["temperature"]
-        gain = values["hfe"] * self.transistor.gain_factor(t)
+        gain = self.gain(values, q)
         branches = self.network.branches(sources, r, q)
         return np.asarray(sum(measure(name, self.setting, sources, r, q, branches, gain, t) for name in names))
+
+    def gain(self, values: Values, q: QPoint) -> Array:
+        """DC gain at solved points, at their temperature; that of the active law where the transistor saturates.
+
+        Parameters
+        ----------
+        values : dict
+            See `Values`.
+        q : QPoint
+            The Q-point at these values.
+
+        Returns
+        -------
+        ndarray
+            hFE [-], of the broadcast shape.
+        """
+        t = values["temperature"]
+        if not self.transistor.gain_moves:
+            return np.asarray(values["hfe"] * self.transistor.gain_factor(t))
+        leakage = values["icbo"] * self.transistor.leakage_factor(t)
+        # Without base current there is no gain to speak of; NaN says so.
+        with np.errstate(divide="ignore", invalid="ignore"):
+            return np.asarray((q.ic - leakage) / (q.ib + leakage))
 
     def sign(self, names: Sequence[str], axis: str) -> Sign:
         """Proved sign of a sum of quantities along an axis.
@@ -501,6 +546,8 @@ class _Climb:
             broken = (q.ib < 0.0) | (q.ic < leakage) | (q.vbe < 0.0)
             if box.reference is not None:
                 broken = broken | (np.asarray(box.measure(("i_ref",), values, q)) < 0.0)
+            if box.transistor.va is not None:
+                broken = broken | box.early_too_strong(values)
             if broken.any():
                 broken = np.broadcast_to(broken, np.broadcast_shapes(broken.shape, (box.size,)))
                 self.doubtful |= broken.reshape(-1, box.size).any(axis=0)

@@ -24,7 +24,7 @@ POWER_OF_TRANSISTOR = "p_q"
 PARAMETERS_OF_SIGNAL = ("gm", "r_pi", "r_intrinsic")
 BYPASS = "bypass_resistance"
 """Resistance that the bypass capacitor of re sees; only where there is one."""
-PARAMETERS_OF_DEVICE = ("delta", "hfe", "icbo", "delta_ref", "r_ref")
+PARAMETERS_OF_DEVICE = ("delta", "hfe", "icbo", "va", "delta_ref", "r_ref")
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -220,9 +220,35 @@ def sign(name: str, axis: str, setting: Setting) -> Sign:
 
     Notes
     -----
+    Gain that goes with IC alone changes nothing: at given device and temperature IB stays a rising function of IC. Under the
+    Early effect the device says d IB·(1/(IB + I0) − κ·z_cb) = d IC·(1/(IC − I0) − s/IC + κ·z_cc) − κ·V, where κ = 1/(VA + VCE),
+    s is the slope of the rows and V what a parameter does to VCE while IC and IB are held (`Network.vce_held`); the first
+    bracket is positive under the premise z_cb·(e_b/z_bb + I0) ≤ VA, since IB ≤ e_b/z_bb. So
+
+    - where V is 0, as along everything that belongs to the base alone, IB is a rising function of IC and every proof stands;
+    - elsewhere IC follows the common sign of V and of what the parameter does to the base loop;
+    - where the base loop does not feel the parameter, IC and IB move apart, so the gain moves with IC, and with it VCE;
+    - of anything else nothing is claimed, nor of the Early voltage itself.
+
     A resistor's current is positive where the signs of its network hold. u = R·i and p = R·i² follow it along every axis
     but their own; along their own they rise where the current does not depend on it.
     """
+    if setting.transistor.va is None or name == "span":
+        return _sign(name, axis, setting)
+    network = setting.network
+    held = 0 if axis in PARAMETERS_OF_DEVICE else network.vce_held.get(axis)
+    if axis == "va" or held is None:
+        return None
+    if held == 0:
+        return _sign(name, axis, setting)
+    loop = network.sign("ic", axis)
+    if name == "ic":
+        return common_sign((loop, held))
+    return held if name == "vce" and loop == 0 else None
+
+
+def _sign(name: str, axis: str, setting: Setting) -> Sign:
+    """Proved sign where VCE has no say in the gain."""
     network = setting.network
     if name == "span":
         return 0 if axis in (*setting.roles, *PARAMETERS_OF_DEVICE) else 1
@@ -236,7 +262,8 @@ def sign(name: str, axis: str, setting: Setting) -> Sign:
         # IC/h = IB + (1 + 1/h)·ICBO falls along hfe, as IB does.
         return 1 if name == "r_pi" and axis == "hfe" else -current
     if is_figure(name):
-        return signs(network, name, setting.signal.bypass, roles=setting.roles).get(axis)
+        moves = setting.transistor.gain_moves
+        return signs(network, name, setting.signal.bypass, roles=setting.roles, gain_moves=moves).get(axis)
     shared = share_of(name, setting.roles)
     if shared is not None:
         # The share depends on the total and the temperature alone.

@@ -12,6 +12,17 @@ Saturated: VCE = VCE(sat) in both two-port equations; IB = (e_b − VBE − z_bc
 
 whose larger root is the physical one: w − ln w = C/(k·VT) − ln(D·IC0/(k·VT)) with w = D·IC/(k·VT), or IC = C/D where
 k = 0. The transistor saturates only if this is less than the active law gives.
+
+Gain that moves with the Q-point: h = hFE·s(IC)·e(VCE), by rows of the data sheet and the Early effect. With λ = ln h and IC(λ),
+VCE(λ) from the closed form above, F(λ) = λ − ln hFE − ln s(IC(λ)) − ln e(VCE(λ)) has one root, bracketed by the least and the
+greatest of s and e. It rises, because
+
+- d ln IC/dλ = 1/(IC/(IC − I0) + IC·(z_bc + VT/IC)/(z_bb·(IB + I0))) lies between 0 and 1 (I0 = ICBO), and d ln s/d ln IC is
+  at most STEEPEST_GAIN;
+- along the base loop IC·dVCE/dIC = −(z_cc − z_cb·z_bc/z_bb)·IC + (z_cb/z_bb)·VT, of which the bracket is not negative in a
+  network of resistors and z_cb ≤ z_bb, so d ln e/d ln IC ≤ VT/(VA + VCE), a few per cent at most.
+
+So every element has one Q-point, and none is a mere last iterate: the bracket closes on it.
 """
 
 from __future__ import annotations
@@ -85,6 +96,72 @@ def active_current(
     return np.asarray(current)
 
 
+SETTLED, SECTIONS = 4e-16, 80
+"""Relative change of the gain that ends the search for it [-], and the most sections of its bracket."""
+
+
+def settled_gain(
+    two_port: TwoPort, transistor: Transistor, hfe: Array, icbo: Array, delta: Array, temperature: Array, va: Array | None,
+    lift: Array | float | None = None,
+) -> Array:
+    """Gain of a transistor whose gain moves with the Q-point, at the Q-point that it gives itself.
+
+    Parameters
+    ----------
+    two_port : TwoPort
+        The network as the transistor sees it [V, ohm], broadcast.
+    transistor : Transistor
+        With rows or an Early voltage.
+    hfe, icbo, delta, temperature : ndarray
+        As in `active_current`; hfe at the rows' own current and at the voltage of the test [-].
+    va : ndarray, optional
+        Early voltage of the unit [V]; None leaves VCE without a say.
+    lift : array_like, optional
+        Factor on the gain, besides rows and Early voltage [-].
+
+    Returns
+    -------
+    ndarray
+        Gain [-], the broadcast shape.
+    """
+    rows = transistor.hfe_rows
+    unit = hfe / transistor.gain_factor(temperature)
+    start = np.log(hfe) if lift is None else np.log(hfe * np.asarray(lift))
+
+    def moved(level: Array) -> Array:
+        """Ln of the gain that the Q-point of a gain brings, relative to hfe."""
+        h = np.exp(level)
+        ic, _, _, vce = _active(two_port, transistor, h, icbo, delta, temperature)
+        found = np.zeros(np.shape(ic)) if rows is None else rows.lift(unit, ic)
+        return found if va is None else found + np.log(transistor.early_factor(va, vce))
+
+    shape = np.broadcast_shapes(*(np.shape(x) for x in (*two_port, start, icbo, delta, temperature, 0.0 if va is None else va)))
+    low, high = (np.zeros(shape), np.zeros(shape)) if rows is None else rows.reach(unit, 0.0, np.inf)
+    if va is not None:
+        # Leakage out of the base may lift the collector above its open-circuit voltage.
+        most = two_port.e_c + two_port.z_cb * (2.0 * icbo)
+        low = low + np.log(transistor.early_factor(va, 0.0))
+        high = high + np.log(transistor.early_factor(va, np.maximum(most, 0.0)))
+    a, b = (np.broadcast_to(start + end, shape).copy() for end in (low, high))
+    fa, fb = a - start - moved(a), b - start - moved(b)
+    side = np.zeros(shape, dtype=np.int8)
+    c = a
+    for _ in range(SECTIONS):
+        with np.errstate(divide="ignore", invalid="ignore"):
+            c = np.where(fb > fa, b - fb * (b - a) / (fb - fa), a)
+        c = np.clip(np.where(np.isfinite(c), c, 0.5 * (a + b)), a, b)
+        fc = c - start - moved(c)
+        if np.all((np.abs(fc) <= SETTLED * (1.0 + np.abs(c))) | (b - a <= SETTLED * (1.0 + np.abs(c)))):
+            break
+        below = fc < 0.0
+        # Regula falsi stalls on a convex function unless the end that stays is halved.
+        fb = np.where(below & (side < 0), 0.5 * fb, np.where(below, fb, fc))
+        fa = np.where(~below & (side > 0), 0.5 * fa, np.where(below, fc, fa))
+        a, b = np.where(below, c, a), np.where(below, b, c)
+        side = np.where(below, np.int8(-1), np.int8(1))
+    return np.asarray(np.exp(c))
+
+
 def _active(
     port: TwoPort, transistor: Transistor, h: Array, i0: Array, d: Array, t: Array
 ) -> tuple[Array, Array, Array, Array]:
@@ -105,6 +182,8 @@ def solve_active(
     icbo: Array | float,
     delta: Array | float,
     temperature: Array | float,
+    va: Array | float | None = None,
+    lift: Array | float | None = None,
 ) -> QPoint:
     """Q-point by the active-region law alone: below VCE(sat) it is the analytic continuation, no real Q-point.
 
@@ -113,9 +192,11 @@ def solve_active(
     Parameters
     ----------
     network, transistor, rails, r
-        As in `solve`.
+        As in `solve` [V, -].
     hfe, icbo, delta, temperature : array_like
         As in `solve`: gain [-], leakage [A], distance from the nominal VBE [V], temperature [K], broadcast.
+    va, lift : array_like, optional
+        As in `solve` [V, -].
 
     Returns
     -------
@@ -123,8 +204,22 @@ def solve_active(
         Of the broadcast shape, every region code "active".
     """
     h, i0, d, t = (np.asarray(x, dtype=float) for x in (hfe, icbo, delta, temperature))
-    ic, ib, vbe, vce = np.broadcast_arrays(*_active(network.two_port(rails, r, t), transistor, h, i0, d, t))
+    port = network.two_port(rails, r, t)
+    if transistor.gain_moves or lift is not None:
+        h = _gain(port, transistor, h, i0, d, t, va, lift)
+    ic, ib, vbe, vce = np.broadcast_arrays(*_active(port, transistor, h, i0, d, t))
     return QPoint(ic, ib, vbe, vce, np.zeros(ic.shape, dtype=np.int8))
+
+
+def _gain(
+    port: TwoPort, transistor: Transistor, h: Array, i0: Array, d: Array, t: Array, va: Array | float | None,
+    lift: Array | float | None,
+) -> Array:
+    """Gain at the Q-point, where it moves with it or is lifted as a whole."""
+    if not transistor.gain_moves:
+        return np.asarray(h * np.asarray(lift))
+    early = None if transistor.va is None else np.asarray(transistor.va.nominal if va is None else va, dtype=float)
+    return settled_gain(port, transistor, h, i0, d, t, early, lift)
 
 
 def saturated_current(two_port: TwoPort, transistor: Transistor, delta: Array, temperature: Array) -> Array:
@@ -182,6 +277,8 @@ def solve(
     icbo: Array | float,
     delta: Array | float,
     temperature: Array | float,
+    va: Array | float | None = None,
+    lift: Array | float | None = None,
 ) -> QPoint:
     """Q-point and region of every element.
 
@@ -203,6 +300,10 @@ def solve(
         Distance of this unit from the nominal VBE [V], broadcast.
     temperature : array_like
         Junction temperature [K], broadcast.
+    va : array_like, optional
+        Early voltage of this unit [V], broadcast; nominal when not given.
+    lift : array_like, optional
+        Factor on the gain besides all else [-], broadcast.
 
     Returns
     -------
@@ -212,6 +313,8 @@ def solve(
     """
     h, i0, d, t = (np.asarray(x, dtype=float) for x in (hfe, icbo, delta, temperature))
     port = network.two_port(rails, r, t)
+    if transistor.gain_moves or lift is not None:
+        h = _gain(port, transistor, h, i0, d, t, va, lift)
     ic, ib, vbe, vce = _active(port, transistor, h, i0, d, t)
     region = np.where(ic < CUT_OFF_CURRENT + (h + 1.0) * i0, CUT_OFF, ACTIVE).astype(np.int8)
     saturated = vce < transistor.vce_sat

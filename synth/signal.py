@@ -634,7 +634,12 @@ def _own_slopes(
 
 
 def signs(
-    network: Network, figure: str, bypass: Bypass = "full", *, roles: Collection[str] | None = None
+    network: Network,
+    figure: str,
+    bypass: Bypass = "full",
+    *,
+    roles: Collection[str] | None = None,
+    gain_moves: bool = False,
 ) -> dict[str, Sign]:
     """Proved signs of a figure's slope at fixed temperature, over the whole chain: the Q-point moves too.
 
@@ -648,6 +653,9 @@ def signs(
         Of re.
     roles : collection of str, optional
         Roles used; all by default, which holds for any choice of the optional ones.
+
+    gain_moves : bool
+        Whether the gain goes with the Q-point.
 
     Returns
     -------
@@ -668,7 +676,8 @@ def signs(
     enough if they are once P·Q is taken away from a rise or from a fall. What is left open so stays None. These slopes meet
     the network's own proved signs:
 
-    - gm = IC/VT and gpi = gm/h rise with IC in proportion, so along every parameter but hfe the transistor's part has the
+    - gm = IC/VT and gpi = gm/h rise with IC in proportion (where the gain moves with IC, both rise all the same, each with a
+      slope of its own), so along every parameter but hfe the transistor's part has the
       sign of the slope along both together, times that of IC. Along hfe gm follows IC, but gpi·VT = IC/h = IB + (1 + 1/h)·ICBO
       falls wherever IB does.
     - A role is a conductance of one path, so its own part has the opposite sign of the slope along that path. Partly
@@ -687,7 +696,8 @@ def signs(
     _known("figure", figure, (*FIGURES, CORNER))
     _known("signal.bypass", bypass, BYPASSES)
     if figure == "swing":
-        two = [signs(network, side, bypass, roles=roles) for side in ("swing_to_cutoff", "swing_to_saturation")]
+        sides = ("swing_to_cutoff", "swing_to_saturation")
+        two = [signs(network, side, bypass, roles=roles, gain_moves=gain_moves) for side in sides]
         return {parameter: common_sign([side[parameter] for side in two]) for parameter in two[0]}
     used = network.role_names if roles is None else roles
     wiring, role_path, star, slope = _own_slopes(network, figure, bypass, used)
@@ -699,7 +709,8 @@ def signs(
         if parameter == "hfe":
             parts = [_times(slope["gm"], moved), _times(slope["gpi"], network.sign("ib", "hfe"))]
         else:
-            parts = [_times(slope["ic"], moved)]
+            along = ("gm", "gpi") if gain_moves else ("ic",)
+            parts = [_times(slope[part], moved) for part in along]
         if parameter in role_path:
             parts.append(_times(-1, slope[role_path[parameter]]))
         elif star and (parameter == "r_ref" or REFERENCE in wiring.ends.get(parameter, ())):
@@ -729,7 +740,7 @@ def own_signs(
     Returns
     -------
     dict
-        For each role and ``ic``: +1, −1, 0, or None where nothing is proved.
+        For each role, ``ic``, and ``hfe`` while IC stays: +1, −1, 0, or None where nothing is proved.
 
     Notes
     -----
@@ -739,7 +750,7 @@ def own_signs(
     """
     used = network.role_names if roles is None else roles
     wiring, role_path, star, slope = _own_slopes(network, figure, bypass, used)
-    found: dict[str, Sign] = {"ic": slope["ic"]}
+    found: dict[str, Sign] = {"ic": slope["ic"], "hfe": _times(-1, slope["gpi"])}
     for role in used:
         starred = bool(star) and REFERENCE in wiring.ends.get(role, ())
         found[role] = None if starred else _times(-1, slope[role_path[role]]) if role in role_path else 0

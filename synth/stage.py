@@ -41,7 +41,7 @@ from synth.stage_keys import (
 from synth.stage_resolve import Assumption, RoleSetting, StageWarning, band, needing, no_role, resolve, rival
 from synth.statistics import Lot
 from synth.stress import TransistorRatings
-from synth.transistor import Transistor
+from synth.transistor import GainRows, Transistor
 
 __all__ = ["Assumption", "RoleSetting", "Stage", "StageError", "StageWarning", "template"]
 
@@ -404,6 +404,14 @@ class Stage:
 
     def _can_be_given(self, assumption: Assumption) -> bool:
         """Whether the stage stays the same once the assumed text is given."""
+        if assumption.why.startswith("rating "):
+            # Given, the power would hold at 25 °C ambient whatever the type says.
+            return False
+        if assumption.key in ("transistor.hfe", "transistor.vce_sat"):
+            # Where they come of rows, the rows are given.
+            return not any(note.key == f"{assumption.key}_rows" for note in self.assumed) and (
+                f"{assumption.key}_rows" not in self.given
+            )
         if assumption.key == "limits.collector_share":
             # Given, it would bind the networks too whose default is no share at all.
             return all(NETWORKS[name].shared_rails for name in self.networks)
@@ -458,6 +466,8 @@ def _plain(value: Any) -> Any:
         return [_plain(end) for end in (value.low, value.nominal, value.high)]
     if isinstance(value, Interval):
         return [_plain(value.low), _plain(value.high)]
+    if isinstance(value, GainRows):
+        return {f.name: _plain(getattr(value, f.name)) for f in dataclasses.fields(value)}
     if isinstance(value, tuple):
         return [_plain(item) for item in value]
     if isinstance(value, Path):

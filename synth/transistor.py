@@ -1,11 +1,15 @@
 """The laws of one bipolar transistor: base-emitter voltage, current gain and leakage over temperature.
 
 All formulas take NPN signs; a PNP is its mirror image, so its magnitudes obey the same formulas.
+
+Gain may depend on the Q-point itself: on IC by rows of a data sheet (`GainRows`), on VCE by the Early effect. Both leave
+the Q-point single and most proofs of monotonicity standing, see `synth.q_point` and `synth.measures`.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Literal
 
 import numpy as np
@@ -57,6 +61,142 @@ def thermal_voltage(temperature: Array | float) -> Array:
     return np.asarray(temperature) * (Boltzmann / elementary_charge)
 
 
+STEEPEST_GAIN = 0.95
+"""Steepest rise of ln hFE against ln IC [-]: IC/hFE, which sets the base current, has to rise with IC by a margin."""
+LEAST_EARLY = 1.0
+"""Least Early voltage [V]; real ones are tens of volts, and the proofs need far more than VT."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class GainRows:
+    """How hFE goes with IC, as rows of a data sheet have it.
+
+    Parameters
+    ----------
+    at : float
+        Current at which the transistor's `hfe` holds [A].
+    current : tuple of float
+        Currents of the rows, ascending [A].
+    low, high : tuple of float
+        Least and greatest hFE at each of them [-].
+
+    Raises
+    ------
+    TransistorError
+        If currents do not ascend, a gain is not above 0, or a curve rises too steeply.
+
+    Notes
+    -----
+    ln hFE is linear in ln IC between rows and constant beyond them. A unit keeps its place between the least and the greatest
+    curve, in ln hFE, at every current: it is high everywhere or low everywhere, and every curve between the two is reached.
+    """
+
+    at: float
+    current: tuple[float, ...]
+    low: tuple[float, ...]
+    high: tuple[float, ...]
+
+    def __post_init__(self) -> None:
+        field = "transistor.hfe_rows"
+        for one, two in zip(self.current, self.current[1:], strict=False):
+            if two <= one:
+                raise TransistorError(f"{field}: read {two:g} A after {one:g} A, accepted are currents that ascend")
+        for low, high in zip(self.low, self.high, strict=True):
+            if not 0.0 < low <= high:
+                raise TransistorError(f"{field}: read hFE {low:g} : {high:g}, accepted is least : greatest above 0")
+        if self.steepest > STEEPEST_GAIN:
+            raise TransistorError(
+                f"{field}: read rows in which hFE rises as IC to the {self.steepest:.2f}, accepted is a power of at most"
+                f" {STEEPEST_GAIN:g}: beyond, more collector current would need less base current"
+            )
+        low, high = self.ends
+        if low == high and self.low != self.high:
+            raise TransistorError(
+                f"{field}: read rows without a spread at {self.at:g} A and with one elsewhere, accepted is a spread in each"
+            )
+
+    @cached_property
+    def _logs(self) -> tuple[Array, Array, Array, float, float]:
+        x, low, high = (np.log(np.array(column)) for column in (self.current, self.low, self.high))
+        own = np.log(self.at)
+        return x, low, high, float(np.interp(own, x, low)), float(np.interp(own, x, high))
+
+    @property
+    def ends(self) -> tuple[float, float]:
+        """Least and greatest hFE at `at` [-]."""
+        return float(np.exp(self._logs[3])), float(np.exp(self._logs[4]))
+
+    @cached_property
+    def steepest(self) -> float:
+        """Steepest rise of ln hFE against ln IC, 0 where it only falls [-]."""
+        x, low, high, _, _ = self._logs
+        slopes = [np.diff(curve) / np.diff(x) for curve in (low, high)]
+        return float(max(0.0, *(part.max(initial=0.0) for part in slopes)))
+
+    def place(self, unit: Array | float) -> Array:
+        """Place of a unit between the least and the greatest curve.
+
+        Parameters
+        ----------
+        unit : array_like
+            Its hFE at `at` and 25 °C [-], broadcast.
+
+        Returns
+        -------
+        ndarray
+            0 on the least curve, 1 on the greatest [-].
+        """
+        _, _, _, low, high = self._logs
+        own = np.log(np.asarray(unit, dtype=float))
+        # A measured unit may lie outside of both: it then follows the nearer one.
+        return np.asarray(np.clip((own - low) / (high - low), 0.0, 1.0) if high > low else 0.0 * own)
+
+    def lift(self, unit: Array | float, ic: Array | float) -> Array:
+        """Ln of hFE at a current relative to that at `at`.
+
+        Parameters
+        ----------
+        unit : array_like
+            hFE of the unit at `at` and 25 °C [-], broadcast.
+        ic : array_like
+            Collector current [A], broadcast.
+
+        Returns
+        -------
+        ndarray
+            Logarithm of the factor [-].
+        """
+        x, low, high, own_low, own_high = self._logs
+        with np.errstate(divide="ignore"):
+            u = np.log(np.maximum(np.asarray(ic, dtype=float), 0.0))
+        y = self.place(unit)
+        return np.asarray((1.0 - y) * (np.interp(u, x, low) - own_low) + y * (np.interp(u, x, high) - own_high))
+
+    def reach(self, unit: Array | float, least: Array | float, most: Array | float) -> tuple[Array, Array]:
+        """Ends of `lift` over a range of currents.
+
+        Parameters
+        ----------
+        unit : array_like
+            As in `lift` [-], broadcast.
+        least, most : array_like
+            Ends of the range [A], broadcast.
+
+        Returns
+        -------
+        low, high : ndarray
+            Least and greatest of the logarithm [-].
+        """
+        ends = [self.lift(unit, least), self.lift(unit, most)]
+        low, high = np.minimum(*ends), np.maximum(*ends)
+        for knot in self.current:
+            inside = (np.asarray(least) < knot) & (np.asarray(most) > knot)
+            value = self.lift(unit, knot)
+            low = np.where(inside, np.minimum(low, value), low)
+            high = np.where(inside, np.maximum(high, value), high)
+        return np.asarray(low), np.asarray(high)
+
+
 @dataclass(frozen=True, kw_only=True)
 class Transistor:
     """One transistor type as its data sheet and the stage describe it.
@@ -68,7 +208,13 @@ class Transistor:
     material : {"silicon", "germanium"}
         Sets the gap voltage of the base-emitter law.
     hfe : Spread
-        DC current gain at 25 °C [-].
+        DC current gain at 25 °C [-]; at `hfe_rows.at` and `va_vce` where gain goes with IC or VCE.
+    hfe_rows : GainRows, optional
+        How the gain goes with IC; constant when not given.
+    va : Spread, optional
+        Early voltage [V]: hFE goes as (VA + VCE)/(VA + `va_vce`); without it VCE has no say.
+    va_vce : float
+        Collector-emitter voltage at which `hfe` was tested [V].
     vbe : Spread
         Base-emitter voltage at 25 °C and `vbe_ic` [V]; its distance from nominal stays constant over temperature.
     vbe_ic : float
@@ -100,6 +246,9 @@ class Transistor:
     icbo_hot: tuple[float, float] | None = None
     vce_sat: float = 0.2
     type: str = ""
+    hfe_rows: GainRows | None = None
+    va: Spread | None = None
+    va_vce: float = 5.0
 
     def __post_init__(self) -> None:
         if not self.hfe.low > 0:
@@ -115,6 +264,37 @@ class Transistor:
                 f"transistor.icbo: read a hot limit of {self.icbo_hot[0]:g} A at {self.icbo_hot[1] - zero_Celsius:g} °C,"
                 f" accepted is at least the 25 °C limit of {self.icbo.high:g} A at a temperature above 25 °C"
             )
+
+        if self.va is not None and not self.va.low >= LEAST_EARLY:
+            raise TransistorError(f"transistor.va: read {self.va.low:g} V at least, accepted is {LEAST_EARLY:g} V or more")
+        if self.va_vce < 0.0:
+            raise TransistorError(f"transistor.va_vce: read {self.va_vce:g} V, accepted is a magnitude of 0 V or more")
+
+    @property
+    def gain_moves(self) -> bool:
+        """Whether the gain depends on the Q-point."""
+        return self.hfe_rows is not None or self.va is not None
+
+    def early_factor(self, va: Array | float, vce: Array | float) -> Array:
+        """Gain at a collector-emitter voltage relative to that at `va_vce`.
+
+        Parameters
+        ----------
+        va : array_like
+            Early voltage [V], broadcast.
+        vce : array_like
+            Collector-emitter voltage [V], broadcast; below 0 V, where the active law is only continued, 0 V counts.
+
+        Returns
+        -------
+        ndarray
+            (VA + VCE)/(VA + VCE of the test) [-].
+
+        References
+        ----------
+        J. M. Early, Effects of space-charge layer widening in junction transistors, Proceedings of the IRE 40, 1952.
+        """
+        return np.asarray((np.asarray(va) + np.maximum(vce, 0.0)) / (np.asarray(va) + self.va_vce))
 
     def vbe_at_reference(self, temperature: Array | float) -> Array:
         """VBE of the nominal unit at IC = `vbe_ic`, over temperature.

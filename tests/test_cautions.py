@@ -24,6 +24,7 @@ WARM = {"r1": "4k3", "r2": "2k4", "rc": "270 ohm", "re": "390 ohm"}
 SIGNAL = {"signal_bypass": "part", "limits_gain": ">= 1"}
 STIFF = {"r1": "5k1", "r2": "3k3", "rc": "1k8", "re": "1k8", "bleeder_current": "none"}
 TYPE = {"type": "BC847B", "hfe": None}
+ROWS = {"hfe": None, "hfe_rows": "0.1 mA = 80 : 300, 2 mA = 110 : 450"}
 STIFF_BASE = {
     "network": "fixed_base", "vbb": "0.64 V", "supply": "10 V", "vce": "9.8 V", "hfe": "200", "vbe": "0.64 V",
     "base_resistance": "none", "temperature": "25 °C",
@@ -41,6 +42,15 @@ CASES: list[tuple[str, Fitted, Fitted]] = [
     ("measured_outside", ({"measured_hfe": "460 ± 5"}, CONTRACT), ({"measured_hfe": "450 ± 5"}, CONTRACT)),
     # A sound collector stands at about 8.5 V, and no unit at 25 °C within a volt of the rail.
     ("reading_differs", ({"measured_vc": "11.9 V"}, CONTRACT), ({"measured_vc": "8.5 V ± 10 mV"}, CONTRACT)),
+    # BC847B: 200 : 450 at 2 mA.
+    ("measured_outside", ({**TYPE, "measured_hfe": "190"}, CONTRACT), ({**TYPE, "measured_hfe": "210"}, CONTRACT)),
+    # The rows end at 2 mA; VCE(sat) is known up to 1 mA, below the 2 mA wanted.
+    ("gain_beyond_rows", ({**ROWS, "ic": "2.1 mA"}, CONTRACT), ({**ROWS, "ic": "1.9 mA"}, CONTRACT)),
+    (
+        "vce_sat_test_current",
+        ({"vce_sat_rows": "1 mA = 0.1 V"}, CONTRACT),
+        ({"vce_sat_rows": "2 mA = 0.1 V"}, CONTRACT),
+    ),
     ("unused_rail", ({"vbb": "5 V"}, CONTRACT), ({"vbb": "5 V", "network": "fixed_base"}, FIXED)),
     (
         "unused_reference",

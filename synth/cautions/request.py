@@ -8,7 +8,7 @@ from synth.catalogue import transistors
 from synth.cautions.form import CautionRule
 from synth.quantities import format_quantity
 from synth.stage import Stage
-from synth.stage_resolve.transistor import FAR_CURRENT, OPEN_GAIN
+from synth.stage_resolve.gain import FAR_CURRENT, OPEN_GAIN
 
 FIXED_VBE_SPAN = 10.0
 """Width of the ambient range over which a constant VBE is warned of [K]: 2 mV/K make 20 mV of it."""
@@ -18,9 +18,10 @@ SWITCH_ROOM = 2.0
 
 def _gain_maximum_assumed(stage: Stage) -> Iterator[str]:
     for note in stage.assumed:
-        if note.key == "transistor.hfe" and "times the minimum" in note.why:
+        if note.key in ("transistor.hfe", "transistor.hfe_rows") and "times the minimum" in note.why:
+            what = note.value if note.key == "transistor.hfe" else "the greatest hFE of some rows"
             yield (
-                f"No greatest hFE is known, so {note.value} is assumed; high gain breaks a stage as low gain does: give the "
+                f"No greatest hFE is known, so {what} is assumed; high gain breaks a stage as low gain does: give the "
                 "maximum of the data sheet, or choose a gain bin."
             )
 
@@ -77,6 +78,16 @@ RULES = (
         name="gain_test_current", told="reading",
         threshold=f"every printed hFE is at a current {FAR_CURRENT:g} times away from the target IC or more",
         reason="hFE falls off at low and at high currents; a figure far away says little.",
+    ),
+    CautionRule(
+        name="gain_beyond_rows", told="reading",
+        threshold="the target IC is less than the first or more than the last row of hFE",
+        reason="Beyond its rows the gain is held, though it falls off at both ends.",
+    ),
+    CautionRule(
+        name="vce_sat_test_current", told="reading",
+        threshold="the window of IC, or the target, goes beyond the current at which VCE(sat) is known",
+        reason="VCE(sat) rises with IC.",
     ),
     CautionRule(
         name="hot_leakage", told="reading",

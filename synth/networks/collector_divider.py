@@ -9,6 +9,8 @@ rc·(I1 + IC) + VCE + re·IE = VCC gives dVCE/dIC = [rc·VT/IC − r1·(rc + re 
 The loop rc·(I1 + IC) + r1·I1 + VB = VCC with I1 = IB + VB/r2 gives the currents: with r2 both IC and VB rise, so I1 and
 I2 = I1 − IB fall; with re or VBE both IC and IB fall, so VB has to rise, and VE with it.
 VC = VCC − rc·(I1 + IC) = VB + r1·I1.
+While IC and IB are held, VCE rises with VCC, falls with rc and re, and rises with r1 and r2, which carry current from it to
+0 V; along r1 the base loop and VCE then pull IC apart.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -55,6 +57,7 @@ NETWORK = Network(
         "i_r2": {"vcc": 1, "r1": -1, "r2": -1, "rc": -1, "re": 1, "delta": 1},
     },
     signs_while={("vce", "r2"): (-1, "r1")},
+    vce_held={"vcc": 1, "r1": 1, "r2": 1, "rc": -1, "re": -1},
     draws={"vcc": ("ic", "ib", "i_r2")},
     bleeder="r2",
     base_side=("r1", "r2"),

@@ -6,6 +6,7 @@ Signs. At fixed IC and IB the base-loop residual VCC − rb·IB − (rc+re)·IE 
 VCE = VBE + rb·IB rises with IC while rb stays, so it rises with VCC and falls with rc and re; VCE = VCC − (rc+re)·IE rises
 with rb and with VBE, which lower IC and IB.
 VC = VCC − rc·IE = re·IE + VBE + rb·IB; the drop VE = VCC − rc·IE − rb·IB − VBE of re rises with re, as IC and IB fall.
+While IC and IB are held, VCE = VCC − (rc+re)·IE feels all but rb.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -47,6 +48,7 @@ NETWORK = Network(
         "ve": {"vcc": 1, "rb": -1, "rc": -1, "re": 1, "delta": -1},
         "i_rb": {"vcc": 1, "rb": -1, "rc": -1, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
     },
+    vce_held={"vcc": 1, "rb": 0, "rc": -1, "re": -1},
     draws={"vcc": ("ic", "ib")},
     base_side=("rb",),
     carries={"rb": ("ib",), "rc": ("ic", "ib"), "re": ("ic", "ib")},

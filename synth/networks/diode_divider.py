@@ -9,6 +9,7 @@ re, R2/(r1+R2) in VCC and r1/(r1+R2) in vref. So IC falls with r1 and re and ris
 VCE = VCC − rc·IC − re·IE falls with every increase of IC that leaves rc, re and VCC alone. VB rises with VCC, r2, re, VBE
 and vref and falls with r1; I1 = (VCC − VB)/r1 = I2 + IB and I2 = (VB − vref)/R2 follow: with R2 both VB and IB rise, so I1
 and I2 fall; with vref VB and IB rise, so I1 falls and I2 = I1 − IB with it.
+While IC and IB are held, VCE feels VCC, rc and re alone.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -55,6 +56,7 @@ NETWORK = Network(
         "i_r2": {"vcc": 1, "r1": -1, "r2": -1, "rc": 0, "re": 1, "delta": 1, "hfe": 1, "icbo": 1, "delta_ref": -1},
         "i_ref": {"vcc": 1, "r1": -1, "r2": -1, "rc": 0, "re": 1, "delta": 1, "hfe": 1, "icbo": 1, "delta_ref": -1},
     },
+    vce_held={"vcc": 1, "r1": 0, "r2": 0, "rc": -1, "re": -1},
     draws={"vcc": ("ic", "i_r1")},
     bleeder="r2",
     base_side=("r1", "r2"),

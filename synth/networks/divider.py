@@ -8,6 +8,7 @@ VB = VBE + re·IE is positive), −IE in re, and r2/(r1+r2) in VCC; it falls wit
 with r2 and VCC. VCE = VCC − rc·IC − re·IE falls with every increase of IC that leaves rc, re and VCC alone. The node
 voltage VB rises with VCC, r2 and re, falls with r1, and the currents of r1 and r2 follow from it. VC = VCC − rc·IC, and
 the drop VE = VB − VBE of re rises with re, since VB rises and IC falls.
+While IC and IB are held, VCE = VCC − rc·IC − re·IE feels VCC, rc and re alone.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -49,6 +50,7 @@ NETWORK = Network(
         "i_r1": {"vcc": 1, "r1": -1, "r2": -1, "rc": 0, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
         "i_r2": {"vcc": 1, "r1": -1, "r2": -1, "rc": 0, "re": 1, "delta": 1, "hfe": 1, "icbo": 1},
     },
+    vce_held={"vcc": 1, "r1": 0, "r2": 0, "rc": -1, "re": -1},
     draws={"vcc": ("ic", "i_r1")},
     bleeder="r2",
     base_side=("r1", "r2"),

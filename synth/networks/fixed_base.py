@@ -4,6 +4,7 @@ Without re, IB = (VBB − VBE)/rb is fixed and IC follows hFE from unit to unit.
 
 Signs. At fixed IC the base-loop residual VBB − (rb+re)·IB − re·IC − VBE falls with rb (−IB) and re (−IE) and rises with
 VBB. VCE = VCC − rc·IC − re·IE, VC = VCC − rc·IC; the drop VE = VBB − rb·IB − VBE of re rises with re, as IC and IB fall.
+While IC and IB are held, VCE feels VCC, rc and re alone.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -46,6 +47,7 @@ NETWORK = Network(
         "ve": {"vcc": 1, "vbb": 1, "rb": -1, "rc": 0, "re": 1, "delta": -1},
         "i_rb": {"vcc": 1, "vbb": 1, "rb": -1, "rc": 0, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
     },
+    vce_held={"vcc": 1, "vbb": 0, "rb": 0, "rc": -1, "re": -1},
     draws={"vcc": ("ic",), "vbb": ("i_rb",)},
     base_side=("rb",),
 )

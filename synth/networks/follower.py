@@ -2,6 +2,7 @@
 
 Signs. As the divider network without rc: at fixed IC the base-loop residual falls with r1 and re and rises with r2 and VCC.
 VE = e_b − Rp·IB − VBE: with re both IB and VBE fall, so VE rises and VCE = VCC − VE falls.
+While IC and IB are held, VCE = VCC − re·IE feels VCC and re alone.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -50,6 +51,7 @@ NETWORK = Network(
         "i_r1": {"vcc": 1, "r1": -1, "r2": -1, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
         "i_r2": {"vcc": 1, "r1": -1, "r2": -1, "re": 1, "delta": 1, "hfe": 1, "icbo": 1},
     },
+    vce_held={"vcc": 1, "r1": 0, "r2": 0, "re": -1},
     draws={"vcc": ("ic", "i_r1")},
     tied={"c": "vcc"},
     bleeder="r2",

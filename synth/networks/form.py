@@ -135,6 +135,9 @@ class Network:
     signs_while : mapping
         Signs proved under a condition: ``{(quantity, parameter): (sign, role)}`` holds while the resistance of that role
         times IC is at least VT.
+    vce_held : mapping
+        Proved signs of VCE against each rail and role while IC and IB are held, IB ≥ 0 and IC ≥ 0: what the gain feels of a
+        parameter under the Early effect. What is not named is unknown.
     draws : mapping
         Each rail's current as the sum of its parts, ``ic ib`` and role currents; a rail that is not given adds its parts
         to ``vcc``.
@@ -168,6 +171,7 @@ class Network:
     signs: Mapping[str, Mapping[str, Sign]]
     draws: Mapping[str, tuple[str, ...]]
     signs_while: Mapping[tuple[str, str], tuple[int, str]] = field(default_factory=dict)
+    vce_held: Mapping[str, Sign] = field(default_factory=dict)
     bleeder: str | None = None
     tied: Mapping[str, str] = field(default_factory=dict)
     shared_rails: bool = True

@@ -5,6 +5,7 @@ while the transistor stays active is the compliance.
 
 Signs. As the divider with compensating junctions, without rc: IC falls with r1 and re and rises with r2, VCC and vref.
 VCE = VLOAD − re·IE, and VE = re·IE rises with re, as in the follower.
+While IC and IB are held, VCE feels re and the load's rail, which may be VCC.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -64,6 +65,7 @@ NETWORK = Network(
         "i_r2": {"vcc": 1, "vload": 0, "r1": -1, "r2": -1, "re": 1, "delta": 1, "hfe": 1, "icbo": 1, "delta_ref": -1},
         "i_ref": {"vcc": 1, "vload": 0, "r1": -1, "r2": -1, "re": 1, "delta": 1, "hfe": 1, "icbo": 1, "delta_ref": -1},
     },
+    vce_held={"vcc": 1, "vload": 1, "r1": 0, "r2": 0, "re": -1},
     draws={"vcc": ("i_r1",), "vload": ("ic",)},
     tied={"c": "vload"},
     shared_rails=False,

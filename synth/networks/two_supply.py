@@ -2,6 +2,7 @@
 
 Signs. At fixed IC and IB the base-loop residual VEE − (rb+re)·IB − re·IC − VBE falls with rb (−IB) and re (−IE) and rises
 with VEE; VCC and rc do not enter. VCE = VCC + VBE + rb·IB − rc·IC, VC = VCC − rc·IC; the drop of re is VEE − rb·IB − VBE.
+While IC and IB are held, VCE = VCC + VEE − rc·IC − re·IE feels both rails, rc and re.
 """
 
 from synth.networks.form import Branches, Network, QPoint, Rails, Resistances, Role, TwoPort, Value
@@ -42,6 +43,7 @@ NETWORK = Network(
         "ve": {"vcc": 0, "vee": 1, "rb": -1, "rc": 0, "re": 1, "delta": -1},
         "i_rb": {"vcc": 0, "vee": 1, "rb": -1, "rc": 0, "re": -1, "delta": -1, "hfe": -1, "icbo": -1},
     },
+    vce_held={"vcc": 1, "vee": 1, "rb": 0, "rc": -1, "re": -1},
     draws={"vcc": ("ic",), "vee": ("ic", "ib")},
     shared_rails=False,
     base_side=("rb",),

@@ -63,7 +63,12 @@ def render(answer: Answer) -> str:
     if answer.warnings:
         blocks.append("\n".join(["Cautions", *(wrapped(f"  {w.name}: {w.text}", "    ") for w in answer.warnings)]))
     if answer.assumed:
-        rows = [[n.key, n.value, n.why] for n in answer.assumed]
+        # A long list would push the reasons of all others out of sight.
+        long = [len(n.value) > LONGEST_VALUE for n in answer.assumed]
+        rows = [
+            [n.key, "as follows", f"{n.value}; {n.why}"] if too_long else [n.key, n.value, n.why]
+            for n, too_long in zip(answer.assumed, long, strict=True)
+        ]
         blocks.append(section("Assumed, since not given", rows))
     if best is not None:
         blocks.append(LEGEND)
@@ -552,3 +557,5 @@ def _next(answer: Answer) -> str:
     if answer.kind == "check":
         return "Next: restpoint find with the same request shows the best values for it."
     return "Next: add --network any to try every network, or widen a window or limit named above."
+LONGEST_VALUE = 30
+"""Length above which an assumed value stands with its reason [-]."""

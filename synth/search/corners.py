@@ -11,7 +11,16 @@ so along re VCE is a concave function of IC alone: least at an end, greatest at 
 
 Proofs of monotonicity assume IB ≥ 0, IC ≥ ICBO and VBE ≥ 0. A bound from a corner that breaks this is replaced by one
 that holds all the same: IC ≤ max(IC, ICEO, IS) above, the least over every vertex of the base-side roles below, nothing
-otherwise. They also assume that a reference element conducts, which is a limit on every candidate: its current has the sign
+otherwise.
+
+Rows of hFE against IC leave the signs alone, but bend IB(IC): along re each line is then taken between the two that the
+extreme gains of its range give. Under the Early effect every member of a block is a Q-point of the law without it whose gain
+is lifted by a factor between the ends of e(VCE) over the VCE that the block can have; that range is found by bounding VCE with
+the whole range of factors and narrowing it twice. Quantities that are monotone in hFE take the favourable end. Along hFE VCE is
+concave in IC (the base loop is −z_cc·IC + (z_cb/z_bb)·VBE(IC)): least at an end, and above its value at the low end by at
+most VT times the logarithm of the ratio of the currents, since z_cb ≤ z_bb. Candidates themselves are assessed exactly.
+
+They also assume that a reference element conducts, which is a limit on every candidate: its current has the sign
 of VB − vref, whatever r2, so a bound from a corner where it conducts holds for every member where it does.
 """
 
@@ -19,6 +28,7 @@ from __future__ import annotations
 
 import itertools
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -30,6 +40,9 @@ from synth.networks.form import Array, QPoint
 from synth.signal import own_signs
 from synth.spaces import MOST_VBE, Index, Space
 from synth.transistor import thermal_voltage
+
+NARROWED = 2
+"""How often the range of VCE of a block narrows that of the Early effect."""
 
 
 class Corners:
@@ -58,30 +71,66 @@ class Corners:
             k: v for k, v in space.box(one, Meter()).values(scalar).items() if k not in self.roles
         }
         self.hfe = self.device["hfe"] * space.transistor.gain_factor(self.t)
+        self.va = self.device.pop("va", None)
+        self.rows = space.transistor.hfe_rows
+        # Ends of the factor by which rows and Early voltage may move the gain, wherever the Q-point lies.
+        self.reach = (1.0, 1.0)
+        if self.rows is not None:
+            low, high = self.rows.reach(self.device["hfe"], 0.0, np.inf)
+            self.reach = (float(np.exp(low)), float(np.exp(high)))
+        if self.va is not None:
+            self.reach = (self.reach[0] * float(space.transistor.early_factor(self.va, 0.0)), self.reach[1])
         self.icbo = self.device["icbo"] * space.transistor.leakage_factor(self.t)
-        # From this current on IB and VBE are not negative.
-        self.floor = float((self.hfe + 1.0) * self.icbo)
+        # From this current on VBE is not negative.
+        self.floor = 0.0
         if space.transistor.vbe_model == "junction":
             unit = np.exp(-self.device["delta"] / thermal_voltage(self.t))
-            self.floor = max(self.floor, float(space.transistor.saturation_current(self.t) * unit))
+            self.floor = float(space.transistor.saturation_current(self.t) * unit)
         self.frame = space.box(one, meter)
+        if self.va is not None:
+            self.frame = replace(self.frame, transistor=replace(space.transistor, va=None))
         self.vt = thermal_voltage(self.t) if space.transistor.vbe_model == "junction" else np.zeros(())
 
     def begin(self, lo: Index, hi: Index) -> None:
         """Take up a batch of blocks and forget what was solved for the last one."""
         self.lo, self.hi = lo, hi
-        self.solved: dict[tuple[int, ...], tuple[dict[str, Array], QPoint]] = {}
+        self.solved: dict[tuple[object, ...], tuple[dict[str, Array], QPoint]] = {}
+        if self.va is not None:
+            self._narrow(self.va)
+
+    def _narrow(self, va: Array) -> None:
+        """Find between what factors the Early effect may lift the gain of the members of each block."""
+        factor = self.space.transistor.early_factor
+        ohms = sum((self.high[role][self.hi[:, j]] for j, role in enumerate(self.roles)), np.zeros(len(self.lo)))
+        least_gain = self.hfe * self.reach[0]
+        rails = sum(float(spread.high) for spread in self.space.rails.values())
+        most = rails + ohms * self.icbo * (1.0 + 1.0 / least_gain)
+        self.most_lifted = False
+        self.lift = (np.full(len(self.lo), float(factor(va, 0.0))), np.asarray(factor(va, most)))
+        for _ in range(NARROWED):
+            self.solved = {}
+            low, high = self.least("vce", 1), -self.least("vce", -1)
+            one, two = self.lift
+            self.lift = (
+                np.where(np.isfinite(low), np.maximum(one, factor(va, low)), one),
+                np.where(np.isfinite(high), np.minimum(two, factor(va, high)), two),
+            )
+        self.solved = {}
 
     def at(self, ends: tuple[int, ...]) -> tuple[dict[str, Array], QPoint]:
         """Resistances and Q-point of every block at one corner; 0 is the low end of a role, 1 the high end."""
-        if ends not in self.solved:
+        lifted = self.va is not None and self.most_lifted
+        key = (ends, lifted)
+        if key not in self.solved:
             r = {
                 role: self.high[role][self.hi[:, j]] if end else self.low[role][self.lo[:, j]]
                 for j, (role, end) in enumerate(zip(self.roles, ends, strict=True))
             }
             values: Values = {**self.device, **r}
-            self.solved[ends] = (values, self.frame.solve(values, active_law=True))
-        return self.solved[ends]
+            if self.va is not None:
+                values["lift"] = self.lift[int(lifted)]
+            self.solved[key] = (values, self.frame.solve(values, active_law=True))
+        return self.solved[key]
 
     def ends(self, quantity: str, direction: int) -> tuple[tuple[int, ...], list[int]]:
         """Corner where direction·quantity is least, and the roles whose sign is not proved."""
@@ -97,7 +146,7 @@ class Corners:
         """Which roles' low ends and high ends the bound of a quantity depends on."""
         ends, open_roles = self.ends(quantity, direction)
         uses = np.zeros((2, len(self.roles)), dtype=bool)
-        if is_figure(quantity):
+        if is_figure(quantity) or self.va is not None:
             return ~uses[0], ~uses[1]
         behind = self._behind(quantity)
         if behind:
@@ -144,7 +193,7 @@ class Corners:
         parts = [np.maximum(self.least(name, 1), 0.0) for name in behind]
         if quantity == POWER_OF_TRANSISTOR:
             # Where leakage flows out of the base it takes back this much of VBE·IB at most.
-            return np.asarray(parts[0] * parts[1] - MOST_VBE * self.icbo * (1.0 + 1.0 / self.hfe))
+            return np.asarray(parts[0] * parts[1] - MOST_VBE * self.icbo * (1.0 + 1.0 / (self.hfe * self.reach[0])))
         ohms = self.low[role][self.lo[:, self.roles.index(role)]]
         # Of two parts the more loaded one carries half at least.
         share = 0.5 if kind.endswith("max") else 1.0
@@ -171,11 +220,24 @@ class Corners:
             if sign is None:
                 held &= self.low[role][self.lo[:, j]] == self.high[role][self.hi[:, j]]
             ends.append(0 if not sign or sign * direction > 0 else 1)
+        gain: Array = self.hfe
+        if self.space.transistor.gain_moves:
+            low, high = self._gains()
+            gain = low if (own["hfe"] or 0) * direction >= 0 else high
+            if own["hfe"] is None:
+                held &= low == high
         values, q = self.at(tuple(ends))
         r = {role: values[role] for role in self.roles}
         mixed = q._replace(ic=np.where(held, current, 0.0))
-        stage = small_signal(self.frame.setting, self.frame.sources(values), r, mixed, self.hfe, self.t)
+        stage = small_signal(self.frame.setting, self.frame.sources(values), r, mixed, gain, self.t)
         return np.where(held, direction * np.asarray(getattr(stage, figure)), nothing)
+
+    def _gains(self) -> tuple[Array, Array]:
+        """Ends of the gain over each block, wherever IC and VCE lie in it."""
+        least, most = np.maximum(self.least("ic", 1), 0.0), -self.least("ic", -1)
+        low, high = (np.zeros(len(self.lo)),) * 2 if self.rows is None else self.rows.reach(self.device["hfe"], least, most)
+        one, two = (np.ones(len(self.lo)),) * 2 if self.va is None else self.lift
+        return np.asarray(self.hfe * np.exp(low) * one), np.asarray(self.hfe * np.exp(high) * two)
 
     def least(self, quantity: str, direction: int) -> Array:
         """Lower bound over each block of direction·quantity at this point of the box."""
@@ -184,6 +246,38 @@ class Corners:
         behind = self._behind(quantity)
         if behind:
             return self._least_made_up(quantity, behind, direction)
+        return self._least(quantity, direction) if self.va is None else self._least_lifted(quantity, direction)
+
+    def _least_lifted(self, quantity: str, direction: int) -> Array:
+        """The same where the Early effect lifts the gain of each member by a factor of its own between two ends."""
+        before = self.most_lifted
+        bound = self._least_of_lifts(quantity, direction)
+        self.most_lifted = before
+        return bound
+
+    def _least_of_lifts(self, quantity: str, direction: int) -> Array:
+        if quantity == "vce":
+            self.most_lifted = False
+            low = self._least(quantity, direction)
+            if direction < 0:
+                # ln IC moves by at most 1/(1 - s) of ln hFE, s the steepest rise of the rows.
+                steepest = 0.0 if self.rows is None else self.rows.steepest
+                return np.asarray(low - self.vt * np.log(self.lift[1] / self.lift[0]) / (1.0 - steepest))
+            self.most_lifted = True
+            return np.minimum(low, self._least(quantity, direction))
+        along = quantity_sign(quantity, "hfe", self.frame.setting)
+        if along is not None:
+            self.most_lifted = along * direction < 0
+            return self._least(quantity, direction)
+        if quantity == "ve" and "re" in self.roles:
+            j = self.roles.index("re")
+            ohms = self.low["re"][self.lo[:, j]] if direction > 0 else self.high["re"][self.hi[:, j]]
+            drawn = self.least("ic", direction) + self.least("ib", direction)
+            known = np.isfinite(drawn) & (direction * drawn > 0.0)
+            return np.asarray(np.where(known, np.where(known, drawn, 0.0) * ohms, -np.inf))
+        return np.full(len(self.lo), -np.inf)
+
+    def _least(self, quantity: str, direction: int) -> Array:
         ends, open_roles = self.ends(quantity, direction)
         values, q = self.at(ends)
         if quantity == "ic":
@@ -224,7 +318,10 @@ class Corners:
         values, q = self.at(ends)
         conducts = self._conducts(values, q)
         if direction < 0:
-            return np.where(conducts, -np.maximum(q.ic, self.floor), -np.inf)
+            # From the greater of these two on neither IB nor VBE is negative.
+            most = self.hfe * self.reach[1] * (1.0 if self.va is None else self.lift[1])
+            floor = np.maximum(self.floor, (most + 1.0) * self.icbo)
+            return np.where(conducts, -np.maximum(q.ic, floor), -np.inf)
         bound, sound = q.ic, (q.vbe >= 0.0) & conducts
         if np.any(q.ib < 0.0):
             every = [self.at(corner)[1] for corner in self._vertices(ends)]
@@ -281,6 +378,8 @@ class Corners:
         (j,) = open_roles
         values, small = self.at(swap(ends, j, 0))
         large = self.at(swap(ends, j, 1))[1]
+        if self.rows is not None:
+            return self._vce_between(values, small, large, direction)
         if direction > 0:
             return np.minimum(small.vce, large.vce)
         top = np.maximum(small.vce, large.vce)
@@ -288,13 +387,38 @@ class Corners:
             return -top
         r = {role: values[role] for role in self.roles}
         port = self.space.network.two_port(self.frame.sources(values), r, self.t)
-        slope = np.asarray((port.z_bb - port.z_cb) / self.hfe + (port.z_bc - port.z_cc))
+        own = self.hfe if self.va is None else self.hfe * self.lift[int(self.most_lifted)]
+        slope = np.asarray((port.z_bb - port.z_cb) / own + (port.z_bc - port.z_cc))
         vt = thermal_voltage(self.t)
         # A slope of zero or more has no stationary point: the comparison below is then false.
         with np.errstate(divide="ignore", invalid="ignore"):
             current = np.where(slope < 0.0, -vt / slope, np.inf)
             inside = (current < small.ic) & (current > large.ic)
             peak = small.vce + slope * (current - small.ic) + vt * np.log(current / small.ic)
+        return -np.where(inside, np.maximum(peak, top), top)
+
+    def _vce_between(self, values: dict[str, Array], small: QPoint, large: QPoint, direction: int) -> Array:
+        """The same with gain that goes with IC: the line of the least or the greatest gain of the range bounds that of all."""
+        assert self.rows is not None
+        r = {role: values[role] for role in self.roles}
+        port = self.space.network.two_port(self.frame.sources(values), r, self.t)
+        across = np.asarray(port.z_bb - port.z_cb)
+        low, high = self.rows.reach(self.device["hfe"], large.ic, small.ic)
+        own = self.hfe if self.va is None else self.hfe * self.lift[int(self.most_lifted)]
+        gain = own * np.exp(high if direction > 0 else low)
+        # IB + ICBO = (IC - ICBO)/hFE, of the end itself and with the gain that bounds the range.
+        ends = [q.vce + across * ((q.ic - self.icbo) / gain - (q.ib + self.icbo)) for q in (small, large)]
+        if direction > 0:
+            return np.minimum(*ends)
+        top = np.maximum(*ends)
+        if self.space.transistor.vbe_model == "fixed":
+            return -top
+        slope = np.asarray(across / gain + (port.z_bc - port.z_cc))
+        vt = thermal_voltage(self.t)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            current = np.where(slope < 0.0, -vt / slope, np.inf)
+            inside = (current < small.ic) & (current > large.ic)
+            peak = ends[0] + slope * (current - small.ic) + vt * np.log(current / small.ic)
         return -np.where(inside, np.maximum(peak, top), top)
 
 

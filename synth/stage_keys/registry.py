@@ -130,6 +130,19 @@ def _transistor() -> Iterable[Key]:
         otherwise="the type's; there is no default",
     )  # fmt: skip
     yield Key(
+        path="transistor.hfe_rows", form="texts", example="0.1 mA = 40 : 300, 1 mA = 70 : 350, 10 mA = 100 : 300",
+        meaning='In place of hfe: hFE at 25 °C against IC, interpolated log-log; "1 mA = >= 70" without a maximum.',
+        otherwise="the type's where it has some; hFE does not go with IC",
+    )  # fmt: skip
+    yield Key(
+        path="transistor.va", form="spread", kind="voltage", example="50 : 100 V",
+        meaning="Early voltage from unit to unit: hFE goes as VA + VCE.", otherwise="hFE does not go with VCE",
+    )  # fmt: skip
+    yield Key(
+        path="transistor.va_vce", form="quantity", kind="voltage", example="5 V", default="5 V",
+        meaning="Collector-emitter voltage at which hFE holds; counts with va alone.", otherwise="the type's; 5 V",
+    )  # fmt: skip
+    yield Key(
         path="transistor.vbe", form="spread", kind="voltage", short="vbe", example="0.65 V ± 50 mV",
         meaning="Base-emitter voltage at 25 °C and vbe_ic from unit to unit.", default="0.65 V ± 50 mV",
         otherwise="the type's; 0.65 V ± 50 mV, germanium 0.15 V ± 50 mV",
@@ -151,6 +164,11 @@ def _transistor() -> Iterable[Key]:
         path="transistor.vce_sat", form="quantity", kind="voltage", example="0.2 V", default="0.2 V",
         meaning="Collector-emitter voltage of the saturated transistor.",
         otherwise="the type's; 0.2 V, germanium 0.1 V",
+    )  # fmt: skip
+    yield Key(
+        path="transistor.vce_sat_rows", form="texts", example="10 mA = 0.25 V, 100 mA = 0.6 V",
+        meaning="In place of vce_sat: VCE(sat) against IC; the row at or above the greatest IC wanted counts.",
+        otherwise="vce_sat counts",
     )  # fmt: skip
     yield Key(
         path="transistor.vceo", form="quantity", kind="voltage", example="45 V",

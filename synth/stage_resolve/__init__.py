@@ -68,7 +68,7 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
     current = ic.nominal or 0.0
     temperature = read_temperature(request)
     measured = read_measured(request)
-    transistor = as_measured(request, read_transistor(request, current), measured)
+    transistor = as_measured(request, read_transistor(request, ic), measured)
     check_junction(request, transistor, current, temperature.high)
     vce = voltages.get("vce")
     if vce is not None and vce.nominal is not None and vce.nominal <= transistor.vce_sat:

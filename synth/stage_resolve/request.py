@@ -5,18 +5,22 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
+from typing import Any, NamedTuple
 
 from synth.stage_keys import KEYS, StageError
 
 
 @dataclass(frozen=True, kw_only=True)
 class Assumption:
-    """A value that was not given: its key and text as in a stage file, and why it was taken."""
+    """A value that was not given: its key and text as in a stage file, why it was taken, and of a table how that is known.
+
+    `evidence` is "seen", "mixed" or "memory", as the table has it, and "" where no table was asked.
+    """
 
     key: str
     value: str
     why: str
+    evidence: str = ""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -25,6 +29,13 @@ class StageWarning:
 
     name: str
     text: str
+
+
+class Source(NamedTuple):
+    """Where a value comes from, in words, and how a table knows it."""
+
+    why: str
+    evidence: str = ""
 
 
 class Request:
@@ -44,11 +55,12 @@ class Request:
     def value(self, path: str) -> Any:
         """Value of a key, None where it is not given."""
         return KEYS[path].read(self.given[path]) if path in self.given else None
-    def take(self, path: str, text: str = "", why: str = "not given") -> Any:
+    def take(self, path: str, text: str = "", why: str | Source = "not given") -> Any:
         """Value of a key, by default that of a text, which is then listed as assumed."""
         if path in self.given:
             return self.value(path)
-        self.assumed[path] = Assumption(key=path, value=text or KEYS[path].default, why=why)
+        source = why if isinstance(why, Source) else Source(why)
+        self.assumed[path] = Assumption(key=path, value=text or KEYS[path].default, why=source.why, evidence=source.evidence)
         return KEYS[path].read(self.assumed[path].value)
     def assume(self, path: str, value: Any, why: str) -> Any:
         """A value as listed under assumed, whether or not the key is given."""

@@ -9,39 +9,34 @@ from typing import Any, Literal
 
 from synth import catalogue
 from synth.catalogue import Derating, TransistorRow
-from synth.quantities import Interval, RestpointError, Spread, format_exact, format_quantity, format_spread, parse
+from synth.quantities import Interval, RestpointError, Spread, Target, format_exact, format_quantity, parse
 from synth.stage_keys import KEYS, nearest
+from synth.stage_resolve.gain import from_table, read_early, read_gain, read_saturation
 from synth.stage_resolve.request import Assumption, Request, StageWarning
 from synth.stress import TransistorRatings, transistor_ratings
 from synth.transistor import GAP_VOLTAGE, T0, Transistor
 
-OPEN_GAIN = 5.0
-"""Greatest over least gain where only the least is known [-]: common practice for one type without gain bins."""
-
 JUNCTION_ROOM = 10.0
 """Least ratio of the collector current to the saturation current at which the junction law holds [-]."""
-
-FAR_CURRENT = 10.0
-"""Ratio of currents from which a printed gain says little about the gain at the stage's own current [-]."""
 
 _GERMANIUM = {"vbe": "0.15 V ± 50 mV", "vbe_ic": "1 mA", "vce_sat": "0.1 V"}
 _RATINGS = ("vceo", "vebo", "ic_max", "ptot", "tj_max", "rth_ja")
 
 
-def read_transistor(request: Request, current: float) -> Transistor:
-    """The transistor of a stage whose target is a current [A]."""
+def read_transistor(request: Request, ic: Target) -> Transistor:
+    """The transistor of a stage with its target current [A]."""
+    current = ic.nominal or 0.0
     kind = request.value("transistor.type")
     row = None if kind is None else catalogue.transistor(kind)
     material = _word(request, "material", row)
     polarity = _word(request, "polarity", row)
     usual = _GERMANIUM if material == "germanium" else {}
-    hfe = _gain(request, row, current)
+    hfe, hfe_rows = read_gain(request, row, current)
+    va, va_vce = read_early(request, row)
     vbe, vbe_ic = _base_emitter(request, row, usual)
     model: Literal["junction", "fixed"] = request.take("transistor.vbe_model")
     icbo: Spread = _figure(request, "icbo", row and row.icbo_spread, row, "icbo_max_a")
-    vce_sat: float = _figure(request, "vce_sat", row and row.vce_sat_max_v, row, "vce_sat_max_v", text=usual.get("vce_sat", ""))
-    if vce_sat < 0.0:
-        raise request.refusal("transistor.vce_sat", "which is negative", "a magnitude of 0 V or more")
+    vce_sat = read_saturation(request, row, ic, usual.get("vce_sat", ""))
     if model == "junction" and vbe.high >= GAP_VOLTAGE[material]:
         gap = format_exact(GAP_VOLTAGE[material], "voltage")
         reason = f"which reaches the {gap} of the gap of {material}, where the junction law ends"
@@ -57,6 +52,9 @@ def read_transistor(request: Request, current: float) -> Transistor:
         icbo_hot=_hot_limit(request, row, icbo),
         vce_sat=vce_sat,
         type="" if row is None else row.type,
+        hfe_rows=hfe_rows,
+        va=va,
+        va_vce=va_vce,
     )
 
 
@@ -82,7 +80,7 @@ def _word(request: Request, leaf: str, row: TransistorRow | None) -> Any:
     fixed = getattr(row, leaf)
     if request.value(path) not in (None, fixed):
         raise request.refusal(path, f"but {row.type} is {fixed}", f"{fixed}, or another type", fixed)
-    return request.take(path, fixed, _from_table(row, leaf))
+    return request.take(path, fixed, from_table(row, leaf))
 
 
 def _figure(request: Request, leaf: str, printed: Any, row: TransistorRow | None, *fields: str, text: str = "") -> Any:
@@ -92,46 +90,7 @@ def _figure(request: Request, leaf: str, printed: Any, row: TransistorRow | None
         return request.take(path, text)
     if printed is None:
         return request.take(path, text, f"not given, and the table of transistors sets none for {row.type}")
-    return request.take(path, KEYS[path].write(printed), _from_table(row, *fields))
-
-
-def _gain(request: Request, row: TransistorRow | None, current: float) -> Spread:
-    path = "transistor.hfe"
-    text = request.given.get(path, "").strip().replace("≥", ">=")
-    hfe: Spread
-    if text.startswith(">="):
-        hfe = _open_gain(request, parse(text[2:], "gain", path), "no maximum given")
-    elif text:
-        hfe = request.value(path)
-    elif row is None:
-        accepted = f"a gain such as {KEYS[path].example!r}, or a transistor.type such as 'BC847B'"
-        raise request.refusal(path, "which is not given and has no default", accepted)
-    else:
-        _warn_of_far_gain(request, row, current)
-        greatest: float | None = row.hfe_max
-        if greatest is None:
-            hfe = _open_gain(request, row.hfe_min, f"no maximum printed for {row.type}")
-        else:
-            hfe = request.take(path, format_spread(row.hfe_spread, "gain"), _from_table(row, "hfe_min", "hfe_max"))
-    if hfe.low <= 0.0:
-        raise request.refusal(path, f"whose least gain is {hfe.low:g}", "a least gain above 0", KEYS[path].example)
-    return hfe
-
-
-def _open_gain(request: Request, least: float, why: str) -> Spread:
-    key = KEYS["transistor.hfe"]
-    hfe: Spread = key.read(" : ".join(format_exact(end, key.kind) for end in (least, least * OPEN_GAIN)))
-    request.assume(key.path, hfe, f"{why}: up to {OPEN_GAIN:g} times the minimum")
-    return hfe
-
-
-def _warn_of_far_gain(request: Request, row: TransistorRow, current: float) -> None:
-    printed = [row.hfe_ic_a, *(point.ic_a for point in catalogue.hfe_points(row.type))]
-    close = min(printed, key=lambda tested: abs(math.log(tested / current)))
-    if max(close / current, current / close) >= FAR_CURRENT:
-        near, own = format_quantity(close, "current"), format_quantity(current, "current")
-        text = f"the table prints hFE of {row.type} at {near}, far from {own}: give transistor.hfe at that current"
-        request.warnings.append(StageWarning(name="gain_test_current", text=text))
+    return request.take(path, KEYS[path].write(printed), from_table(row, *fields))
 
 
 def _base_emitter(request: Request, row: TransistorRow | None, usual: Mapping[str, str]) -> tuple[Spread, float]:
@@ -158,8 +117,9 @@ def _hot_limit(request: Request, row: TransistorRow | None, icbo: Spread) -> tup
         text = f"the leakage given exceeds the hot limit of {row.type}, {text}, so it is taken to double per 10 K"
         request.warnings.append(StageWarning(name="hot_leakage", text=text))
         return None
-    why = f"hot limit {_from_table(row, 'icbo_hot_max_a', 'icbo_hot_k')}"
-    request.notes.append(Assumption(key="transistor.icbo", value=text, why=why))
+    source = from_table(row, "icbo_hot_max_a", "icbo_hot_k")
+    note = Assumption(key="transistor.icbo", value=text, why=f"hot limit {source.why}", evidence=source.evidence)
+    request.notes.append(note)
     return row.icbo_hot
 
 
@@ -173,7 +133,9 @@ def read_ratings(request: Request) -> TransistorRatings:
             raise request.refusal(f"transistor.{leaf}", "which is no rating", "a rating above 0", example)
     found = TransistorRatings()
     if kind is not None:
-        found = transistor_ratings(catalogue.transistor(kind), given.get("rth_ja"))
+        row = catalogue.transistor(kind)
+        found = transistor_ratings(row, given.get("rth_ja"))
+        _note_ratings(request, row, found)
     if "ptot" in given:
         given["ptot_ambient"] = T0
     if (hottest := given.get("tj_max", found.tj_max)) is not None and hottest <= T0:
@@ -192,6 +154,19 @@ def read_replacement(request: Request) -> dict[str, Any]:
     return found
 
 
+def _note_ratings(request: Request, row: TransistorRow, found: TransistorRatings) -> None:
+    """List the ratings that a type brings."""
+    fields = {"vceo": "vceo_v", "ic_max": "ic_max_a", "ptot": "ptot_w", "tj_max": "tj_max_k", "rth_ja": "rth_ja_k_w"}
+    for leaf, field in fields.items():
+        key, figure = KEYS[f"transistor.{leaf}"], getattr(found, leaf)
+        if figure is None or key.path in request.given:
+            continue
+        source = from_table(row, field)
+        held = ", held at the case" if leaf == "ptot" and found.ptot_ambient is None else ""
+        note = Assumption(key=key.path, value=key.write(figure), why=f"rating {source.why}{held}", evidence=source.evidence)
+        request.notes.append(note)
+
+
 def read_policy(request: Request, is_needed: bool) -> Derating:
     """The derating policy; assumed only where a rating asks for one."""
     key = KEYS["derating"]
@@ -202,8 +177,3 @@ def read_policy(request: Request, is_needed: bool) -> Derating:
         near = nearest(name, catalogue.deratings())
         accepted = f"one of {', '.join(catalogue.deratings())}"
         raise request.refusal("derating", "which is unknown", accepted, *near) from None
-
-
-def _from_table(row: TransistorRow, *fields: str) -> str:
-    evidence = "memory" if "memory" in map(row.evidence_of, fields) else "seen"
-    return f"from the table of transistors (evidence: {evidence})"
