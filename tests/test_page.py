@@ -23,7 +23,7 @@ from synth.boards import Board, BoardAnswer
 from synth.boards.file import BoardStage
 from synth.cli import main
 from synth.explain import made_of, percent
-from synth.present.page import board_to_html, to_html
+from synth.present.page import board_to_html, refit_to_html, to_html
 from synth.present.page.circuit_view import circuit
 from synth.present.page.lead import count_words
 from synth.present.page.load_line import picture
@@ -276,6 +276,40 @@ def test_page_of_a_board_that_has_no_choice_says_why() -> None:
     assert " ".join(answer.infeasible[0].split()) in page.text
 
 
+def test_page_of_a_refit_compares_today_with_what_changes() -> None:
+    """The bin of gain that is left does not suit the resistors (invented): one of them changes."""
+    keys = {"supply": "12 V", "ic": "1.6 mA ± 15 %", "vce": ">= 2 V", "hfe": "110 : 220", "series": "E24", "tolerance": "1 %",
+            "collector_share": "none", "bleeder_current": "none", "base_resistance": "none", "temperature": "25 °C",
+            "r1": "100k", "r2": "27k", "rc": "4k7", "re": "1k"}  # fmt: skip
+    refit = synth.refit(Stage(**keys, name="level <i>sensor</i>"), to_hfe="420 : 800", top=2)  # type: ignore[arg-type]
+    html = refit_to_html(refit)
+    page = Reader(html)
+    names = [attrs["id"] for _, attrs in page.elements if "id" in attrs]
+    assert len(names) == len(set(names))
+    assert "<i>" not in html
+    assert "level <i>sensor</i>" in page.text
+    assert refit.best is not None
+    for line in refit.reasons:
+        assert " ".join(line.split()) in page.text
+    for line in refit.comparison:
+        assert line.what in page.text
+    # Today with both transistors, and every change that is listed.
+    articles = [attrs["id"] for tag, attrs in page.elements if tag == "article"]
+    assert articles == ["candidate-before", "candidate-after", *(f"candidate-{c.rank}" for c in refit.candidates)]
+    (chosen,) = [attrs["data-first"] for _, attrs in page.elements if "data-first" in attrs]
+    (beside,) = [attrs["value"] for tag, attrs in page.elements if tag == "option" and "selected" in attrs]
+    assert (chosen, beside) == ("1", "after")
+
+
+def test_an_open_window_is_drawn_to_the_end_of_the_axis() -> None:
+    answer = find(Stage(**{**BUOY, "vce": ">= 2 V"}), top=1)  # type: ignore[arg-type]
+    p = picture(answer, answer.candidates[0], answer.candidates, "it")
+    assert p is not None
+    assert p.window is not None
+    assert_allclose(p.window.x + p.window.width, p.plot.x + p.plot.width, rtol=1e-6, atol=0)
+    assert any("2 V or more" in text for mark, text in p.legend if mark == "window")
+
+
 def run(capsys: pytest.CaptureFixture[str], *words: str) -> tuple[int, str, str]:
     with pytest.raises(SystemExit) as stop:
         main(words)
@@ -306,3 +340,10 @@ def test_report_of_another_form_is_refused(capsys: pytest.CaptureFixture[str], t
     assert (code, out) == (2, "")
     assert regex.fullmatch(rf"--report: read '.*{regex.escape(name)}', accepted is a file name that ends in .*\.html.*\n", err)
     assert not list(tmp_path.iterdir())
+
+
+@pytest.mark.parametrize("other", [("--among", "tables"), ("--diagnose",)])
+def test_report_of_what_is_no_refit_is_refused(capsys: pytest.CaptureFixture[str], tmp_path: Path, other: tuple[str, ...]) -> None:
+    code, out, err = run(capsys, "refit", *ASKED[1:], *other, "--report", str(tmp_path / "scan.html"))
+    assert (code, out) == (2, "")
+    assert err == f"--report: shows what one transistor changes, read {other[0]} as well\n"

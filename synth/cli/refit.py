@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
 
-from synth.cli.delivery import files, progress
+from synth.cli.delivery import files, is_report, progress
 from synth.cli.options import (
     FORMATS,
     FOUND,
@@ -20,6 +20,7 @@ from synth.cli.options import (
     nearest_of,
     output_options,
     read_stage,
+    report_option,
 )
 
 if TYPE_CHECKING:
@@ -29,13 +30,16 @@ OWN = ("keep", "also_series", "also_stock", "top", "among", "least_vceo", "least
        "designator", "diagnose")  # fmt: skip
 
 
-def _hand_over(text: str, stage: Stage, options: dict[str, Any]) -> None:
-    """Write the answer and the request where they were asked for."""
+def _hand_over(text: str, page: Callable[[], str], stage: Stage, options: dict[str, Any]) -> None:
+    """Write the answer, the request and a report where they were asked for."""
     from synth.present.files import write
 
-    named = files(options)
-    content = {option: text if option == "--output" else stage.to_toml(path.parent) for option, path in named.items()}
-    write({option: (path, content[option]) for option, path in named.items()})
+    content: dict[str, Callable[[Path], str]] = {
+        "--output": lambda path: text,
+        "--save": lambda path: stage.to_toml(path.parent),
+        "--report": lambda path: page(),
+    }
+    write({option: (path, content[option](path)) for option, path in files(options).items()})
     if options["output"] is None:
         click.echo(text, nl=False)
 
@@ -58,40 +62,42 @@ def _designators(texts: Sequence[str]) -> dict[str, str]:
     return found
 
 
-def _refit(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool]:
-    """The text of a refit, and whether some change will do."""
+def _refit(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool, Callable[[], str]]:
+    """The text of a refit, whether some change will do, and its page."""
     from synth.present.change_record import to_change_list, to_change_record
+    from synth.present.page import refit_to_html
     from synth.present.refit import render_refit
-    from synth.replacement import refit
+    from synth.replacement import Refit, refit
 
     designators = _designators(own["designator"])
     answer = refit(
         stage, keep=_words(own["keep"]), top=own["top"], also_series=own["also_series"], also_stock=own["also_stock"],
         progress=progress(), command=command_line(),
     )
-    if form == "json":
-        return answer.to_json(), answer.passed
-    if form == "table":
-        return render_refit(answer), answer.passed
-    make = to_change_record if form == "markdown" else to_change_list
-    return make(answer, own["reason"] or "", designators), answer.passed
+    makers: dict[str, Callable[[Refit], str]] = {
+        "table": render_refit,
+        "json": Refit.to_json,
+        "csv": lambda answer: to_change_list(answer, own["reason"] or "", designators),
+        "markdown": lambda answer: to_change_record(answer, own["reason"] or "", designators),
+    }
+    return makers[form](answer), answer.passed, lambda: refit_to_html(answer)
 
 
-def _scan(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool]:
-    """The text of a scan, and whether any transistor will do."""
+def _scan(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool, Callable[[], str]]:
+    """The text of a scan, whether any transistor will do, and no page."""
     from synth.present.scan import render_scan, scan_csv, scan_json, scan_markdown
     from synth.replacement import least_ratings, scan
 
     least = least_ratings({"vceo": own["least_vceo"], "ic_max": own["least_ic"], "ptot": own["least_power"]})
     found = scan(stage, own["among"], keep=_words(own["keep"]), least=least, packages=own["package"])
     if form == "json":
-        return scan_json(found, command_line()), found.passed
+        return scan_json(found, command_line()), found.passed, str
     makers = {"table": render_scan, "csv": scan_csv, "markdown": scan_markdown}
-    return makers[form](found), found.passed
+    return makers[form](found), found.passed, str
 
 
-def _diagnose(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool]:
-    """What the readings of a unit say, and whether it is sound."""
+def _diagnose(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool, Callable[[], str]]:
+    """What the readings of a unit say, whether it is sound, and no page."""
     from synth.diagnosis import diagnose
     from synth.present.diagnosis import diagnosis_json, render_diagnosis
 
@@ -99,7 +105,7 @@ def _diagnose(stage: Stage, own: dict[str, Any], form: str) -> tuple[str, bool]:
         raise WrongInput(f"--diagnose: goes with --format table or json, read {form!r}")
     found = diagnose(stage)
     text = diagnosis_json(found, stage.name, command_line()) if form == "json" else render_diagnosis(found, stage.name)
-    return text, found.sound
+    return text, found.sound, str
 
 
 def command(meaning: str) -> click.Command:
@@ -107,11 +113,16 @@ def command(meaning: str) -> click.Command:
 
     def run(stage_file: Path | None, **options: Any) -> int:
         own = {name: options.pop(name) for name in OWN}
+        if options["report"] is not None:
+            is_report(options["report"], (".html",))
+            other = "--diagnose" if own["diagnose"] else "--among" if own["among"] is not None else ""
+            if other:
+                raise WrongInput(f"--report: shows what one transistor changes, read {other} as well")
         files(options)
         stage = read_stage(stage_file, options, "refit")
         work = _diagnose if own["diagnose"] else _refit if own["among"] is None else _scan
-        text, passed = work(stage, own, options["form"])
-        _hand_over(text, stage, options)
+        text, passed, page = work(stage, own, options["form"])
+        _hand_over(text, page, stage, options)
         return FOUND if passed else NOT_FOUND
 
     return click.Command(
@@ -142,5 +153,6 @@ def command(meaning: str) -> click.Command:
             click.Option(["--diagnose"], is_flag=True,
                          help="Tell what readings given as --measured-vb, --measured-ve and --measured-vc say of a unit."),
             *output_options(FORMATS),
+            report_option(),
         ],
     )

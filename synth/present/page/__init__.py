@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     import jinja2
 
     from synth.boards import BoardAnswer
+    from synth.replacement import Refit
 
 
 def to_html(answer: Answer) -> str:
@@ -71,6 +72,24 @@ def board_to_html(answer: BoardAnswer) -> str:
     from synth.present.page.boards_view import board_page
 
     return render("answer.html.j2", board_page(answer))
+
+
+def refit_to_html(refit: Refit) -> str:
+    """The answer to a replaced transistor as a page.
+
+    Parameters
+    ----------
+    refit : Refit
+        Of `synth.refit`.
+
+    Returns
+    -------
+    str
+        As `to_html`.
+    """
+    from synth.present.page.refits_view import refit_page
+
+    return render("answer.html.j2", refit_page(refit))
 
 
 def render(template: str, content: Mapping[str, Any]) -> str:

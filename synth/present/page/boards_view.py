@@ -69,14 +69,14 @@ def _more(result: StageResult) -> dict[str, Cell]:
     }
 
 
-def _lead(answer: BoardAnswer) -> tuple[str, list[str]]:
+def _lead(answer: BoardAnswer) -> tuple[str, str, list[str]]:
     search = answer.search
     proved = "proved" if search.complete else "not proved"
     if not answer.passed:
         first, *rest = answer.infeasible or ("No choice was found.",)
         lines = [f"No choice for {answer.name} meets every limit, {proved}.", first]
         way_out = "Widen an allowance, a window or a limit, or add values to the stock list."
-        return "fail", [*lines, rest[0] if rest else way_out]
+        return "fail", "FAIL", [*lines, rest[0] if rest else way_out]
     pieces, new = sum(line.quantity for line in answer.bom), sum(line.new for line in answer.bom)
     order = "" if answer.cost is None else f"; the order costs {money(answer.cost)}"
     worst = max(answer.stages, key=lambda s: s.drift - s.best)
@@ -85,7 +85,7 @@ def _lead(answer: BoardAnswer) -> tuple[str, list[str]]:
     if spent <= 0.0:
         spends = "No stage gives up any drift"
     count = f"{len(answer.stages)} {'stage' if len(answer.stages) == 1 else 'stages'}"
-    return "pass", [
+    return "pass", "PASS", [
         f"{pieces} resistors of {count} on {len(answer.bom)} lines of the BOM, {new} new{order}.",
         f"Chosen among {count_words(search.combinations)} combinations of the stages, {proved} the best.",
         f"{spends}; every stage stays within its allowance over its whole box.",

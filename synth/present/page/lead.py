@@ -55,7 +55,7 @@ def title(answer: Answer) -> str:
     return str(answer.stage.get("name") or "stage")
 
 
-def lead(answer: Answer) -> tuple[str, list[str]]:
+def lead(answer: Answer) -> tuple[str, str, list[str]]:
     """The answer in three lines: the verdict and its proof, the values, and what they depend on.
 
     Parameters
@@ -65,17 +65,20 @@ def lead(answer: Answer) -> tuple[str, list[str]]:
 
     Returns
     -------
-    verdict : str
+    mark : str
         ``pass``, ``fail`` or ``open``.
+    verdict : str
+        The same as it is printed.
     lines : list of str
         Three sentences.
     """
     best, why = answer.best, answer.infeasible
     if best is not None:
-        return ("pass" if answer.passed else "fail"), [_proof(answer, best), _values(best), _decides(best)]
+        verdict = "pass" if answer.passed else "fail"
+        return verdict, verdict.upper(), [_proof(answer, best), _values(best), _decides(best)]
     lines = [_proof(answer, None)]
     if why is None:
-        return "open", [*lines, "No candidate was found so far.", "A longer search, or fewer networks, may settle it."]
+        return "open", "OPEN", [*lines, "No candidate was found so far.", "A longer search, or fewer networks, may settle it."]
     one = len(why.binding) == 1
     lines.append(f"{'This limit cannot be met' if one else 'These limits cannot be met together'}: {', '.join(why.binding)}.")
     if why.relaxations:
@@ -84,7 +87,7 @@ def lead(answer: Answer) -> tuple[str, list[str]]:
         lines.append(f"One change that would do: {change}, with a drift of {percent(first.drift)}.")
     else:
         lines.append("No change of one limit alone would do.")
-    return "fail", lines
+    return "fail", "FAIL", lines
 
 
 def _proof(answer: Answer, best: Candidate | None) -> str:
@@ -146,7 +149,7 @@ def notes(answer: Answer) -> list[Note]:
     list of Note
         Only those that have something to say.
     """
-    makers = (_infeasible, _cautions, _alternatives, _frontier, _networks, _outlook, _assumed, _effort)
+    makers = (_infeasible, _cautions, _alternatives, _frontier, _networks, _outlook, assumed_note, search_note)
     found = [note for make in makers if (note := make(answer)) is not None]
     return [*found, Note(key="words", title="Words", facts=WORDS)]
 
@@ -255,7 +258,19 @@ def _networks(answer: Answer) -> Note | None:
     return Note(key="networks", title="Networks", tables=(table,))
 
 
-def _assumed(answer: Answer) -> Note | None:
+def assumed_note(answer: Answer) -> Note | None:
+    """What was not given.
+
+    Parameters
+    ----------
+    answer : Answer
+        Any answer.
+
+    Returns
+    -------
+    Note or None
+        None where all was given.
+    """
     if not answer.assumed:
         return None
     rows = [[words(n.key), words(n.value), words(n.why)] for n in answer.assumed]
@@ -263,7 +278,19 @@ def _assumed(answer: Answer) -> Note | None:
     return Note(key="assumed", title="Assumed, since not given", tables=(table,))
 
 
-def _effort(answer: Answer) -> Note | None:
+def search_note(answer: Answer) -> Note | None:
+    """What was searched and what is proved.
+
+    Parameters
+    ----------
+    answer : Answer
+        Any answer.
+
+    Returns
+    -------
+    Note or None
+        None where nothing was searched.
+    """
     search = answer.search
     if search is None:
         return None

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from math import floor, log10
+from math import floor, inf, log10
 
 from synth.answer import Answer, Candidate
 from synth.explain import percent
@@ -105,7 +105,7 @@ def picture(answer: Answer, c: Candidate, among: Sequence[Candidate], name: str)
         ("box", f"over the box, {span(ic_low, ic_high, 'current')} and {span(vce_low, vce_high, 'voltage')}"),
     ]
     if aim_ic or aim_vce:
-        limits = [f"{span(*ends, kind)}" for ends, kind in ((aim_ic, "current"), (aim_vce, "voltage")) if ends]
+        limits = [_window_words(ends, kind) for ends, kind in ((aim_ic, "current"), (aim_vce, "voltage")) if ends]
         legend.append(("window", f"window, {' and '.join(limits)}"))
     room = vce_low - line.vce_sat
     to_cutoff = percent(ic_low / q.ic) if q.ic > 0.0 else "0 %"
@@ -137,15 +137,28 @@ def _ends(
     amps = max(max(line.ic, c.worst.ic[1]) for c, line in known)
     # A line that is steep against the Q-point would leave it on the floor.
     amps = min(amps, STEEP * max(c.worst.ic[1] for c, _ in known))
-    return ROOM * max(volts, aim_vce[1] if aim_vce else 0.0), ROOM * max(amps, aim_ic[1] if aim_ic else 0.0)
+    return ROOM * max(volts, _closed(aim_vce)), ROOM * max(amps, _closed(aim_ic))
+
+
+def _closed(ends: tuple[float, float] | None) -> float:
+    """The end of a window that an axis has to reach."""
+    return 0.0 if ends is None else ends[0] if ends[1] == inf else ends[1]
 
 
 def _window(target: Sequence[float | None] | None) -> tuple[float, float] | None:
-    """Both ends of a window; None where there is none or it is open."""
-    if not target or target[0] is None or target[-1] is None or target[0] == target[-1]:
+    """Both ends of a window, 0 and infinity where it is open; None where there is none."""
+    if not target or (target[0] is None and target[-1] is None) or target[0] == target[-1]:
         return None
-    low, high = float(target[0]), float(target[-1])
-    return (low, high) if high < float("inf") and low >= 0.0 else None
+    low = 0.0 if target[0] is None else max(float(target[0]), 0.0)
+    return low, inf if target[-1] is None else float(target[-1])
+
+
+def _window_words(ends: tuple[float, float], kind: str) -> str:
+    """A window in words."""
+    low, high = ends
+    if high == inf:
+        return f"{format_quantity(low, kind)} or more"
+    return f"{format_quantity(high, kind)} or less" if low == 0.0 else span(low, high, kind)
 
 
 def _ticks(end: float, kind: str) -> list[tuple[float, str]]:
