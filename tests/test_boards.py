@@ -376,6 +376,63 @@ def test_board_is_told_in_words(board_file: Path, form: str, capsys: pytest.Capt
     assert "R101" in text
 
 
+def changed(board_file: Path, bom: Path, capsys: pytest.CaptureFixture[str], **ohms: str) -> list[dict[str, Any]]:
+    """What board says against a BOM in which some resistors had another value."""
+    rows = list(csv.DictReader(io.StringIO(bom.read_text(encoding="utf-8"))))
+    for number, value in ohms.items():
+        for row in rows:
+            row["designators"] = " ".join(other for other in row["designators"].split() if other != number)
+        rows.append(rows[0] | {"designators": number, "ohms": value, "part": "", "style": ""})
+    old = bom.with_name("old.csv")
+    with old.open("w", encoding="utf-8", newline="") as stream:
+        writer = csv.DictWriter(stream, rows[0])
+        writer.writeheader()
+        writer.writerows(row for row in rows if row["designators"])
+    with pytest.raises(SystemExit) as stop:
+        main(["board", str(board_file), "--against", str(old), "--format", "json"])
+    assert stop.value.code == 0
+    found: list[dict[str, Any]] = json.loads(capsys.readouterr().out)["changes"]
+    return found
+
+
+def test_what_changed_against_an_earlier_bom_and_why(
+    board_file: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    bom = tmp_path / "bom.csv"
+    bom.write_text(to_csv(synth.board(Board.read(board_file))), encoding="utf-8")
+    assert changed(board_file, bom, capsys) == []
+    # The driver on 43K, 22K and 1K8 is within its allowance, but shares no 47K with the front: seven lines instead of six.
+    found = changed(board_file, bom, capsys, R1="43000.0", R3="1800.0")
+    assert [(c["designators"], c["before"], c["stage"]) for c in found] == [
+        (["R1"], "43K 1 %", "driver"), (["R3"], "1K8 1 %", "driver"),
+    ]  # fmt: skip
+    assert {c["why"] for c in found} == {"the old values pass, but keeping them takes 1 new line more"}
+    # By Ohm's law a bleeder of 12 V over 82 kohm and 10 kohm holds the base at 1.3 V: far too little for 1 mA in 3K6.
+    found = changed(board_file, bom, capsys, R102="10000.0", R106="10000.0", R99="1000.0")
+    assert [c["designators"] for c in found] == [["R102", "R106"], ["R99"]]
+    assert "10K 1 %" in found[0]["before"]
+    assert found[0]["why"].startswith(("the old values drift", "the old values fail"))
+    assert (found[1]["after"], found[1]["why"]) == ("", "no stage has this number now")
+    with pytest.raises(SystemExit):
+        main(["board", str(board_file), "--against", str(tmp_path / "old.csv")])
+    assert "no stage has this number now" in capsys.readouterr().out
+
+
+@pytest.mark.parametrize(
+    ("content", "message"),
+    [
+        ("item,designators\n1,R1\n", r"against 'old\.csv' has no column 'ohms'"),
+        ("designators,ohms\nR1,1k\n", r"against 'old\.csv', line 2: read '1k ohm'"),
+        (None, r"against: read '.*old\.csv', which cannot be read"),
+    ],
+)
+def test_what_is_no_bom_is_refused(board_file: Path, tmp_path: Path, content: str | None, message: str) -> None:
+    if content is not None:
+        (tmp_path / "old.csv").write_text(content, encoding="utf-8")
+    with pytest.raises(RestpointError, match=message):
+        synth.board(Board.read(board_file), against=tmp_path / "old.csv")
+
+
 def test_why_there_is_no_bom(board_file: Path, capsys: pytest.CaptureFixture[str]) -> None:
     board_file.write_text(BOARD.replace('allowance = "6 %"', 'allowance = "6 %"\nmost_new = 0', 1), encoding="utf-8")
     with pytest.raises(SystemExit) as stop:

@@ -2,7 +2,8 @@
 
 from synth.boards.answer import BoardAnswer, BoardSearch, StageResult
 from synth.boards.bom import Line, Merge
+from synth.boards.compare import Change
 from synth.boards.file import Board, BoardStage
 from synth.boards.solve import board
 
-__all__ = ["Board", "BoardAnswer", "BoardSearch", "BoardStage", "Line", "Merge", "StageResult", "board"]
+__all__ = ["Board", "BoardAnswer", "BoardSearch", "BoardStage", "Change", "Line", "Merge", "StageResult", "board"]

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any
 
 from synth.answer import Candidate
 from synth.boards.bom import Line, Merge
+from synth.boards.compare import Change
 from synth.boards.file import Board
 from synth.boards.model import Bound
 
@@ -80,6 +81,8 @@ class BoardAnswer:
         Results; empty when there is none.
     infeasible : tuple of str
         Why there is none, a sentence each.
+    changes : tuple of Change or None
+        What differs from an earlier BOM; None where there was nothing to compare with.
     request : Board
         What was asked.
     """
@@ -93,6 +96,7 @@ class BoardAnswer:
     bom: tuple[Line, ...] = ()
     merges: tuple[Merge, ...] = ()
     infeasible: tuple[str, ...] = ()
+    changes: tuple[Change, ...] | None = None
     request: Board
 
     @property
@@ -131,6 +135,7 @@ class BoardAnswer:
             "stages": [_stage(stage) for stage in self.stages],
             "bom": [_line(line) for line in self.bom],
             "merges": [_plain({**vars(m), "shares": [vars(share) for share in m.shares]}) for m in self.merges],
+            "changes": None if self.changes is None else [_plain(vars(change)) for change in self.changes],
             "infeasible": list(self.infeasible) if self.infeasible else None,
         }
 

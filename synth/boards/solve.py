@@ -3,22 +3,22 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import replace
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from synth import __version__
 from synth.answer import Candidate
 from synth.boards.answer import BoardAnswer, BoardSearch, StageResult
 from synth.boards.bom import Place, alternates_of, lines, merges, placed
 from synth.boards.candidates import Choice, Choices, choices, useful
+from synth.boards.compare import changes, read_bom
 from synth.boards.file import ALLOWANCE, Board, BoardStage
+from synth.boards.judging import judged
 from synth.boards.model import Demand, Selection, choose
-from synth.boards.purchase import Need, Part, distinct
+from synth.boards.purchase import Part, distinct
 from synth.networks import NETWORKS
-from synth.quantities import Spread
 from synth.search import search
-from synth.solve import check
 from synth.spaces import goal_of, spaces_of
 from synth.stage import Stage
 
@@ -42,6 +42,7 @@ def board(
     seconds: float = 60.0,
     workers: int = 1,
     progress: Progress | None = None,
+    against: str | os.PathLike[str] | None = None,
     command: str = "",
 ) -> BoardAnswer:
     """Choose the resistors of many stages together.
@@ -66,6 +67,8 @@ def board(
         Threads of the solver [-].
     progress : callable, optional
         Is told what is being done.
+    against : path, optional
+        BOM of an earlier run, in CSV, to be compared with.
     command : str
         The command that asked, for the record.
 
@@ -80,6 +83,7 @@ def board(
         If the request contradicts itself.
     """
     start = time.perf_counter()
+    old = None if against is None else read_bom(against)
     if isinstance(stages, Board):
         request = stages
     else:
@@ -105,7 +109,18 @@ def board(
     if not selection.chosen:
         return replace(answer, infeasible=_why_not(request, sets, selection.status))
     say("BOM")
-    return _with_bom(answer, sets, kept, selection, candidates)
+    answer, places = _with_bom(answer, sets, kept, selection, candidates)
+    if old is None:
+        return answer
+    say("what changed")
+
+    def kept_as_it_was(stage: int, like: tuple[Choice, ...]) -> Selection:
+        parts = _parts(request, sets)
+        held = [replace(s, kept=like, reached=None) if k == stage else s for k, s in enumerate(kept)]
+        demands = [Demand(choices=s, count=e.count) for s, e in zip(held, request.stages, strict=True)]
+        return choose(demands, parts, most_new=request.most_new, seconds=seconds, workers=workers)
+
+    return replace(answer, changes=changes(old, places, selection, sets, request, kept_as_it_was))
 
 
 def _choices(request: Board, entry: BoardStage, most: int) -> Choices:
@@ -151,47 +166,13 @@ def _settled(
         kept = [useful(s, parts, e.count, pieces) for s, e in zip(sets, request.stages, strict=True)]
         demands = [Demand(choices=s, count=e.count) for s, e in zip(kept, request.stages, strict=True)]
         selection = choose(demands, parts, most_new=most_new, seconds=seconds, workers=workers, progress=say)
-        judged = [_judged(e, choice) for e, choice in zip(request.stages, selection.chosen, strict=False)]
-        failed = [k for k, candidate in enumerate(judged) if candidate.verdict != "pass"]
+        reviewed = [judged(e.stage, choice) for e, choice in zip(request.stages, selection.chosen, strict=False)]
+        failed = [k for k, candidate in enumerate(reviewed) if candidate.verdict != "pass"]
         if not failed:
-            return selection, kept, judged
+            return selection, kept, reviewed
         for k in failed:
             rest = tuple(c for c in sets[k].kept if c is not selection.chosen[k])
             sets[k] = replace(sets[k], kept=rest)
-
-
-def _judged(entry: BoardStage, choice: Choice) -> Candidate:
-    """A candidate as `check` judges it, each resistor in the class that it was chosen in."""
-    values = {role: tuple(dict.fromkeys(choice.space.lists[role].nominal.tolist())) for role in choice.needs}
-    best = check(_fitted(entry.stage, choice.network, choice.resistors, choice.needs, values)).best
-    assert best is not None
-    return best
-
-
-def _fitted(
-    stage: Stage,
-    network: str,
-    resistors: Mapping[str, float],
-    needs: Mapping[str, Need],
-    values: Mapping[str, Sequence[float]],
-) -> Stage:
-    """A stage with resistors fitted, and the values that each could have instead."""
-    roles = NETWORKS[network].role_names
-    tables = [key.split(".") for key in stage.given if key.startswith(("resistors.", "values."))]
-    strange = {".".join(t) for t in tables if (len(t) == 3 and t[1] not in roles) or t[0] == "values"}
-    keys: dict[str, Any] = dict.fromkeys(strange)
-    keys["network"] = network
-    for role, value in resistors.items():
-        keys[f"values.{role}"] = value
-        if role in needs:
-            need = needs[role]
-            keys[f"resistors.{role}.tolerance"] = need.tolerance
-            keys[f"resistors.{role}.tcr"] = Spread(need.tcr_low, (need.tcr_low + need.tcr_high) / 2.0, need.tcr_high)
-            keys[f"resistors.{role}.stock"] = None
-            keys[f"resistors.{role}.values"] = values[role]
-    if needs:
-        keys["resistors.stock"] = None
-    return stage.with_keys(keys)
 
 
 def _why_not(request: Board, sets: Sequence[Choices], status: str) -> tuple[str, ...]:
@@ -217,7 +198,7 @@ def _why_not(request: Board, sets: Sequence[Choices], status: str) -> tuple[str,
 
 def _with_bom(
     answer: BoardAnswer, sets: Sequence[Choices], kept: Sequence[Choices], selection: Selection, candidates: Sequence[Candidate]
-) -> BoardAnswer:
+) -> tuple[BoardAnswer, tuple[Place, ...]]:
     request, chosen = answer.request, selection.chosen
     entries = request.stages
     names = [entry.stage.name for entry in entries]
@@ -246,7 +227,8 @@ def _with_bom(
         )
         for k, entry in enumerate(entries)
     ]
-    return replace(answer, stages=tuple(stages), bom=bom, merges=merges(bom, places, chosen, sets, names))
+    done = replace(answer, stages=tuple(stages), bom=bom, merges=merges(bom, places, chosen, sets, names))
+    return done, places
 
 
 def _numbers(places: Sequence[Place], stage: int, count: int) -> tuple[dict[str, str], ...]:

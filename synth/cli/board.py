@@ -16,10 +16,11 @@ def command(meaning: str) -> click.Command:
     """The command, with what it is for in one sentence."""
 
     def run(
-        board_file: Path, form: str, output: Path | None, report: Path | None, force: bool, most: int, seconds: int, jobs: int
+        board_file: Path, form: str, output: Path | None, report: Path | None, force: bool, most: int, seconds: int,
+        jobs: int, against: Path | None,
     ) -> int:
         from synth.boards import Board, BoardAnswer, board
-        from synth.present.board import render, to_csv, to_markdown
+        from synth.present.board import changes_text, render, to_csv, to_markdown
         from synth.present.files import refuse, write
         from synth.present.page import board_to_html
 
@@ -30,7 +31,13 @@ def command(meaning: str) -> click.Command:
         refuse(files, force)
         request = Board.read(board_file)
         answer = board(
-            request, most=most, seconds=float(seconds), workers=jobs, progress=_progress(), command=command_line()
+            request,
+            most=most,
+            seconds=float(seconds),
+            workers=jobs,
+            against=against,
+            progress=_progress(),
+            command=command_line(),
         )
         makers: dict[str, Callable[[BoardAnswer], str]] = {
             "table": render, "json": BoardAnswer.to_json, "csv": to_csv, "markdown": to_markdown,
@@ -40,6 +47,8 @@ def command(meaning: str) -> click.Command:
         write({option: (path, content[option]()) for option, path in files.items()})
         if output is None:
             click.echo(text, nl=False)
+        if form == "csv" and answer.changes:
+            click.echo(changes_text(answer.changes), err=True, nl=False)
         return FOUND if answer.passed else NOT_FOUND
 
     params: list[click.Parameter] = [
@@ -47,6 +56,8 @@ def command(meaning: str) -> click.Command:
         click.Option(["--format", "form"], type=Choice(FORMATS), default=FORMATS[0],
                      help="Form of the answer; csv is the BOM alone."),
         click.Option(["--output"], type=click.Path(path_type=Path), metavar="FILE", help="Write the answer to a file."),
+        click.Option(["--against"], type=click.Path(path_type=Path), metavar="OLD.csv",
+                     help="List what differs from an earlier BOM in CSV, and why (beside csv on stderr)."),
         report_option(),
         click.Option(["--force"], is_flag=True, help="Allow an existing file to be replaced."),
         click.Option(["--most"], type=Count(1, 100_000), default=5000, show_default=True, metavar="N",

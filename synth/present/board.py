@@ -6,7 +6,7 @@ import csv
 import io
 from collections.abc import Sequence
 
-from synth.boards import BoardAnswer, Line, StageResult
+from synth.boards import BoardAnswer, Change, Line, StageResult
 from synth.explain import percent
 from synth.present.export import escaped, inert
 from synth.present.terminal import table
@@ -52,6 +52,9 @@ def render(answer: BoardAnswer) -> str:
     blocks.append("Why these values\n" + table(reasons, right=(0,)))
     if answer.merges:
         blocks.append("What sharing costs\n" + table([["", merge.text] for merge in answer.merges], indent=""))
+    if answer.changes is not None:
+        changed = table(_change_rows(answer.changes)) if answer.changes else "  nothing"
+        blocks.append(f"Changed against the earlier BOM\n{changed}")
     if answer.assumed:
         blocks.append("Assumed, since not given\n" + table([[key, text] for key, text in answer.assumed]))
     blocks += [LEGEND, "Next: --format csv --output bom.csv writes the BOM for the buyer."]
@@ -134,6 +137,29 @@ def _stress_row(line: Line) -> list[str]:
     ]
 
 
+def _change_rows(changes: Sequence[Change]) -> list[list[str]]:
+    return [
+        [", ".join(change.designators), f"{change.before or 'none'} → {change.after or 'none'}", change.why]
+        for change in changes
+    ]
+
+
+def changes_text(changes: Sequence[Change]) -> str:
+    """What differs from an earlier BOM, a line each.
+
+    Parameters
+    ----------
+    changes : sequence of Change
+        As `synth.board` found them.
+
+    Returns
+    -------
+    str
+        A trailing newline; empty where nothing differs.
+    """
+    return "".join(f"{numbers}: {what}: {why}\n" for numbers, what, why in _change_rows(changes))
+
+
 def to_csv(answer: BoardAnswer) -> str:
     """The BOM for a spreadsheet; when there is none, one row a reason.
 
@@ -188,6 +214,9 @@ def to_markdown(answer: BoardAnswer) -> str:
     parts += ["## Reasons", "\n".join(f"- {escaped(f'{line.value}: {line.rationale}')}" for line in answer.bom)]
     if answer.merges:
         parts += ["## What sharing costs", "\n".join(f"- {escaped(merge.text)}" for merge in answer.merges)]
+    if answer.changes:
+        head = ["resistors", "before → after", "why"]
+        parts += ["## Changed against the earlier BOM", _table([head, *_change_rows(answer.changes)])]
     return "\n\n".join(parts) + "\n"
 
 
