@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Callable, Sequence
+from itertools import groupby
 from typing import NamedTuple
 
 from synth.answer import Answer, Candidate
@@ -120,7 +121,9 @@ def _load_line(c: Candidate, signs: _Signs, width: int, paint: Callable[[str, st
     lines = []
     for y in range(ROWS):
         label = labels[0] if y == 0 else labels[1] if y == ROWS - 1 else ""
-        cells = (paint(how, cell) if how else cell for how, cell in zip(tone[y], field[y], strict=True))
+        runs = groupby(zip(tone[y], field[y], strict=True), key=lambda cell: cell[0])
+        drawn = [(how, "".join(sign for _, sign in run)) for how, run in runs]
+        cells = (paint(how, text) if how else text for how, text in drawn)
         lines.append(f"{label.rjust(margin)} {signs.axis}{''.join(cells).rstrip()}")
     end_label = figure(right, "voltage")
     lines.append(f"{' ' * margin} {signs.corners[2]}{signs.floor * wide}")

@@ -45,7 +45,7 @@ def load_line(ax: Axes, answer: Answer, candidate: Candidate, units: Units | Non
     handles.append(drawn)
     if units is not None:
         vce, ic = units.values["vce"][:CLOUD], units.values["ic"][:CLOUD]
-        label = f"{ic.size} built units, drawn at random"
+        label = f"{ic.size} units as built, Monte Carlo"
         (cloud,) = ax.plot(vce, ic, "x", color=GREEN, markersize=2.0, markeredgewidth=0.5, zorder=3, label=label)
         handles.append(cloud)
     (low_v, high_v), (low_i, high_i) = worst.vce, worst.ic
