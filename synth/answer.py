@@ -316,9 +316,9 @@ class Candidate:
     extremes of IC [A] and VCE [V]; `centring` [-]; `score` is what it is ranked by where that is not its drift [-];
     `supply_current` of the most loaded rail at nominal values [A]; `regions` are those of the deciding points; `rival` is
     the next best network, for the winner among several; `signal` holds least, nominal and greatest value of each
-    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none. `stability` has the factors
-    with VBE held and with VBE following IC, `statistics` is None unless it was asked for; these and what follows `load_line`
-    are of the first alone.
+    small-signal figure [S, ohm, - or V] of the first candidate, empty where there is none. `stability` has the
+    factors with VBE held and with VBE following IC, `statistics` is None unless it was asked for; `corners` has
+    the point of the box of each extreme, as in ``ic low``; these and what follows `load_line` are of the first alone.
     """
 
     rank: int
@@ -351,6 +351,7 @@ class Candidate:
     bench: Bench | None = None
     comparisons: tuple[Comparison, ...] = ()
     statistics: Statistics | None = None
+    corners: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
 
     @property
     def designators(self) -> dict[str, str]:
@@ -737,6 +738,7 @@ def _candidate(c: Candidate) -> dict[str, Any]:
         "bench": None if c.bench is None else _plain(vars(c.bench)),
         "comparisons": [_plain(vars(row)) for row in c.comparisons],
         "statistics": None if c.statistics is None else _statistics(c.statistics),
+        "corners": _plain(c.corners),
     }
 
 

@@ -59,6 +59,7 @@ def reviewed(candidate: Candidate, space: Space, stage: Stage, goal: Goal) -> Ca
         faults=single_faults(box, stage.ratings, space.styles, space.ground),
         bench=bench,
         comparisons=compared(bench, stage.measured),
+        corners=_corners(box, candidate),
         roles={role: replace(candidate.roles[role], record=r) for role, r in _records(candidate, space, stage, goal).items()},
     )
 
@@ -108,6 +109,13 @@ def lives(stage: Stage, candidate: Candidate) -> dict[str, float]:
 def _box(candidate: Candidate, space: Space) -> Box:
     position = [int(np.argmin(np.abs(space.lists[r].nominal - candidate.resistors[r]))) for r in space.roles]
     return space.box(np.array([position], dtype=np.int32), Meter())
+
+
+def _corners(box: Box, candidate: Candidate) -> dict[str, dict[str, float]]:
+    """The point of the box at which each quantity of the Q-point is least and greatest."""
+    law = box.extreme if candidate.regions == ("active",) else partial(extreme_in_any_region, box)
+    ends = ((name, word, side) for name in candidate.worst for word, side in (("low", -1), ("high", 1)))
+    return {f"{name} {word}": {k: float(v[0]) for k, v in law((name,), side).at.items()} for name, word, side in ends}
 
 
 # --- The bench --------------------------------------------------------------------------------------------------------

@@ -53,6 +53,8 @@ ROOMS = (
     "boards",
     "views",
     "batch",
+    "expect",
+    "report",
     "present",
     "cli",
 )

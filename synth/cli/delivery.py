@@ -47,8 +47,21 @@ def _page(answer: Answer) -> str:
     return to_html(answer)
 
 
-REPORTS: dict[str, Callable[[Answer], str]] = {".html": _page}
+def _document(answer: Answer) -> str:
+    from synth.present.document import to_document
+    from synth.report import report
+
+    return to_document(report(answer))
+
+
+REPORTS: dict[str, Callable[[Answer], str]] = {".html": _page, ".md": _document}
 """Who makes a report, by the ending of its file."""
+
+
+def wants_statistics(options: dict[str, Any]) -> bool:
+    """Whether the answer is asked for root-sum-square and Monte Carlo."""
+    report: Path | None = options.get("report")
+    return bool(options["statistics"]) or (report is not None and report.suffix.lower() == ".md")
 
 
 def deliver(answer: Answer, stage: Stage, explain: Sequence[int], options: dict[str, Any]) -> int:

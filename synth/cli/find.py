@@ -8,7 +8,7 @@ from typing import Any
 import click
 
 from synth.cli.batch import batch_options, run_batch
-from synth.cli.delivery import deliver, files, progress, stopper
+from synth.cli.delivery import deliver, files, progress, stopper, wants_statistics
 from synth.cli.options import (
     FORMATS,
     Count,
@@ -19,6 +19,7 @@ from synth.cli.options import (
     picture_options,
     read_stage,
     report_option,
+    statistics_option,
 )
 
 
@@ -63,6 +64,7 @@ def command(meaning: str) -> click.Command:
             top=top,
             metric=metric,
             frontier=frontier or "",
+            statistics=wants_statistics(options),
             advise=advise,
             progress=progress(),
             stop=stopper(budget),
@@ -103,5 +105,6 @@ def command(meaning: str) -> click.Command:
             *output_options(FORMATS),
             report_option(),
             *batch_options(),
+            statistics_option(),
         ],
     )

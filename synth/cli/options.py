@@ -101,8 +101,14 @@ def output_options(formats: Sequence[str]) -> list[click.Parameter]:
 
 def report_option() -> click.Parameter:
     """Option of a command whose answer can be written as a report."""
-    return click.Option(["--report"], type=click.Path(path_type=Path), metavar="FILE.html",
-                        help="Write the answer as a page that needs nothing but itself.")  # fmt: skip
+    return click.Option(["--report"], type=click.Path(path_type=Path), metavar="FILE",
+                        help="Write FILE.html, a page on its own, or FILE.md, the worst-case report.")  # fmt: skip
+
+
+def statistics_option() -> click.Parameter:
+    """Option of a command that can tell more than the worst case."""
+    return click.Option(["--statistics"], is_flag=True,
+                        help="Tell root-sum-square and Monte Carlo beside the worst case; see [distribution].")  # fmt: skip
 
 
 def picture_options() -> list[click.Parameter]:
