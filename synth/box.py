@@ -21,7 +21,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from synth.measures import Setting, measure, power_of, sign
+from synth.measures import UPPER, Setting, measure, power_of, sign
 from synth.networks.form import Array, Branches, Network, QPoint, Sign, common_sign
 from synth.parts import HALVES, Parts
 from synth.q_point import solve, solve_active
@@ -190,6 +190,12 @@ class Box:
         wide = [name for name, spread in self.spreads.items() if spread.high > spread.low]
         return (*wide, *self.parts)
 
+    @cached_property
+    def split(self) -> Parts | None:
+        """The emitter resistor, where it is two parts of which the upper one carries the signal."""
+        re = self.parts.get("re")
+        return re if self.signal.split and re is not None and re.pairs is not None else None
+
     def take(self, index: NDArray[np.integer] | Sequence[int]) -> Box:
         """The same box around some of the candidates.
 
@@ -242,6 +248,11 @@ class Box:
             low, high = part.ends(t)
             # A one-sided temperature coefficient may leave the nominal value outside the band.
             found[role] = np.clip(part.nominal, low, high) if x is None else np.asarray((1.0 - x) * low + x * high)
+        if self.split is not None:
+            x = coordinates.get(UPPER)
+            low, high = self.split.upper(found["re"], t)
+            own = self.split.pairs.halves[0].nominal if self.split.pairs is not None else low
+            found[UPPER] = np.clip(own, low, high) if x is None else np.asarray((1.0 - x) * low + x * high)
         return found
 
     def nominal(self) -> Values:
@@ -252,7 +263,10 @@ class Box:
         dict
             See `Values`.
         """
-        return self.values({}) | {role: part.nominal for role, part in self.parts.items()}
+        found = self.values({}) | {role: part.nominal for role, part in self.parts.items()}
+        if self.split is not None and self.split.pairs is not None:
+            found[UPPER] = self.split.pairs.halves[0].nominal
+        return found
 
     def sources(self, values: Values) -> dict[str, Array]:
         """What drives the network: the rails and the line of the reference element.
@@ -270,6 +284,8 @@ class Box:
         found = {rail: values[rail] for rail in self.rails}
         if self.reference is not None:
             found |= self.reference.line(values["delta_ref"], values["r_ref"], values["temperature"])
+        if self.split is not None:
+            found[UPPER] = values[UPPER]
         return found
 
     def solve(self, values: Values, active_law: bool = False, junction: Array | None = None) -> QPoint:
@@ -495,10 +511,12 @@ class Box:
                 index = np.flatnonzero(other.value > found.value)
                 _overwrite(found, index, other.pick(index))
             return found
+        figures = self.split is not None and any(self.sign((name,), UPPER) is None for name in names)
+        every = (*self.axes, *([UPPER] if figures else []))
         if self.heat is not None:
             # The proofs hold at one temperature of the transistor: with its own heat every axis is searched.
-            return _Climb(self, tuple(names), direction, {}, self.axes, thorough, premise=False).run()
-        known = {axis: self.sign(names, axis) for axis in self.axes}
+            return _Climb(self, tuple(names), direction, {}, every, thorough, premise=False).run()
+        known = {axis: self.sign(names, axis) for axis in every}
         fixed = {axis: 0.5 + 0.5 * direction * s for axis, s in known.items() if s}
         free = tuple(axis for axis, s in known.items() if s is None)
         search = _Climb(self, tuple(names), direction, fixed, free, thorough)
@@ -508,7 +526,7 @@ class Box:
             search.doubtful |= self.extreme((f"i_{role}",), -1, thorough=False).value < 0.0
         if search.doubtful.any():
             index = np.flatnonzero(search.doubtful)
-            again = _Climb(self.take(index), tuple(names), direction, {}, self.axes, thorough, premise=False)
+            again = _Climb(self.take(index), tuple(names), direction, {}, every, thorough, premise=False)
             _overwrite(found, index, again.run())
         return found
 

@@ -15,7 +15,7 @@ import numpy as np
 
 from synth.answer import Compared, Duty, Neighbour, Nominal, Pair, Share
 from synth.box import Box, Meter, Values
-from synth.measures import ground_voltage
+from synth.measures import UPPER, ground_voltage
 from synth.networks.form import Array, Network
 from synth.parts import Parts
 from synth.preferred.pairs import JOINS, SERIES
@@ -368,7 +368,8 @@ def point_words(at: Mapping[str, float], skip: Sequence[str] = ()) -> str:
     """
     words = []
     for name, value in at.items():
-        if name in skip:
+        # Told of resistors as little as their own values.
+        if name in skip or (name == UPPER and skip):
             continue
         if name == "temperature":
             words.append(format_quantity(value, "temperature"))
@@ -385,6 +386,8 @@ def point_words(at: Mapping[str, float], skip: Sequence[str] = ()) -> str:
                 words.append(f"reference {'+' if value > 0 else '-'}{format_quantity(abs(value), 'voltage')}")
         elif name == "r_ref":
             words.append(f"reference slope {format_quantity(value, 'resistance')}")
+        elif name == UPPER:
+            words.append(f"upper part of RE {format_quantity(value, 'resistance')}")
         elif name.startswith("v"):
             words.append(f"{name.upper()} {format_quantity(value, 'voltage')}")
         else:

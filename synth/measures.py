@@ -24,6 +24,8 @@ POWER_OF_TRANSISTOR = "p_q"
 PARAMETERS_OF_SIGNAL = ("gm", "r_pi", "r_intrinsic")
 BYPASS = "bypass_resistance"
 """Resistance that the bypass capacitor of re sees; only where there is one."""
+UPPER = "upper_re"
+"""Upper part of a re in two parts: a parameter that only small-signal figures depend on [ohm]."""
 PARAMETERS_OF_DEVICE = ("delta", "hfe", "icbo", "va", "delta_ref", "r_ref")
 
 
@@ -142,6 +144,7 @@ def small_signal(
         vce_sat=setting.transistor.vce_sat,
         signal=setting.signal,
         r_ref=sources.get("r_ref"),
+        upper=sources.get(UPPER),
     )
 
 
@@ -233,6 +236,8 @@ def sign(name: str, axis: str, setting: Setting) -> Sign:
     A resistor's current is positive where the signs of its network hold. u = R·i and p = R·i² follow it along every axis
     but their own; along their own they rise where the current does not depend on it.
     """
+    if axis == UPPER:
+        return None if is_figure(name) or name == BYPASS else 0
     if setting.transistor.va is None or name == "span":
         return _sign(name, axis, setting)
     network = setting.network

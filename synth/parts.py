@@ -198,6 +198,25 @@ class Parts:
         power = np.where(join == SINGLE, alone, np.where(join == SERIES, in_series, in_parallel))
         return power, np.where(join == SINGLE, alone, np.where(join == SERIES, in_series, 1.0))
 
+    def upper(self, ohms: Array, temperature: Array) -> tuple[Array, Array]:
+        """Least and greatest first part of a series pair at a given total.
+
+        Parameters
+        ----------
+        ohms : ndarray
+            Resistance of the role, within its ends [ohm], broadcast against (n,).
+        temperature : ndarray
+            Ambient temperature [K], broadcast.
+
+        Returns
+        -------
+        low, high : ndarray
+            What its own band allows, less what the other part cannot make up [ohm].
+        """
+        assert self.pairs is not None
+        one, two = (half.ends(temperature) for half in self.pairs.halves)
+        return np.maximum(one[0], ohms - two[1]), np.minimum(one[1], ohms - two[0])
+
     def take(self, index: NDArray[np.integer] | Sequence[int]) -> Parts:
         """The parts of some candidates.
 

@@ -64,6 +64,8 @@ class Signal:
     unbypassed : float, optional
         With "part": the upper part of re, towards the emitter, that carries the signal [ohm]. Where the whole re is not
         larger, nothing is left to bypass and all of it carries the signal.
+    split : bool
+        With "part": re is two resistors of its own, whose upper one carries the signal, and both are to be chosen.
     load : float, optional
         Load resistance at the output [ohm]; None for an open output.
     source : float
@@ -79,13 +81,14 @@ class Signal:
 
     bypass: Bypass = "full"
     unbypassed: float | None = None
+    split: bool = False
     load: float | None = None
     source: float = 0.0
     capacitor: float | None = None
 
     def __post_init__(self) -> None:
         _known("signal.bypass", self.bypass, BYPASSES)
-        if self.bypass == "part" and self.unbypassed is None:
+        if self.bypass == "part" and self.unbypassed is None and not self.split:
             raise SignalError("signal.unbypassed: not given, with bypass = 'part' a resistance above 0 is needed")
         if self.bypass != "part" and self.unbypassed is not None:
             raise SignalError(
@@ -305,6 +308,8 @@ class SmallSignal:
         Bypass, load and source.
     r_ref : array_like, optional
         Slope resistance of the reference element [ohm], where the network has one; broadcast.
+    upper : array_like, optional
+        Upper part of re at this very point, in place of `signal.unbypassed` [ohm]; broadcast.
 
     Raises
     ------
@@ -327,6 +332,7 @@ class SmallSignal:
     vce_sat: Array | float = 0.0
     signal: Signal = Signal()
     r_ref: Array | float | None = None
+    upper: Array | float | None = None
 
     def __post_init__(self) -> None:
         # A circuit without a signal is refused here, not when the first figure is asked for.
@@ -366,8 +372,9 @@ class SmallSignal:
     def _resistance(self, role: str) -> Array:
         """What the signal meets in a role."""
         whole = np.asarray(self.r[role], dtype=float)
-        if role == "re" and self._wiring.bypassed and self.signal.unbypassed is not None:
-            return np.asarray(np.minimum(whole, self.signal.unbypassed))
+        upper = self.signal.unbypassed if self.upper is None else self.upper
+        if role == "re" and self._wiring.bypassed and upper is not None:
+            return np.asarray(np.minimum(whole, upper))
         return whole
 
     def _build(self, load: float | None, skip: str = "") -> _Circuit[NDArray[np.float64]]:
@@ -490,7 +497,7 @@ class SmallSignal:
             return None
         whole = np.asarray(self.r["re"], dtype=float)
         upper = np.asarray(0.0) if self.signal.unbypassed is None else self._resistance("re")
-        without = replace(self, signal=replace(self.signal, bypass="none", unbypassed=None))
+        without = replace(self, signal=replace(self.signal, bypass="none", unbypassed=None, split=False), upper=None)
         circuit = without._fed(without._build(self.signal.load, skip="re"))
         # Without current the emitter shows nothing, and a lower part of no resistance is a short.
         with np.errstate(divide="ignore"):

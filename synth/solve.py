@@ -265,7 +265,10 @@ def record_of(outcome: Outcome, metric: str) -> Search:
 
 
 def _is_of(candidate: Candidate, space: Space) -> bool:
-    return candidate.network == space.network.name and set(candidate.resistors) == set(space.roles)
+    if candidate.network != space.network.name or set(candidate.resistors) != set(space.roles):
+        return False
+    # Of a re in two parts every upper part has a space of its own.
+    return not space.signal.split or candidate.parts["re"].ohms[0] == space.signal.unbypassed
 
 
 def _index(space: Space, candidate: Candidate) -> Index:

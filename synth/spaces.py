@@ -13,13 +13,14 @@ from numpy.typing import NDArray
 from synth.answer import Pair
 from synth.box import Box, Extreme, Meter, Values
 from synth.catalogue import Derating, ResistorStyle, derating, resistor_style
+from synth.choices import choices, fitted_in, list_of, made_up, prices_of, split_pairs
 from synth.limits import Requirement, Surroundings, judge, requirements
 from synth.measures import POWER_OF_TRANSISTOR, is_figure
 from synth.networks import NETWORKS
 from synth.networks.form import Array, Network
-from synth.parts import Pairs, Parts
-from synth.preferred import JOINS, ValueList, pair_up
-from synth.preferred.pairs import SINGLE
+from synth.parts import Parts
+from synth.preferred import JOINS
+from synth.preferred.pairs import SERIES, SINGLE
 from synth.quantities import Interval, Spread
 from synth.reference import Reference
 from synth.rss import root_sum_square
@@ -316,11 +317,12 @@ def spaces_of(stage: Stage, without: Collection[str] = ()) -> list[Space]:
         In the order of the stage's networks.
     """
     known: dict[RoleSetting, Parts] = {}
-    return [
-        _space(stage, network, roles, {role: _list_of(stage, role, known) for role in roles}, without)
+    whole = [
+        _space(stage, network, roles, {role: list_of(stage, role, known) for role in roles}, without)
         for network in stage.networks
         for roles in stage.roles_used(network)
     ]
+    return [space for every in whole for space in _split(stage, every)]
 
 
 def fitted(stage: Stage) -> Space:
@@ -360,23 +362,15 @@ def fitted(stage: Stage) -> Space:
             f"a value for each role of {wanted_roles}",
         )
     roles = tuple(role for role in NETWORKS[matching[0]].role_names if role in names)
-    return _space(stage, matching[0], roles, {role: _fitted(stage, role) for role in roles}, ())
-
-
-def _fitted(stage: Stage, role: str) -> Parts:
-    """The resistor or the pair of resistors fitted in a role."""
-    join, ohms = stage.fitted_pairs.get(role, (SINGLE, (stage.values[role],)))
-    return _made(stage, role, join, ohms)
-
-
-def _made(stage: Stage, role: str, join: int, ohms: Sequence[float]) -> Parts:
-    """A resistor or a pair of them in a role."""
-    base = _parts(stage, role, ohms)
-    # What was measured is the role as a whole.
-    if join == SINGLE or role in stage.measured:
-        return base
-    first, second = (np.array([base.position(ohm)], dtype=np.int32) for ohm in ohms)
-    return Parts.of_pairs(Pairs(base=base, join=np.array([join], dtype=np.int8), first=first, second=second))
+    space = _space(stage, matching[0], roles, {role: fitted_in(stage, role) for role in roles}, ())
+    if not stage.signal.split or "re" not in roles or "c" in space.network.tied:
+        return space
+    pairs = space.lists["re"].pairs
+    if pairs is None or pairs.join[0] != SERIES:
+        accepted = "its two parts, the upper one first, such as '100 ohm + 1k5', or signal.unbypassed"
+        reason = "which is one part, but signal.bypass is part"
+        raise StageError("values.re", stage.given.get("values.re"), reason, accepted)
+    return replace(space, signal=replace(stage.signal, unbypassed=float(pairs.halves[0].nominal[0])))
 
 
 def space_of(stage: Stage, network: str, resistors: Mapping[str, float], pairs: Mapping[str, Pair]) -> Space:
@@ -402,7 +396,7 @@ def space_of(stage: Stage, network: str, resistors: Mapping[str, float], pairs: 
     for role in (role for role in NETWORKS[network].role_names if role in resistors):
         pair = pairs.get(role)
         join, ohms = (SINGLE, (resistors[role],)) if pair is None else (JOINS.index(pair.join), pair.ohms)
-        lists[role] = _made(stage, role, join, ohms)
+        lists[role] = made_up(stage, role, join, ohms)
     return _space(stage, network, tuple(lists), lists, ())
 
 
@@ -425,12 +419,26 @@ def among_values(stage: Stage, space: Space) -> tuple[Space, Index]:
     """
     lists, index = {}, []
     for role in space.roles:
-        both = space.lists[role].joined(_choices(stage, role))
+        own = space.lists[role]
+        # The lower part of a re in two parts has no neighbours of its own.
+        both = own if space.signal.split and role == "re" else own.joined(choices(stage, role))
         # Of equal values the fitted one comes first and stays.
         _, first = np.unique(both.nominal, return_index=True)
         lists[role] = both.take(first)
         index.append(int(np.flatnonzero(first == 0)[0]))
     return replace(space, lists=lists), np.array([index], dtype=np.int32)
+
+
+def _split(stage: Stage, space: Space) -> list[Space]:
+    """A space for each upper part of a re in two parts, of which it carries the signal."""
+    if not stage.signal.split:
+        return [space]
+    if "re" not in space.roles or "c" in space.network.tied:
+        return [replace(space, signal=replace(stage.signal, bypass="full", split=False))]
+    return [
+        replace(space, lists={**space.lists, "re": re}, signal=replace(stage.signal, unbypassed=upper))
+        for upper, re in split_pairs(stage)
+    ]
 
 
 def _space(
@@ -449,7 +457,7 @@ def _space(
         vce_sat=stage.transistor.vce_sat,
         hot=stage.temperature.high,
         styles=styles,
-        paired={role for role in roles if lists[role].paired},
+        paired={role for role in roles if lists[role].paired or (role == "re" and stage.signal.split)},
         ratings=stage.ratings,
         derating=stage.derating,
         signal=stage.signal,
@@ -466,84 +474,9 @@ def _space(
         styles=styles,
         derating=stage.derating,
         requirements=tuple(need for need in needs if need.limit not in without),
-        prices=_prices(stage, lists),
+        prices=prices_of(stage, lists),
         ground="common" if "vee" in stage.rails and stage.ground == "middle" else stage.ground,
     )
-
-
-def values_of(stage: Stage, role: str) -> Parts:
-    """Everything that a role may be, pairs included where the stage allows any.
-
-    Parameters
-    ----------
-    stage : Stage
-        The request.
-    role : str
-        A role of one of its networks.
-
-    Returns
-    -------
-    Parts
-        Ascending, each with its band.
-    """
-    return _list_of(stage, role, {})
-
-
-def _list_of(stage: Stage, role: str, known: dict[RoleSetting, Parts]) -> Parts:
-    """Everything that a role may be; roles that may be the same share one list."""
-    setting = replace(stage.role(role), use="yes")
-    if setting not in known:
-        known[setting] = _choices(stage, role)
-    return known[setting]
-
-
-def _choices(stage: Stage, role: str) -> Parts:
-    """Single values of a role, and pairs of them where the stage allows any."""
-    setting, single = stage.role(role), _parts(stage, role)
-    if setting.pairs == "no" or role in stage.measured:
-        return single
-    joins = frozenset(JOINS[1:]) if setting.pairs == "yes" else frozenset({setting.pairs})
-    # The range binds the totals as it does the parts, but not values named one by one.
-    low, high = (0.0, math.inf) if setting.values else (setting.range.low, setting.range.high)
-    rated = setting.style is not None
-    return Parts.of_list(pair_up(stage.value_list(role), joins, low, high, rated=rated, on_board=stage.on_board), single)
-
-
-def _prices(stage: Stage, lists: Mapping[str, Parts]) -> dict[str, Array]:
-    """Price of each value of every role, if the stock lists give them all."""
-    found = {}
-    for role, part in lists.items():
-        each = stage.value_list(role).prices if stage.role(role).stock is not None else None
-        if each is None or None in each:
-            return {}
-        row = np.array(each, dtype=float)
-        if part.pairs is not None:
-            row = row[part.pairs.first] + np.where(part.pairs.join == SINGLE, 0.0, row[part.pairs.second])
-        if row.size != part.nominal.size:
-            # Values fitted by the user need not lie in the drawer.
-            return {}
-        found[role] = row
-    return found
-
-
-def _parts(stage: Stage, role: str, values: Sequence[float] = ()) -> Parts:
-    measured = stage.measured.get(role)
-    setting, found = stage.role(role), stage.value_list(role, values if measured is None else (measured.nominal,))
-    # A stock list states a symmetric coefficient for each row; a setting may be one-sided.
-    own = setting.stock is not None
-    return Parts(
-        nominal=found.values,
-        band=_tolerance(found, measured) + found.life,
-        tcr_low=-found.tcr if own else np.full(len(found), setting.tcr.low),
-        tcr_high=found.tcr if own else np.full(len(found), setting.tcr.high),
-    )
-
-
-def _tolerance(found: ValueList, measured: Spread | None) -> Array:
-    """Tolerance of each value, or the uncertainty of a measured one [-]; the larger side counts for both."""
-    if measured is None:
-        return np.maximum(found.tolerance_low, found.tolerance_high)
-    return np.full(len(found), max(measured.high / measured.nominal - 1.0, 1.0 - measured.low / measured.nominal))
 
 
 def assess(

@@ -404,6 +404,9 @@ class Stage:
 
     def _can_be_given(self, assumption: Assumption) -> bool:
         """Whether the stage stays the same once the assumed text is given."""
+        if assumption.key == "signal.unbypassed":
+            # A range that is chosen from is no value.
+            return False
         if assumption.why.startswith("rating "):
             # Given, the power would hold at 25 °C ambient whatever the type says.
             return False

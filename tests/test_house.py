@@ -37,6 +37,7 @@ ROOMS = (
     "faults",
     "stage",
     "answer",
+    "choices",
     "spaces",
     "search",
     "ranking",

@@ -153,7 +153,7 @@ def _r_intrinsic_gain(seen: Seen) -> Iterator[str]:
     if not asked or figures is None or "c" in network.tied or not network.takes_signal:
         return
     whole = seen.candidate.resistors.get("re", 0.0)
-    unbypassed = {"full": 0.0, "none": whole, "part": min(stage.signal.unbypassed or 0.0, whole)}[stage.signal.bypass]
+    unbypassed = {"full": 0.0, "none": whole, "part": min(seen.space.signal.unbypassed or 0.0, whole)}[stage.signal.bypass]
     if unbypassed < figures[1]:
         ends = " to ".join(format_quantity(figures[k], "resistance") for k in (0, 2))
         own = "none of re" if unbypassed == 0.0 else f"{format_quantity(unbypassed, 'resistance')} of re"
@@ -168,7 +168,7 @@ def _bypass_capacitor(seen: Seen) -> Iterator[str]:
     if sized is None or corner is None or ohms is None:
         return
     # Of a re in two parts the capacitor lies across the lower one.
-    lower = ohms - (seen.stage.signal.unbypassed or 0.0)
+    lower = ohms - (seen.space.signal.unbypassed or 0.0)
     alone = 1.0 / (2.0 * pi * corner * lower) if lower > 0.0 else 0.0
     if sized[2] > CAPACITOR_RATIO * alone:
         need, small = (format_quantity(c, "capacitance") for c in (sized[2], alone))

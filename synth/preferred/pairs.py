@@ -69,7 +69,7 @@ def resistance(join: NDArray[np.int8], first: FloatArray, second: FloatArray) ->
     return np.where(join == SINGLE, first, np.where(join == SERIES, whole, first * second / whole))
 
 
-def read_parts(text: str, field: str) -> tuple[int, tuple[float, ...]]:
+def read_parts(text: str, field: str, *, as_written: bool = False) -> tuple[int, tuple[float, ...]]:
     """One resistance, or the two parts of a pair.
 
     Parameters
@@ -78,6 +78,8 @@ def read_parts(text: str, field: str) -> tuple[int, tuple[float, ...]]:
         ``34k5``, ``33k + 1k5`` for a series pair, ``10k || 22k`` for a parallel one.
     field : str
         Name of the field, for messages.
+    as_written : bool
+        Whether the parts stay in their order; no unit matters.
 
     Returns
     -------
@@ -104,7 +106,7 @@ def read_parts(text: str, field: str) -> tuple[int, tuple[float, ...]]:
             f"{field}: read {quoted(text)}, accepted is one resistance, or two above 0 ohm such as '33k + 1k5' or '10k || 22k'"
         )
     join = PARALLEL if sign == "||" else SERIES
-    return join, tuple(sorted(ohms, reverse=join == SERIES))
+    return join, tuple(ohms if as_written else sorted(ohms, reverse=join == SERIES))
 
 
 def total(join: int, ohms: tuple[float, ...]) -> float:

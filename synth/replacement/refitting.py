@@ -11,6 +11,7 @@ import numpy as np
 
 from synth import __version__
 from synth.answer import Answer, Candidate, Caution, NetworkResult, Search
+from synth.choices import values_of
 from synth.explain import percent
 from synth.parts import Parts
 from synth.quantities import format_resistance
@@ -19,7 +20,7 @@ from synth.replacement.changes import Level, Progress, joined, levels, single_ch
 from synth.replacement.conflict import why_no_change_will_do
 from synth.replacement.sides import compare, device, not_verified, sides, swap_cautions
 from synth.solve import assumed_of, candidates_of, check, not_applicable, record_of
-from synth.spaces import Goal, Space, fitted, goal_of, values_of
+from synth.spaces import Goal, Space, fitted, goal_of
 from synth.stage import Stage, StageError
 from synth.stage_keys import Given, nearest
 

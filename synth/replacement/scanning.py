@@ -15,11 +15,12 @@ import numpy as np
 from synth import catalogue
 from synth.answer import Caution
 from synth.box import Meter
+from synth.choices import values_of
 from synth.quantities import RestpointError, parse
 from synth.replacement.answer import Device
 from synth.replacement.changes import other_values
 from synth.replacement.sides import device, sides, swap_cautions
-from synth.spaces import Goal, Space, assess, assess_all, fitted, goal_of, values_of
+from synth.spaces import Goal, Space, assess, assess_all, fitted, goal_of
 from synth.stage import Stage, StageError
 from synth.stage_keys import KEYS, Given, nearest
 

@@ -34,7 +34,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from synth.box import Meter, Values
-from synth.measures import POWER_OF_TRANSISTOR, is_figure, parts_of_current, small_signal
+from synth.measures import POWER_OF_TRANSISTOR, UPPER, is_figure, parts_of_current, small_signal
 from synth.measures import sign as quantity_sign
 from synth.networks.form import Array, QPoint
 from synth.signal import own_signs
@@ -70,6 +70,12 @@ class Corners:
         self.device = {
             k: v for k, v in space.box(one, Meter()).values(scalar).items() if k not in self.roles
         }
+        re = space.lists.get("re")
+        if space.signal.split and re is not None and re.pairs is not None:
+            # One upper part for the whole space; where re sits at a share of its band, so does this, or they would not add up.
+            x, upper = point.get("re"), re.pairs.halves[0].take([0])
+            low, high = upper.ends(self.t)
+            self.device[UPPER] = np.asarray(upper.nominal[0] if x is None else (1.0 - x) * low[0] + x * high[0])
         self.hfe = self.device["hfe"] * space.transistor.gain_factor(self.t)
         self.va = self.device.pop("va", None)
         self.rows = space.transistor.hfe_rows

@@ -311,7 +311,8 @@ def _signal() -> Iterable[Key]:
     )  # fmt: skip
     yield Key(
         path="signal.unbypassed", form="quantity", kind="resistance", example="100 ohm",
-        meaning="With bypass part: the upper part of re, which carries the signal.", otherwise="none",
+        meaning="With bypass part: the upper part of re, which carries the signal.",
+        otherwise="with a limit on gain both parts of re are chosen, else none",
     )  # fmt: skip
     yield Key(
         path="signal.load", form="quantity", kind="resistance", example="10 kohm",

@@ -28,7 +28,7 @@ from synth.stage_resolve.resistors import (
     read_stock,
     rival,
 )
-from synth.stage_resolve.signal import read_corner, read_signal
+from synth.stage_resolve.signal import note_upper, read_corner, read_signal
 from synth.stage_resolve.transistor import check_junction, read_policy, read_ratings, read_replacement, read_transistor
 from synth.stage_resolve.wanted import read_networks, read_rails, read_targets, read_temperature
 from synth.stress import TransistorRatings
@@ -78,6 +78,9 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
     roles = read_roles(request, networks, any_network, temperature)
     check_drops(request, networks, ic, voltages, rails, roles)
     ratings = read_ratings(request)
+    signal = read_signal(request)
+    if signal.split:
+        note_upper(request, current, rails)
     has_styles = any(setting.style for setting in roles.values())
     return {
         "name": request.value("name") or "stage",
@@ -91,12 +94,12 @@ def resolve(given: Mapping[str, str], folder: Path) -> dict[str, Any]:
         "reference": reference,
         "ratings": ratings,
         "derating": read_policy(request, has_styles or ratings != TransistorRatings()),
-        "signal": read_signal(request),
+        "signal": signal,
         "corner": read_corner(request),
         "temperature": temperature,
         "limits": MappingProxyType(read_limits(request, current, transistor, reference, load_rail, has_styles, ratings)),
         "values": MappingProxyType(read_fitted(request) | {r: s.nominal for r, s in measured.items() if r in ROLES}),
-        "fitted_pairs": MappingProxyType(read_fitted_pairs(request)),
+        "fitted_pairs": MappingProxyType(read_fitted_pairs(request, signal.split)),
         "lot": read_lot(request, rails, transistor, reference, roles, temperature),
         "measured": MappingProxyType(measured),
         "replacement": MappingProxyType(read_replacement(request)),

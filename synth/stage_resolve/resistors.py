@@ -214,10 +214,10 @@ def read_fitted(request: Request) -> dict[str, float]:
     return values
 
 
-def read_fitted_pairs(request: Request) -> dict[str, tuple[int, tuple[float, ...]]]:
-    """The pairs among them: how they are joined, and their parts [ohm]."""
+def read_fitted_pairs(request: Request, split: bool) -> dict[str, tuple[int, tuple[float, ...]]]:
+    """The pairs among them: how they are joined, and their parts [ohm]; those of a split re with the upper one first."""
     paths = {role: f"values.{role}" for role in ROLES if f"values.{role}" in request.given}
-    found = {role: read_parts(request.given[path], path) for role, path in paths.items()}
+    found = {role: read_parts(request.given[path], path, as_written=split and role == "re") for role, path in paths.items()}
     return {role: made for role, made in found.items() if len(made[1]) > 1}
 
 
