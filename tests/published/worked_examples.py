@@ -24,6 +24,7 @@ from synth.networks import NETWORKS
 from synth.parts import Parts
 from synth.q_point import SATURATED, solve
 from synth.quantities import Spread
+from synth.statistics import factors, gain_change
 from synth.transistor import T0, Transistor
 
 SIX_DIGITS = 5.1e-6
@@ -301,24 +302,37 @@ def drift_over_temperature(row: Row) -> Answers:
     return {f"dIC_mA_{k}": (found[k] - found["25C"]) / 1e-3 for k in ("175C", "-65C")}
 
 
-# The stability examples give ratios only: re = 1 kohm and the rails are invented, the ratios do not depend on them.
+# The stability examples give ratios only: re = 1 kohm and the rails are invented, the ratios do not depend on them. Factors come
+# from the closed forms, changes of IC from the solver.
+def stability_of(network: str, hfe: float, ic: float = 1e-3, **r: float) -> tuple[float, float]:
+    """dIC/dICO and dIC/dVBE with VBE held."""
+    port = NETWORKS[network].two_port({"vcc": 20.0}, r, T0)
+    ico, vbe, _ = factors(port, hfe=hfe, ic=ic)
+    return float(ico), float(vbe)
+
+
 def leakage_stability(row: Row) -> Answers:
     answers: Answers = {}
     for ratio in ("250", "10", "0.01"):
-        one, two = (
-            stage("fixed_base", vcc=30.0, vbb=6.0, hfe=50.0, icbo=i0, rb=float(ratio) * 1e3, re=1e3, rc=1e3)["IC"]
-            for i0 in (0.1e-9, 20e-9)
-        )
-        answers[f"S_ICO_{ratio}"] = (two - one) / (20e-9 - 0.1e-9)
+        r = {"rb": float(ratio) * 1e3, "re": 1e3, "rc": 1e3}
+        one, two = (stage("fixed_base", vcc=30.0, vbb=6.0, hfe=50.0, icbo=i0, **r)["IC"] for i0 in (0.1e-9, 20e-9))
+        answers[f"S_ICO_{ratio}"] = stability_of("fixed_base", 50.0, **r)[0]
         answers[f"dIC_uA_{ratio}"] = (two - one) / 1e-6
     return answers
+
+
+def leakage_stability_of(network: str) -> Example:
+    return lambda row: {
+        "S_ICO": stability_of(network, float(row.given["hFE"]), rb=ohms(row, "RB"), rc=ohms(row, "RC"))[0]
+    }
 
 
 def vbe_stability(row: Row) -> Answers:
     answers: Answers = {}
     for name, r in (("fixed", {}), ("emitter", {"re": 1e3})):
-        one, two = (stage("fixed_base", vcc=20.0, vbe=v, hfe=100.0, rb=240e3, rc=1e3, **r)["IC"] for v in (0.65, 0.48))
-        answers[f"S_VBE_{name}_A_per_V"] = (two - one) / (0.48 - 0.65)
+        every = {"rb": 240e3, "rc": 1e3, **r}
+        one, two = (stage("fixed_base", vcc=20.0, vbe=v, hfe=100.0, **every)["IC"] for v in (0.65, 0.48))
+        answers[f"S_VBE_{name}_A_per_V"] = stability_of("fixed_base", 100.0, **every)[1]
         answers[f"dIC_uA_{name}"] = (two - one) / 1e-6
     return answers
 
@@ -328,7 +342,9 @@ def gain_stability(row: Row) -> Answers:
     # VBB by hand for IC = 2 mA at hFE 50: VBE + rb*IB + re*(IB + IC).
     vbb = 0.7 + rb * 40e-6 + 1e3 * 2.04e-3
     one, two = (stage("fixed_base", vcc=30.0, vbb=vbb, hfe=h, rb=rb, re=1e3, rc=1e3)["IC"] for h in (50.0, 80.0))
-    answers = {"S_beta_A": (two - one) / 30.0, "dIC_mA": (two - one) / 1e-3, "IC_mA_100C": two / 1e-3}
+    port = NETWORKS["fixed_base"].two_port({"vcc": 30.0, "vbb": vbb}, {"rb": rb, "re": 1e3, "rc": 1e3}, T0)
+    factor = float(gain_change(port, before=50.0, after=80.0, ic=2e-3))
+    answers = {"S_beta_A": factor, "dIC_mA": (two - one) / 1e-3, "IC_mA_100C": two / 1e-3}
     return {key: answers[key] for key in row.printed}
 
 
@@ -500,6 +516,7 @@ EXAMPLES: dict[str, dict[str, Example]] = {
         "EDCT-S3": gain_stability,
         "EDC1-5.11": gain_stability,
         "EDC-5.19": vbe_drift,
+        "EDC-5.17a": leakage_stability_of("fixed_base"),
     },
     "collector_feedback": {
         "ED-5.8": plain("collector_feedback", "rb=RB rc=RC"),
@@ -508,6 +525,7 @@ EXAMPLES: dict[str, dict[str, Example]] = {
         "EDCT-5.9": intrinsic_feedback,
         "EDC-5.5": plain("collector_feedback", "rb=RB rc=RC"),
         "EDC-5.12": feedback_resistor,
+        "EDC-5.17b": leakage_stability_of("collector_feedback"),
     },
     "two_supply": {
         "ED-5.7": two_supplies_warm_and_cold,
