@@ -259,3 +259,19 @@ def test_difference_beyond_rounding_is_a_change() -> None:
     found = changes(kept, answer)
     assert [line.partition(":")[0] for line in found] == ["candidates[0].nominal.ic", "candidates[0].limits", "gone"]
     assert_allclose(float(found[0].rpartition(" ")[2]), ic, rtol=1e-11, atol=0)
+
+
+def test_three_methods_stand_side_by_side_in_the_terminal(run: Run) -> None:
+    code, out, _ = run(*CHECK, "--statistics", "--units", "512", "--seed", "0", "--ic", "1.9 : 2 : 2.1 mA")
+    assert code == 1
+    lines = out.splitlines()
+    start = lines.index("Three methods")
+    assert lines[start + 1].split() == ["method", "IC", "VCE", "its", "question"]
+    assert [line.split("  ")[1] for line in lines[start + 2 : start + 5]] == [
+        "extreme value", "root-sum-square, 3 sigma", "Monte Carlo, 99.73 %",
+    ]  # fmt: skip
+    assert lines[start + 5].startswith("  512 units on Sobol points, seed 0: 512 active")
+    assert "(Clopper-Pearson)" in lines[start + 6]
+    assert lines[start + 7].startswith("  by limit: target.ic ")
+    assert max(map(len, lines)) <= 100
+    assert "Three methods" not in run(*CHECK)[1]

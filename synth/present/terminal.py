@@ -7,6 +7,7 @@ from math import inf
 
 from synth.answer import Answer, Candidate, Outlook, Tradeoff, Verdict
 from synth.explain import cause_words, made_of, percent, point_words
+from synth.present.methods import three_methods
 from synth.quantities import format_quantity, format_resistance
 from synth.search import AXES
 from synth.stage_keys import KEYS
@@ -46,6 +47,7 @@ def render(answer: Answer) -> str:
         if answer.kind == "find":
             blocks.append(_ranking(answer.candidates))
         blocks += [_first(answer, best), _causes(best), limits_table(best), _stress(answer, best), _signal(answer, best)]
+        blocks.append(_methods(best))
     if answer.alternatives:
         blocks.append(
             section(
@@ -477,6 +479,11 @@ def ends_words(low: float, high: float, kind: str) -> str:
         ``2.55 V or more``, else as `span`.
     """
     return f"{figure(low, kind)} or more" if high != high else span(low, high, kind)
+
+
+def _methods(c: Candidate) -> str:
+    rows, lines = three_methods(c, span)
+    return "\n".join([section("Three methods", rows), *lines]) if rows else ""
 
 
 def _signal(answer: Answer, c: Candidate) -> str:
