@@ -58,6 +58,7 @@ def find(
     advise: bool = False,
     progress: Progress | None = None,
     stop: Stop | None = None,
+    jobs: int = 1,
     keep: Callable[[Iterable[str]], object] | None = None,
     command: str = "",
 ) -> Answer:
@@ -79,6 +80,8 @@ def find(
         Whether to search for what would make the best answer better or cheaper, which takes some seconds.
     progress, stop : callable, optional
         See `synth.search.search`.
+    jobs : int
+        Threads that search; the answer is the same whatever their number [-].
     keep : callable, optional
         Takes the lines of a certificate, once the search is complete; see `synth.search.certificate`.
     command : str
@@ -103,12 +106,12 @@ def find(
     axes = read_axes(frontier, spaces) if frontier else ()
     if keep is not None:
         refuse(spaces, goal)
-    outcome = search(spaces, goal, top=top, progress=progress, stop=stop)
+    outcome = search(spaces, goal, top=top, progress=progress, stop=stop, jobs=jobs)
     if keep is not None and outcome.complete:
         keep(certificate(spaces, goal, outcome, top))
     candidates = candidates_of(outcome, goal, top, stage)
     best_of = _best_of_each(spaces, goal, candidates, outcome, progress, stop)
-    front = tradeoff(find_frontier(spaces, goal, axes, progress=progress, stop=stop), axes) if axes else None
+    front = tradeoff(find_frontier(spaces, goal, axes, progress=progress, stop=stop, jobs=jobs), axes) if axes else None
     rivals = [n for n in best_of if candidates and n.best is not None and n.network != candidates[0].network]
     if rivals:
         candidates = (_before_rival(candidates[0], rivals[0]), *candidates[1:])

@@ -134,7 +134,6 @@ def test_a_file_that_is_not_there_is_refused(tmp_path: Path) -> None:
     [
         (["--batch", "rows.csv", "--format", "json"], "--batch: goes with --format csv"),
         (["--batch", "rows.csv", "--advise"], "--advise: goes with a single stage"),
-        (["--jobs", "2"], "--jobs: goes with --batch"),
         (["--scheduler", "tcp://127.0.0.1:1"], "--scheduler: goes with --batch"),
     ],
 )

@@ -239,6 +239,12 @@ def test_what_cannot_be_certified_is_refused() -> None:
     verify(certificate(spaces, goal, search(spaces, goal), 10))
 
 
+def test_a_gain_that_moves_is_not_certified() -> None:
+    stage = Stage(supply="12 V", ic="2 mA", vce="5 V", hfe="110 : 450", series="E6", tolerance="1 %", va="60 V")
+    with pytest.raises(NoCertificate, match="certificate: read hfe_rows or va, accepted is a gain that depends on neither"):
+        synth.find(stage, keep=list)
+
+
 def test_pairs_are_certified_where_corners_tell_their_ends() -> None:
     pairs = {"network": "fixed_base", "series": "E6", "pairs": "yes", "tolerance": "1 %", "range": "100 ohm : 1 Mohm"}
     stage = Stage(supply="12 V", ic="2 mA", vce="5 V", hfe="200 : 250", **pairs)

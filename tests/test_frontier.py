@@ -4,6 +4,7 @@ Expected values come from `enumeration`: every combination judged, nothing prune
 of all qualifying combinations those that no other beats. Spaces are random and invented.
 """
 
+import threading
 from dataclasses import replace
 from functools import cache
 
@@ -226,3 +227,39 @@ def test_a_search_stops_wherever_it_is_asked_to_and_stays_true(
         assert listed <= set(qualifying)
         rest = [drift for place, drift in qualifying.items() if place not in listed]
         assert outcome.bound <= min(rest, default=np.inf) * (1.0 + ROUNDING)
+
+
+# --- Jobs ---------------------------------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize("network", [*NETWORKS, "any"])
+def test_any_number_of_jobs_gives_the_same_answer_to_the_last_bit(network: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Listing, bound, proof and the number of solves; the portions are so small that every job gets some."""
+    small_steps(monkeypatch, 2)
+    monkeypatch.setattr(best_first, "PORTION", 4)
+    for number in range(0, CASES, 4):
+        spaces, goal, axes, _ = case(network, number)
+        one, two, five = (search(spaces, goal, top=3, jobs=jobs) for jobs in (1, 2, 5))
+        for other in (two, five):
+            assert [(f.index, f.score) for f in other.found] == [(f.index, f.score) for f in one.found]
+            assert (other.bound, other.evaluated, other.complete) == (one.bound, one.evaluated, one.complete)
+        fronts = [frontier(spaces, goal, [AXES[name] for name in axes], jobs=jobs) for jobs in (1, 3)]
+        told = [[(m.found.index, m.found.score, m.axes) for m in front.members] for front in fronts]
+        assert told[0] == told[1]
+
+
+def test_jobs_share_the_portions_of_a_batch(monkeypatch: pytest.MonkeyPatch) -> None:
+    """They would prove little if one thread did it all: more than one bounds blocks, each in a room of its own."""
+    monkeypatch.setattr(best_first, "PORTION", 4)
+    seen: dict[int, set[int]] = {}
+    bound = best_first.Room.raise_bounds
+
+    def watched(room: best_first.Room, blocks: best_first.Blocks, limit: Array | float) -> None:
+        seen.setdefault(id(room), set()).add(threading.get_ident())
+        bound(room, blocks, limit)
+
+    monkeypatch.setattr(best_first.Room, "raise_bounds", watched)
+    spaces, goal, _, _ = case("divider", 4)
+    monkeypatch.setattr(best_first, "COARSE", 2)
+    search(spaces, goal, top=1, jobs=3)
+    assert len(set().union(*seen.values())) > 1

@@ -27,7 +27,7 @@ def batch_options() -> list[click.Parameter]:
         click.Option(["--batch"], type=click.Path(path_type=Path), metavar="ROWS.csv",
                      help="Find for every row of a table: CSV with keys of a stage as header, or TOML with [[stage]]."),
         click.Option(["--jobs"], type=click.IntRange(1, 1024), default=1, show_default=True, metavar="N",
-                     help="Processes that share the rows of --batch."),
+                     help="Threads of a search, or processes that share the rows of --batch; the answer stays the same."),
         click.Option(["--scheduler"], metavar="ADDRESS",
                      help="Dask scheduler whose workers share the rows of --batch, as tcp://127.0.0.1:8786."),
     ]  # fmt: skip

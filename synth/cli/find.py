@@ -54,8 +54,8 @@ def command(meaning: str) -> click.Command:
             for name in (name for name, given in single.items() if given):
                 raise WrongInput(f"{name}: goes with a single stage, not with --batch")
             return run_batch(stage_file, rows, jobs, scheduler, options)
-        if jobs > 1 or scheduler is not None:
-            raise WrongInput(f"{'--scheduler' if scheduler else '--jobs'}: goes with --batch, whose rows are shared out")
+        if scheduler is not None:
+            raise WrongInput("--scheduler: goes with --batch, whose rows are shared out")
         files(options)
         stage = read_stage(stage_file, options)
         proof: list[str] = []
@@ -68,6 +68,7 @@ def command(meaning: str) -> click.Command:
             advise=advise,
             progress=progress(),
             stop=stopper(budget),
+            jobs=jobs,
             keep=proof.extend if options["certificate"] else None,
             command=command_line(),
         )

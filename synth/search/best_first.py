@@ -9,6 +9,8 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable, Sequence
+from concurrent.futures import Executor, ThreadPoolExecutor
+from contextlib import AbstractContextManager, nullcontext
 from dataclasses import dataclass, replace
 from typing import Literal
 
@@ -32,6 +34,8 @@ Stop = Callable[[], bool]
 
 BATCH = 2048
 """Blocks taken at a time."""
+PORTION = 1024
+"""Blocks bounded at a time, by one of those that work."""
 FIRST, ASSESS = 16, 128
 """Candidates assessed at a time, first and later: each batch profits from what the one before found."""
 COARSE = 40
@@ -112,6 +116,7 @@ def search(
     most: float = np.inf,
     progress: Progress | None = None,
     stop: Stop | None = None,
+    jobs: int = 1,
 ) -> Outcome:
     """Find the candidates of least score, which is the Q-point drift unless the goal has another metric, and prove it.
 
@@ -133,6 +138,8 @@ def search(
         ``progress(bound, best, open_blocks)`` after every batch; False stops the search.
     stop : callable, optional
         Asked often, in the coarse passes too; True stops the search.
+    jobs : int
+        Threads that bound blocks; the outcome is the same to the last bit, whatever their number [-].
 
     Returns
     -------
@@ -142,8 +149,10 @@ def search(
     start = time.perf_counter()
     meter = Meter()
     pool = Best(top, gap)
-    work = _Work(_rooms(spaces, goal, meter, pool, most, stop), pool, progress, stop or _never, first, most)
-    complete = work.run()
+    with _crew(jobs) as crew:
+        rooms = _rooms(spaces, goal, meter, pool, most, stop)
+        work = _Work(rooms, pool, progress, stop or _never, first, most, crew)
+        complete = work.run()
     found = sorted(pool.found.values(), key=lambda f: f.score)
     spare = found[top].score if len(found) > top else np.inf
     if complete:
@@ -170,6 +179,7 @@ def frontier(
     most: float = np.inf,
     progress: Progress | None = None,
     stop: Stop | None = None,
+    jobs: int = 1,
 ) -> Frontier:
     """Find the candidates that no other beats: as good in score and along every axis, and better in one of them.
 
@@ -187,6 +197,8 @@ def frontier(
         Q-point solves after which to stop [-].
     progress, stop : callable, optional
         As in `search`.
+    jobs : int
+        As in `search` [-].
 
     Returns
     -------
@@ -201,8 +213,10 @@ def frontier(
     start = time.perf_counter()
     meter = Meter()
     pool = Front(members)
-    work = _Work(_rooms(spaces, goal, meter, pool, most, stop, axes), pool, progress, stop or _never, False, most)
-    complete = work.run()
+    with _crew(jobs) as crew:
+        rooms = _rooms(spaces, goal, meter, pool, most, stop, axes)
+        work = _Work(rooms, pool, progress, stop or _never, False, most, crew)
+        complete = work.run()
     bound = np.inf if complete else work.left
     return Frontier(
         # What is not yet safe from what is open is no member for certain.
@@ -212,6 +226,10 @@ def frontier(
         evaluated=meter.solves,
         seconds=time.perf_counter() - start,
     )
+
+
+def _crew(jobs: int) -> AbstractContextManager[Executor | None]:
+    return ThreadPoolExecutor(jobs) if jobs > 1 else nullcontext()
 
 
 def _never() -> bool:
@@ -277,6 +295,10 @@ class _Work:
     stop: Stop
     first: bool
     most: float
+    crew: Executor | None = None
+
+    def __post_init__(self) -> None:
+        self._twins: dict[tuple[int, int], Room] = {}
 
     @property
     def open(self) -> int:
@@ -322,11 +344,34 @@ class _Work:
         return taken
 
     def _put(self, room: Room, blocks: Blocks) -> None:
-        """Bound new blocks and keep those that may hold something to keep."""
+        """Bound new blocks and keep those that may hold something to keep.
+
+        They are bounded in portions whose size does not depend on how many work on them: so nothing that is found does.
+        """
+        portions = [blocks.take(slice(start, start + PORTION)) for start in range(0, len(blocks.bound), PORTION)]
+        if self.crew is None or len(portions) == 1:
+            limits = [self._bound(room, portion) for portion in portions]
+        else:
+            number = self.rooms.index(room)
+            rooms = [room, *(self._twin(number, k) for k in range(1, len(portions)))]
+            limits = list(self.crew.map(self._bound, rooms, portions))
+            for twin in rooms[1:]:
+                room.meter.solves += twin.meter.solves
+                twin.meter.solves = 0
+        for portion, limit in zip(portions, limits, strict=True):
+            room.blocks = room.blocks.join(sift(portion, limit, self.pool))
+
+    def _bound(self, room: Room, blocks: Blocks) -> Array | float:
+        """Bound blocks in place; the score above which nothing can be kept of them."""
         room.place(blocks)
         limit = self.pool.limit(blocks.axes)
         room.raise_bounds(blocks, limit)
-        room.blocks = room.blocks.join(sift(blocks, limit, self.pool))
+        return limit
+
+    def _twin(self, number: int, portion: int) -> Room:
+        if (number, portion) not in self._twins:
+            self._twins[number, portion] = self.rooms[number].twin()
+        return self._twins[number, portion]
 
     def _settle(self, room: Room, blocks: Blocks) -> None:
         """Assess blocks of one member, the most promising first; what a stop leaves goes back."""

@@ -88,6 +88,10 @@ class Room:
         n = len(lo)
         return Blocks(lo, hi, np.zeros(n), np.full((n, len(self.tests)), np.nan), np.full((n, len(self.axes)), -np.inf))
 
+    def twin(self) -> Room:
+        """A room that bounds the same way and can work beside this one; it counts its own solves."""
+        return Room(self.space, self.goal, Meter(), self.anchors, self.weights, self.asleep, self.moves, self.axes)
+
     def corners(self, point: Mapping[str, float]) -> Corners:
         """The solver of one point of the box."""
         key = tuple(sorted(point.items()))

@@ -69,11 +69,14 @@ def refuse(spaces: Sequence[Space], goal: Goal) -> None:
     Raises
     ------
     NoCertificate
-        If root sum square ranks, parallel pairs of unlike bands are among the values, or the stress of pairs is limited.
+        If root sum square ranks, the gain moves with IC or VCE, parallel pairs of unlike bands are among the values, or the
+        stress of pairs is limited.
     """
     if goal.rss:
         raise NoCertificate("certificate: read metric 'rss', accepted is corners, one drift or weights")
     for space in spaces:
+        if space.transistor.gain_moves:
+            raise NoCertificate("certificate: read hfe_rows or va, accepted is a gain that depends on neither IC nor VCE")
         for role, part in space.lists.items():
             if part.pairs is not None and part.pairs.bent.any():
                 text = f"read parallel pairs of unlike bands for {role}, accepted are those of one band"
