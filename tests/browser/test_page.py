@@ -15,9 +15,12 @@ import pytest
 from conftest import HOSTILE
 from driver import Browser, BrowserFailed
 
+import synth
 from synth.answer import Answer
+from synth.boards import Board
+from synth.boards.file import BoardStage
 from synth.explain import percent
-from synth.present.page import to_html
+from synth.present.page import board_to_html, refit_to_html, to_html
 from synth.solve import check
 from synth.stage import Stage
 
@@ -339,6 +342,37 @@ def test_print_is_dark_on_white_in_either_scheme(browser: Browser, page: Path) -
     browser.open(page)
     assert browser.run("return getComputedStyle(document.body).color") == "rgb(0, 0, 0)"
     assert browser.run("return getComputedStyle(document.body).backgroundColor") == "rgb(255, 255, 255)"
+
+
+REFIT = {"supply": "12 V", "ic": "1.6 mA ± 15 %", "vce": ">= 2 V", "hfe": "110 : 220", "series": "E24", "tolerance": "1 %",
+         "collector_share": "none", "bleeder_current": "none", "base_resistance": "none", "temperature": "25 °C"}  # fmt: skip
+
+
+@pytest.mark.parametrize("kind", ["refit", "board"])
+def test_pages_of_other_commands_switch_alike(browser: Browser, tmp_path: Path, kind: str) -> None:
+    """A refit shows the recommended change beside today's resistors; a board its first stage (both invented)."""
+    path = tmp_path / f"{kind}.html"
+    if kind == "refit":
+        fitted = {"r1": "100k", "r2": "27k", "rc": "4k7", "re": "1k"}
+        path.write_text(refit_to_html(synth.refit(Stage(**REFIT, **fitted), to_hfe="420 : 800", top=2)), encoding="utf-8")
+        first = ["candidate-1", "candidate-after"]
+    else:
+        stages = tuple(BoardStage(stage=Stage(**REFIT, name=name), allowance=0.05) for name in ("level", "pressure"))
+        path.write_text(board_to_html(synth.board(Board(stages=stages), most=100)), encoding="utf-8")
+        first = ["candidate-1"]
+    browser.open(path)
+    assert browser.logged("browser") == []
+    assert browser.requests() == [path.as_uri()]
+    assert browser.run(SHOWN) == first
+    browser.click("#candidates tbody tr:nth-child(2) td:nth-child(2)")
+    key = browser.run("return document.querySelector('#candidates tbody tr:nth-child(2)').dataset.key")
+    assert browser.run(SHOWN)[0] == f"candidate-{key}"
+    browser.size(380, 800)
+    assert browser.run("return document.documentElement.scrollWidth") <= 380
+    pdf = tmp_path / "page.pdf"
+    browser.pdf(pdf, 21.0, 29.7)
+    for sheet in words_on_paper(pdf):
+        assert all(left >= 1.3 * POINTS_PER_CM - 1.0 and right <= 19.7 * POINTS_PER_CM + 1.0 for left, _, right, _, _ in sheet)
 
 
 def test_the_verdict_on_fitted_resistors_needs_no_choice(browser: Browser, tmp_path: Path) -> None:
