@@ -29,6 +29,7 @@ from synth.present.page.lead import count_words
 from synth.present.page.load_line import picture
 from synth.present.page.parts import bars, used
 from synth.quantities import format_resistance
+from synth.report import report
 from synth.solve import check, find
 from synth.stage import Stage
 from synth.tradeoff import made_up
@@ -119,6 +120,16 @@ def test_everything_that_a_candidate_is_stands_in_the_page_without_its_script() 
         assert note.key in text
     assert answer.candidates[0].readings is not None
     assert "VB, base to 0 V" in text
+
+
+def test_page_holds_the_whole_worst_case_report() -> None:
+    answer = check(Stage(**BUOY, **VALUES), statistics=True)  # type: ignore[arg-type]
+    text = Reader(to_html(answer)).text
+    told = report(answer)
+    for section in told.sections:
+        assert section.title in text
+        for line in (*section.paragraphs, *section.points, *(cell for table in section.tables for row in table.rows for cell in row)):
+            assert " ".join(line.split()) in text
 
 
 def test_page_asks_for_nothing_and_says_so() -> None:

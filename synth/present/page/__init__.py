@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Any
 
 from synth.answer import Answer
 from synth.present.page.candidates import entries, listing, views
-from synth.present.page.lead import lead, notes, title
+from synth.present.page.lead import lead, notes, review, title
 
 if TYPE_CHECKING:
     import jinja2
@@ -49,6 +49,7 @@ def to_html(answer: Answer) -> str:
             "above": [],
             "listing": listing(f"Candidates, least {least} first" if finds else "Fitted resistors", "rank", found),
             "candidates": views(found),
+            "review": review(answer),
             "notes": notes(answer),
             "command": answer.command,
             "version": answer.version,

@@ -36,6 +36,7 @@ def board_page(answer: BoardAnswer) -> dict[str, object]:
         "candidates": views(found, alike=False),
         "notes": [note for note in (_reasons(answer), _merges(answer), _proof(answer), _assumed(answer)) if note is not None]
         + [Note(key="words", title="Words", facts=WORDS)],
+        "review": None,
         "command": answer.command,
         "version": answer.version,
     }

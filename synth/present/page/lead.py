@@ -5,13 +5,16 @@ from __future__ import annotations
 from synth.answer import Answer, Candidate, Search
 from synth.explain import cause_words, percent
 from synth.networks import NETWORKS
-from synth.present.page.parts import Note, Table, number, words
+from synth.present.page.parts import NO_BREAK, Note, Part, Review, Table, number, words
 from synth.present.terminal import resistors, span
 from synth.quantities import format_quantity
+from synth.report import report
 from synth.search import AXES
 from synth.tradeoff import figure_text, made_up
 
 RAISED = str.maketrans("0123456789", "⁰¹²³⁴⁵⁶⁷⁸⁹")
+SHORT = 9
+"""Characters up to which a cell of the report stays on one line."""
 WORDS = (
     ("over the box", "worst case over every spread at once: gain, VBE, temperature, supply, resistors"),
     ("drift", "largest excursion from target over the box, relative to the target"),
@@ -152,6 +155,46 @@ def notes(answer: Answer) -> list[Note]:
     makers = (_infeasible, _cautions, _alternatives, _frontier, _networks, _outlook, assumed_note, search_note)
     found = [note for make in makers if (note := make(answer)) is not None]
     return [*found, Note(key="words", title="Words", facts=WORDS)]
+
+
+def review(answer: Answer) -> Review | None:
+    """The worst-case report of the first candidate, as parts of the page.
+
+    Parameters
+    ----------
+    answer : Answer
+        Of `find` or `check`.
+
+    Returns
+    -------
+    Review or None
+        None where there is no candidate, since the notes say why.
+    """
+    if answer.best is None:
+        return None
+    told = report(answer)
+    parts = [
+        Part(
+            title=section.title,
+            lines=section.paragraphs,
+            points=section.points,
+            tables=[
+                Table(
+                    title=section.title,
+                    head=table.headings,
+                    rows=[[words(_kept(text)) for text in row] for row in table.rows],
+                )
+                for table in section.tables
+            ],
+        )
+        for section in told.sections
+    ]
+    return Review(verdict=told.verdict, parts=parts)
+
+
+def _kept(text: str) -> str:
+    """A text too short to break keeps its number with its unit."""
+    return text.replace(" ", NO_BREAK) if len(text) <= SHORT else text
 
 
 def _infeasible(answer: Answer) -> Note | None:

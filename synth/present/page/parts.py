@@ -50,6 +50,24 @@ class Note:
     tables: Sequence[Table] = field(default_factory=tuple)
 
 
+@dataclass(frozen=True, kw_only=True)
+class Part:
+    """A section of the worst-case report: paragraphs, tables, points of a list."""
+
+    title: str
+    lines: Sequence[str]
+    tables: Sequence[Table]
+    points: Sequence[str]
+
+
+@dataclass(frozen=True, kw_only=True)
+class Review:
+    """The worst-case report: its verdict in a sentence, and its sections."""
+
+    verdict: str
+    parts: Sequence[Part]
+
+
 def words(text: str, sort: float | str | None = None, mark: str = "") -> Cell:
     """A cell of words.
 

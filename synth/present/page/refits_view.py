@@ -44,6 +44,7 @@ def refit_page(refit: Refit) -> dict[str, object]:
         "listing": listing("Resistors today and changed", "which", found, first=first, beside=beside),
         "candidates": views(found),
         "notes": [*(note for note in (*notes, *rest) if note is not None), Note(key="words", title="Words", facts=WORDS)],
+        "review": None,
         "command": refit.answer.command,
         "version": refit.answer.version,
     }
