@@ -575,7 +575,7 @@ class _Layout:
         x = min((p[0] for p in above if p[0] < 0.0), default=-COLUMN)
         count = reference["number"]
         high, low = self.level[upper] - (PITCH if upper == "m" else 0.0), self.level[same["0"]]
-        words = {"diode": "D", "led": "LED", "zener": "Z"}[reference["kind"]]
+        words = {"diode": "D", "led": "LED", "zener": "D"}[reference["kind"]]
         for k in range(count):
             top = high - k * (high - low) / count
             bottom = high - (k + 1) * (high - low) / count
