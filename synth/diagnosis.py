@@ -275,6 +275,10 @@ class _Unit:
         """HFE and the greatest ICBO on the bench."""
         factors = [float(self.device.gain_factor(t)) for t in self.t]
         hfe = Span(self.device.hfe.low * min(factors), self.device.hfe.high * max(factors))
+        if self.device.gain_moves:
+            # Rows and Early voltage may move the gain anywhere between their ends.
+            least, most = self.device.gain_range(sum(spread.high for spread in self.rails.values()))
+            hfe = Span(hfe.low * least, hfe.high * most)
         return hfe, self.device.icbo.high * max(float(self.device.leakage_factor(t)) for t in self.t)
 
     def _base_current(self, ic: Span) -> Span:

@@ -296,6 +296,28 @@ class Transistor:
         """
         return np.asarray((np.asarray(va) + np.maximum(vce, 0.0)) / (np.asarray(va) + self.va_vce))
 
+    def gain_range(self, most: float) -> tuple[float, float]:
+        """Between what factors rows and Early voltage may move the gain of any unit.
+
+        Parameters
+        ----------
+        most : float
+            Greatest collector-emitter voltage [V].
+
+        Returns
+        -------
+        low, high : float
+            Factors on `hfe` [-].
+        """
+        low = high = 1.0
+        if self.hfe_rows is not None:
+            ends = [self.hfe_rows.reach(unit, 0.0, np.inf) for unit in (self.hfe.low, self.hfe.high)]
+            low, high = float(np.exp(min(e[0] for e in ends))), float(np.exp(max(e[1] for e in ends)))
+        if self.va is not None:
+            low *= float(self.early_factor(self.va.low, 0.0))
+            high *= float(max(self.early_factor(va, most) for va in (self.va.low, self.va.high)))
+        return low, high
+
     def vbe_at_reference(self, temperature: Array | float) -> Array:
         """VBE of the nominal unit at IC = `vbe_ic`, over temperature.
 

@@ -9,14 +9,20 @@ import re as regex
 from math import log, sqrt
 from pathlib import Path
 
+import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
 import synth
+from synth.box import Meter
 from synth.catalogue import CatalogueError
 from synth.cautions import request_cautions
 from synth.quantities import RestpointError
+from synth.replacement.sides import sides
+from synth.search.certificate import refuse
+from synth.spaces import fitted, goal_of, spaces_of
 from synth.stage import Stage
+from synth.statistics.stability import gradients
 
 DIGITS = 1e-12
 """Interpolation takes a few logarithms and exponentials: some tens of ulps."""
@@ -179,6 +185,32 @@ def test_a_saved_stage_reads_back_equal(changes: dict[str, object], tmp_path: Pa
     assert Stage.read(file) == made
 
 
+def test_a_gain_given_anew_takes_the_place_of_rows_and_the_reverse() -> None:
+    assert stage(hfe_rows=ROWS).replace(hfe="100 : 200") == stage(hfe="100 : 200")
+    assert stage(hfe="100 : 200").replace(hfe_rows=ROWS) == stage(hfe_rows=ROWS)
+    assert stage(hfe="100", vce_sat_rows="10 mA = 0.3 V").replace(vce_sat="0.1 V") == stage(hfe="100", vce_sat="0.1 V")
+
+
+def test_another_type_brings_its_own_gain_and_no_early_voltage_of_the_old() -> None:
+    before, after = sides(stage(type="2N3904", va="50 : 100 V", to="BC847B"))
+    assert before.transistor.hfe_rows is not None
+    assert (after.transistor.hfe_rows, after.transistor.va) == (None, None)
+    assert after.transistor.hfe.low == 200.0
+
+
+@pytest.mark.long
+def test_advice_works_where_a_type_brings_rows() -> None:
+    answer = synth.find(stage(type="2N3904", series="E3", tolerance="1 %", ic="1 mA ± 1 %", resistors_rc_values="3k3"))
+    assert answer.infeasible is not None
+    assert "target.ic" in answer.infeasible.binding
+
+
+def test_no_certificate_of_a_gain_that_moves() -> None:
+    made = stage(hfe_rows=ROWS, series="E3")
+    with pytest.raises(RestpointError, match="certificate: read hfe_rows or va"):
+        refuse(spaces_of(made), goal_of(made))
+
+
 # --- Early voltage and VCE(sat) -----------------------------------------------------------------------------------
 
 
@@ -201,6 +233,16 @@ def test_early_effect_of_a_fixed_base_stage_by_hand() -> None:
     assert best is not None
     assert_allclose(best.nominal.ic, 1.135e-3 * 62.0 / (55.0 + 1.135), rtol=1e-12, atol=0.0)
     assert {share.cause for share in best.budget["ic"]} <= {"centring", "rb", "rc"}
+
+
+def test_sensitivity_to_the_early_voltage_by_hand() -> None:
+    """IC = B·(VA + 12 V)/(VA + 5 V + B·1 kohm) with B = 100·IB = 1.135 mA: dIC/dVA = B·(5 + 1.135 - 12)/(56.135 V)²/V."""
+    made = stage(network="fixed_base", hfe="100", va="50 V", vbe="0.65 V", vbe_model="fixed", temperature="25 °C",
+                 values_rb="1M", values_rc="1k", vce="10 V")  # fmt: skip
+    space = fitted(made)
+    box = space.box(np.zeros((1, 2), dtype=np.int32), Meter())
+    found = gradients(box, box.nominal())["va"][0]
+    assert_allclose(found, 1.135e-3 * (5.0 + 1.135 - 12.0) / 56.135**2, rtol=1e-7, atol=0.0)
 
 
 def test_a_spread_of_the_early_voltage_is_a_cause_of_its_own() -> None:

@@ -77,7 +77,8 @@ def rival(path: str) -> str | None:
         The other's path, None if there is no such key.
     """
     table, _, leaf = path.rpartition(".")
-    other = {"series": "stock", "stock": "series"}.get(leaf)
+    pairs = [("hfe", "hfe_rows"), ("vce_sat", "vce_sat_rows")] if table == "transistor" else [("series", "stock")]
+    other = next((one if leaf == two else two for one, two in pairs if leaf in (one, two)), None)
     return f"{table}.{other}" if other else None
 
 
