@@ -272,8 +272,7 @@ def prove(space: Space, goal: Goal, measure: Measure, *, start: float = START, s
 
 # --- Beside the search --------------------------------------------------------------------------------------------
 
-SIZES = {"E3": ("10k : 100k", "1k : 4k7"), "E6": ("10k : 100k", "1k : 4k7"), "E12": ("10k : 100k", "1k : 4k7"),
-         "E24": ("10k : 100k", "1k : 4k7")}  # fmt: skip
+SIZES = {"E3": ("10k : 100k", "1k : 4k7"), "E6": ("10k : 100k", "1k : 4k7"), "E12": ("10k : 100k", "1k : 4k7")}  # fmt: skip
 """Series with the range of r1 and r2, and of rc and re."""
 
 
