@@ -158,6 +158,8 @@ def _standing(line: Compared) -> str:
         return "same"
     points = line.kind == "ratio" or line.name.startswith("worst.")
     size = f"{abs(100.0 * line.by):.3g} points" if points else percent(abs(line.by))
+    if line.kind == "temperature":
+        size = f"{abs(line.by):.2g} K"
     if line.standing == "moved":
         return f"{'+' if line.by > 0.0 else '-'}{size}"
     return f"{line.standing} by {size}"

@@ -45,8 +45,8 @@ class Device:
 class Compared:
     """One figure before and after, SI, either None where it is not known there.
 
-    `by` is after less before of a drift, margin, share or distance [-], of any other figure the relative change [-]; `standing`
-    says whether that is better, the same, worse, or for a figure without a good side that it moved.
+    `by` is after less before of a drift, margin or share [-] and of a temperature [K], of any other figure the relative change
+    [-]; `standing` says whether that is better, the same, worse, or for a figure without a good side that it moved.
     """
 
     name: str

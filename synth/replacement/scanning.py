@@ -5,7 +5,7 @@ from __future__ import annotations
 import csv
 import os
 import time
-from collections.abc import Collection, Iterator, Mapping, Sequence
+from collections.abc import Callable, Collection, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Literal
@@ -118,8 +118,8 @@ def scan(
     wanted = {name.casefold() for name in packages}
     tried, left_out = [], 0
     for where, label, package, keys in rows:
-        found = _one(before, old, where, label, package, keys, keep)
-        if found is None or not _fits(found.device, least or {}, wanted):
+        found = _one(before, old, where, label, package, keys, keep, lambda new: _fits(new, least or {}, wanted))
+        if found is None:
             left_out += 1
         else:
             tried.append(found)
@@ -173,9 +173,16 @@ def _file(path: Path) -> Iterator[tuple[str, str, str, dict[str, Given]]]:
 
 
 def _one(
-    before: Stage, old: Device, where: str, label: str, package: str, keys: Mapping[str, Given], keep: Collection[str]
+    before: Stage,
+    old: Device,
+    where: str,
+    label: str,
+    package: str,
+    keys: Mapping[str, Given],
+    keep: Collection[str],
+    fits: Callable[[Device], bool],
 ) -> Tried | None:
-    """One transistor in the stage; None of the other polarity."""
+    """One transistor in the stage; None of the other polarity, or of one that does not come into question."""
     kind = keys.get("replacement.type")
     row = catalogue.transistor(str(kind)) if kind else None
     polarity = row.polarity if row is not None else keys.get("replacement.polarity", before.transistor.polarity)
@@ -196,6 +203,8 @@ def _one(
     new = device(after, label)
     if package and new.package is None:
         new = Device(**(vars(new) | {"package": package}))
+    if not fits(new):
+        return None
     cautions = swap_cautions(old, new) + tuple(Caution(name=w.name, text=w.text) for w in after.warnings)
     space, goal = fitted(after), goal_of(after)
     index = np.zeros((1, len(space.roles)), dtype=np.int32)
@@ -241,9 +250,7 @@ def _best_single(stage: Stage, space: Space, goal: Goal, keep: Collection[str]) 
     return best
 
 
-def _fits(found: Device | None, least: Mapping[str, float], packages: Collection[str]) -> bool:
-    if found is None:
-        return not least and not packages
+def _fits(found: Device, least: Mapping[str, float], packages: Collection[str]) -> bool:
     rated = all((getattr(found, name) or 0.0) >= figure for name, figure in least.items())
     return rated and (not packages or (found.package or "").casefold() in packages)
 

@@ -293,7 +293,11 @@ def _stress(before: Candidate, after: Candidate) -> Iterator[Compared]:
     if old is not None and new is not None:
         yield _moved("transistor.power", "power of the transistor", "power", old.power, new.power, -1)
         yield _moved("transistor.ic", "greatest IC", "current", old.ic, new.ic, -1)
+        judged = {v.name for candidate in (before, after) for v in candidate.limits}
         for name in dict.fromkeys((*old.used, *new.used)):
+            if f"transistor_stress.{name}" in judged:
+                # Its margin says the same.
+                continue
             words = f"used of the allowed {_RATING.get(name, name)}"
             yield _share(f"used.{name}", words, old.used.get(name), new.used.get(name), -1)
         if old.junction is not None and new.junction is not None:
@@ -317,7 +321,7 @@ def _share(name: str, what: str, before: float | None, after: float | None, good
 def _moved(name: str, what: str, kind: str, before: float | None, after: float | None, good: int = 0) -> Compared:
     """A figure with a unit; `good` is +1 where more is better, 0 where neither is."""
     old, new = _finite(before), _finite(after)
-    by = None if not old or new is None else new / old - 1.0
+    by = None if not old or new is None else new - old if kind == "temperature" else new / old - 1.0
     return Compared(name=name, what=what, kind=kind, before=old, after=new, by=by, standing=_standing(by, good))
 
 
