@@ -245,6 +245,12 @@ def test_a_gain_that_moves_is_not_certified() -> None:
         synth.find(stage, keep=list)
 
 
+def test_a_re_in_two_parts_is_not_certified() -> None:
+    stage = Stage(supply="12 V", ic="2 mA", vce="5 V", hfe="110 : 450", series="E6", tolerance="1 %", bypass="part", gain=">= 5")
+    with pytest.raises(NoCertificate, match="certificate: read a re in two parts chosen by the gain"):
+        refuse(spaces_of(stage), goal_of(stage))
+
+
 def test_pairs_are_certified_where_corners_tell_their_ends() -> None:
     pairs = {"network": "fixed_base", "series": "E6", "pairs": "yes", "tolerance": "1 %", "range": "100 ohm : 1 Mohm"}
     stage = Stage(supply="12 V", ic="2 mA", vce="5 V", hfe="200 : 250", **pairs)

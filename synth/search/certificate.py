@@ -69,12 +69,14 @@ def refuse(spaces: Sequence[Space], goal: Goal) -> None:
     Raises
     ------
     NoCertificate
-        If root sum square ranks, the gain moves with IC or VCE, parallel pairs of unlike bands are among the values, or the
-        stress of pairs is limited.
+        If root sum square ranks, the gain moves with IC or VCE, both parts of a partly bypassed re are chosen, parallel pairs
+        of unlike bands are among the values, or the stress of pairs is limited.
     """
     if goal.rss:
         raise NoCertificate("certificate: read metric 'rss', accepted is corners, one drift or weights")
     for space in spaces:
+        if space.signal.split:
+            raise NoCertificate("certificate: read a re in two parts chosen by the gain, accepted is signal.unbypassed")
         if space.transistor.gain_moves:
             raise NoCertificate("certificate: read hfe_rows or va, accepted is a gain that depends on neither IC nor VCE")
         for role, part in space.lists.items():
