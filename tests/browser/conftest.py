@@ -6,14 +6,12 @@ from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
-from driver import Browser
+from driver import HOSTILE, Browser
 
 from synth.answer import Answer
 from synth.present.page import to_html
 from synth.solve import find
 from synth.stage import Stage
-
-HOSTILE = '<script>alert(1)</script><img src=x onerror=alert(2)> & "quoted"'
 
 
 @pytest.fixture(scope="session")

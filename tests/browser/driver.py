@@ -17,6 +17,8 @@ from pathlib import Path
 from types import TracebackType
 from typing import Any
 
+HOSTILE = '<script>alert(1)</script><img src=x onerror=alert(2)> & "quoted"'
+"""A name that is markup."""
 ELEMENT = "element-6066-11e4-a52e-4f735466cecf"
 """The key under which WebDriver names an element (W3C WebDriver, section 12.1)."""
 KEYS = {"tab": "\ue004", "enter": "\ue007", "space": " ", "down": "\ue015", "up": "\ue013"}

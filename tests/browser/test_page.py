@@ -12,8 +12,7 @@ from socketserver import ThreadingTCPServer
 from xml.etree import ElementTree
 
 import pytest
-from conftest import HOSTILE
-from driver import Browser, BrowserFailed
+from driver import HOSTILE, Browser, BrowserFailed
 
 import synth
 from synth.answer import Answer
