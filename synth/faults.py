@@ -33,6 +33,8 @@ STRAY = 1e-15
 """Conductance from each node to 0 V, so that one without any other path has a voltage [S]."""
 NOTHING = 1e-11
 """Current below which the stray conductance is all there is [A]."""
+DEAD = 1e-7
+"""Voltage below which the stray conductance is all there is [V]."""
 BEYOND = 2.0
 """VBE that no junction stands: a base wired across more is destroyed [V]."""
 
@@ -265,7 +267,8 @@ def single_faults(
             # A transistor that conducts holds its own nodes.
             floats = circuit.floating() if solved.region == "cut off" else ()
             vce = None if {"c", "e"} & set(floats) else solved.nodes["c"] - solved.nodes["e"]
-            nodes = {n: mirror * (v - zero) + 0.0 for n, v in solved.nodes.items() if n in ("b", "c", "e") and n not in floats}
+            against = {n: mirror * (v - zero) for n, v in solved.nodes.items() if n in ("b", "c", "e") and n not in floats}
+            nodes = {n: v if abs(v) > DEAD else 0.0 for n, v in against.items()}
             ic = solved.ic if abs(solved.ic) > NOTHING else 0.0
             found.append(
                 Fault(role=role, kind=kind, region=solved.region, ic=ic, vce=vce, nodes=nodes, floats=floats, over=over)

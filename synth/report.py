@@ -98,6 +98,8 @@ def _scope(answer: Answer, c: Candidate) -> Section:
         f"DC bias of one {device['polarity'].upper()} transistor ({kind}), network: {network.title}. {network.summary}",
         "The table below is the schematic reference: each resistor by its designator, with the two nodes it hangs between.",
     ]
+    if device["polarity"] == "pnp":
+        lines.append("A PNP is an NPN mirrored: currents, VBE and VCE are magnitudes, node voltages carry their sign.")
     if answer.search is not None:
         bound = answer.search.bound
         proof = "" if bound is None else f"; every combination that is not listed drifts {percent(bound)} or more"
@@ -122,8 +124,12 @@ def _meaning(v: Verdict) -> str:
     if head == "target":
         return f"window of {part.upper()}"
     rule = RULES.get(head)
-    text = v.name if rule is None else rule.meaning
-    return f"{text} ({part.replace('.', ' ')})" if part else text
+    if part:
+        of, _, what = part.rpartition(".")
+        basis = "the style" if of else "the ratings"
+        what = {"vceo": "VCE once cut off", "ic": "IC", "junction": "junction temperature"}.get(what, what)
+        return f"{what}{f' of {of.upper()}' if of else ' of the transistor'}: what {basis} and the policy allow when hot"
+    return v.name if rule is None else rule.meaning
 
 
 def _attributes(answer: Answer, c: Candidate) -> Section:
@@ -304,6 +310,8 @@ def _verdicts(c: Candidate) -> Section:
         rule = RULES.get(v.name)
         nominal = not v.at or (rule is not None and rule.judged == "nominal")
         at = "nominal values" if nominal else point_words(v.at, skip=tuple(c.resistors))
+        if v.name.endswith(".junction"):
+            at = "the point of most power, hot"
         rows.append((v.name, _limit(v), worst, _margin(v), v.verdict.upper(), at))
     table = Table(headings=("attribute", "limit", "worst", "margin", "verdict", "decided at"), rows=tuple(rows))
     lines = "A margin is the distance to the limit, relative to it; of a window, relative to the target. Negative fails."
@@ -583,7 +591,7 @@ def _readings(c: Candidate) -> Section:
              row.verdict if row.off == 0.0 else f"{row.verdict} by {format_quantity(row.off, 'voltage')}")
             for row in c.comparisons
         ]  # fmt: skip
-        tables.append(Table(headings=("reading", "expected", "measured", ""), rows=tuple(body)))
+        tables.append(Table(headings=("reading", "expected", "measured", "result"), rows=tuple(body)))
     return Section(title="Meter readings", paragraphs=tuple(lines), tables=tuple(tables))
 
 
