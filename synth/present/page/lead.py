@@ -110,7 +110,7 @@ def _proof(answer: Answer, best: Candidate | None) -> str:
         return f"The search was stopped among {space}: {state}{bound}."
     count = len(answer.candidates)
     listed = "The best" if count == 1 else f"The best {count}"
-    beyond = "; there is no other" if search.bound is None else f"; every other {does} {percent(search.bound)} or more"
+    beyond = "; no other meets every limit" if search.bound is None else f"; every other {does} {percent(search.bound)} or more"
     return f"{listed} of {space}, proved{beyond}."
 
 
