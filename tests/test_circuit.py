@@ -102,6 +102,9 @@ def outlines(ax: Axes) -> list[np.ndarray]:
 def hits(box: tuple[float, float, float, float], path: np.ndarray) -> bool:
     """Whether a path enters a box; sampled far more finely than any text is small."""
     left, bottom, right, top = box
+    x, y = path[np.isfinite(path).all(axis=1)].T
+    if x.max() <= left or x.min() >= right or y.max() <= bottom or y.min() >= top:
+        return False
     for a, b in itertools.pairwise(path):
         if not np.isfinite([*a, *b]).all():
             continue
@@ -135,10 +138,10 @@ def no_text_is_hidden(ax: Axes) -> None:
 
 @every_case
 @both_polarities
-@pytest.mark.parametrize("zigzag", [False, True])
-def test_no_text_lies_over_anything(case: str, polarity: str, zigzag: bool) -> None:
+def test_no_text_lies_over_anything(case: str, polarity: str) -> None:
     answer, candidate = drawn(case, polarity)
-    no_text_is_hidden(picture(answer, longest(candidate), zigzag=zigzag))
+    # A zigzag line is as wide as a rectangle; the one form of each polarity stands for both.
+    no_text_is_hidden(picture(answer, longest(candidate), zigzag=polarity == "pnp"))
 
 
 def test_a_hidden_text_is_seen() -> None:
