@@ -110,6 +110,9 @@ def choose(
     if any(not d.choices.kept for d in demands):
         return Selection(status="infeasible", chosen=(), fitted={}, bounds=())
     program = _Program(demands, parts, most_new, jokers=False)
+    leading = leaders(demands)
+    if len(leading) < len(demands):
+        program.begin_with(_Program([demands[k] for k in leading], parts, None, jokers=False), seconds, workers)
     status, values, bounds = program.minimise(seconds, workers, progress)
     capped = any(d.choices.reached is not None for d in demands)
     if capped:
@@ -133,6 +136,34 @@ def choose(
             for name, value, bound in zip(OBJECTIVES, values, bounds, strict=True)
         ),
     )
+
+
+def leaders(demands: Sequence[Demand]) -> tuple[int, ...]:
+    """Stages without those that never need a line which another stage does not need.
+
+    Parameters
+    ----------
+    demands : sequence of Demand
+        The stages.
+
+    Returns
+    -------
+    tuple of int
+        Positions of the rest. A stage follows another one if it has, for every candidate of that one, a candidate that needs
+        nothing else: what serves the leader serves it too.
+    """
+    sets = [frozenset(frozenset(c.pieces) for c in d.choices.kept) for d in demands]
+    found: list[int] = []
+    for k, own in enumerate(sets):
+        if not any(_follows(own, sets[leader]) for leader in found):
+            found = [leader for leader in found if not _follows(sets[leader], own)] + [k]
+    return tuple(found)
+
+
+def _follows(own: frozenset[frozenset[Need]], leading: frozenset[frozenset[Need]]) -> bool:
+    if leading <= own:
+        return True
+    return all(needed in own or any(mine <= needed for mine in own) for needed in leading)
 
 
 class _Program:
@@ -233,6 +264,30 @@ class _Program:
             if joker is not None and d.choices.reached is not None:
                 total.append(math.floor(d.choices.reached / DRIFT_STEP) * joker)
         return sum(total)
+
+    def begin_with(self, smaller: _Program, seconds: float, workers: int) -> None:
+        """Take over what a program of some of the stages proves of the lines, and where it found them.
+
+        With fewer stages no more lines are needed, so its bound is one of the whole; pieces and their cost are not its matter.
+        """
+        from ortools.sat.python import cp_model
+
+        goal = smaller.objectives["new_lines"]
+        if isinstance(goal, int):
+            return
+        smaller.model.minimize(goal)
+        solver = _solver(seconds, workers)
+        if solver.solve(smaller.model) not in (cp_model.OPTIMAL, cp_model.FEASIBLE):
+            return
+        self.model.add(self.objectives["new_lines"] >= math.ceil(solver.best_objective_bound - ROUNDING))
+        used = {part for part, variable in smaller.used.items() if solver.value(variable)}
+        for part, variable in self.used.items():
+            self.model.add_hint(variable, part in used)
+        for d, row in zip(self.demands, self.taken, strict=True):
+            served = [all(used & set(self.serving[need]) for need in c.pieces) for c in d.choices.kept]
+            first = served.index(True) if True in served else -1
+            for k, variable in enumerate(row):
+                self.model.add_hint(variable, k == first)
 
     def minimise(
         self, seconds: float, workers: int, progress: Callable[[str], None] | None
