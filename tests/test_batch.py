@@ -142,6 +142,20 @@ def test_options_that_do_not_go_together(argv: list[str], said: str, capsys: pyt
     assert said in capsys.readouterr().err
 
 
+def test_a_scheduler_that_does_not_answer_is_refused(rows: Path, monkeypatch: pytest.MonkeyPatch, capsys: Any) -> None:
+    distributed = pytest.importorskip("distributed")
+
+    def silent(address: str, timeout: str) -> None:
+        raise OSError(f"Timed out trying to connect to {address}")
+
+    monkeypatch.setattr(distributed, "Client", silent)
+    assert run("find", "--batch", rows, *COMMON, "--scheduler", "tcp://127.0.0.1:1") == 2
+    assert "--scheduler: read 'tcp://127.0.0.1:1', where no scheduler answers" in capsys.readouterr().err
+    monkeypatch.setitem(sys.modules, "distributed", None)
+    assert run("find", "--batch", rows, *COMMON, "--scheduler", "tcp://127.0.0.1:1") == 2
+    assert "--scheduler: needs the extra 'cluster'" in capsys.readouterr().err
+
+
 # --- Going on -------------------------------------------------------------------------------------------------------
 
 

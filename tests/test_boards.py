@@ -513,6 +513,15 @@ def test_a_board_needs_stages() -> None:
         Board(stages=())
 
 
+def test_what_a_board_cannot_hold_is_refused(board_file: Path) -> None:
+    stage = Stage(supply="12 V", ic="2 mA", vce="5 V", hfe="200 : 450", series="E6", tolerance="1 %", pairs="series")
+    with pytest.raises(StageError, match=r"resistors\.r1\.pairs may be pairs, accepted is single resistors on a board"):
+        synth.board([stage])
+    board_file.write_text("stage = 3\n", encoding="utf-8")
+    with pytest.raises(StageError, match=r"stage: read '3', which is no list of tables"):
+        Board.read(board_file)
+
+
 def test_designators_are_written_out() -> None:
     assert designators(["R3", "R11-R13"]) == ("R3", "R11", "R12", "R13")
 
