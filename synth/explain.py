@@ -433,7 +433,7 @@ def sentences(candidate: Candidate, network: Network) -> tuple[str, ...]:
     larger = c.drift.decides
     others = ", ".join(f"{q.upper()} {percent(drift)}" for q, drift in c.drift.of().items() if q != larger)
     lines.append(
-        f"{larger.upper()} decides the rank: it drifts {percent(c.drift.q_point)} at worst"
+        f"{larger.upper()} decides the Q-point drift: it drifts {percent(c.drift.q_point)} at worst"
         f"{f' ({others})' if others else ''}; the nominal Q-point itself is off target by {percent(c.centring)}."
     )
     for quantity, shares in c.budget.items():

@@ -917,3 +917,8 @@ def test_process_survives_a_reader_that_leaves(tmp_path: Path) -> None:
         err = ran.stderr.read()
     assert err == b""
     assert ran.returncode in (0, 1)
+
+
+def test_advice_starts_from_the_drift_of_the_q_point(run: Run) -> None:
+    line = refused(run("find", *TARGETS, "--hfe", "110:450", "--advise", "--metric", "rss"))
+    assert line.rstrip() == "--advise: starts from the drift of the Q-point, read --metric 'rss', accepted is corners"

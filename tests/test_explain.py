@@ -419,7 +419,7 @@ def test_the_sentences_name_the_deciding_quantity_and_its_largest_cause() -> Non
     best = synth.find(stage(), top=1).best
     assert best is not None
     text = "\n".join(best.explanation)
-    assert "VCE decides the rank: it drifts 14.9 % at worst (IC 13.6 %)" in text
+    assert "VCE decides the Q-point drift: it drifts 14.9 % at worst (IC 13.6 %)" in text
     assert regex.search(r"Budget of VCE \(14\.9 %\): hFE spread 5\.7 %", text)
     assert "RC 1K6: drift 21.7 %, fails collector_share" in text
 
@@ -428,7 +428,7 @@ def test_without_a_vce_target_ic_decides() -> None:
     best = synth.find(stage(vce=">= 4 V", ic="2 mA ± 20 %"), top=1).best
     assert best is not None
     assert best.drift.vce is None
-    assert any(line.startswith("IC decides the rank") for line in best.explanation)
+    assert any(line.startswith("IC decides the Q-point drift") for line in best.explanation)
     assert set(best.budget) == {"ic"}
 
 

@@ -56,6 +56,8 @@ def command(meaning: str) -> click.Command:
             return run_batch(stage_file, rows, jobs, scheduler, options)
         if scheduler is not None:
             raise WrongInput("--scheduler: goes with --batch, whose rows are shared out")
+        if advise and metric != "corners":
+            raise WrongInput(f"--advise: starts from the drift of the Q-point, read --metric {metric!r}, accepted is corners")
         files(options)
         stage = read_stage(stage_file, options)
         proof: list[str] = []
