@@ -641,34 +641,34 @@ class Answer:
             "schema": f"restpoint/{self.kind}/{SCHEMA_VERSION}",
             "version": self.version,
             "command": self.command,
-            "stage": _plain(self.stage),
-            "assumed": [_plain(vars(note)) for note in self.assumed],
-            "warnings": [_plain(vars(w)) for w in self.warnings],
-            "search": None if self.search is None else _plain(vars(self.search)),
+            "stage": plain(self.stage),
+            "assumed": [plain(vars(note)) for note in self.assumed],
+            "warnings": [plain(vars(w)) for w in self.warnings],
+            "search": None if self.search is None else _search(self.search),
             "networks": [_network(n) for n in self.networks],
             "candidates": [_candidate(c) for c in self.candidates],
-            "alternatives": [_plain(vars(a)) for a in self.alternatives],
+            "alternatives": [plain(vars(a)) for a in self.alternatives],
             "infeasible": None,
         }
         if self.infeasible is not None:
             body["infeasible"] = {
                 "binding": list(self.infeasible.binding),
-                "best_without": _plain(self.infeasible.best_without),
-                "relaxations": [_plain(vars(r)) for r in self.infeasible.relaxations],
+                "best_without": plain(self.infeasible.best_without),
+                "relaxations": [plain(vars(r)) for r in self.infeasible.relaxations],
                 "notes": dict(self.infeasible.notes),
                 "unsettled": list(self.infeasible.unsettled),
             }
         if self.outlook is not None:
             body["outlook"] = {
-                "drift": _plain(self.outlook.drift),
-                "floors": [_plain(vars(row)) for row in self.outlook.floors],
-                "upgrades": [_plain(vars(row)) for row in self.outlook.upgrades],
-                "savings": [_plain(vars(row)) for row in self.outlook.savings],
+                "drift": plain(self.outlook.drift),
+                "floors": [plain(vars(row)) for row in self.outlook.floors],
+                "upgrades": [plain(vars(row)) for row in self.outlook.upgrades],
+                "savings": [plain(vars(row)) for row in self.outlook.savings],
             }
         if self.frontier is not None:
             front = self.frontier
             rest = {name: value for name, value in vars(front).items() if name != "points"}
-            body["frontier"] = {**_plain(rest), "points": [_point(point) for point in front.points]}
+            body["frontier"] = {**plain(rest), "points": [_point(point) for point in front.points]}
         return body
 
     def to_json(self) -> str:
@@ -683,86 +683,92 @@ class Answer:
 
 
 def _point(point: Point) -> dict[str, Any]:
-    made = {role: _plain(vars(pair)) for role, pair in point.parts.items()}
-    return {**_plain({name: x for name, x in vars(point).items() if name != "parts"}), "parts": made}
+    made = {role: plain(vars(pair)) for role, pair in point.parts.items()}
+    return {**plain({name: x for name, x in vars(point).items() if name != "parts"}), "parts": made}
 
 
 def _span(ends: tuple[float, float], kind: str) -> str:
     return " to ".join(format_quantity(end, kind) for end in ends)
 
 
+def _search(search: Search) -> dict[str, Any]:
+    body: dict[str, Any] = plain(vars(search))
+    # The usual metric goes without saying.
+    return {key: value for key, value in body.items() if key != "metric" or value != "corners"}
+
+
 def _network(n: NetworkResult) -> dict[str, Any]:
-    return {**vars(n), "best": _plain(n.best), "against": None if n.against is None else _plain(vars(n.against))}
+    return {**vars(n), "best": plain(n.best), "against": None if n.against is None else plain(vars(n.against))}
 
 
 def _neighbour(n: Neighbour) -> dict[str, Any]:
-    return {**_plain({name: x for name, x in vars(n).items() if name != "pair"}), **_pair_of(n.pair)}
+    return {**plain({name: x for name, x in vars(n).items() if name != "pair"}), **_pair_of(n.pair)}
 
 
 def _pair_of(pair: Pair | None) -> dict[str, Any]:
-    return {} if pair is None else {"pair": _plain(vars(pair))}
+    return {} if pair is None else {"pair": plain(vars(pair))}
 
 
 def _candidate(c: Candidate) -> dict[str, Any]:
     return {
         "rank": c.rank,
         "network": c.network,
-        "resistors": _plain(c.resistors),
-        "parts": {role: _plain(vars(pair)) for role, pair in c.parts.items()},
-        "nominal": _plain(vars(c.nominal)),
-        "worst": _plain(c.worst),
+        "resistors": plain(c.resistors),
+        "parts": {role: plain(vars(pair)) for role, pair in c.parts.items()},
+        "nominal": plain(vars(c.nominal)),
+        "worst": plain(c.worst),
         "regions": list(c.regions),
-        "drift": {k: x for k, x in _plain(vars(c.drift)).items() if x is not None or k == "vce"},
-        **({} if c.score is None else {"score": _plain(c.score)}),
-        "centring": _plain(c.centring),
-        "supply_current": _plain(c.supply_current),
-        "base_feed": _plain(c.base_feed),
-        "budget": {q: [_plain(vars(s)) for s in shares] for q, shares in c.budget.items()},
+        "drift": {k: x for k, x in plain(vars(c.drift)).items() if x is not None or k == "vce"},
+        **({} if c.score is None else {"score": plain(c.score)}),
+        "centring": plain(c.centring),
+        "supply_current": plain(c.supply_current),
+        "base_feed": plain(c.base_feed),
+        "budget": {q: [plain(vars(s)) for s in shares] for q, shares in c.budget.items()},
         "neighbours": [_neighbour(n) for n in c.neighbours],
         "roles": {role: _duty(duty) for role, duty in c.roles.items()},
-        "limits": [_plain(vars(v)) for v in c.limits],
+        "limits": [plain(vars(v)) for v in c.limits],
         "verdict": c.verdict,
         "explanation": list(c.explanation),
         **({} if c.rival is None else {"rival": _network(c.rival)}),
         "stress": {
-            role: _plain({**vars(s), "power_used": s.power_used, "voltage_used": s.voltage_used})
+            role: plain({**vars(s), "power_used": s.power_used, "voltage_used": s.voltage_used})
             for role, s in c.stress.items()
         },
-        "transistor": None if c.transistor is None else _plain({**vars(c.transistor), "used": c.transistor.used}),
-        "signal": _plain(c.signal),
-        "readings": None if c.readings is None else _plain(vars(c.readings)),
-        "load_line": None if c.load_line is None else _plain(vars(c.load_line)),
-        "stability": {name: _plain(vars(factors)) for name, factors in c.stability.items()},
-        "sensitivities": [_plain(vars(row)) for row in c.sensitivities],
-        "faults": [_plain(vars(fault)) for fault in c.faults],
-        "bench": None if c.bench is None else _plain(vars(c.bench)),
-        "comparisons": [_plain(vars(row)) for row in c.comparisons],
+        "transistor": None if c.transistor is None else plain({**vars(c.transistor), "used": c.transistor.used}),
+        "signal": plain(c.signal),
+        "readings": None if c.readings is None else plain(vars(c.readings)),
+        "load_line": None if c.load_line is None else plain(vars(c.load_line)),
+        "stability": {name: plain(vars(factors)) for name, factors in c.stability.items()},
+        "sensitivities": [plain(vars(row)) for row in c.sensitivities],
+        "faults": [plain(vars(fault)) for fault in c.faults],
+        "bench": None if c.bench is None else plain(vars(c.bench)),
+        "comparisons": [plain(vars(row)) for row in c.comparisons],
         "statistics": None if c.statistics is None else _statistics(c.statistics),
-        "corners": _plain(c.corners),
+        "corners": plain(c.corners),
     }
 
 
 def _duty(duty: Duty) -> dict[str, Any]:
     """A resistor's duty; what its record says stands beside it."""
-    plain = {name: _plain(value) for name, value in vars(duty).items() if name != "record"}
+    values = {name: plain(value) for name, value in vars(duty).items() if name != "record"}
     if duty.record is not None:
-        plain |= {name: _plain(value) for name, value in vars(duty.record).items() if name not in ("classes", "text")}
-        plain["classes"] = [_plain(vars(row)) for row in duty.record.classes]
-        plain["rationale"] = list(duty.record.text)
-    return plain
+        values |= {name: plain(value) for name, value in vars(duty.record).items() if name not in ("classes", "text")}
+        values["classes"] = [plain(vars(row)) for row in duty.record.classes]
+        values["rationale"] = list(duty.record.text)
+    return values
 
 
 def _statistics(statistics: Statistics) -> dict[str, Any]:
     sums = []
     for row in statistics.rss:
         sides = {
-            name: _plain({**vars(side), "terms": None}) | {"terms": [_plain(vars(term)) for term in side.terms]}
+            name: plain({**vars(side), "terms": None}) | {"terms": [plain(vars(term)) for term in side.terms]}
             for name, side in (("low", row.low), ("high", row.high))
         }
-        sums.append(_plain({"quantity": row.quantity, "nominal": row.nominal, "sigma": row.sigma}) | sides)
+        sums.append(plain({"quantity": row.quantity, "nominal": row.nominal, "sigma": row.sigma}) | sides)
     lot = statistics.monte_carlo
-    rows = {"samples": [_plain(vars(s)) for s in lot.samples], "yields": [_plain(vars(y)) for y in lot.yields]}
-    return {"rss": sums, "monte_carlo": _plain({k: v for k, v in vars(lot).items() if k not in rows}) | rows}
+    rows = {"samples": [plain(vars(s)) for s in lot.samples], "yields": [plain(vars(y)) for y in lot.yields]}
+    return {"rss": sums, "monte_carlo": plain({k: v for k, v in vars(lot).items() if k not in rows}) | rows}
 
 
 def plain(value: Any) -> Any:
@@ -778,14 +784,10 @@ def plain(value: Any) -> Any:
     dict, list, float, int, str, bool or None
         Numbers that are not finite become None.
     """
-    return _plain(value)
-
-
-def _plain(value: Any) -> Any:
     if isinstance(value, Mapping):
-        return {str(k): _plain(v) for k, v in value.items()}
+        return {str(k): plain(v) for k, v in value.items()}
     if isinstance(value, list | tuple):
-        return [_plain(v) for v in value]
+        return [plain(v) for v in value]
     if isinstance(value, bool | int | str) or value is None:
         return value
     number = float(value)

@@ -54,6 +54,7 @@ def find(
     top: int = 10,
     metric: str = "corners",
     frontier: str = "",
+    records: bool = False,
     statistics: bool = False,
     advise: bool = False,
     progress: Progress | None = None,
@@ -74,6 +75,9 @@ def find(
         What ranks, see `synth.ranking.read_goal`.
     frontier : str
         Further axes of a frontier, see `synth.ranking.read_axes`; "" looks for none.
+    records : bool
+        Whether what a report tells of the first candidate is wanted: stability factors, single faults, readings on the
+        bench, a record for each resistor.
     statistics : bool
         Whether root-sum-square and Monte Carlo of the first candidate are wanted.
     advise : bool
@@ -122,7 +126,9 @@ def find(
     if candidates:
         space = next(s for s in spaces if _is_of(candidates[0], s))
         box = space.box(_index(space, candidates[0]), Meter())
-        first = reviewed(_with_heat(candidates[0], box, stage), space, stage, goal)
+        first = _with_heat(candidates[0], box, stage)
+        if records:
+            first = reviewed(first, space, stage, goal)
         if statistics:
             first = replace(first, statistics=statistics_of(first, space, stage))
         candidates = (first, *candidates[1:])

@@ -65,7 +65,17 @@ def boxes(network: str, count: int) -> list[tuple[Box, np.random.Generator]]:
 
 @every_network
 def test_no_sample_escapes_an_extreme(network: str) -> None:
-    for box, rng in boxes(network, 4):
+    no_sample_escapes(network, 2)
+
+
+@pytest.mark.long
+@every_network
+def test_no_sample_escapes_an_extreme_long(network: str) -> None:
+    no_sample_escapes(network, 12)
+
+
+def no_sample_escapes(network: str, count: int) -> None:
+    for box, rng in boxes(network, count):
         clouds = [point(box, u) for u in (vertices(box), samples(rng, box, 3000, at_ends=0.5), samples(rng, box, 3000, at_ends=0.0))]
         solved = [(p, box.solve(p, active_law=True)) for p in clouds]
         for name in names_of(box):

@@ -82,6 +82,8 @@ FITTED: dict[str, dict[str, Any]] = {
     "cut off": {"r1": "1M", "r2": "1k", "rc": "1k8", "re": "1k8"},
 }
 
+pytestmark = pytest.mark.usefixtures("short_advice")
+
 
 @functools.cache
 def text_of(**given: Any) -> str:

@@ -693,7 +693,7 @@ def test_slopes_of_a_corner_are_known_for_a_divider() -> None:
     found = signs(NETWORKS["divider"], CORNER, "full")
     assert found["re"] is None or found["re"] == -1
     own = own_signs(NETWORKS["divider"], CORNER, "full")
-    assert own == {"r1": -1, "r2": -1, "rc": 0, "re": -1, "ic": 1}
+    assert own.items() >= {"r1": -1, "r2": -1, "rc": 0, "re": -1, "ic": 1}.items()
 
 
 def test_without_a_capacitor_there_is_no_corner() -> None:

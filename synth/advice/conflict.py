@@ -26,7 +26,7 @@ FIGURES = 3
 """Significant figures of a relaxed limit."""
 WIDE = 0.95
 """Half-width from which a window is written by its ends [-]."""
-KEPT = BUDGET / 2.0
+KEPT = BUDGET / 3.0
 """Q-point solves that the search for the conflict leaves to that for a way out."""
 STEPS = 100
 """Degrees of a relaxation: one per cent of the way each."""
@@ -142,8 +142,9 @@ def _other_value(stage: Stage, role: str, purse: Purse) -> Grade | None:
         if role in found.space.roles:
             ohm = float(found.space.lists[role].nominal[found.index[found.space.roles.index(role)]])
             change = chosen_value(role, ohm)
-            if (drift := purse.does(stage, change)) is not None:
-                return Grade(change=change, size=1.0, drift=drift)
+            settled = purse.tried(stage, change)
+            if settled is not None and settled.found:
+                return Grade(change=change, size=1.0, drift=settled.found[0].drift)
     return None
 
 

@@ -12,9 +12,9 @@ from synth.stage import Stage
 
 EFFORT = 5e6
 """Q-point solves that one search for advice may take, about a second; what it leaves open is not claimed."""
-LOOK = 1.5e6
+LOOK = 8e5
 """Q-point solves of a search that only asks whether a change of the surroundings would do."""
-BUDGET = 2e7
+BUDGET = 1.2e7
 """Q-point solves for all of the advice together, some seconds; what is left then is not looked at."""
 GAP = 0.005
 """Relative gap left in the drifts that advice quotes [-]; they are drifts of real candidates all the same."""
@@ -25,14 +25,14 @@ class Purse:
 
     Parameters
     ----------
-    left : float
-        Q-point solves [-].
+    left : float, optional
+        Q-point solves [-]; `BUDGET` when not given.
     stop : callable, optional
         Asked often; from True on nothing is searched any more.
     """
 
-    def __init__(self, left: float = BUDGET, stop: Stop | None = None) -> None:
-        self.left = left
+    def __init__(self, left: float | None = None, stop: Stop | None = None) -> None:
+        self.left = BUDGET if left is None else left
         self.stop = stop
 
     def search(
@@ -87,7 +87,7 @@ class Purse:
         outcome = self.search(stage)
         return outcome.found[0].drift if outcome.found else None
 
-    def does(self, stage: Stage, change: Mapping[str, str]) -> float | None:
+    def tried(self, stage: Stage, change: Mapping[str, str]) -> Outcome | None:
         """Whether some candidate qualifies after a change.
 
         Parameters
@@ -99,16 +99,14 @@ class Purse:
 
         Returns
         -------
-        float or None
-            Drift of one that does, not always the best [-]; None also where the change is refused or the solves did not
-            suffice.
+        Outcome or None
+            With anything that does, not always the best; None where the change is refused.
         """
         try:
             changed = stage.with_keys(dict(change))
         except RestpointError:
             return None
-        found = self.search(changed, first=True, most=LOOK).found
-        return found[0].drift if found else None
+        return self.search(changed, first=True, most=LOOK)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -137,17 +135,21 @@ def least(grades: Sequence[Grade], stage: Stage, purse: Purse, *, bad: int = -1)
     Returns
     -------
     Grade or None
-        Verified by a search of its own; None where not even the greatest does.
+        Verified by a search of its own, and the least as far as the solves sufficed to tell; None where not even the
+        greatest does.
     """
-    drift = purse.does(stage, grades[-1].change) if grades else None
-    if drift is None:
+    outcome = purse.tried(stage, grades[-1].change) if grades else None
+    if outcome is None or not outcome.found:
         return None
-    good = len(grades) - 1
+    good, drift = len(grades) - 1, outcome.found[0].drift
     while good - bad > 1:
         middle = (good + bad) // 2
-        some = purse.does(stage, grades[middle].change)
-        if some is None:
-            bad = middle
+        some = purse.tried(stage, grades[middle].change)
+        if some is not None and some.found:
+            good, drift = middle, some.found[0].drift
+        elif some is not None and some.status == "unknown":
+            # Nearer to the conflict it only takes longer to tell.
+            break
         else:
-            good, drift = middle, some
+            bad = middle
     return replace(grades[good], drift=drift)

@@ -66,6 +66,7 @@ def command(meaning: str) -> click.Command:
             top=top,
             metric=metric,
             frontier=frontier or "",
+            records=options["form"] == "json" or options["report"] is not None,
             statistics=wants_statistics(options),
             advise=advise,
             progress=progress(),

@@ -150,7 +150,7 @@ def search(
     meter = Meter()
     pool = Best(top, gap)
     with _crew(jobs) as crew:
-        rooms = _rooms(spaces, goal, meter, pool, most, stop)
+        rooms = _rooms(spaces, goal, meter, pool, most, stop, first=first)
         work = _Work(rooms, pool, progress, stop or _never, first, most, crew)
         complete = work.run()
     found = sorted(pool.found.values(), key=lambda f: f.score)
@@ -244,13 +244,15 @@ def _rooms(
     most: float,
     stop: Stop | None,
     axes: Sequence[Axis] = (),
+    *,
+    first: bool = False,
 ) -> list[Room]:
     """Every space, ready to search, with the candidates of its coarse pass in the pool."""
     rooms: list[Room] = []
     for number, space in enumerate(spaces):
         pilot = _pilot(space, goal, meter)
         room = Room(space, goal, meter, *_bearings(space, pilot, goal, meter), axes)
-        seeds = _coarse(room, pool, most, stop or _never)
+        seeds = _coarse(room, pool, most, stop or _never, first)
         if seeds:
             pool.add(number, seeds, _figures(axes, space, seeds, meter))
             best = min(seeds, key=lambda f: f.score)
@@ -268,7 +270,7 @@ def _figures(axes: Sequence[Axis], space: Space, found: Sequence[Found], meter: 
     return np.stack([axis.value(space, index, meter) for axis in axes], axis=1)
 
 
-def _coarse(room: Room, pool: Pool, most: float, stop: Stop) -> list[Found]:
+def _coarse(room: Room, pool: Pool, most: float, stop: Stop, first: bool) -> list[Found]:
     """The best of a thinned-out space: good candidates to start from, never an answer by themselves."""
     space = room.space
     positions = {role: _thin(space.lists[role].nominal.size, COARSE) for role in space.roles}
@@ -277,7 +279,7 @@ def _coarse(room: Room, pool: Pool, most: float, stop: Stop) -> list[Found]:
     thin = space.thinned(positions)
     own: Best | Front = Best(pool.top) if isinstance(pool, Best) else Front(MOST_MEMBERS)
     few = Room(thin, room.goal, room.meter, room.anchors, room.weights, room.asleep, room.moves, room.axes)
-    _Work([few], own, None, stop, False, most).run()
+    _Work([few], own, None, stop, first, most).run()
     kept = own.found.values() if isinstance(own, Best) else [member.found for member in own.members]
     return [
         replace(f, space=space, index=tuple(int(positions[r][i]) for r, i in zip(space.roles, f.index, strict=True)))
