@@ -15,6 +15,7 @@ from relaxations import infeasible
 
 import synth
 from synth.answer import Infeasible
+from synth.quantities import RestpointError
 from synth.search import search
 from synth.spaces import goal_of, spaces_of
 from synth.stage import Stage, StageError
@@ -349,3 +350,44 @@ def test_values_that_leave_no_room_for_vce_are_refused() -> None:
 def test_values_that_leave_room_are_not_refused() -> None:
     assert stage(resistors_re_values="3k3").role("re").values
     assert stage(resistors_re_values="10k", network=["divider", "fixed_base"], vce="5 V", supply="24 V").role("re").values
+
+
+# --- Requests that must be refused or redirected (shared needs) -----------------------------------------------------
+
+
+PLAIN = {"supply": "12 V", "ic": "2 mA", "vce": "5 V", "hfe": "110 : 450"}
+
+
+@pytest.mark.parametrize(
+    ("changes", "message"),
+    [
+        ({"ic": "50 mA", "vce": "0.2 V"}, r"saturated switch"),
+        ({"resistors_re_values": "10k"}, r"with which re would drop 10 V at only 1 mA"),
+        ({"vce": "13 V"}, r"target\.vce: read '13 V', which is not below the 12 V between the rails"),
+        ({"hfe": "450 : 110"}, r"transistor\.hfe"),
+        ({"hfe": "0 : 110"}, r"transistor\.hfe.*least gain"),
+    ],
+    ids=["relay driver", "drop of re", "VCE above the supply", "gain the wrong way round", "no gain"],
+)
+def test_what_no_search_can_mend_is_refused(changes: dict[str, object], message: str) -> None:
+    with pytest.raises(RestpointError, match=message):
+        Stage(**{**PLAIN, **changes})  # type: ignore[arg-type]
+
+
+def test_a_drawer_without_the_decade_is_refused_with_what_it_holds(tmp_path: Path) -> None:
+    (tmp_path / "drawer.csv").write_text("value\n1M\n2M2\n", encoding="utf-8")
+    given = Stage(**PLAIN, stock=str(tmp_path / "drawer.csv"), resistors_rc_range="100 : 10k")  # type: ignore[arg-type]
+    with pytest.raises(StageError, match=r"rc.*drawer\.csv.*1M"):
+        synth.find(given)
+
+
+def test_a_window_narrower_than_the_resistors_is_redirected() -> None:
+    """All else exact, 5 % resistors scatter IC by about 5 %: nothing but a finer class or a wider window helps."""
+    given = stage(
+        ic="2 mA ± 3 %", tolerance="5 %", tcr="0 ppm/K", hfe="200 : 200", vbe="0.65 : 0.65 V", temperature="25 °C",
+        vbe_model="fixed",
+    )  # fmt: skip
+    found = advice(given)
+    assert "target.ic" in found.binding
+    assert found.notes["resistors"].startswith("with everything else at its nominal value")
+    assert any("resistors.tolerance" in r.change for r in found.relaxations)

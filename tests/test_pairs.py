@@ -59,7 +59,7 @@ def alike(values: list[float], tolerance: float = 0.05) -> ValueList:
 # --- The list -----------------------------------------------------------------------------------------------------
 
 
-@pytest.mark.parametrize("joins", [BOTH, frozenset({"series"}), frozenset({"parallel"})], ids="-".join)
+@pytest.mark.parametrize("joins", [BOTH, frozenset({"series"}), frozenset({"parallel"})], ids=lambda joins: "-".join(sorted(joins)))
 @pytest.mark.parametrize("series", ["E6", "E12", "E24"])
 def test_every_total_is_there_once_with_the_fewest_parts(series: str, joins: frozenset[str]) -> None:
     values = ValueList.from_series(series, 10.0, 2200.0, 0.05, 1e-4, 0.0)

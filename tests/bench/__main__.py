@@ -4,6 +4,7 @@
     python -m tests.bench search [NAME ...]   # the search alone: series, pairs, networks, requests
     python -m tests.bench integer [SERIES ...]
     python -m tests.bench rivals [NUMBER]
+    python -m tests.bench statistics [UNITS ...]
 """
 
 import sys
@@ -14,6 +15,7 @@ from pathlib import Path
 sys.path.insert(0, str(Path(__file__).resolve().parent))
 
 import bench_search
+import bench_statistics
 import integer_model
 import rivals
 
@@ -21,6 +23,7 @@ PARTS: dict[str, Callable[[Sequence[str]], int]] = {
     "search": bench_search.main,
     "integer": integer_model.main,
     "rivals": rivals.main,
+    "statistics": bench_statistics.main,
 }
 
 

@@ -8,6 +8,7 @@ import sys
 from pathlib import Path
 
 import bench_search
+import bench_statistics
 import integer_model
 import numpy as np
 import pytest
@@ -169,3 +170,11 @@ def test_one_command_prints_each_table(capsys: pytest.CaptureFixture[str]) -> No
     assert lines[2].split()[-1] == "yes"
     assert bench(["sorting"]) == 2
     assert capsys.readouterr().err == "bench: read 'sorting', accepted are search integer rivals\n"
+
+
+def test_a_lot_of_units_is_drawn_and_timed(capsys: pytest.CaptureFixture[str]) -> None:
+    assert bench_statistics.main(["4096"]) == 0
+    row = capsys.readouterr().out.splitlines()[1].split()
+    assert row[0] == "4096"
+    assert float(row[2]) > 0.0
+    assert 0.0 <= float(row[3].rstrip("%")) <= 100.0
