@@ -376,7 +376,7 @@ def test_what_no_search_can_mend_is_refused(changes: dict[str, object], message:
 
 def test_a_drawer_without_the_decade_is_refused_with_what_it_holds(tmp_path: Path) -> None:
     (tmp_path / "drawer.csv").write_text("value\n1M\n2M2\n", encoding="utf-8")
-    given = Stage(**PLAIN, stock=str(tmp_path / "drawer.csv"), resistors_rc_range="100 : 10k")  # type: ignore[arg-type]
+    given = Stage(**PLAIN, stock=str(tmp_path / "drawer.csv"), resistors_rc_range="100 ohm : 10 kohm")  # type: ignore[arg-type]
     with pytest.raises(StageError, match=r"rc.*drawer\.csv.*1M"):
         synth.find(given)
 

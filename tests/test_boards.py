@@ -222,7 +222,7 @@ def solve(case: Case, folder: Path, **options: Any) -> synth.BoardAnswer:
     return synth.board(request, **options)
 
 
-@pytest.mark.parametrize("number", [*range(24), *(pytest.param(k, marks=pytest.mark.long) for k in range(24, 40))])
+@pytest.mark.parametrize("number", [*range(16), *(pytest.param(k, marks=pytest.mark.long) for k in range(16, 40))])
 def test_board_equals_full_enumeration(number: int, tmp_path: Path) -> None:
     own = case(number)
     answer, best = solve(own, tmp_path), best_of_everything(own)

@@ -340,8 +340,8 @@ def sweep(rng: np.random.Generator, boxes: int, size: int, count: int, build: Ca
     return seen
 
 
-def test_no_escape_among_a_million_interior_samples_of_random_stages() -> None:
-    assert sweep(np.random.default_rng(4000), boxes=100, size=10, count=1000, build=random_box) == 1_000_000
+def test_no_escape_among_half_a_million_interior_samples_of_random_stages() -> None:
+    assert sweep(np.random.default_rng(4000), boxes=50, size=10, count=1000, build=random_box) == 500_000
 
 
 @pytest.mark.long
@@ -623,14 +623,14 @@ def check_any_region(box: Box, u: dict[str, Numbers], case: object, wanted: Sequ
     return int(np.size(values))
 
 
-@pytest.mark.parametrize("number", range(8))
+@pytest.mark.parametrize("number", [*range(4), *(pytest.param(k, marks=pytest.mark.long) for k in range(4, 8))])
 def test_any_region_never_less_than_any_vertex(number: int) -> None:
     rng = np.random.default_rng(7000 + number)
     box = edge_box(rng, 3)
     check_any_region(box, vertices(box), number)
 
 
-@pytest.mark.parametrize("number", range(8))
+@pytest.mark.parametrize("number", [*range(4), *(pytest.param(k, marks=pytest.mark.long) for k in range(4, 8))])
 def test_any_region_has_no_escape_among_interior_samples(number: int) -> None:
     rng = np.random.default_rng(7100 + number)
     box = edge_box(rng, 4)

@@ -536,9 +536,9 @@ def check_room(network: str, number: int) -> tuple[int, int]:
 
 @every_network
 def test_bound_of_a_block_on_drift_is_below_every_member_and_infinite_only_where_all_fail(network: str) -> None:
-    counts = [check_room(network, number) for number in range(5)]
-    assert sum(infinite for infinite, _ in counts) >= 5
-    assert sum(telling for _, telling in counts) >= 25
+    counts = [check_room(network, number) for number in range(4)]
+    assert sum(infinite for infinite, _ in counts) >= 4
+    assert sum(telling for _, telling in counts) >= 20
 
 
 @pytest.mark.long

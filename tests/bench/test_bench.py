@@ -169,7 +169,7 @@ def test_one_command_prints_each_table(capsys: pytest.CaptureFixture[str]) -> No
     assert np.all([word in lines[1] for word in ("combinations", "models", "over search", "proved")])
     assert lines[2].split()[-1] == "yes"
     assert bench(["sorting"]) == 2
-    assert capsys.readouterr().err == "bench: read 'sorting', accepted are search integer rivals\n"
+    assert capsys.readouterr().err == "bench: read 'sorting', accepted are search integer rivals statistics\n"
 
 
 def test_a_lot_of_units_is_drawn_and_timed(capsys: pytest.CaptureFixture[str]) -> None:
