@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from synth.advice.levers import chosen_value, free_value, levers
+from synth.advice.levers import chosen_value, free_value, levers, rounded
 from synth.advice.purse import BUDGET, EFFORT, LOOK, Grade, Purse, least
 from synth.answer import Infeasible, Relaxation
 from synth.box import Box, Meter
@@ -22,8 +22,6 @@ from synth.stage_keys import Given
 
 ACTIVE = "vce"
 """The limit that keeps the transistor active."""
-FIGURES = 3
-"""Significant figures of a relaxed limit."""
 WIDE = 0.95
 """Half-width from which a window is written by its ends [-]."""
 KEPT = BUDGET / 3.0
@@ -91,7 +89,7 @@ def why_nothing_qualifies(stage: Stage, stop: Stop | None = None) -> Infeasible:
         if (grade := _other_value(stage, role, purse)) is not None:
             offers.append(_Offer(CONDITION, grade))
     for lever in levers(stage):
-        if (grade := least(lever.grades, stage, purse)) is not None:
+        if (grade := least(lever, stage, purse)) is not None:
             is_asked = any(key in stage.given for key in grade.change)
             offers.append(_Offer(CONDITION if is_asked else DEFAULT_CONDITION, grade))
     offers.sort(key=lambda offer: (offer.rank, offer.grade.size))
@@ -220,8 +218,8 @@ def _change(need: Requirement, limit: float, outward: int) -> dict[str, str]:
     """A relaxed limit as a stage-file key and text, rounded outward to three figures."""
     low, high = need.interval.low, need.interval.high
     if need.target is not None and math.isclose(high - need.target, need.target - low, rel_tol=1e-9):
-        return {need.name: _window(need, need.target, _round(abs(limit / need.target - 1.0), 1))}
-    relaxed = Interval(low, _round(limit, 1)) if outward > 0 else Interval(_round(limit, -1), high)
+        return {need.name: _window(need, need.target, rounded(abs(limit / need.target - 1.0), 1))}
+    relaxed = Interval(low, rounded(limit, 1)) if outward > 0 else Interval(rounded(limit, -1), high)
     if need.target is not None:
         return {need.name: format_target(Target(need.target, relaxed.low, relaxed.high), need.kind)}
     if need.name.startswith("target."):
@@ -233,16 +231,6 @@ def _window(need: Requirement, goal: float, half: float) -> str:
     """A window of at least `half` around its target; a wide one is written by its ends, which stay above zero."""
     if half < WIDE:
         return f"{format_exact(goal, need.kind)} ± {half * 100:g} %"
-    low = min(need.interval.low, _round(goal * max(1.0 - half, 1e-3), -1))
-    high = max(need.interval.high, _round(goal * (1.0 + half), 1))
+    low = min(need.interval.low, rounded(goal * max(1.0 - half, 1e-3), -1))
+    high = max(need.interval.high, rounded(goal * (1.0 + half), 1))
     return format_target(Target(goal, low, high), need.kind)
-
-
-def _round(value: float, direction: int) -> float:
-    """Round to three figures, up for +1 and down for −1."""
-    if value == 0.0:
-        return 0.0
-    scale = 10.0 ** (FIGURES - 1 - math.floor(math.log10(abs(value))))
-    steps = value * scale
-    rounded = math.ceil(steps - 1e-9) if direction > 0 else math.floor(steps + 1e-9)
-    return float(f"{rounded / scale:.{FIGURES}g}")

@@ -7,11 +7,10 @@ can be applied as it stands.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from collections.abc import Mapping
 
 from synth.advice.purse import Grade
-from synth.networks import NETWORKS
+from synth.networks import NETWORKS, Network
 from synth.quantities import Spread, format_exact, format_resistance
 from synth.stage import Stage
 from synth.stage_keys import KEYS
@@ -32,15 +31,7 @@ REGULATION = "2 %"
 """Band of a plain fixed regulator over load and temperature, common practice."""
 
 
-@dataclass(frozen=True, kw_only=True)
-class Lever:
-    """A change besides limits: what it is in words, and its grades from the least to the greatest."""
-
-    name: str
-    grades: tuple[Grade, ...]
-
-
-def levers(stage: Stage) -> list[Lever]:
+def levers(stage: Stage) -> list[tuple[Grade, ...]]:
     """Every change besides limits that a request leaves open.
 
     Parameters
@@ -50,19 +41,19 @@ def levers(stage: Stage) -> list[Lever]:
 
     Returns
     -------
-    list of Lever
-        Those with at least one grade.
+    list of tuple of Grade
+        The grades of each, at least one.
     """
     found = [
-        *(Lever(name=f"a steadier supply {rail}", grades=narrowed(f"supply.{rail}", s)) for rail, s in stage.rails.items()),
-        Lever(name="the base fed from a regulated rail", grades=_regulated_feed(stage)),
-        Lever(name="a narrower gain", grades=narrowed("transistor.hfe", stage.transistor.hfe)),
-        Lever(name="a finer resistor class", grades=finer_tolerance(stage)),
-        Lever(name="a lower temperature coefficient", grades=lower_coefficient(stage)),
-        Lever(name="a narrower ambient", grades=_narrowed_ambient(stage)),
-        *(Lever(name=f"network {name}", grades=grades) for name, grades in _other_networks(stage)),
+        *(narrowed(f"supply.{rail}", spread) for rail, spread in stage.rails.items()),
+        _regulated_feed(stage),
+        narrowed("transistor.hfe", stage.transistor.hfe),
+        finer_tolerance(stage),
+        lower_coefficient(stage),
+        _narrowed_ambient(stage),
+        *map(_network_grades, other_networks(stage)),
     ]
-    return [lever for lever in found if lever.grades]
+    return [grades for grades in found if grades]
 
 
 def finer_tolerance(stage: Stage) -> tuple[Grade, ...]:
@@ -118,7 +109,7 @@ def narrowed(path: str, spread: Spread) -> tuple[Grade, ...]:
         # In ratio, as gains spread; of a narrow supply that is the same as in difference.
         share = 1.0 - step / STEPS
         ends = [spread.nominal * (end / spread.nominal) ** share for end in (spread.low, spread.high)]
-        low, high = min(_rounded(ends[0], 1), spread.nominal), max(_rounded(ends[1], -1), spread.nominal)
+        low, high = min(rounded(ends[0], 1), spread.nominal), max(rounded(ends[1], -1), spread.nominal)
         # A nominal value that follows from the ends is not written.
         is_derived = key.rule == "geometric" and key.write(spread).count(":") == 1
         text = f"{low:g} : {high:g}" if is_derived else key.write(Spread(low, spread.nominal, high))
@@ -128,8 +119,24 @@ def narrowed(path: str, spread: Spread) -> tuple[Grade, ...]:
     return tuple(grades.values())
 
 
-def _rounded(value: float, direction: int) -> float:
-    scale = 10.0 ** (FIGURES - 1 - math.floor(math.log10(value)))
+def rounded(value: float, direction: int) -> float:
+    """Round to three figures.
+
+    Parameters
+    ----------
+    value : float
+        Any figure [-].
+    direction : {+1, -1}
+        Up or down.
+
+    Returns
+    -------
+    float
+        The figure [-].
+    """
+    if value == 0.0:
+        return 0.0
+    scale = 10.0 ** (FIGURES - 1 - math.floor(math.log10(abs(value))))
     steps = value * scale
     whole = math.ceil(steps - 1e-9) if direction > 0 else math.floor(steps + 1e-9)
     return float(f"{whole / scale:.{FIGURES}g}")
@@ -165,19 +172,36 @@ def _regulated_feed(stage: Stage) -> tuple[Grade, ...]:
     )
 
 
-def _other_networks(stage: Stage) -> Iterable[tuple[str, tuple[Grade, ...]]]:
-    for name, network in NETWORKS.items():
-        has_rails = all(rail in stage.rails for rail in network.rails)
-        if name in stage.networks or not has_rails or network.sinks != NETWORKS[stage.networks[0]].sinks:
-            continue
-        if network.reference == "needed" and stage.reference is None:
-            continue
-        # A follower does another job than a stage with its output at the collector.
-        if network.tied != NETWORKS[stage.networks[0]].tied:
-            continue
-        changes: list[Mapping[str, str]] = [{"network": name}]
-        changes += [{"network": name, f"resistors.{part.name}.use": "yes"} for part in network.roles if part.optional is True]
-        yield name, tuple(Grade(change=change, size=1.0 + 0.1 * len(change)) for change in changes)
+def other_networks(stage: Stage) -> list[Network]:
+    """Networks that the request does not name, whose rails it has and which do the same job.
+
+    Parameters
+    ----------
+    stage : Stage
+        The request.
+
+    Returns
+    -------
+    list of Network
+        Without those that need a reference element where none is given.
+    """
+    own = NETWORKS[stage.networks[0]]
+    return [
+        network
+        for name, network in NETWORKS.items()
+        if name not in stage.networks
+        and all(rail in stage.rails for rail in network.rails)
+        # A follower does another job than a stage with its output at the collector, and so does a sink.
+        and (network.tied, network.sinks) == (own.tied, own.sinks)
+        and (network.reference != "needed" or stage.reference is not None)
+    ]
+
+
+def _network_grades(network: Network) -> tuple[Grade, ...]:
+    changes: list[Mapping[str, str]] = [{"network": network.name}]
+    optional = [part.name for part in network.roles if part.optional is True]
+    changes += [{"network": network.name, f"resistors.{role}.use": "yes"} for role in optional]
+    return tuple(Grade(change=change, size=1.0 + 0.1 * len(change)) for change in changes)
 
 
 def free_value(stage: Stage, role: str) -> Stage | None:

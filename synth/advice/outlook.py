@@ -8,17 +8,15 @@ from dataclasses import replace
 
 import numpy as np
 
-from synth.advice.levers import finer_tolerance, lower_coefficient, narrowed
+from synth.advice.levers import REGULATION, finer_tolerance, lower_coefficient, narrowed, other_networks
 from synth.advice.purse import Purse
 from synth.answer import Alternate, Floor, Outlook
 from synth.catalogue import series_tolerance
-from synth.networks import NETWORKS
 from synth.parts import Parts
 from synth.preferred import series_values
 from synth.quantities import RestpointError, format_exact, format_quantity
 from synth.spaces import Space, spaces_of
 from synth.stage import Stage
-from synth.stage_keys import KEYS
 
 FINE = 768
 """Values a decade that stand for any value at all, 0.3 % apart: the drift moves by far less than a neighbour of E192 would."""
@@ -27,8 +25,6 @@ COMPARED = ("E12", "E24", "E96", "E192")
 """Series whose best drift is compared with that."""
 LOOSE = 0.05
 """Tolerance of the coarse class that a role may do with [-]."""
-REGULATED = "2 %"
-"""Band of a plain fixed regulator over load and temperature, common practice."""
 SMALL = 5e-4
 """Change of the drift that is not worth a line [-]."""
 
@@ -124,7 +120,7 @@ def _upgrades(stage: Stage) -> Iterator[tuple[str, Mapping[str, str]]]:
         yield "a gain bin half as wide", change
     for rail, spread in stage.rails.items():
         if spread.width > 2.0 * 0.021 * spread.nominal:
-            yield f"{rail} from a regulator", {f"supply.{rail}": f"{format_exact(spread.nominal, 'voltage')} ± {REGULATED}"}
+            yield f"{rail} from a regulator", {f"supply.{rail}": f"{format_exact(spread.nominal, 'voltage')} ± {REGULATION}"}
     share = stage.limits.get("collector_share")
     if share is not None and share.low > 0.0:
         text = f">= {format_exact(float(f'{0.7 * share.low:.3g}'), 'ratio')}"
@@ -134,10 +130,8 @@ def _upgrades(stage: Stage) -> Iterator[tuple[str, Mapping[str, str]]]:
         yield "twice the bleeder current", {"limits.bleeder_current": f"<= {format_quantity(2.0 * bleeder.high, 'current')}"}
     if stage.reference is None and "diode_divider" not in stage.networks:
         yield "a diode under the divider", {"network": "diode_divider", "reference.kind": "diode"}
-    for name, network in NETWORKS.items():
-        same_job = network.tied == NETWORKS[stage.networks[0]].tied and network.sinks == NETWORKS[stage.networks[0]].sinks
-        if name not in stage.networks and same_job and network.reference != "needed" and set(network.rails) <= set(stage.rails):
-            yield f"network {name}", {"network": name}
+    for network in (other for other in other_networks(stage) if other.reference != "needed"):
+        yield f"network {network.name}", {"network": network.name}
 
 
 def _savings(stage: Stage) -> Iterator[tuple[str, Mapping[str, str]]]:
@@ -151,4 +145,4 @@ def _savings(stage: Stage) -> Iterator[tuple[str, Mapping[str, str]]]:
         yield "values of E24 alone", {"resistors.series": "E24", "resistors.tolerance": tolerance}
     coefficient = max(max(abs(s.tcr.low), abs(s.tcr.high)) for s in stage.roles.values())
     if coefficient < 200e-6:
-        yield "resistors of 200 ppm/K", {"resistors.tcr": KEYS["resistors.tcr"].write(KEYS["resistors.tcr"].read("200 ppm/K"))}
+        yield "resistors of 200 ppm/K", {"resistors.tcr": "200 ppm/K"}
